@@ -1,0 +1,7 @@
+"""From the place of the return image to the tilt of the mirror, and what that is worth."""
+
+from readout.angle.calibration import Calibration
+from readout.angle.nominal import Mounting, nominal_calibration
+from readout.angle.reading import reading_of
+
+__all__ = ["Calibration", "Mounting", "nominal_calibration", "reading_of"]

@@ -1,0 +1,43 @@
+"""An observation in pixels becomes a reading in arc-seconds."""
+
+from __future__ import annotations
+
+import math
+
+from readout.angle.calibration import Calibration
+from readout.model import Observation, Reading
+
+
+def reading_of(observation: Observation, calibration: Calibration | None, t_s: float) -> Reading:
+    """The tilt for one observation; NaN angles where there is no position or no calibration.
+
+    The combined uncertainty joins the noise of this row with the calibration's share at its
+    place, uncorrelated with each other (JCGM 100:2008, 5.1.2).
+    """
+    sighting = observation.sighting
+    x = y = x_sd = y_sd = x_u = y_u = math.nan
+    if calibration is not None and sighting.found:
+        where = sighting.x_px, sighting.y_px
+        x, y = (float(tilt) for tilt in calibration.tilt(*where))
+        noise = calibration.noise_cov(*where, sighting.cov_px2)
+        common = calibration.calibration_cov(*where)
+        x_sd, y_sd = math.sqrt(noise[0, 0]), math.sqrt(noise[1, 1])
+        x_u, y_u = math.sqrt(noise[0, 0] + common[0, 0]), math.sqrt(noise[1, 1] + common[1, 1])
+    return Reading(
+        seq=observation.seq,
+        t_s=t_s,
+        t_utc_ns=observation.t_utc_ns,
+        x_arcsec=x,
+        y_arcsec=y,
+        x_sd_arcsec=x_sd,
+        y_sd_arcsec=y_sd,
+        x_u_arcsec=x_u,
+        y_u_arcsec=y_u,
+        x_px=sighting.x_px,
+        y_px=sighting.y_px,
+        x_sd_px=sighting.x_sd_px,
+        y_sd_px=sighting.y_sd_px,
+        quality=sighting.quality,
+        calibration_id=calibration.id if calibration else None,
+        name=observation.name,
+    )

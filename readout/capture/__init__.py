@@ -1,0 +1,1 @@
+"""Frames from cameras, streams, videos, folders and the simulator, behind one interface."""

@@ -1,0 +1,1 @@
+"""Mirror motion, optics and sensor: frames whose truth is known."""
