@@ -1,0 +1,1 @@
+"""Files a person keeps: pictures, calibrations, readings, frames with their truth."""

@@ -1,0 +1,32 @@
+"""Replace a file whole: a reader sees the old text or the new one, never half of it."""
+
+from __future__ import annotations
+
+import os
+import tempfile
+from pathlib import Path
+
+from readout.errors import BadInput
+
+
+def write_text_whole(path: Path, text: str) -> None:
+    """Write ``text`` as UTF-8 to ``path`` through a new file in the same folder.
+
+    The folder is made if it is missing. Raises BadInput where it cannot be written to.
+    """
+    try:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        handle, name = tempfile.mkstemp(dir=path.parent, prefix=f".{path.name}.")
+        fresh = Path(name)
+        try:
+            with os.fdopen(handle, "w", encoding="utf-8", newline="\n") as file:
+                file.write(text)
+                file.flush()
+                os.fsync(file.fileno())
+            fresh.replace(path)
+        finally:
+            fresh.unlink(missing_ok=True)
+    except OSError as error:
+        raise BadInput(
+            f"cannot write {path} ({error.strerror or error}): choose another place"
+        ) from error
