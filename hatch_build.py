@@ -109,6 +109,6 @@ class DashboardHook(BuildHookInterface):  # type: ignore[type-arg]  # its parame
         if done.returncode:
             self.app.display_error(done.stdout[-4000:])
             raise SystemExit(
-                f"readout: the dashboard could not be built: `npm {' '.join(arguments[:2])}` failed, "
+                f"readout: the dashboard was not built: `npm {' '.join(arguments[:2])}` failed, "
                 "see above; with READOUT_DASHBOARD=skip readout is installed without it"
             )
