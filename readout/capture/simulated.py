@@ -1,0 +1,119 @@
+"""The simulator as a source: a live view without a camera, its truth known."""
+
+from __future__ import annotations
+
+import math
+import time
+from collections.abc import Callable
+from types import TracebackType
+from typing import Self
+
+import numpy as np
+
+from readout.angle import Calibration
+from readout.errors import BadInput, SourceLost, SourceStalled
+from readout.model import Frame
+from readout.simulation.autocollimator import Autocollimator
+from readout.simulation.frames import Truth, truth_at
+from readout.simulation.live import LiveRenderer
+from readout.simulation.motion import Motion
+
+NS_PER_S = 1_000_000_000
+_BANK = 2**63
+"""Seeds the bank of noise; no frame ever has this number."""
+
+
+class SimulatedSource:
+    """A simulated autocollimator before a simulated mirror, paced like a camera.
+
+    Frame k shows the mirror at k / ``frames_per_s`` seconds and is the same for the same seed,
+    however late it is fetched. A reader that falls behind misses frames, as with a camera
+    (``missed`` counts them); ``seq`` counts those delivered. ``truth`` belongs to the newest
+    frame. Clocks and sleep are injected for tests.
+    """
+
+    live = True
+
+    def __init__(
+        self,
+        seed: int = 0,
+        frames_per_s: float = 30.0,
+        *,
+        autocollimator: Autocollimator | None = None,
+        motion: Motion | None = None,
+        monotonic_ns: Callable[[], int] = time.monotonic_ns,
+        utc_ns: Callable[[], int] = time.time_ns,
+        sleep: Callable[[float], None] = time.sleep,
+    ) -> None:
+        if not (0 < frames_per_s <= 1000 and math.isfinite(frames_per_s)):
+            raise BadInput(
+                f"{frames_per_s:g} frames a second cannot be simulated: give 1 to 1000"
+            )
+        self.frames_per_s = frames_per_s
+        self.autocollimator = autocollimator or Autocollimator()
+        self.motion = motion or Motion(seed=seed)
+        self.missed = 0
+        self.truth: Truth | None = None
+        self._seed = seed
+        self._monotonic_ns, self._utc_ns, self._sleep = monotonic_ns, utc_ns, sleep
+        self._calibration = self.autocollimator.calibration()
+        self._renderer: LiveRenderer | None = None
+        self._start_ns = 0
+        self._utc_offset_ns = 0
+        self._next = 0
+        self._seq = 0
+
+    @property
+    def calibration(self) -> Calibration:
+        """The true calibration of the simulated instrument."""
+        return self._calibration
+
+    def __enter__(self) -> Self:
+        self._renderer = LiveRenderer(self.autocollimator, self._rng(_BANK))
+        self._start_ns = self._monotonic_ns()
+        self._utc_offset_ns = self._utc_ns() - self._start_ns
+        self._next = 0
+        return self
+
+    def __exit__(
+        self,
+        exc_type: type[BaseException] | None,
+        exc: BaseException | None,
+        tb: TracebackType | None,
+    ) -> None:
+        self._renderer = None
+
+    def read(self, timeout_s: float) -> Frame:
+        """The next frame when it is due. Raises SourceStalled if that is after ``timeout_s``."""
+        if self._renderer is None:
+            raise SourceLost("the simulated source is closed: open it again")
+        elapsed_ns = self._monotonic_ns() - self._start_ns
+        newest_due = math.floor(elapsed_ns * self.frames_per_s / NS_PER_S)
+        if newest_due > self._next:
+            self.missed += newest_due - self._next
+            self._next = newest_due
+        wait_s = self._next / self.frames_per_s - elapsed_ns / NS_PER_S
+        if wait_s > timeout_s:
+            self._sleep(max(0.0, timeout_s))
+            raise SourceStalled(
+                f"no frame within {timeout_s:g} s: the simulator gives {self.frames_per_s:g} a second"
+            )
+        if wait_s > 0:
+            self._sleep(wait_s)
+        t_s = self._next / self.frames_per_s
+        self.truth = truth_at(t_s, self.motion, self._calibration)
+        pixels = self._renderer.frame(self.truth.x_px, self.truth.y_px, self._rng(self._next))
+        t_mono_ns = self._monotonic_ns()
+        frame = Frame(
+            pixels=pixels,
+            seq=self._seq,
+            t_mono_ns=t_mono_ns,
+            t_utc_ns=t_mono_ns + self._utc_offset_ns,
+            full_scale=self.autocollimator.sensor.full_scale,
+        )
+        self._next += 1
+        self._seq += 1
+        return frame
+
+    def _rng(self, number: int) -> np.random.Generator:
+        return np.random.default_rng((self._seed % 2**64, number))
