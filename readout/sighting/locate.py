@@ -1,0 +1,175 @@
+"""A frame becomes a sighting: find both arms, fit each, cross them."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+
+from readout.model import Arm, Pixels, Quality, Sighting, Target, no_sighting
+from readout.sighting.arm import ArmFit, Shape, fit_arm
+from readout.sighting.find import RoughArm, find_upright_arms
+from readout.sighting.fold import Line
+
+LEAST_EXPLAINED = 0.7
+"""share of a folded strip that a crosshair arm must explain, else it is something else"""
+LARGEST_SD_PX = 0.5
+"""a position less certain than this is none"""
+DIM_CONTRAST = 3.0
+"""an arm less than this many pixel noises high is called dim"""
+SATURATED_SHARE = 0.002
+AT_EDGE_WIDTHS = 2.0
+
+
+def locate(
+    pixels: Pixels,
+    *,
+    full_scale: int,
+    target: Target = Target.CROSSHAIR,
+    prior: Sighting | None = None,
+) -> Sighting:
+    """Position of the crosshair's image in one frame.
+
+    Parameters
+    ----------
+    pixels : array (height, width), uint8 or uint16
+        Luminance. A bright crosshair on a dark ground or a dark one on a bright ground, anywhere,
+        turned by up to 10 degrees.
+    full_scale : int
+        Largest value the sensor can give; pixels that reach it count as saturated.
+    target : Target
+        What is imaged; only the crosshair so far.
+    prior : Sighting, optional
+        The sighting before this one: saves the search. If the arms are not found there, the whole
+        frame is searched.
+
+    Returns
+    -------
+    Sighting
+        The crossing of the arms' centre lines, in the frame or outside it, with a covariance from
+        noise alone. Never raises on a bad picture: NaN and a word (``no_image``, ``one_axis``)
+        where there is no position, a position and a word (``dim``, ``saturated``, ``at_edge``)
+        where there is one to be trusted less.
+    """
+    if target is not Target.CROSSHAIR:
+        raise ValueError(f"no method for the target {target}")
+    if prior is not None and (near := _from_prior(pixels, prior)) is not None:
+        return _sighting(pixels, full_scale, *near)
+    upright, level = find_upright_arms(pixels), find_upright_arms(pixels.T)
+    pair = _same_polarity(upright, level)
+    if pair is not None:
+        fits = _fit_both(pixels, *(arm.line for arm in pair), *(_start(arm) for arm in pair))
+        if fits is not None:
+            return _sighting(pixels, full_scale, *fits)
+    lone = [
+        fit
+        for picture, arms in ((pixels, upright), (pixels.T, level))
+        for arm in arms[:1]
+        if (fit := fit_arm(picture, arm.line, _start(arm))) is not None and _credible(fit)
+    ]
+    return no_sighting(Quality.ONE_AXIS if lone else Quality.NO_IMAGE)
+
+
+def _same_polarity(
+    upright: list[RoughArm], level: list[RoughArm]
+) -> tuple[RoughArm, RoughArm] | None:
+    """The strongest pair of arms that are both bright or both dark."""
+    pairs = [(u, v) for u in upright for v in level if u.polarity == v.polarity]
+    return max(pairs, key=lambda p: min(p[0].strength, p[1].strength), default=None)
+
+
+def _start(arm: RoughArm) -> Shape:
+    """A rough shape: only the sign of the contrast and the width matter."""
+    return Shape(0.0, 0.0, float(arm.polarity), max(0.5, arm.width_px / 2), 1.5)
+
+
+def _from_prior(pixels: Pixels, prior: Sighting) -> tuple[ArmFit, ArmFit] | None:
+    """Both arms where the last frame had them, or None if they are not there."""
+    if not prior.found or prior.upright is None or prior.level is None:
+        return None
+    upright = Line(prior.x_px, -math.tan(math.radians(prior.upright.angle_deg)), prior.y_px)
+    level = Line(prior.y_px, math.tan(math.radians(prior.level.angle_deg)), prior.x_px)
+    return _fit_both(pixels, upright, level, _shape_of(prior.upright), _shape_of(prior.level))
+
+
+def _shape_of(arm: Arm) -> Shape:
+    return Shape(arm.background, 0.0, arm.contrast, arm.width_px / 2, max(0.5, arm.width_px / 5))
+
+
+def _fit_both(
+    pixels: Pixels, upright: Line, level: Line, upright_shape: Shape, level_shape: Shape
+) -> tuple[ArmFit, ArmFit] | None:
+    """Fit each arm without the stretch where the other one crosses it; None unless both hold."""
+    x, y = crossing(upright, level)
+    first = fit_arm(
+        pixels,
+        upright,
+        upright_shape,
+        skip_from=y - level_shape.reach_px,
+        skip_to=y + level_shape.reach_px,
+    )
+    if first is None or not _credible(first):
+        return None
+    x, y = crossing(first.line, level)
+    reach = first.shape.reach_px + 1
+    second = fit_arm(pixels.T, level, level_shape, skip_from=x - reach, skip_to=x + reach)
+    if second is None or not _credible(second):
+        return None
+    x, y = crossing(first.line, second.line)
+    reach = second.shape.reach_px + 1
+    first = fit_arm(pixels, first.line, first.shape, skip_from=y - reach, skip_to=y + reach)
+    if first is None or not _credible(first) or first.shape.contrast * second.shape.contrast < 0:
+        return None
+    return first, second
+
+
+def _credible(fit: ArmFit) -> bool:
+    return bool(
+        fit.explained > LEAST_EXPLAINED
+        and math.sqrt(fit.cov[0, 0]) < LARGEST_SD_PX
+        and np.all(np.isfinite(fit.cov))
+    )
+
+
+def crossing(upright: Line, level: Line) -> tuple[float, float]:
+    """Intersection (x, y) in pixels of an upright line x(y) and a level line y(x)."""
+    y_at_middle = level.middle_x + level.slope * (upright.middle_x - level.middle_y)
+    y = (y_at_middle - level.slope * upright.slope * upright.middle_y) / (
+        1 - upright.slope * level.slope
+    )
+    return float(upright.x_at(y)), float(y)
+
+
+def _sighting(pixels: Pixels, full_scale: int, upright: ArmFit, level: ArmFit) -> Sighting:
+    """Cross the two fitted lines and carry their covariance to the crossing."""
+    x, y = crossing(upright.line, level.line)
+    to_point = np.linalg.inv(np.array([[1.0, -upright.line.slope], [-level.line.slope, 1.0]]))
+    cov = to_point @ np.diag([upright.x_var_at(y), level.x_var_at(x)]) @ to_point.T
+    height, width = pixels.shape
+    quality = Quality.OK
+    margin = AT_EDGE_WIDTHS * max(upright.shape.width_px, level.shape.width_px)
+    if not (margin <= x <= width - 1 - margin and margin <= y <= height - 1 - margin):
+        quality |= Quality.AT_EDGE
+    clipped = max(float(np.mean(fit.strip.levels >= full_scale)) for fit in (upright, level))
+    if clipped > SATURATED_SHARE:
+        quality |= Quality.SATURATED
+    if min(abs(f.shape.peak_contrast) / f.pixel_sd for f in (upright, level)) < DIM_CONTRAST:
+        quality |= Quality.DIM
+    return Sighting(
+        x,
+        y,
+        (float(cov[0, 0]), float(cov[0, 1]), float(cov[1, 1])),
+        quality,
+        _arm(upright, -1),
+        _arm(level, 1),
+        float(max(fit.strip.levels.max() for fit in (upright, level))),
+    )
+
+
+def _arm(fit: ArmFit, clockwise: int) -> Arm:
+    return Arm(
+        angle_deg=clockwise * math.degrees(math.atan(fit.line.slope)),
+        width_px=fit.shape.width_px,
+        contrast=fit.shape.peak_contrast,
+        background=fit.shape.background,
+    )
