@@ -14,7 +14,8 @@ class Source(Protocol):
     @property
     def live(self) -> bool:
         """True if frames come at their own time and a lost source may come back (a camera, a
-        stream); False for a folder or video, which is read at the reader's pace and ends."""
+        stream); False for a folder or video, which is read at the reader's pace and ends.
+        """
         ...
 
     def __enter__(self) -> Self: ...

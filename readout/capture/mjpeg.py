@@ -1,0 +1,211 @@
+"""A stream of JPEG pictures over HTTP (multipart/x-mixed-replace), as network cameras send it.
+
+Read by a thread of its own, for three reasons: the stamp is that of the arrival, not of the
+moment somebody asked; a wait can end without harm to the connection; and what comes in faster
+than it is measured is dropped, oldest first, and counted, instead of growing old in a buffer.
+"""
+
+from __future__ import annotations
+
+import base64
+import contextlib
+import http.client
+import queue
+import socket
+import threading
+import time
+from types import TracebackType
+from typing import Self
+from urllib.parse import SplitResult, unquote, urlsplit
+
+from readout import __version__
+from readout.capture.damaged import blank
+from readout.capture.multipart import JPEG_END, MultipartReader
+from readout.capture.repeats import RepeatWatch
+from readout.capture.timebase import Clock, TimeBase
+from readout.errors import BadInput, SourceLost, SourceStalled
+from readout.files.pictures import decode_picture
+from readout.model import Frame, Pixels, Quality
+
+_QUEUE_FRAMES = 8
+_SILENCE_S = 30.0  # after this the connection counts as dead
+_BLOCK_BYTES = 65536
+
+
+class MjpegSource:
+    """Frames of one MJPEG stream, in grey, stamped when their last byte arrived.
+
+    A damaged picture becomes a black frame marked ``damaged``; one that comes before any sound one
+    (its size is not known yet) is only counted. ``dropped`` counts what was not handed out.
+    """
+
+    live = True
+
+    def __init__(
+        self, url: str, *, connect_timeout_s: float = 5.0, clock: Clock = time.monotonic_ns
+    ) -> None:
+        """Nothing is opened yet. Raises BadInput if ``url`` names no host."""
+        parts = urlsplit(url)
+        if parts.scheme not in ("http", "https") or not parts.hostname or not _port_fits(parts):
+            raise BadInput(f"{url} is no address of a stream: give http://host:port/path")
+        self._url, self._parts = without_password(url), parts
+        self._connect_timeout_s = connect_timeout_s
+        self._clock = clock
+        self._timebase = TimeBase(0, 0)
+        self._link: _Link | None = None
+        self._repeats = RepeatWatch()
+        self._seq = 0
+        self._dropped_damaged = 0
+        self._like: tuple[tuple[int, ...], int] | None = None
+
+    @property
+    def dropped(self) -> int:
+        """Pictures that arrived and were not handed out, since the stream was opened."""
+        return self._dropped_damaged + (self._link.dropped if self._link else 0)
+
+    def __enter__(self) -> Self:
+        self._timebase = TimeBase.now(self._clock)
+        self._repeats, self._seq, self._dropped_damaged, self._like = RepeatWatch(), 0, 0, None
+        self._link = _Link(self._url, self._parts, self._connect_timeout_s, self._clock)
+        return self
+
+    def __exit__(
+        self,
+        exc_type: type[BaseException] | None,
+        exc: BaseException | None,
+        tb: TracebackType | None,
+    ) -> None:
+        if self._link is not None:
+            self._link.close()
+        self._link = None
+
+    def read(self, timeout_s: float) -> Frame:
+        """The next frame; see `readout.capture.source.Source`."""
+        if self._link is None:
+            raise SourceLost(f"{self._url} is not open: open it first")
+        deadline_ns = time.monotonic_ns() + round(timeout_s * 1e9)
+        while True:
+            left_s = max(0.0, (deadline_ns - time.monotonic_ns()) * 1e-9)
+            t_mono_ns, data = self._link.next(left_s)
+            decoded = self._decoded(data)
+            if decoded is not None:
+                break
+            self._dropped_damaged += 1
+        pixels, full_scale, quality = decoded
+        seq, self._seq = self._seq, self._seq + 1
+        return Frame(
+            pixels, seq, t_mono_ns, self._timebase.utc_ns(t_mono_ns), full_scale, quality=quality
+        )
+
+    def _decoded(self, data: bytes) -> tuple[Pixels, int, Quality] | None:
+        """Pixels, full scale and flags; None for a damaged picture of unknown size."""
+        try:
+            if JPEG_END not in data[-64:]:
+                raise BadInput("a JPEG without its end")
+            pixels, full_scale = decode_picture(data)
+        except BadInput:
+            if self._like is None:
+                return None
+            return blank(*self._like), self._like[1], Quality.DAMAGED
+        self._like = pixels.shape, full_scale
+        return pixels, full_scale, self._repeats.quality_of(pixels)
+
+
+class _Link:
+    """The connection and the thread that empties it."""
+
+    def __init__(self, url: str, parts: SplitResult, timeout_s: float, clock: Clock) -> None:
+        self.dropped = 0
+        self._url, self._clock = url, clock
+        self._end = "ended by the server"
+        self._items: queue.Queue[tuple[int, bytes] | None] = queue.Queue(_QUEUE_FRAMES + 1)
+        self._socket, self._response = _connect(url, parts, timeout_s)
+        kind = self._response.headers.get_content_type()
+        boundary = self._response.headers.get_param("boundary")
+        if not kind.startswith("multipart/") or not isinstance(boundary, str):
+            self._response.close()
+            raise BadInput(f"{url} sends {kind}, no MJPEG stream: check the path of the address")
+        self._parser = MultipartReader(boundary)
+        self._thread = threading.Thread(target=self._run, name="mjpeg", daemon=True)
+        self._thread.start()
+
+    def next(self, timeout_s: float) -> tuple[int, bytes]:
+        """Arrival and content of the next picture."""
+        try:
+            item = self._items.get(timeout=timeout_s)
+        except queue.Empty:
+            raise SourceStalled(f"{self._url}: no frame within {timeout_s:.3g} s") from None
+        if item is None:
+            self._items.put(None)  # and so it stays
+            raise SourceLost(f"{self._url}: {self._end}")
+        return item
+
+    def close(self) -> None:
+        with contextlib.suppress(OSError):  # it may have been closed by the other side
+            self._socket.shutdown(socket.SHUT_RDWR)
+        self._thread.join(timeout=5.0)
+        self._response.close()
+
+    def _run(self) -> None:
+        try:
+            while data := self._response.read1(_BLOCK_BYTES):
+                t_mono_ns = self._clock()
+                for part in self._parser.feed(data):
+                    self._offer((t_mono_ns, part))
+        except TimeoutError:
+            self._end = f"silent for {_SILENCE_S:g} s"
+        except (OSError, ValueError, http.client.HTTPException) as error:
+            self._end = f"broken off ({error})"
+        self._offer(None)
+
+    def _offer(self, item: tuple[int, bytes] | None) -> None:
+        if item is not None and self._items.qsize() >= _QUEUE_FRAMES:
+            with contextlib.suppress(queue.Empty):
+                self._items.get_nowait()
+                self.dropped += 1
+        self._items.put(item)
+
+
+def _connect(
+    url: str, parts: SplitResult, timeout_s: float
+) -> tuple[socket.socket, http.client.HTTPResponse]:
+    """The socket and the answer, of which only the head has been read."""
+    kind = http.client.HTTPSConnection if parts.scheme == "https" else http.client.HTTPConnection
+    connection = kind(parts.hostname or "", parts.port, timeout=timeout_s)
+    target = (parts.path or "/") + (f"?{parts.query}" if parts.query else "")
+    try:
+        connection.connect()
+        link = connection.sock  # the connection gives it up once the answer has begun
+        connection.request("GET", target, headers=_headers(parts))
+        response = connection.getresponse()
+    except (OSError, http.client.HTTPException) as error:
+        connection.close()
+        reason = "no answer" if isinstance(error, TimeoutError) else error
+        raise SourceLost(f"{url} cannot be reached ({reason}): check address and camera") from error
+    if response.status != http.client.OK:
+        response.close()
+        message = f"{url} answers {response.status} {response.reason}: check the address"
+        raise (SourceLost if response.status >= 500 else BadInput)(message)
+    link.settimeout(_SILENCE_S)
+    return link, response
+
+
+def _headers(parts: SplitResult) -> dict[str, str]:
+    headers = {"User-Agent": f"readout/{__version__}"}
+    if parts.username is not None:
+        pair = f"{unquote(parts.username)}:{unquote(parts.password or '')}"
+        headers["Authorization"] = "Basic " + base64.b64encode(pair.encode()).decode()
+    return headers
+
+
+def without_password(url: str) -> str:
+    """The address as it may be shown and logged."""
+    parts = urlsplit(url)
+    return parts._replace(netloc=parts.netloc.rpartition("@")[2]).geturl()
+
+
+def _port_fits(parts: SplitResult) -> bool:
+    try:
+        return parts.port is None or parts.port > 0
+    except ValueError:  # no number, or one too large
+        return False
