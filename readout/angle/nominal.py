@@ -86,6 +86,7 @@ def nominal_calibration(
         "rotation_deg": rotation_deg,
         "rotation_sd_deg": rotation_sd_deg,
     }
+    (a_xx, a_xy), (a_yx, a_yy) = matrix.tolist()
     fingerprint = hashlib.sha256(
         repr((sorted(made_from.items()), image_width_px, image_height_px, target)).encode()
     )
@@ -93,11 +94,11 @@ def nominal_calibration(
         id=f"nominal-{fingerprint.hexdigest()[:10]}",
         created_utc=created_utc,
         method="nominal",
-        matrix=((float(matrix[0, 0]), float(matrix[0, 1])), (float(matrix[1, 0]), float(matrix[1, 1]))),
+        matrix=((a_xx, a_xy), (a_yx, a_yy)),
         p0_px=((image_width_px - 1) / 2, (image_height_px - 1) / 2),
         image_width_px=image_width_px,
         image_height_px=image_height_px,
-        param_cov=tuple(tuple(float(c) for c in row) for row in cov),
+        param_cov=tuple(tuple(row) for row in cov.tolist()),
         target=target,
         pitch_um=pitch_um,
         warnings=("signs unproven: nudge the mirror and compare", "focal length not measured"),

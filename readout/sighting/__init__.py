@@ -1,5 +1,5 @@
 """Where in a frame the return image lies, to a small part of a pixel, with its covariance."""
 
-from readout.sighting.locate import locate
+from readout.sighting.targets import locate
 
 __all__ = ["locate"]

@@ -19,10 +19,10 @@ from numpy.typing import NDArray
 from readout.model import F64, Pixels
 from readout.sighting.fold import Line
 
-F32 = NDArray[np.float32]
-
-BAND_PX = 16
-"""rows averaged into a band: a line turned by 10 degrees crosses it within 3 px"""
+LARGEST_BAND_PX = 16
+"""most rows averaged into a band: a line turned by 10 degrees crosses it within 3 px"""
+BANDS = 24
+"""at least so many bands, where the picture has the rows"""
 COLUMNS = 320
 """about as many columns as the averaged picture keeps"""
 WIDTHS = (1, 2, 4, 8)
@@ -34,7 +34,7 @@ SURE = 4.5
 """a ridge this many noise sd high is hardly noise: some 10^4 places are looked at"""
 FULL_VOTE = 10.0
 LEAST_BANDS = 5
-LEAST_SHARE = 0.2
+LEAST_SHARE = 0.15
 """an arm must be seen in this share of the bands"""
 
 
@@ -54,16 +54,14 @@ def find_upright_arms(pixels: Pixels) -> list[RoughArm]:
     Pass the transposed picture for the level arm.
     """
     height, width = pixels.shape
-    bands = max(1, height // BAND_PX)
+    bands = height // int(np.clip(height // BANDS, 1, LARGEST_BAND_PX))
     step = max(1, round(width / COLUMNS))
     columns = max(1, width // step)
     if bands < LEAST_BANDS or columns < 16:
         return []
-    averaged = cv2.resize(
-        pixels.astype(np.float32), (columns, bands), interpolation=cv2.INTER_AREA
-    )
+    averaged = cv2.resize(pixels.astype(np.float32), (columns, bands), interpolation=cv2.INTER_AREA)
     floor = 0.3 / math.sqrt(width / columns * height / bands)
-    strengths, scales = _ridges(averaged, floor)
+    strengths, scales = _ridges(np.asarray(averaged, dtype=np.float64), floor)
     row_of_band = (np.arange(bands) + 0.5) * height / bands - 0.5
     found = []
     for polarity in (1, -1):
@@ -86,7 +84,7 @@ def find_upright_arms(pixels: Pixels) -> list[RoughArm]:
     return sorted(found, key=lambda arm: -arm.strength)
 
 
-def _ridges(averaged: F32, floor: float) -> tuple[F64, NDArray[np.intp]]:
+def _ridges(averaged: F64, floor: float) -> tuple[F64, NDArray[np.intp]]:
     """Height of the best ridge at each place, in noise sd, and its width in columns.
 
     A ridge is a stretch brighter (or darker) than the stretches of the same width on *both* its
@@ -100,7 +98,7 @@ def _ridges(averaged: F32, floor: float) -> tuple[F64, NDArray[np.intp]]:
         pad = gap + width
         if pad >= columns:
             break
-        padded = np.pad(averaged.astype(np.float64), ((0, 0), (pad, pad)), mode="reflect")
+        padded = np.pad(averaged, ((0, 0), (pad, pad)), mode="reflect")
         sums = np.concatenate([np.zeros((bands, 1)), np.cumsum(padded, axis=1)], axis=1)
         stretch = (sums[:, width:] - sums[:, :-width]) / width
         start = pad - width // 2
@@ -129,7 +127,9 @@ def _vote(
         at.append(peak)
         votes.append(left[band, peak])
         width.append(widths[band, peak])
-        near = np.abs(np.arange(columns)[None, :] - peak[:, None]) <= 2 * widths[band, peak][:, None]
+        near = (
+            np.abs(np.arange(columns)[None, :] - peak[:, None]) <= 2 * widths[band, peak][:, None]
+        )
         left[near] = 0.0
     x = np.concatenate(at).astype(np.float64)
     height = np.concatenate(votes)

@@ -8,9 +8,10 @@ position and slope needs, so that its cost no longer depends on the size of the 
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
+from numpy.typing import NDArray
 
 from readout.model import F64, Pixels
 
@@ -52,8 +53,14 @@ class Strip:
     def along(self) -> F64:
         return self.rows - self.line.middle_y
 
-    def only(self, keep: np.ndarray) -> Strip:
-        return Strip(self.line, self.levels[keep], self.rows[keep], self.phase[keep], self.offsets)
+    def only(self, keep: NDArray[np.bool_]) -> Strip:
+        """The rows marked in ``keep``."""
+        return replace(self, levels=self.levels[keep], rows=self.rows[keep], phase=self.phase[keep])
+
+    def about_its_middle(self) -> Strip:
+        """The same strip, its line referred to the mean of its rows."""
+        middle = float(self.rows.mean())
+        return replace(self, line=Line(float(self.line.x_at(middle)), self.line.slope, middle))
 
 
 def cut_strip(
@@ -63,19 +70,20 @@ def cut_strip(
     *,
     skip_from: float = math.inf,
     skip_to: float = -math.inf,
-    margin: int = 3,
 ) -> Strip | None:
     """Cut the strip of ``half_columns`` either side of ``line`` out of a picture.
 
     Rows from ``skip_from`` to ``skip_to`` (where the other arm crosses) are left out, and rows in
-    which the line is closer than ``margin`` to the border; the strip is narrowed on the side of a
-    near border. Returns None if fewer than 8 rows or 5 columns remain.
+    which the border cuts the strip; where most rows are so, the whole strip is narrowed on that
+    side instead. Returns None if fewer than 8 rows or 5 columns remain.
     """
     height, width = pixels.shape
-    rows = np.arange(height)
-    at = line.x_at(rows)
-    inside = (at >= margin) & (at <= width - 1 - margin)
-    rows = rows[inside & ((rows < skip_from) | (rows > skip_to))]
+    rows = np.arange(height, dtype=np.float64)
+    rows = rows[(rows < skip_from) | (rows > skip_to)]
+    to_border = np.minimum(line.x_at(rows), width - 1 - line.x_at(rows))
+    inside = rows[to_border >= 1]
+    whole = rows[to_border >= half_columns + 1]
+    rows = whole if 2 * whole.size > inside.size else inside
     if rows.size < 8:
         return None
     at = line.x_at(rows)
@@ -85,8 +93,10 @@ def cut_strip(
     if last - first < 4:
         return None
     offsets = np.arange(first, last + 1)
-    levels = pixels[rows[:, None], centre[:, None] + offsets[None, :]].astype(np.float64)
-    return Strip(line, levels, rows.astype(np.float64), at - centre, offsets.astype(np.float64))
+    levels = pixels[rows.astype(np.intp)[:, None], centre[:, None] + offsets[None, :]].astype(
+        np.float64
+    )
+    return Strip(line, levels, rows, at - centre, offsets.astype(np.float64))
 
 
 @dataclass(frozen=True, slots=True)

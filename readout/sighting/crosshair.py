@@ -1,4 +1,4 @@
-"""A frame becomes a sighting: find both arms, fit each, cross them."""
+"""A frame with a crosshair becomes a sighting: find both arms, fit each, cross them."""
 
 from __future__ import annotations
 
@@ -6,59 +6,37 @@ import math
 
 import numpy as np
 
-from readout.model import Arm, Pixels, Quality, Sighting, Target, no_sighting
-from readout.sighting.arm import ArmFit, Shape, fit_arm
+from readout.model import Arm, Pixels, Quality, Sighting, no_sighting
+from readout.sighting.arm import ArmFit, fit_arm
 from readout.sighting.find import RoughArm, find_upright_arms
 from readout.sighting.fold import Line
+from readout.sighting.solve import Shape
 
 LEAST_EXPLAINED = 0.7
 """share of a folded strip that a crosshair arm must explain, else it is something else"""
 LARGEST_SD_PX = 0.5
 """a position less certain than this is none"""
+LEAST_LENGTH_WIDTHS = 4.0
+"""a thing shorter than this many of its widths is a blob, not an arm"""
 DIM_CONTRAST = 3.0
 """an arm less than this many pixel noises high is called dim"""
 SATURATED_SHARE = 0.002
 AT_EDGE_WIDTHS = 2.0
 
 
-def locate(
-    pixels: Pixels,
-    *,
-    full_scale: int,
-    target: Target = Target.CROSSHAIR,
-    prior: Sighting | None = None,
-) -> Sighting:
-    """Position of the crosshair's image in one frame.
+def locate_crosshair(pixels: Pixels, *, full_scale: int, prior: Sighting | None = None) -> Sighting:
+    """The crossing of the centre lines of the two arms, in the frame or outside it.
 
-    Parameters
-    ----------
-    pixels : array (height, width), uint8 or uint16
-        Luminance. A bright crosshair on a dark ground or a dark one on a bright ground, anywhere,
-        turned by up to 10 degrees.
-    full_scale : int
-        Largest value the sensor can give; pixels that reach it count as saturated.
-    target : Target
-        What is imaged; only the crosshair so far.
-    prior : Sighting, optional
-        The sighting before this one: saves the search. If the arms are not found there, the whole
-        frame is searched.
-
-    Returns
-    -------
-    Sighting
-        The crossing of the arms' centre lines, in the frame or outside it, with a covariance from
-        noise alone. Never raises on a bad picture: NaN and a word (``no_image``, ``one_axis``)
-        where there is no position, a position and a word (``dim``, ``saturated``, ``at_edge``)
-        where there is one to be trusted less.
+    A bright crosshair on a dark ground or a dark one on a bright ground, anywhere, turned by up
+    to 10 degrees; arguments and result as in ``locate``.
     """
-    if target is not Target.CROSSHAIR:
-        raise ValueError(f"no method for the target {target}")
     if prior is not None and (near := _from_prior(pixels, prior)) is not None:
         return _sighting(pixels, full_scale, *near)
     upright, level = find_upright_arms(pixels), find_upright_arms(pixels.T)
     pair = _same_polarity(upright, level)
     if pair is not None:
-        fits = _fit_both(pixels, *(arm.line for arm in pair), *(_start(arm) for arm in pair))
+        first, second = pair
+        fits = _fit_both(pixels, first.line, second.line, _start(first), _start(second))
         if fits is not None:
             return _sighting(pixels, full_scale, *fits)
     lone = [
@@ -126,6 +104,7 @@ def _fit_both(
 def _credible(fit: ArmFit) -> bool:
     return bool(
         fit.explained > LEAST_EXPLAINED
+        and fit.rows > LEAST_LENGTH_WIDTHS * fit.shape.width_px
         and math.sqrt(fit.cov[0, 0]) < LARGEST_SD_PX
         and np.all(np.isfinite(fit.cov))
     )
