@@ -11,12 +11,10 @@ from typing import Self
 import numpy as np
 
 from readout.angle import Calibration
+from readout.capture.timebase import Clock, TimeBase
 from readout.errors import BadInput, SourceLost, SourceStalled
 from readout.model import Frame
-from readout.simulation.autocollimator import Autocollimator
-from readout.simulation.frames import Truth, truth_at
-from readout.simulation.live import LiveRenderer
-from readout.simulation.motion import Motion
+from readout.simulation import Autocollimator, LiveRenderer, Motion, Truth, truth_at
 
 NS_PER_S = 1_000_000_000
 _BANK = 2**63
@@ -41,27 +39,23 @@ class SimulatedSource:
         *,
         autocollimator: Autocollimator | None = None,
         motion: Motion | None = None,
-        monotonic_ns: Callable[[], int] = time.monotonic_ns,
-        utc_ns: Callable[[], int] = time.time_ns,
+        clock: Clock = time.monotonic_ns,
+        utc: Clock = time.time_ns,
         sleep: Callable[[float], None] = time.sleep,
     ) -> None:
         if not (0 < frames_per_s <= 1000 and math.isfinite(frames_per_s)):
-            raise BadInput(
-                f"{frames_per_s:g} frames a second cannot be simulated: give 1 to 1000"
-            )
+            raise BadInput(f"{frames_per_s:g} frames a second cannot be simulated: give 1 to 1000")
         self.frames_per_s = frames_per_s
         self.autocollimator = autocollimator or Autocollimator()
         self.motion = motion or Motion(seed=seed)
         self.missed = 0
         self.truth: Truth | None = None
         self._seed = seed
-        self._monotonic_ns, self._utc_ns, self._sleep = monotonic_ns, utc_ns, sleep
+        self._clock, self._utc, self._sleep = clock, utc, sleep
         self._calibration = self.autocollimator.calibration()
         self._renderer: LiveRenderer | None = None
-        self._start_ns = 0
-        self._utc_offset_ns = 0
-        self._next = 0
-        self._seq = 0
+        self._timebase = TimeBase(0, 0)
+        self._next = self._seq = 0
 
     @property
     def calibration(self) -> Calibration:
@@ -70,9 +64,9 @@ class SimulatedSource:
 
     def __enter__(self) -> Self:
         self._renderer = LiveRenderer(self.autocollimator, self._rng(_BANK))
-        self._start_ns = self._monotonic_ns()
-        self._utc_offset_ns = self._utc_ns() - self._start_ns
-        self._next = 0
+        self._timebase = TimeBase.now(self._clock, self._utc)
+        self._next = self._seq = 0
+        self.missed = 0
         return self
 
     def __exit__(
@@ -87,7 +81,7 @@ class SimulatedSource:
         """The next frame when it is due. Raises SourceStalled if that is after ``timeout_s``."""
         if self._renderer is None:
             raise SourceLost("the simulated source is closed: open it again")
-        elapsed_ns = self._monotonic_ns() - self._start_ns
+        elapsed_ns = self._clock() - self._timebase.t_mono_ns
         newest_due = math.floor(elapsed_ns * self.frames_per_s / NS_PER_S)
         if newest_due > self._next:
             self.missed += newest_due - self._next
@@ -96,19 +90,20 @@ class SimulatedSource:
         if wait_s > timeout_s:
             self._sleep(max(0.0, timeout_s))
             raise SourceStalled(
-                f"no frame within {timeout_s:g} s: the simulator gives {self.frames_per_s:g} a second"
+                f"no frame within {timeout_s:g} s: the simulator gives "
+                f"{self.frames_per_s:g} a second"
             )
         if wait_s > 0:
             self._sleep(wait_s)
         t_s = self._next / self.frames_per_s
         self.truth = truth_at(t_s, self.motion, self._calibration)
         pixels = self._renderer.frame(self.truth.x_px, self.truth.y_px, self._rng(self._next))
-        t_mono_ns = self._monotonic_ns()
+        t_mono_ns = self._clock()
         frame = Frame(
             pixels=pixels,
             seq=self._seq,
             t_mono_ns=t_mono_ns,
-            t_utc_ns=t_mono_ns + self._utc_offset_ns,
+            t_utc_ns=self._timebase.utc_ns(t_mono_ns),
             full_scale=self.autocollimator.sensor.full_scale,
         )
         self._next += 1

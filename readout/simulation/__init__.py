@@ -1,8 +1,27 @@
 """Mirror motion, optics and sensor: frames whose truth is known."""
 
 from readout.simulation.autocollimator import Autocollimator
+from readout.simulation.bound import cramer_rao_cov, crossing_bound_cov
 from readout.simulation.crosshair import Crosshair, crosshair_image
+from readout.simulation.frames import SimulatedFrames, Truth, simulate_frames, truth_at
+from readout.simulation.live import LiveRenderer
 from readout.simulation.motion import Motion
-from readout.simulation.sensor import Sensor, expose
+from readout.simulation.sensor import NoiseBank, Sensor, expose, expose_from_bank
 
-__all__ = ["Autocollimator", "Crosshair", "Motion", "Sensor", "crosshair_image", "expose"]
+__all__ = [
+    "Autocollimator",
+    "Crosshair",
+    "LiveRenderer",
+    "Motion",
+    "NoiseBank",
+    "Sensor",
+    "SimulatedFrames",
+    "Truth",
+    "cramer_rao_cov",
+    "crosshair_image",
+    "crossing_bound_cov",
+    "expose",
+    "expose_from_bank",
+    "simulate_frames",
+    "truth_at",
+]

@@ -21,6 +21,9 @@ from readout.model import F64
 TAIL_SIGMAS: Final = 7.0
 """A blurred edge is complete to 1e-12 this many sigmas away; nothing is computed beyond."""
 
+LEAST_BLUR_PX: Final = 0.3
+"""No lens and pixel is sharper than this; a sharper edge would need a finer rule."""
+
 HALF_DIAGONAL_PX: Final = math.sqrt(0.5)
 
 
@@ -54,7 +57,7 @@ def bar(u: F64, half_width_px: float, blur_px: float) -> F64:
 
 
 def pixel_nodes(order: int) -> list[tuple[float, float, float]]:
-    """Product Gauss-Legendre rule of the unit square about 0: (dx, dy, weight), weights sum to 1."""
+    """Product Gauss-Legendre rule of the unit square about 0: (dx, dy, weight), weights sum 1."""
     nodes, weights = np.polynomial.legendre.leggauss(order)
     return [
         (float(dx) / 2, float(dy) / 2, float(wx * wy) / 4)

@@ -38,7 +38,7 @@ class LiveRenderer:
     def __init__(self, autocollimator: Autocollimator, rng: np.random.Generator) -> None:
         picture, sensor = autocollimator.picture_of_reticle, autocollimator.sensor
         if math.isfinite(picture.half_length_px) or abs(picture.rotation_deg) > 45:
-            raise ValueError("live frames have arms across the whole picture, turned by 45° at most")
+            raise ValueError("live frames have arms across the picture, turned by 45° at most")
         self._sensor = sensor
         self._height, self._width = autocollimator.shape
         self._ground = NoiseBank.normal(autocollimator.shape, rng).digitised(
@@ -59,8 +59,8 @@ class LiveRenderer:
         self._profile: F32 = np.asarray(profile, dtype=np.float32)
         self._profile_step: F32 = np.append(np.diff(self._profile), np.float32(0))
         gain = sensor.gain_levels_per_electron
-        self._ground_level = np.float32(sensor.mean_levels(np.float64(picture.background)))
-        self._ground_var = np.float32(sensor.noise_var_levels2(np.float64(picture.background)))
+        self._ground_level = np.float32(sensor.mean_levels(picture.background))
+        self._ground_var = np.float32(sensor.noise_var_levels2(picture.background))
         self._contrast_level = np.float32(gain * picture.contrast)
         self._contrast_var = np.float32(gain**2 * picture.contrast)
 
@@ -76,7 +76,7 @@ class LiveRenderer:
     def _draw_arm(
         self,
         picture: Pixels,
-        middle_px: NDArray[np.float64],
+        middle_px: NDArray[np.floating],
         across_px: float,
         along_px: float,
         other_sin: float,
@@ -122,7 +122,7 @@ class LiveRenderer:
     def _at(self, place: F32) -> F32:
         """Profile at a place in the table, linearly between its entries."""
         index = place.astype(np.int32)
-        share: F32 = self._profile[index] + (place - index.astype(np.float32)) * self._profile_step[
-            index
-        ]
+        share: F32 = (
+            self._profile[index] + (place - index.astype(np.float32)) * self._profile_step[index]
+        )
         return share

@@ -52,23 +52,19 @@ class Sensor:
         """The largest level."""
         return int(2**self.bits - 1)
 
-    @property
-    def dtype(self) -> type[np.uint8] | type[np.uint16]:
-        """What a picture is stored in."""
-        return np.uint8 if self.bits == 8 else np.uint16
-
-    def mean_levels(self, electrons: F64) -> F64:
+    def mean_levels(self, electrons: F64 | float) -> F64:
         """Expected level before rounding, any shape."""
-        return self.black_levels + self.gain_levels_per_electron * electrons
+        return np.asarray(self.black_levels + self.gain_levels_per_electron * electrons)
 
-    def noise_var_levels2(self, electrons: F64) -> F64:
+    def noise_var_levels2(self, electrons: F64 | float) -> F64:
         """Variance of photon and read noise in levels^2, before rounding, any shape."""
-        return self.gain_levels_per_electron**2 * (electrons + self.read_noise_electrons**2)
+        dark_electrons2 = self.read_noise_electrons**2
+        return np.asarray(self.gain_levels_per_electron**2 * (electrons + dark_electrons2))
 
     def quantise(self, levels: NDArray[Any]) -> Pixels:
         """Round to whole levels (half to even) and clip to 0 … full scale, any shape."""
         whole = np.clip(np.rint(levels), 0, self.full_scale)
-        return whole.astype(self.dtype)
+        return whole.astype(np.uint8) if self.bits == 8 else whole.astype(np.uint16)
 
 
 def expose(electrons: F64, sensor: Sensor, rng: np.random.Generator) -> Pixels:
@@ -104,8 +100,8 @@ class NoiseBank:
 
     def digitised(self, electrons: float, sensor: Sensor) -> NoiseBank:
         """A bank of finished pictures of a uniform ground, for a bank of standard normal noise."""
-        level = float(sensor.mean_levels(np.float64(electrons)))
-        sd = math.sqrt(float(sensor.noise_var_levels2(np.float64(electrons))))
+        level = float(sensor.mean_levels(electrons))
+        sd = math.sqrt(float(sensor.noise_var_levels2(electrons)))
         return NoiseBank(sensor.quantise(level + sd * self.stack), self.shape)
 
     def take(self, rng: np.random.Generator) -> NDArray[Any]:
