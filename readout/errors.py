@@ -28,3 +28,7 @@ class SourceEnded(ReadoutError):
 
 class Busy(ReadoutError):
     """Something else holds what was asked for (a port, a camera): free it or choose another."""
+
+
+class NotNow(ReadoutError):
+    """What was asked for cannot be done at this moment: wait for what the message names."""

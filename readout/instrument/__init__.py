@@ -1,0 +1,8 @@
+"""The instrument without a network: a source, a sighting, a calibration, a zero, an average."""
+
+from readout.instrument.acquisition import State
+from readout.instrument.averaging import Average, Statistic
+from readout.instrument.instrument import Event, Instrument, Optics, Status
+from readout.instrument.zero import Zero
+
+__all__ = ["Average", "Event", "Instrument", "Optics", "State", "Statistic", "Status", "Zero"]

@@ -1,0 +1,188 @@
+"""The thread that keeps a source open and observations coming.
+
+States: *opening* (being opened, or no frame yet), *measuring*, *stalled* (open, but no frame for
+half a second or three frame times, whichever is longer), *lost* (gone; opened again after a
+pause), *ended* (a folder or video read to its end) and *failed* (cannot be opened: the user must
+do something). Every wait is bounded; clock and waiting are arguments, so that tests need neither.
+"""
+
+from __future__ import annotations
+
+import logging
+import threading
+import time
+from collections.abc import Callable
+from dataclasses import replace
+from enum import StrEnum
+
+from readout.errors import BadInput, ReadoutError, SourceEnded, SourceLost, SourceStalled
+from readout.instrument.observer import Observer, OpenObserver, Picture
+from readout.instrument.pace import Pace
+from readout.model import Observation
+
+log = logging.getLogger(__name__)
+
+BACK_OFF_S = (0.5, 1.0, 2.0, 5.0, 10.0)
+READ_TIMEOUT_S = 0.2
+STALLED_AFTER_S = 0.5
+LOST_AFTER_S = 5.0
+OPENED_WITHIN_S = 35.0
+
+
+class State(StrEnum):
+    """What the source is doing."""
+
+    OPENING = "opening"
+    MEASURING = "measuring"
+    STALLED = "stalled"
+    LOST = "lost"
+    ENDED = "ended"
+    FAILED = "failed"
+
+
+class Refused(ReadoutError):
+    """What came from the source cannot be used with these settings; trying again is no help."""
+
+
+class Acquisition:
+    """Opens, reads and re-opens one source until it ends, fails or is stopped.
+
+    ``on_observation`` gets each observation, its seq counted on from ``first_seq`` through all
+    re-openings (what the source itself counted as missing stays a gap). ``on_state`` gets each
+    change of state with one line for people. Both are called from the acquisition's own thread.
+    ``patient``: wait for a live source that is not there at first; otherwise the first opening
+    must succeed. ``wait(seconds)`` returns early, with True, when the acquisition is stopped.
+    """
+
+    def __init__(
+        self,
+        open_observer: OpenObserver,
+        *,
+        on_observation: Callable[[Observation, Observer], None],
+        on_state: Callable[[State, str], None],
+        first_seq: int = 0,
+        patient: bool = False,
+        clock_ns: Callable[[], int] = time.monotonic_ns,
+        wait: Callable[[float], bool] | None = None,
+    ) -> None:
+        self._open_observer = open_observer
+        self._on_observation = on_observation
+        self._on_state = on_state
+        self._patient = patient
+        self._clock_ns = clock_ns
+        self._stop = threading.Event()
+        self._wait = wait or self._stop.wait
+        self._thread: threading.Thread | None = None
+        self._observer: Observer | None = None
+        self._failures = 0
+        self._seq_offset = 0
+        self._state: State | None = None
+        self.next_seq = first_seq
+        self.missed = 0
+        self.pace = Pace()
+
+    def start(self) -> None:
+        """Run in a thread of its own."""
+        self._thread = threading.Thread(target=self.run, name="acquisition", daemon=True)
+        self._thread.start()
+
+    def stop(self, timeout_s: float = 1.0) -> None:
+        """Ask the loop to end and wait for it, ``timeout_s`` at most."""
+        self._stop.set()
+        if self._thread is not None:
+            self._thread.join(timeout_s)
+
+    @property
+    def stopped(self) -> bool:
+        return self._stop.is_set()
+
+    def picture(self, timeout_s: float) -> Picture | None:
+        """The newest picture with its seq as counted here; None while there is none."""
+        observer, offset = self._observer, self._seq_offset
+        picture = observer.picture(timeout_s) if observer is not None else None
+        if picture is None:
+            return None
+        return replace(picture, frame=replace(picture.frame, seq=picture.frame.seq + offset))
+
+    def run(self) -> None:
+        """The loop itself; returns when the source has ended or failed, or on ``stop``."""
+        while not self._stop.is_set():
+            self._enter(State.OPENING, "")
+            live = False
+            try:
+                observer = self._open_observer()
+                live = observer.live
+                with observer:
+                    self._follow(observer)
+                return
+            except SourceEnded as end:
+                self._enter(State.ENDED, str(end))
+                return
+            except Refused as refused:
+                self._enter(State.FAILED, str(refused))
+                return
+            except ReadoutError as error:
+                if not (live and self._patient):
+                    self._enter(State.FAILED, str(error))
+                    return
+                self._enter(State.LOST, str(error))
+            except Exception as error:  # noqa: BLE001 - a fault must be seen, not end in silence
+                log.debug("acquisition failed", exc_info=True)
+                kind = type(error).__name__
+                self._enter(State.FAILED, f"internal error, please report it: {kind}: {error}")
+                return
+            finally:
+                self._observer = None
+            pause_s = BACK_OFF_S[min(self._failures, len(BACK_OFF_S) - 1)]
+            self._failures += 1
+            self._wait(pause_s)
+
+    def _follow(self, observer: Observer) -> None:
+        last_ns = self._clock_ns()
+        nothing_yet = True
+        self.pace = Pace()
+        while not self._stop.is_set():
+            try:
+                observation = observer.observe(READ_TIMEOUT_S)
+            except SourceStalled:
+                self._judge_silence(observer, (self._clock_ns() - last_ns) * 1e-9, nothing_yet)
+                continue
+            if nothing_yet:
+                nothing_yet = False
+                self._seq_offset = self.next_seq - observation.seq
+                self._observer = observer
+            last_ns = self._clock_ns()
+            self.pace.add(last_ns)
+            self._deliver(observation, observer)
+
+    def _deliver(self, observation: Observation, observer: Observer) -> None:
+        seq = observation.seq + self._seq_offset
+        self.missed += seq - self.next_seq
+        self.next_seq = seq + 1
+        try:
+            self._on_observation(replace(observation, seq=seq), observer)
+        except BadInput as error:
+            raise Refused(str(error)) from error
+        self._failures = 0
+        self._patient = True
+        self._enter(State.MEASURING, "")
+
+    def _judge_silence(self, observer: Observer, silent_s: float, nothing_yet: bool) -> None:
+        if not observer.live:  # a folder on a slow disk, a replay before its next frame
+            return
+        if nothing_yet:
+            if silent_s > OPENED_WITHIN_S:
+                raise SourceLost(f"no frame within {OPENED_WITHIN_S:.0f} s of opening")
+            return
+        limit_s = max(STALLED_AFTER_S, 3 * (self.pace.interval_s or 0.0))
+        if silent_s > limit_s:
+            self._enter(State.STALLED, "no new frame from the source")
+        if silent_s > max(LOST_AFTER_S, 10 * limit_s):
+            raise SourceLost(f"no frame for {silent_s:.0f} s")
+
+    def _enter(self, state: State, detail: str) -> None:
+        if state is not self._state or detail:
+            changed = state is not self._state
+            self._state = state
+            if changed or state is not State.STALLED:
+                self._on_state(state, detail)

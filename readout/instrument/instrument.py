@@ -1,0 +1,349 @@
+"""The instrument: one source, measured, with its calibration, average and zero.
+
+It knows no network. Readings and events go to listeners, called from the acquisition's thread;
+everything else may be asked from any thread.
+"""
+
+from __future__ import annotations
+
+import threading
+import time
+from collections.abc import Callable
+from dataclasses import dataclass
+
+from readout.angle import Calibration, Mounting, nominal_calibration, reading_of
+from readout.capture.timebase import TimeBase
+from readout.errors import BadInput
+from readout.files.utc import utc_text
+from readout.instrument.acquisition import Acquisition, State
+from readout.instrument.averaging import Average, Statistic, TrailingWindow, average_of
+from readout.instrument.observer import Observer, Picture
+from readout.instrument.opening import open_observer
+from readout.instrument.zero import Zero, zero_from
+from readout.model import Observation, Reading, Target
+
+
+@dataclass(frozen=True, slots=True)
+class Optics:
+    """What a nominal calibration is made from."""
+
+    focal_length_mm: float
+    pitch_um: float
+    mounting: Mounting = Mounting.STRAIGHT
+
+
+@dataclass(frozen=True, slots=True)
+class Event:
+    """Something that happened beside the readings, with one line for people."""
+
+    t_s: float
+    t_utc_ns: int
+    event: str
+    text: str
+
+
+@dataclass(frozen=True, slots=True)
+class Status:
+    """The instrument at one instant. ``frames`` counts all measured, ``missed`` those a source
+    knows it did not deliver."""
+
+    source: str | None
+    state: State
+    state_detail: str
+    frames_per_s: float
+    frames: int
+    frames_unusable: int
+    missed: int
+    image_width_px: int | None
+    image_height_px: int | None
+    calibration: Calibration | None
+    zero: Zero | None
+
+
+_EVENT_OF_STATE = {
+    State.STALLED: "stalled",
+    State.LOST: "lost",
+    State.ENDED: "ended",
+    State.FAILED: "failed",
+}
+
+
+class Instrument:
+    """See the module. ``scale``: a calibration from a file, or the optics for a nominal one, or
+    None; without a file, a source's own calibration (the simulator's) is used. ``t_s`` counts from
+    ``start``, or, with ``from_first_frame``, from the first frame. ``observe`` opens the observer
+    for a source and a target.
+    """
+
+    def __init__(
+        self,
+        *,
+        scale: Calibration | Optics | None = None,
+        window_s: float = 1.0,
+        statistic: Statistic = Statistic.MEAN,
+        observe: Callable[[str, Target], Observer] = open_observer,
+        start: TimeBase | None = None,
+        from_first_frame: bool = False,
+        clock_ns: Callable[[], int] = time.monotonic_ns,
+    ) -> None:
+        self.start_time = start or TimeBase.now()
+        self.on_reading: list[Callable[[Reading], None]] = []
+        self.on_event: list[Callable[[Event], None]] = []
+        self.on_state: list[Callable[[State, str], None]] = []
+        self._observe = observe
+        self._clock_ns = clock_ns
+        self._lock = threading.RLock()
+        self._scale = scale
+        self._calibration: Calibration | None = None
+        self._statistic = statistic
+        self._window = TrailingWindow(window_s)
+        self._average: tuple[int, Average] | None = None
+        self._zero: Zero | None = None
+        self._newest: tuple[Observation, Reading] | None = None
+        self._acquisition: Acquisition | None = None
+        self._source: str | None = None
+        self._target = Target.CROSSHAIR
+        self._state = State.OPENING
+        self._detail = ""
+        self._size_px: tuple[int, int] | None = None
+        self._scale_chosen = False
+        self._t_zero_ns = None if from_first_frame else self.start_time.t_mono_ns
+        self._frames = self._unusable = self._missed = 0
+
+    # -- the source ---------------------------------------------------------------------------
+
+    def use(
+        self,
+        source: str,
+        *,
+        target: Target = Target.CROSSHAIR,
+        patient: bool = False,
+    ) -> Acquisition:
+        """Measure ``source`` instead of what was measured before.
+
+        ``patient``: wait for a live source that is not there yet. It begins with the ``start`` (a
+        thread of its own) or the ``run`` (this thread) of the acquisition returned.
+        """
+        before = self._acquisition
+        if before is not None:
+            before.stop()
+        with self._lock:
+            self._source, self._target = source, target
+            self._state, self._detail = State.OPENING, ""
+            self._missed += before.missed if before else 0
+            self._forget_source()
+            self._acquisition = Acquisition(
+                lambda: self._observe(source, target),
+                on_observation=self._take,
+                on_state=self._change_state,
+                first_seq=before.next_seq if before else 0,
+                patient=patient,
+                clock_ns=self._clock_ns,
+            )
+            return self._acquisition
+
+    def stop(self) -> None:
+        """End the acquisition; returns within a second."""
+        acquisition = self._acquisition
+        if acquisition is not None:
+            acquisition.stop()
+
+    def picture(self, timeout_s: float = 1.0) -> Picture | None:
+        """The newest picture and what was seen in it; None while there is none."""
+        acquisition = self._acquisition
+        return acquisition.picture(timeout_s) if acquisition is not None else None
+
+    # -- what it shows ------------------------------------------------------------------------
+
+    @property
+    def newest(self) -> tuple[Observation, Reading] | None:
+        with self._lock:
+            return self._newest
+
+    @property
+    def source(self) -> str | None:
+        return self._source
+
+    @property
+    def target(self) -> Target:
+        return self._target
+
+    @property
+    def zero(self) -> Zero | None:
+        with self._lock:
+            return self._zero
+
+    def status(self) -> Status:
+        acquisition = self._acquisition
+        now_ns = self._clock_ns()
+        with self._lock:
+            width_px, height_px = self._size_px or (None, None)
+            measuring = acquisition is not None and self._state in (State.MEASURING, State.STALLED)
+            return Status(
+                source=self._source,
+                state=self._state,
+                state_detail=self._detail,
+                frames_per_s=acquisition.pace.per_s(now_ns) if acquisition and measuring else 0.0,
+                frames=self._frames,
+                frames_unusable=self._unusable,
+                missed=self._missed + (acquisition.missed if acquisition else 0),
+                image_width_px=width_px,
+                image_height_px=height_px,
+                calibration=self._calibration,
+                zero=self._zero,
+            )
+
+    def average(self) -> Average | None:
+        """The average over the trailing window; None before the first reading."""
+        with self._lock:
+            if self._newest is None:
+                return None
+            seq = self._newest[1].seq
+            if self._average is None or self._average[0] != seq:
+                average = average_of(
+                    self._window.rows(), window_s=self._window.window_s, statistic=self._statistic
+                )
+                self._average = seq, average
+            return self._average[1]
+
+    # -- what can be set ----------------------------------------------------------------------
+
+    def set_averaging(self, window_s: float, statistic: Statistic) -> None:
+        """Another window or statistic; what the old window holds is kept where it still counts."""
+        with self._lock:
+            rows = self._window.rows()
+            self._window, self._statistic = TrailingWindow(window_s), statistic
+            for reading in rows:
+                self._window.add(reading)
+            self._average = None
+
+    def set_scale(self, scale: Calibration | Optics | None) -> None:
+        """Another scale, from the next reading on; the zero and the average start anew.
+
+        A calibration that does not fit the pictures makes the acquisition fail: see
+        ``refuse_unfit`` for asking first.
+        """
+        with self._lock:
+            if scale == self._scale:
+                return
+            self._scale = scale
+            self._scale_chosen = False
+            self._forget_readings()
+        self.tell("calibration", "the scale was changed")
+
+    def set_zero(self) -> Zero:
+        """Zero at the averaged value. Raises NotNow while flagged or moving."""
+        with self._lock:
+            zero = zero_from(
+                self._window.rows(),
+                window_s=self._window.window_s,
+                statistic=self._statistic,
+                now_utc_ns=self.start_time.utc_ns(self._clock_ns()),
+            )
+            self._zero = zero
+            return zero
+
+    def clear_zero(self) -> None:
+        with self._lock:
+            self._zero = None
+
+    # -- called by the acquisition ------------------------------------------------------------
+
+    def _take(self, observation: Observation, observer: Observer) -> None:
+        size_px = observation.width_px, observation.height_px
+        with self._lock:
+            if self._size_px != size_px:
+                self._see_size(size_px, observation.name)
+            if not self._scale_chosen:
+                self._calibration = self._calibration_for(size_px, observer.calibration)
+                self._scale_chosen = True
+            if self._t_zero_ns is None:
+                self._t_zero_ns = observation.t_mono_ns
+            t_s = (observation.t_mono_ns - self._t_zero_ns) * 1e-9
+            reading = reading_of(observation, self._calibration, t_s)
+            self._window.add(reading)
+            self._newest = observation, reading
+            self._frames += 1
+            self._unusable += not observation.sighting.found
+        for listener in self.on_reading:
+            listener(reading)
+
+    def _see_size(self, size_px: tuple[int, int], name: str | None) -> None:
+        if self._size_px is not None:
+            raise BadInput(
+                f"{name or 'the picture'} is {size_px[0]} × {size_px[1]} px, those before it were "
+                f"{self._size_px[0]} × {self._size_px[1]} px: give pictures of one size"
+            )
+        self._size_px = size_px
+
+    def _calibration_for(
+        self, size_px: tuple[int, int], own: Calibration | None
+    ) -> Calibration | None:
+        match self._scale:
+            case Calibration() as calibration:
+                refuse_unfit(calibration, *size_px, self._target)
+                return calibration
+            case _ if own is not None:
+                return own
+            case Optics() as optics:
+                return nominal_calibration(
+                    focal_length_mm=optics.focal_length_mm,
+                    pitch_um=optics.pitch_um,
+                    mounting=optics.mounting,
+                    image_width_px=size_px[0],
+                    image_height_px=size_px[1],
+                    target=self._target,
+                    created_utc=utc_text(self.start_time.utc_ns(self._clock_ns())),
+                )
+        return None
+
+    def _change_state(self, state: State, detail: str) -> None:
+        with self._lock:
+            before, self._state, self._detail = self._state, state, detail
+            if state is State.LOST:
+                self._forget_source()
+        if state is State.MEASURING:
+            happened = "recovered" if before is State.STALLED else "opened"
+            self.tell(happened, f"{self._source}: measuring")
+        elif state in _EVENT_OF_STATE:
+            self.tell(_EVENT_OF_STATE[state], detail or f"{self._source}: {state.value}")
+        for listener in self.on_state:
+            listener(state, detail)
+
+    def tell(self, event: str, text: str) -> None:
+        """Tell the listeners of something that happens now."""
+        t_ns = self._clock_ns()
+        happened = Event(
+            t_s=(t_ns - self.start_time.t_mono_ns) * 1e-9,
+            t_utc_ns=self.start_time.utc_ns(t_ns),
+            event=event,
+            text=text,
+        )
+        for listener in self.on_event:
+            listener(happened)
+
+    def _forget_source(self) -> None:
+        self._size_px = self._calibration = None
+        self._scale_chosen = False
+        self._forget_readings()
+
+    def _forget_readings(self) -> None:
+        """A zero or an average never reaches across a gap in which anything may have moved."""
+        self._window.clear()
+        self._average = None
+        self._zero = None
+
+
+def refuse_unfit(calibration: Calibration, width_px: int, height_px: int, target: Target) -> None:
+    """Raise BadInput if ``calibration`` was made for another picture size or target."""
+    made_for = calibration.image_width_px, calibration.image_height_px
+    if made_for != (width_px, height_px):
+        raise BadInput(
+            f"calibration {calibration.id} is for pictures of {made_for[0]} × {made_for[1]} px, "
+            f"these are {width_px} × {height_px} px: calibrate this size or choose the other file"
+        )
+    if calibration.target is not target:
+        raise BadInput(
+            f"calibration {calibration.id} is for the target {calibration.target.value}, "
+            f"not {target.value}: choose the target or the calibration that fits"
+        )

@@ -1,0 +1,1 @@
+"""The instrument on the network: settings, feed to viewers, HTTP and WebSocket."""

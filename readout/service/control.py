@@ -1,0 +1,97 @@
+"""What settings and options mean for the instrument. Options of the command win."""
+
+from __future__ import annotations
+
+import threading
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+from readout.angle import Calibration
+from readout.capture.open import describe_source
+from readout.files.calibration_file import load_calibration
+from readout.instrument import Instrument, Optics
+from readout.instrument.instrument import refuse_unfit
+from readout.model import Target
+from readout.service.settings import Settings, SettingsStore
+
+SIMULATED = "simulated"
+
+
+@dataclass(frozen=True, slots=True)
+class Options:
+    """What the command line fixes for this session; None leaves it to the settings."""
+
+    source: str | None = None
+    target: Target | None = None
+    calibration: Path | None = None
+
+
+class Control:
+    """Starts the instrument as options and settings say, and lets settings change it."""
+
+    def __init__(self, instrument: Instrument, store: SettingsStore, options: Options) -> None:
+        self._instrument = instrument
+        self._store = store
+        self._options = options
+        self._lock = threading.Lock()
+
+    @property
+    def settings(self) -> Settings:
+        return self._store.current
+
+    def start(self) -> None:
+        """Begin to measure, in the acquisition's thread. Raises BadInput as `readout live` says."""
+        settings = self._store.current
+        self._instrument.set_averaging(settings.average_s, settings.statistic)
+        self._instrument.set_scale(self._scale(settings))
+        self._use(settings, patient=self._options.source is None)
+
+    def change(self, changes: dict[str, Any]) -> Settings:
+        """Merge ``changes`` into the settings, keep them, and act on them.
+
+        Raises BadInput, and changes nothing, for a value that cannot be used.
+        """
+        with self._lock:
+            before = self._store.current
+            after = self._store.merged(changes)
+            scale = self._scale(after)
+            describe_source(self._source(after))
+            same_source = self._source(after) == self._source(before)
+            same_target = self._target(after) is self._target(before)
+            status = self._instrument.status()
+            if same_source and isinstance(scale, Calibration) and status.image_width_px:
+                refuse_unfit(
+                    scale,
+                    status.image_width_px,
+                    status.image_height_px or 0,
+                    self._target(after),
+                )
+            self._store.keep(after)
+            self._instrument.set_averaging(after.average_s, after.statistic)
+            if same_source and same_target:
+                self._instrument.set_scale(scale)
+            else:
+                self._instrument.stop()
+                self._instrument.set_scale(scale)
+                self._use(after, patient=True)
+        self._instrument.tell("settings", "the settings were changed")
+        return after
+
+    def _use(self, settings: Settings, *, patient: bool) -> None:
+        self._instrument.use(
+            self._source(settings), target=self._target(settings), patient=patient
+        ).start()
+
+    def _source(self, settings: Settings) -> str:
+        return self._options.source or settings.source or SIMULATED
+
+    def _target(self, settings: Settings) -> Target:
+        return self._options.target or settings.target
+
+    def _scale(self, settings: Settings) -> Calibration | Optics | None:
+        if self._options.calibration is not None:
+            return load_calibration(self._options.calibration)
+        if settings.calibration is not None:
+            return load_calibration(Path(settings.calibration))
+        return settings.optics.optics

@@ -1,0 +1,130 @@
+"""``GET /api/log``, the logging endpoint: readings as they come, until the client leaves.
+
+For anything that can read lines: ``curl``, a script, a spreadsheet. A client that lags gets a row
+that says how many readings it lost.
+"""
+
+from __future__ import annotations
+
+import csv
+import io
+import math
+from collections.abc import AsyncIterator
+from typing import Annotated, Literal
+
+from fastapi import APIRouter, Query
+from fastapi.responses import StreamingResponse
+
+from readout.files.readings_file import VALUE_COLUMNS, Cell, csv_cell, reading_row, rounded
+from readout.files.utc import utc_text
+from readout.instrument.joining import Joined, join
+from readout.model import Reading
+from readout.service.feed import Feed, Subscription
+from readout.service.messages import encode
+
+QUEUE = 20_000
+AVERAGED = ("n", "x_scatter_arcsec", "y_scatter_arcsec")
+Row = dict[str, Cell]
+
+
+def log_routes(feed: Feed) -> APIRouter:
+    """The logging endpoint."""
+    routes = APIRouter(prefix="/api", tags=["readings"])
+
+    @routes.get("/log")
+    async def get_log(
+        every_s: Annotated[float, Query(ge=0, le=86_400)] = 1.0,
+        format: Literal["ndjson", "csv"] = "ndjson",  # noqa: A002 - the name in the address
+    ) -> StreamingResponse:
+        """Means over ``every_s`` seconds with count and scatter; 0: every reading."""
+        lines = _csv_lines if format == "csv" else _json_lines
+        media_type = "text/csv" if format == "csv" else "application/x-ndjson"
+        return StreamingResponse(lines(feed, every_s), media_type=media_type)
+
+    return routes
+
+
+async def _json_lines(feed: Feed, every_s: float) -> AsyncIterator[str]:
+    async for rows in _rows(feed, every_s):
+        yield "".join(encode(row) + "\n" for row in rows)
+
+
+async def _csv_lines(feed: Feed, every_s: float) -> AsyncIterator[str]:
+    averaged = AVERAGED if every_s > 0 else ()
+    columns = ["t_utc", *VALUE_COLUMNS, "quality", *averaged, "dropped"]
+    yield ",".join(columns) + "\n"
+    async for rows in _rows(feed, every_s):
+        text = io.StringIO()
+        writer = csv.writer(text, lineterminator="\n")
+        writer.writerows([csv_cell(row.get(column)) for column in columns] for row in rows)
+        yield text.getvalue()
+
+
+async def _rows(feed: Feed, every_s: float) -> AsyncIterator[list[Row]]:
+    subscription = feed.subscribe(QUEUE)
+    interval = Interval(every_s)
+    told_dropped = 0
+    try:
+        while not subscription.closed:
+            readings = await _next(subscription, every_s)
+            rows = list(interval.rows(readings))
+            if subscription.dropped > told_dropped:
+                rows.append({"dropped": subscription.dropped - told_dropped})
+                told_dropped = subscription.dropped
+            if rows:
+                yield rows
+    finally:
+        feed.unsubscribe(subscription)
+
+
+async def _next(subscription: Subscription, every_s: float) -> list[Reading]:
+    batch = await subscription.next(max(1.0, 2 * every_s))
+    return batch.readings
+
+
+class Interval:
+    """Collects readings and gives a row for each interval that is over (``every_s`` 0: each)."""
+
+    def __init__(self, every_s: float) -> None:
+        self._every_s = every_s
+        self._held: list[Reading] = []
+        self._number = -1
+
+    def rows(self, readings: list[Reading]) -> list[Row]:
+        """Rows that are complete with ``readings``; none for ever so long means the held ones."""
+        if self._every_s == 0:
+            return [_unnamed(r) for r in readings]
+        complete: list[Row] = []
+        for reading in readings:
+            number = math.floor(reading.t_s / self._every_s)
+            if number != self._number:
+                complete.extend(self._close())
+                self._number = number
+            self._held.append(reading)
+        if not readings:
+            complete.extend(self._close())
+        return complete
+
+    def _close(self) -> list[Row]:
+        if not self._held:
+            return []
+        joined = join(self._held)
+        self._held = []
+        return [_joined_row(joined)]
+
+
+def _joined_row(joined: Joined) -> Row:
+    return {
+        **_unnamed(joined.reading),
+        "n": joined.n,
+        "x_scatter_arcsec": rounded(joined.x_scatter_arcsec),
+        "y_scatter_arcsec": rounded(joined.y_scatter_arcsec),
+    }
+
+
+def _unnamed(reading: Reading) -> Row:
+    row = reading_row(reading)
+    if "file" in row:  # a folder replayed: the stream's rows have times
+        row = {"t_utc": utc_text(reading.t_utc_ns), **row}
+        del row["file"]
+    return row

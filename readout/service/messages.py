@@ -1,0 +1,349 @@
+"""What goes over the wire, as JSON: every missing number null, every time UTC with Z."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Sequence
+from typing import Any, Literal
+
+import numpy as np
+from numpy.typing import NDArray
+from typing_extensions import TypedDict
+
+from readout import __version__
+from readout.angle import Calibration
+from readout.capture.mjpeg import without_password
+from readout.capture.open import SourceDescription
+from readout.files.readings_file import rounded
+from readout.files.utc import utc_text
+from readout.instrument import Average, Event, Status, Zero
+from readout.model import Arm, Observation, Quality, Reading
+from readout.service.feed import FLOATS, Columns
+
+Number = float | None
+
+
+class AverageMessage(TypedDict):
+    x_arcsec: Number
+    y_arcsec: Number
+    x_se_arcsec: Number
+    y_se_arcsec: Number
+    n: int
+    window_s: float
+    statistic: str
+
+
+class ReadingMessage(TypedDict):
+    seq: int
+    t_utc: str
+    t_s: Number
+    x_arcsec: Number
+    y_arcsec: Number
+    x_rel_arcsec: Number
+    y_rel_arcsec: Number
+    x_sd_arcsec: Number
+    y_sd_arcsec: Number
+    x_u_arcsec: Number
+    y_u_arcsec: Number
+    x_px: Number
+    y_px: Number
+    x_sd_px: Number
+    y_sd_px: Number
+    quality: list[str]
+    calibration_id: str | None
+    average: AverageMessage | None
+
+
+class ReadingsMessage(TypedDict):
+    """Columns of equal length; ``dropped``: what this viewer lost so far."""
+
+    kind: Literal["readings"]
+    seq: list[int]
+    t_s: list[Number]
+    x_arcsec: list[Number]
+    y_arcsec: list[Number]
+    x_sd_arcsec: list[Number]
+    y_sd_arcsec: list[Number]
+    x_u_arcsec: list[Number]
+    y_u_arcsec: list[Number]
+    x_px: list[Number]
+    y_px: list[Number]
+    quality: list[list[str]]
+    dropped: int
+    average: AverageMessage | None
+
+
+class ArmMessage(TypedDict):
+    angle_deg: Number
+    width_px: Number
+    contrast: Number
+    background: Number
+
+
+class SightingMessage(TypedDict):
+    seq: int
+    x_px: Number
+    y_px: Number
+    upright: ArmMessage | None
+    level: ArmMessage | None
+    image_width_px: int
+    image_height_px: int
+    peak: Number
+    quality: list[str]
+
+
+class CalibrationMessage(TypedDict):
+    """``field_arcsec``: tilts at the picture's corners, from the top left clockwise."""
+
+    id: str
+    method: str
+    signs: str
+    focal_length_mm: Number
+    focal_length_px: Number
+    scale_x_arcsec_per_px: Number
+    scale_y_arcsec_per_px: Number
+    rotation_deg: Number
+    mirrored: bool
+    created_utc: str
+    warnings: list[str]
+    field_arcsec: list[tuple[Number, Number]]
+
+
+class ZeroMessage(TypedDict):
+    x_arcsec: Number
+    y_arcsec: Number
+    x_sd_arcsec: Number
+    y_sd_arcsec: Number
+    n: int
+    window_s: float
+    statistic: str
+    set_utc: str
+
+
+class StatusMessage(TypedDict):
+    source: str | None
+    source_name: str
+    simulated: bool
+    state: str
+    state_detail: str
+    frames_per_s: float
+    dropped: int
+    frames: int
+    frames_unusable: int
+    missed: int
+    image_width_px: int | None
+    image_height_px: int | None
+    calibration: CalibrationMessage | None
+    zero: ZeroMessage | None
+    run: None
+    session_start_utc: str
+    version: str
+
+
+class EventMessage(TypedDict):
+    kind: Literal["event"]
+    t_s: Number
+    t_utc: str
+    event: str
+    text: str
+
+
+class HealthMessage(TypedDict):
+    state: str
+
+
+def encode(message: Any) -> str:
+    """One line of JSON; raises ValueError rather than write NaN."""
+    return json.dumps(message, allow_nan=False, separators=(",", ":"), ensure_ascii=False)
+
+
+def average_message(average: Average | None) -> AverageMessage | None:
+    if average is None:
+        return None
+    return {
+        "x_arcsec": rounded(average.x_arcsec),
+        "y_arcsec": rounded(average.y_arcsec),
+        "x_se_arcsec": rounded(average.x_se_arcsec),
+        "y_se_arcsec": rounded(average.y_se_arcsec),
+        "n": average.n,
+        "window_s": average.window_s,
+        "statistic": average.statistic.value,
+    }
+
+
+def reading_message(reading: Reading, zero: Zero | None, average: Average | None) -> ReadingMessage:
+    return {
+        "seq": reading.seq,
+        "t_utc": utc_text(reading.t_utc_ns),
+        "t_s": rounded(reading.t_s),
+        "x_arcsec": rounded(reading.x_arcsec),
+        "y_arcsec": rounded(reading.y_arcsec),
+        "x_rel_arcsec": rounded(reading.x_arcsec - zero.x_arcsec) if zero else None,
+        "y_rel_arcsec": rounded(reading.y_arcsec - zero.y_arcsec) if zero else None,
+        "x_sd_arcsec": rounded(reading.x_sd_arcsec),
+        "y_sd_arcsec": rounded(reading.y_sd_arcsec),
+        "x_u_arcsec": rounded(reading.x_u_arcsec),
+        "y_u_arcsec": rounded(reading.y_u_arcsec),
+        "x_px": rounded(reading.x_px),
+        "y_px": rounded(reading.y_px),
+        "x_sd_px": rounded(reading.x_sd_px),
+        "y_sd_px": rounded(reading.y_sd_px),
+        "quality": reading.quality.words(),
+        "calibration_id": reading.calibration_id,
+        "average": average_message(average),
+    }
+
+
+def readings_message(
+    readings: Sequence[Reading], *, dropped: int, average: Average | None
+) -> ReadingsMessage:
+    """The message for readings as they come."""
+    floats = {name: [rounded(getattr(r, name)) for r in readings] for name in FLOATS}
+    return _columns_message(
+        [r.seq for r in readings],
+        floats,
+        [r.quality.words() for r in readings],
+        dropped,
+        average,
+    )
+
+
+def recent_message(columns: Columns, average: Average | None) -> ReadingsMessage:
+    """The message for rows out of the feed's memory."""
+    floats = {name: _numbers(columns[name]) for name in FLOATS}
+    words = [Quality(int(value)).words() for value in columns["quality"]]
+    return _columns_message(columns["seq"].tolist(), floats, words, 0, average)
+
+
+def _columns_message(
+    seq: list[int],
+    floats: dict[str, list[Number]],
+    quality: list[list[str]],
+    dropped: int,
+    average: Average | None,
+) -> ReadingsMessage:
+    return {
+        "kind": "readings",
+        "seq": seq,
+        "t_s": floats["t_s"],
+        "x_arcsec": floats["x_arcsec"],
+        "y_arcsec": floats["y_arcsec"],
+        "x_sd_arcsec": floats["x_sd_arcsec"],
+        "y_sd_arcsec": floats["y_sd_arcsec"],
+        "x_u_arcsec": floats["x_u_arcsec"],
+        "y_u_arcsec": floats["y_u_arcsec"],
+        "x_px": floats["x_px"],
+        "y_px": floats["y_px"],
+        "quality": quality,
+        "dropped": dropped,
+        "average": average_message(average),
+    }
+
+
+def _numbers(column: NDArray[Any]) -> list[Number]:
+    finite = np.isfinite(column)
+    values = np.where(finite, column, 0.0).round(6).tolist()
+    return [v if ok else None for v, ok in zip(values, finite.tolist(), strict=True)]
+
+
+def _arm_message(arm: Arm | None) -> ArmMessage | None:
+    if arm is None:
+        return None
+    return {
+        "angle_deg": rounded(arm.angle_deg),
+        "width_px": rounded(arm.width_px),
+        "contrast": rounded(arm.contrast),
+        "background": rounded(arm.background),
+    }
+
+
+def sighting_message(observation: Observation) -> SightingMessage:
+    sighting = observation.sighting
+    return {
+        "seq": observation.seq,
+        "x_px": rounded(sighting.x_px),
+        "y_px": rounded(sighting.y_px),
+        "upright": _arm_message(sighting.upright),
+        "level": _arm_message(sighting.level),
+        "image_width_px": observation.width_px,
+        "image_height_px": observation.height_px,
+        "peak": rounded(sighting.peak),
+        "quality": sighting.quality.words(),
+    }
+
+
+def calibration_message(calibration: Calibration | None) -> CalibrationMessage | None:
+    if calibration is None:
+        return None
+    scale_x, scale_y = calibration.scale_arcsec_per_px
+    right, bottom = calibration.image_width_px - 0.5, calibration.image_height_px - 0.5
+    corners = np.array([(-0.5, -0.5), (right, -0.5), (right, bottom), (-0.5, bottom)])
+    x_arcsec, y_arcsec = calibration.tilt(corners[:, 0], corners[:, 1])
+    focal_mm = calibration.focal_length_mm
+    return {
+        "id": calibration.id,
+        "method": calibration.method,
+        "signs": calibration.signs,
+        "focal_length_mm": None if focal_mm is None else rounded(focal_mm),
+        "focal_length_px": rounded(calibration.focal_length_px),
+        "scale_x_arcsec_per_px": rounded(scale_x),
+        "scale_y_arcsec_per_px": rounded(scale_y),
+        "rotation_deg": rounded(calibration.rotation_deg),
+        "mirrored": calibration.mirrored,
+        "created_utc": calibration.created_utc,
+        "warnings": list(calibration.warnings),
+        "field_arcsec": list(zip(_numbers(x_arcsec), _numbers(y_arcsec), strict=True)),
+    }
+
+
+def zero_message(zero: Zero | None) -> ZeroMessage | None:
+    if zero is None:
+        return None
+    return {
+        "x_arcsec": rounded(zero.x_arcsec),
+        "y_arcsec": rounded(zero.y_arcsec),
+        "x_sd_arcsec": rounded(zero.x_sd_arcsec),
+        "y_sd_arcsec": rounded(zero.y_sd_arcsec),
+        "n": zero.n,
+        "window_s": zero.window_s,
+        "statistic": zero.statistic.value,
+        "set_utc": utc_text(zero.set_utc_ns),
+    }
+
+
+def status_message(
+    status: Status,
+    *,
+    described: SourceDescription | None,
+    dropped: int,
+    session_start_utc_ns: int,
+) -> StatusMessage:
+    return {
+        "source": without_password(status.source) if status.source else None,
+        "source_name": described.title if described else "",
+        "simulated": described.simulated if described else False,
+        "state": status.state.value,
+        "state_detail": status.state_detail,
+        "frames_per_s": round(status.frames_per_s, 2),
+        "dropped": dropped,
+        "frames": status.frames,
+        "frames_unusable": status.frames_unusable,
+        "missed": status.missed,
+        "image_width_px": status.image_width_px,
+        "image_height_px": status.image_height_px,
+        "calibration": calibration_message(status.calibration),
+        "zero": zero_message(status.zero),
+        "run": None,
+        "session_start_utc": utc_text(session_start_utc_ns),
+        "version": __version__,
+    }
+
+
+def event_message(event: Event) -> EventMessage:
+    return {
+        "kind": "event",
+        "t_s": rounded(event.t_s),
+        "t_utc": utc_text(event.t_utc_ns),
+        "event": event.event,
+        "text": event.text,
+    }
