@@ -106,7 +106,7 @@ def solve_fold(fold: Fold, cosine: float, shape: Shape) -> Solution | None:
         inverse = _inverse(normal, DAMPING)
         if inverse is None:
             return None
-        change = inverse @ right
+        change, cov = inverse @ right, inverse[5:, 5:]
         size = max(shape.half_width, shape.blur)
         shape = replace(
             shape,
@@ -122,7 +122,7 @@ def solve_fold(fold: Fold, cosine: float, shape: Shape) -> Solution | None:
         shape,
         shift,
         turn,
-        inverse[5:, 5:],
+        cov,
         1 - left / max(float((fold.n * around**2).sum()), 1e-300),
         math.sqrt(float(np.median(1 / weight))),
     )

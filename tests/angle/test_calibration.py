@@ -1,0 +1,152 @@
+"""Pixels to arc-seconds: signs, scale, uncertainty, against geometry and against Monte Carlo."""
+
+import math
+from dataclasses import replace
+
+import numpy as np
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+
+from readout.angle import Calibration, Mounting, nominal_calibration, reading_of
+from readout.errors import BadInput
+from readout.model import Observation, Quality, Sighting, no_sighting
+
+NOMINAL = {
+    "focal_length_mm": 300.0,
+    "pitch_um": 3.45,
+    "image_width_px": 1280,
+    "image_height_px": 960,
+}
+
+
+def calibration(**changes) -> Calibration:
+    return nominal_calibration(**(NOMINAL | changes))
+
+
+class TestSigns:
+    """design: a bare upright sensor shows the return moving right for X > 0, up for Y > 0."""
+
+    @pytest.mark.parametrize(
+        ("mounting", "right", "down"),
+        [
+            (Mounting.STRAIGHT, 1, -1),
+            (Mounting.SWAPPED_SIDES, -1, -1),
+            (Mounting.UPSIDE_DOWN, 1, 1),
+            (Mounting.HALF_TURN, -1, 1),
+        ],
+    )
+    def test_where_the_return_goes(self, mounting, right, down):
+        at = calibration(mounting=mounting)
+        x0, y0 = at.p0_px
+        x, y = at.position(100.0, 0.0)
+        assert np.sign(x - x0) == right
+        assert y == pytest.approx(y0, abs=1e-9)
+        x, y = at.position(0.0, 100.0)
+        assert np.sign(y - y0) == down
+        assert x == pytest.approx(x0, abs=1e-9)
+        assert at.mirrored == (right == down)
+
+    @pytest.mark.parametrize("rotation_deg", [0.0, 1.7, -30.0, 120.0])
+    def test_rotation_is_from_picture_right_clockwise_to_growing_x(self, rotation_deg):
+        at = calibration(rotation_deg=rotation_deg)
+        x, y = np.subtract(at.position(1.0, 0.0), at.p0_px)
+        assert math.degrees(math.atan2(y, x)) == pytest.approx(rotation_deg)
+        assert at.rotation_deg == pytest.approx(rotation_deg)
+        assert not at.mirrored
+
+
+def test_scale_near_the_axis():
+    """theta = d / (2 f): 3.45 um and 300 mm are 1.186" a pixel (NPL and text-book formula)."""
+    at = calibration()
+    assert at.scale_arcsec_per_px == pytest.approx((1.18602, 1.18602), abs=1e-5)
+    assert at.focal_length_mm == pytest.approx(300.0)
+    x, _ = at.tilt(at.p0_px[0] + 1, at.p0_px[1])
+    assert x == pytest.approx(1.18602, abs=1e-5)
+
+
+def test_a_foil_under_one_foot_proves_sign_factor_and_scale():
+    """0.05 mm under the far foot of a carriage 100 mm long: arctan(0.0005) = 103.1" (geometry).
+
+    The mirror's top edge comes nearer: Y > 0, and the return rises in the picture.
+    """
+    at = calibration()
+    shift_px = 300.0 * math.tan(2 * math.atan(0.05 / 100)) / 3.45e-3
+    x, y = at.tilt(at.p0_px[0], at.p0_px[1] - shift_px)
+    assert y == pytest.approx(math.degrees(math.atan(0.05 / 100)) * 3600, abs=1e-6)
+    assert y == pytest.approx(103.1, abs=0.05)
+    assert x == pytest.approx(0.0, abs=1e-9)
+
+
+@given(st.floats(-3600, 3600), st.floats(-3600, 3600), st.floats(-0.5, 0.5))
+def test_position_and_tilt_are_inverse(x, y, k1):
+    at = replace(calibration(rotation_deg=1.7, mounting=Mounting.UPSIDE_DOWN), k1=k1)
+    assert np.array(at.tilt(*at.position(x, y))) == pytest.approx((x, y), abs=1e-7)
+
+
+def test_derivative_is_that_of_the_tilt():
+    at = replace(calibration(rotation_deg=20.0), k1=0.8)
+    place, step = np.array([900.0, 200.0]), 1e-3
+    columns = [
+        np.subtract(at.tilt(*(place + d)), at.tilt(*(place - d))) / (2 * step)
+        for d in np.eye(2) * step
+    ]
+    assert at.tilt_per_px(*place) == pytest.approx(np.stack(columns, axis=1), rel=1e-6, abs=1e-8)
+
+
+def test_both_shares_of_the_uncertainty_agree_with_monte_carlo():
+    """Propagation of distributions (JCGM 101); n trials know a covariance to about 4/sqrt(n)."""
+    at = replace(calibration(rotation_deg=20.0, focal_length_rel_sd=0.01), k1=0.3)
+    place, noise = np.array([1000.0, 150.0]), np.array([[0.04, 0.01], [0.01, 0.02]])
+    rng = np.random.default_rng(4)
+    tried = rng.multivariate_normal(place, noise, 20000)
+    spread = np.cov(at.tilt(tried[:, 0], tried[:, 1]))
+    claimed = at.noise_cov(*place, (0.04, 0.01, 0.02))
+    assert claimed == pytest.approx(spread, abs=4 / np.sqrt(20000) * spread.max())
+    parameters = np.array([*np.ravel(at.matrix), *at.p0_px, at.k1])
+    results = []
+    for trial in rng.multivariate_normal(parameters, at.param_cov, 4000):
+        matrix = ((trial[0], trial[1]), (trial[2], trial[3]))
+        other = replace(at, matrix=matrix, p0_px=(trial[4], trial[5]), k1=trial[6])
+        results.append(other.tilt(*place))
+    spread = np.cov(np.array(results).T)
+    claimed = at.calibration_cov(*place)
+    assert claimed == pytest.approx(spread, abs=6 / np.sqrt(4000) * spread.max())
+
+
+def test_claimed_focal_length_sd_is_the_one_put_in():
+    at = calibration(focal_length_rel_sd=0.013)
+    assert at.focal_length_px_sd / at.focal_length_px == pytest.approx(0.013)
+
+
+@pytest.mark.parametrize("bad", [{"focal_length_mm": 0}, {"pitch_um": -1}, {"pitch_um": math.nan}])
+def test_impossible_parts_are_refused_in_words(bad):
+    with pytest.raises(BadInput, match="positive"):
+        calibration(**bad)
+
+
+class TestReading:
+    def observation(self, sighting):
+        return Observation(7, 1_000, 2_000, 1280, 960, sighting, "a.png")
+
+    def test_joins_noise_and_calibration(self):
+        at = calibration(focal_length_rel_sd=0.01, rotation_sd_deg=0.0)
+        x_px, y_px = at.position(300.0, -200.0)
+        sighting = Sighting(float(x_px), float(y_px), (1e-4, 0.0, 1e-4), Quality.OK)
+        reading = reading_of(self.observation(sighting), at, 1.5)
+        assert (reading.x_arcsec, reading.y_arcsec) == pytest.approx((300.0, -200.0))
+        assert reading.x_sd_arcsec == pytest.approx(0.01 * 1.186, rel=1e-3)
+        assert reading.x_u_arcsec == pytest.approx(math.hypot(3.0, 0.01186), rel=1e-3)
+        assert reading.y_u_arcsec == pytest.approx(math.hypot(2.0, 0.01186), rel=1e-3)
+        assert (reading.seq, reading.t_s, reading.name) == (7, 1.5, "a.png")
+        assert reading.good
+
+    def test_without_position_or_calibration_there_is_no_angle(self):
+        empty = reading_of(self.observation(no_sighting(Quality.NO_IMAGE)), calibration(), 0.0)
+        assert math.isnan(empty.x_arcsec)
+        assert empty.quality is Quality.NO_IMAGE
+        found = Sighting(10.0, 20.0, (1e-4, 0.0, 1e-4), Quality.OK)
+        bare = reading_of(self.observation(found), None, 0.0)
+        assert math.isnan(bare.y_arcsec)
+        assert bare.x_px == 10.0
+        assert not bare.good
