@@ -1,0 +1,64 @@
+import type { Columns, Series } from './columns';
+import type { Zero } from './protocol';
+import { fromArcsec, type Unit } from './units';
+
+/** How a row becomes a place in the field: in the unit shown, from the zero in use. */
+export interface Place {
+  xSeries: Series;
+  ySeries: Series;
+  x(value: number): number;
+  y(value: number): number;
+  /** Pixel rows grow downwards, tilts upwards. */
+  yDown: boolean;
+  signed: boolean;
+  /** The smallest window worth drawing. */
+  least: number;
+}
+
+export function fieldPlace(unit: Unit, zero: Zero | null): Place {
+  if (unit === 'px') {
+    const same = (v: number): number => v;
+    return { xSeries: 'x_px', ySeries: 'y_px', x: same, y: same, yDown: true, signed: false, least: 0.01 };
+  }
+  return {
+    xSeries: 'x_arcsec',
+    ySeries: 'y_arcsec',
+    x: (v) => fromArcsec(v - (zero?.x_arcsec ?? 0), unit),
+    y: (v) => fromArcsec(v - (zero?.y_arcsec ?? 0), unit),
+    yDown: false,
+    signed: true,
+    least: fromArcsec(0.01, unit),
+  };
+}
+
+export interface Ink {
+  t_s: number[];
+  x: (number | null)[];
+  y: (number | null)[];
+}
+
+const MOST_POINTS = 600;
+
+/** The way between two times, thinned to what a small drawing can show; the newest row always. */
+export function inkOf(columns: Columns, place: Place, from_s: number, to_s: number): Ink {
+  const first = columns.indexAt(from_s);
+  const last = Math.min(columns.length, columns.indexAt(to_s + 1e-6));
+  const stride = Math.max(1, Math.ceil((last - first) / MOST_POINTS));
+  const xs = columns.of(place.xSeries);
+  const ys = columns.of(place.ySeries);
+  const ink: Ink = { t_s: [], x: [], y: [] };
+  const add = (i: number): void => {
+    const x = xs[i] ?? null;
+    const y = ys[i] ?? null;
+    ink.t_s.push(columns.t_s[i] ?? 0);
+    ink.x.push(x === null ? null : place.x(x));
+    ink.y.push(y === null ? null : place.y(y));
+  };
+  // Counted from whole strides of the newest row's number, so that the same rows are taken again
+  // from frame to frame and the trail does not shimmer.
+  for (let i = first; i < last; i++) {
+    const row = xs[i] ?? null;
+    if (row === null || Math.round((columns.t_s[i] ?? 0) * 1e3) % stride === 0 || i === last - 1) add(i);
+  }
+  return ink;
+}

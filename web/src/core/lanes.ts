@@ -1,0 +1,116 @@
+import type { Columns } from './columns';
+import type { Place } from './field';
+import { decimalsOfStep, graduation, ticks } from './scale';
+import { signed } from './numbers';
+import { extentOf, Windows } from './windows';
+
+/** Two lanes, X above Y, at one scale: a lane is 1 high, with a strip of ground between them. */
+const BETWEEN = 0.12;
+export const LANES_TOP = 2 + BETWEEN;
+
+export interface Lanes {
+  /** Columns for the plot: time, X and Y in lane heights; null where a gap is to be left. */
+  data: [number[], (number | null)[], (number | null)[]];
+  marks: { at: number; label: string; zero: boolean }[];
+  span: number;
+  low: [x: number, y: number];
+  /** Stretches without a reading, as times of their two ends. */
+  gaps: [from_s: number, to_s: number][];
+}
+
+export class LaneMaker {
+  private readonly windows = new Windows([1, 1]);
+
+  make(columns: Columns, place: Place, from_s: number, to_s: number, noise: number, now_s: number): Lanes {
+    const first = Math.max(0, columns.indexAt(from_s) - 1);
+    const last = Math.min(columns.length, columns.indexAt(to_s) + 1);
+    const t_s = columns.t_s.slice(first, last);
+    const xs = valuesOf(columns.of(place.xSeries), first, last, place.x);
+    const ys = valuesOf(columns.of(place.ySeries), first, last, place.y);
+    const frame = this.windows.next(
+      [extentOf(xs), extentOf(ys)],
+      Math.max(10 * noise, place.least),
+      now_s,
+    );
+    const [x_low = 0, y_low = 0] = frame.low;
+    const upper = 1 + BETWEEN;
+    return {
+      data: [
+        t_s,
+        xs.map((v) => (v === null ? null : upper + (v - x_low) / frame.span)),
+        ys.map((v) => (v === null ? null : (v - y_low) / frame.span)),
+      ],
+      marks: [...marksOf(x_low, frame.span, upper, place), ...marksOf(y_low, frame.span, 0, place)],
+      span: frame.span,
+      low: [x_low, y_low],
+      gaps: gapsOf(t_s, xs),
+    };
+  }
+}
+
+function valuesOf(
+  column: readonly (number | null)[],
+  first: number,
+  last: number,
+  convert: (value: number) => number,
+): (number | null)[] {
+  return column.slice(first, last).map((value) => (value === null ? null : convert(value)));
+}
+
+function marksOf(low: number, span: number, base: number, place: Place): Lanes['marks'] {
+  const step = graduation(span, 4).numbered;
+  const decimals = decimalsOfStep(step);
+  return ticks(low, low + span, step).map((value) => ({
+    at: base + (value - low) / span,
+    label: value === 0 ? '0' : place.signed ? signed(value, decimals) : value.toFixed(decimals),
+    zero: value === 0,
+  }));
+}
+
+function gapsOf(t_s: readonly number[], values: readonly (number | null)[]): [number, number][] {
+  const gaps: [number, number][] = [];
+  let from: number | null = null;
+  values.forEach((value, i) => {
+    if (value === null) from ??= t_s[Math.max(0, i - 1)] ?? null;
+    else if (from !== null) {
+      gaps.push([from, t_s[i] ?? from]);
+      from = null;
+    }
+  });
+  const end = t_s.at(-1);
+  if (from !== null && end !== undefined) gaps.push([from, end]);
+  return gaps;
+}
+
+/** Words for times on the axis: how long ago while the strip follows, else the clock. */
+export function timeMarks(
+  from_s: number,
+  to_s: number,
+  most: number,
+  following: boolean,
+): { at_s: number; ago_s: number }[] {
+  const step = timeStep((to_s - from_s) / most);
+  const origin = following ? to_s : 0;
+  return ticks(from_s - origin, to_s - origin, step).map((v) => ({ at_s: v + origin, ago_s: -v }));
+}
+
+/** Steps people count time in. */
+function timeStep(least_s: number): number {
+  const steps = [0.1, 0.2, 0.5, 1, 2, 5, 10, 15, 30, 60, 120, 300];
+  return steps.find((step) => step >= least_s) ?? 600;
+}
+
+export function agoWords(ago_s: number, span_s: number): string {
+  if (Math.abs(ago_s) < 1e-6) return 'now';
+  if (span_s > 100) {
+    const minutes = ago_s / 60;
+    return `−${Number.isInteger(minutes) ? minutes : minutes.toFixed(1)} min`;
+  }
+  return `−${Number(ago_s.toFixed(1))} s`;
+}
+
+export function clockWords(session_start_utc: string, t_s: number): string {
+  const at = new Date(Date.parse(session_start_utc) + t_s * 1000);
+  const two = (n: number): string => String(n).padStart(2, '0');
+  return `${two(at.getHours())}:${two(at.getMinutes())}:${two(at.getSeconds())}`;
+}

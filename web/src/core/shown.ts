@@ -1,0 +1,115 @@
+import type { Average, Zero } from './protocol';
+import type { Spread } from './statistics';
+import { spreadFromArcsec, fromArcsec, type AngleUnit, type Unit } from './units';
+
+export interface AxisShown {
+  value: number | null;
+  /** Standard error of the value from noise alone. */
+  noise: number | null;
+  /** Combined standard uncertainty. */
+  u: number | null;
+}
+
+export interface Shown {
+  unit: Unit;
+  x: AxisShown;
+  y: AxisShown;
+  /** Absolute tilt, for the drawing of the mirror; null without a calibration. */
+  x_arcsec: number | null;
+  y_arcsec: number | null;
+  basis: 'average' | 'single' | 'none';
+  /** e.g. "mean of 1.0 s". */
+  basisWords: string;
+  /** Quality words of the newest reading. */
+  quality: readonly string[];
+  relative: boolean;
+}
+
+/** The newest reading, one row of the stream. */
+export interface Newest {
+  x_arcsec: number | null;
+  y_arcsec: number | null;
+  x_sd_arcsec: number | null;
+  y_sd_arcsec: number | null;
+  x_u_arcsec: number | null;
+  y_u_arcsec: number | null;
+  x_px: number | null;
+  y_px: number | null;
+  quality: readonly string[];
+}
+
+export const NOTHING: AxisShown = { value: null, noise: null, u: null };
+
+/**
+ * The number to show: the average where there is one; else the newest reading alone, said so,
+ * because a doubtful angle with its doubt helps more than none; else nothing, with the reason.
+ */
+export function shownAngle(
+  average: Average | null,
+  newest: Newest,
+  zero: Zero | null,
+  unit: AngleUnit,
+): Shown {
+  const averaged = average !== null && average.x_arcsec !== null && average.y_arcsec !== null;
+  const single = !averaged && newest.x_arcsec !== null && newest.y_arcsec !== null;
+  const axis = (name: 'x' | 'y'): AxisShown => {
+    const absolute = averaged ? average[`${name}_arcsec`] : newest[`${name}_arcsec`];
+    if (absolute === null) return NOTHING;
+    const sd = newest[`${name}_sd_arcsec`];
+    const noise = averaged ? average[`${name}_se_arcsec`] : sd;
+    const u = combined(newest[`${name}_u_arcsec`], sd, noise, zero?.[`${name}_sd_arcsec`] ?? 0);
+    const value = absolute - (zero?.[`${name}_arcsec`] ?? 0);
+    return {
+      value: fromArcsec(value, unit),
+      noise: noise === null ? null : spreadFromArcsec(noise, value, unit),
+      u: u === null ? null : spreadFromArcsec(u, value, unit),
+    };
+  };
+  return {
+    unit,
+    x: axis('x'),
+    y: axis('y'),
+    x_arcsec: averaged ? average.x_arcsec : newest.x_arcsec,
+    y_arcsec: averaged ? average.y_arcsec : newest.y_arcsec,
+    basis: averaged ? 'average' : single ? 'single' : 'none',
+    basisWords: averaged ? averageWords(average) : single ? 'one reading alone' : '',
+    quality: newest.quality,
+    relative: zero !== null,
+  };
+}
+
+/** Without a calibration: where the return lies in the picture, averaged by the page. */
+export function shownPosition(x: Spread | null, y: Spread | null, newest: Newest, window_s: number): Shown {
+  const there = newest.x_px !== null && newest.y_px !== null;
+  const axis = (spread: Spread | null): AxisShown => {
+    if (!there || spread === null) return NOTHING;
+    const noise = spread.sd / Math.sqrt(spread.n);
+    return { value: spread.mean, noise, u: noise };
+  };
+  return {
+    unit: 'px',
+    x: axis(x),
+    y: axis(y),
+    x_arcsec: null,
+    y_arcsec: null,
+    basis: there ? 'average' : 'none',
+    basisWords: averageWords({ statistic: 'mean', window_s }),
+    quality: newest.quality,
+    relative: false,
+  };
+}
+
+export function averageWords(average: { statistic: string; window_s: number }): string {
+  return `${average.statistic} of ${average.window_s.toFixed(1)} s`;
+}
+
+/**
+ * The row's combined uncertainty without its own noise, joined with that of the average and of
+ * the zero (JCGM 100:2008, 5.1.2). The common share is not reduced by subtracting a zero: what
+ * cancels there is not known here, and too large is the safe side.
+ */
+function combined(u: number | null, sd: number | null, noise: number | null, zero_sd: number): number | null {
+  if (u === null) return null;
+  const common2 = Math.max(0, u * u - (sd ?? 0) ** 2);
+  return Math.sqrt(common2 + (noise ?? sd ?? 0) ** 2 + zero_sd * zero_sd);
+}

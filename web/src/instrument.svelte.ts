@@ -1,0 +1,207 @@
+import { recent, readSettings, Refused, setZero, takeZeroBack, writeSettings } from './core/api';
+import { Columns } from './core/columns';
+import { Feed } from './core/feed';
+import { ProtocolError } from './core/fields';
+import { oncePerFrame } from './core/pace';
+import { decode, type Average, type Readings, type SourceEvent, type Status } from './core/protocol';
+import { FIRST_SETTINGS, type Settings } from './core/settings';
+import { shownAngle, shownPosition, type Newest, type Shown } from './core/shown';
+import { BROWSER, Connection } from './core/socket';
+import { spreadOf, type Spread } from './core/statistics';
+import type { Unit } from './core/units';
+import { noticesOf, type Notice } from './core/words';
+
+const KEPT_S = 600;
+const TICK_MS = 100;
+const STATISTICS_S = 30;
+const KEPT_EVENTS = 100;
+
+export interface Held {
+  at: Date;
+  t_s: number;
+}
+
+/** Everything the page knows of the instrument, and the few things it can ask of it. */
+export class Instrument {
+  connected = $state(true);
+  status = $state.raw<Status | null>(null);
+  shown = $state.raw<Shown | null>(null);
+  /** Seconds since the last reading arrived in this page. */
+  age_s = $state(0);
+  events = $state.raw<readonly SourceEvent[]>([]);
+  settings = $state.raw<Settings>(FIRST_SETTINGS);
+  held = $state.raw<Held | null>(null);
+  /** What the service refused last, in its own words. */
+  refusal = $state('');
+  spread = $state.raw<{ x: Spread | null; y: Spread | null }>({ x: null, y: null });
+  dropped = $state(0);
+  /** Grows with each screen frame that has new readings. */
+  pulse = $state(0);
+
+  readonly columns = new Columns(KEPT_S);
+
+  notices: Notice[] = $derived(
+    noticesOf(
+      this.connected,
+      this.status?.state ?? null,
+      this.status?.state_detail ?? '',
+      this.status?.simulated ?? false,
+    ),
+  );
+  /** The numbers are those of now. */
+  alive: boolean = $derived(this.connected && this.status?.state === 'measuring');
+  unit: Unit = $derived(this.status !== null && this.status.calibration === null ? 'px' : this.settings.unit);
+  gap_s = $derived(Math.max(0.5, 3 / Math.max(this.status?.frames_per_s ?? 30, 0.1)));
+
+  private newest: Newest | null = null;
+  private average: Average | null = null;
+  private arrived_ms = 0;
+  private ticks = 0;
+  private readonly paint = oncePerFrame(() => (this.pulse += 1));
+  private readonly feed = new Feed(this.columns, recent, (change) => {
+    if (change === 'cleared') this.events = [];
+    this.paint.ask();
+  });
+
+  /** Opens the stream; the answer ends it. */
+  start(): () => void {
+    const connection = new Connection(
+      new URL('api/stream', document.baseURI).href.replace(/^http/, 'ws'),
+      {
+        onOpen: () => {
+          this.connected = true;
+          this.feed.opened();
+          void this.loadSettings();
+        },
+        onText: (text) => this.take(text),
+        onDown: () => (this.connected = false),
+      },
+      BROWSER,
+    );
+    const timer = setInterval(() => this.tick(performance.now()), TICK_MS);
+    return () => {
+      connection.stop();
+      clearInterval(timer);
+      this.paint.stop();
+    };
+  }
+
+  /** Newest time that may be drawn: that of the hold while one is on. */
+  get now_s(): number {
+    return this.held?.t_s ?? this.columns.t_s.at(-1) ?? 0;
+  }
+
+  hold(): void {
+    this.held = this.held ? null : { at: new Date(), t_s: this.columns.t_s.at(-1) ?? 0 };
+  }
+
+  async change(part: Partial<Settings>): Promise<void> {
+    const before = this.settings;
+    this.settings = { ...before, ...part };
+    await this.ask(async () => {
+      this.settings = await writeSettings(part);
+    }, () => (this.settings = before));
+  }
+
+  zero(): Promise<void> {
+    return this.ask(setZero);
+  }
+
+  unzero(): Promise<void> {
+    return this.ask(takeZeroBack);
+  }
+
+  private async loadSettings(): Promise<void> {
+    await this.ask(async () => {
+      this.settings = await readSettings();
+    });
+  }
+
+  private async ask(what: () => Promise<void>, undo: () => void = () => {}): Promise<void> {
+    try {
+      await what();
+      this.refusal = '';
+    } catch (error) {
+      if (!(error instanceof Refused || error instanceof ProtocolError)) throw error;
+      undo();
+      this.refusal = error.message;
+    }
+  }
+
+  private take(text: string): void {
+    const message = decode(text);
+    switch (message.kind) {
+      case 'readings':
+        this.takeReadings(message);
+        break;
+      case 'status':
+        this.status = message;
+        void this.feed.sessionIs(message.session_start_utc, this.gap_s);
+        break;
+      case 'event':
+        this.events = [message, ...this.events].slice(0, KEPT_EVENTS);
+        this.paint.ask();
+        break;
+      default: {
+        const never: never = message;
+        throw new Error(String(never));
+      }
+    }
+  }
+
+  private takeReadings(readings: Readings): void {
+    const last = readings.seq.length - 1;
+    if (last < 0) return;
+    this.newest = newestOf(readings, last);
+    this.average = readings.average;
+    this.dropped = readings.dropped;
+    this.arrived_ms = performance.now();
+    this.feed.take(readings, this.gap_s);
+  }
+
+  private tick(now_ms: number): void {
+    this.ticks += 1;
+    if (this.arrived_ms > 0) this.age_s = (now_ms - this.arrived_ms) / 1000;
+    if (this.held || this.newest === null || this.status === null) return;
+    // What stands there when the source stops is kept as it was, and drawn as no longer true.
+    if (!this.alive && this.shown !== null) return;
+    this.shown =
+      this.status.calibration === null
+        ? this.positionShown(this.newest)
+        : shownAngle(this.average, this.newest, this.status.zero, this.settings.unit);
+    if (this.ticks % 5 === 0) this.spread = this.spreadNow();
+  }
+
+  private positionShown(newest: Newest): Shown {
+    const from = this.columns.indexAt((this.columns.t_s.at(-1) ?? 0) - this.settings.average_s);
+    return shownPosition(
+      spreadOf(this.columns.of('x_px').slice(from)),
+      spreadOf(this.columns.of('y_px').slice(from)),
+      newest,
+      this.settings.average_s,
+    );
+  }
+
+  private spreadNow(): { x: Spread | null; y: Spread | null } {
+    const from = this.columns.indexAt((this.columns.t_s.at(-1) ?? 0) - STATISTICS_S);
+    const angle = this.status?.calibration !== null;
+    return {
+      x: spreadOf(this.columns.of(angle ? 'x_arcsec' : 'x_px').slice(from)),
+      y: spreadOf(this.columns.of(angle ? 'y_arcsec' : 'y_px').slice(from)),
+    };
+  }
+}
+
+function newestOf(readings: Readings, i: number): Newest {
+  return {
+    x_arcsec: readings.x_arcsec[i] ?? null,
+    y_arcsec: readings.y_arcsec[i] ?? null,
+    x_sd_arcsec: readings.x_sd_arcsec[i] ?? null,
+    y_sd_arcsec: readings.y_sd_arcsec[i] ?? null,
+    x_u_arcsec: readings.x_u_arcsec[i] ?? null,
+    y_u_arcsec: readings.y_u_arcsec[i] ?? null,
+    x_px: readings.x_px[i] ?? null,
+    y_px: readings.y_px[i] ?? null,
+    quality: readings.quality[i] ?? [],
+  };
+}
