@@ -66,6 +66,11 @@ def pixel_nodes(order: int) -> list[tuple[float, float, float]]:
     ]
 
 
+def _order_for(blur_px: float) -> int:
+    """Nodes that leave 5e-7: the derivatives of an edge grow as the blur shrinks."""
+    return 4 if blur_px >= 0.6 else 6
+
+
 def crosshair_image(
     shape: tuple[int, int],
     x_px: float,
@@ -74,14 +79,15 @@ def crosshair_image(
     *,
     first_row: int = 0,
     first_column: int = 0,
-    order: int = 4,
+    order: int | None = None,
 ) -> F64:
     """Expected level of each pixel, shape ``shape`` = (height, width).
 
     ``x_px, y_px``: the crossing, pixel centres at integers. ``first_row, first_column``: the place
     of the rendered rectangle in the whole picture. ``order``: Gauss-Legendre nodes per pixel side;
-    4 is exact to 1e-6 of the contrast for a blur of 0.8 px and more. Only pixels an arm can reach
-    are computed, so a whole picture costs little more than its arms.
+    by itself as many as make every pixel exact to 1e-6 of the contrast, for a blur of 0.3 px and
+    more. Only pixels an arm can reach are computed: a whole picture costs little more than its
+    arms.
     """
     upright, level, both = arm_shares(
         shape, x_px, y_px, crosshair, first_row=first_row, first_column=first_column, order=order
@@ -100,7 +106,7 @@ def arm_shares(
     level_blur_px: float | None = None,
     first_row: int = 0,
     first_column: int = 0,
-    order: int = 4,
+    order: int | None = None,
 ) -> tuple[F64, F64, F64]:
     """Pixel means of the upright arm, the level arm and their product, each of ``shape``.
 
@@ -115,6 +121,7 @@ def arm_shares(
     level_blur = up_blur if level_blur_px is None else level_blur_px
     up_half = crosshair.line_px / 2
     level_half = up_half if level_line_px is None else level_line_px / 2
+    nodes = pixel_nodes(order or _order_for(min(up_blur, level_blur)))
 
     def upright_at(x: F64, y: F64) -> F64:
         across = math.cos(up_turn) * x + math.sin(up_turn) * y
@@ -144,7 +151,7 @@ def arm_shares(
         row, column = np.nonzero(near)
         x, y = columns[0, column], rows[row, 0]
         mean = np.zeros(x.size)
-        for dx, dy, weight in pixel_nodes(order):
+        for dx, dy, weight in nodes:
             mean += weight * share_at(x + dx, y + dy)
         image = np.zeros(shape)
         image[row, column] = mean
