@@ -1,7 +1,8 @@
 """Readings as rows: one set of columns for CSV files, JSON lines and the logging endpoint.
 
-A missing number is None in a row (null in JSON) and an empty cell in CSV. Angles are rounded to
-1e-6 arcsec and times to 1 µs, far below anything that can be measured.
+A missing number is None in a row (null in JSON) and an empty cell in CSV. Numbers are rounded to
+six decimals (1e-6 arcsec, 1 µs: far below anything that can be measured), small ones to four
+digits, so that no uncertainty is rounded away.
 """
 
 from __future__ import annotations
@@ -28,8 +29,10 @@ VALUE_COLUMNS = (
 
 
 def rounded(value: float) -> float | None:
-    """``value`` to six decimals, None unless it is finite."""
-    return round(value, 6) if math.isfinite(value) else None
+    """``value`` to six decimals or four digits, whichever is finer; None unless it is finite."""
+    if not math.isfinite(value):
+        return None
+    return round(value, 6) if abs(value) >= 1e-3 else float(f"{value:.4g}")
 
 
 def reading_row(reading: Reading) -> dict[str, Cell]:

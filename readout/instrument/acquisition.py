@@ -78,7 +78,7 @@ class Acquisition:
         self._seq_offset = 0
         self._state: State | None = None
         self.next_seq = first_seq
-        self.missed = 0
+        self._missed = 0
         self.pace = Pace()
 
     def start(self) -> None:
@@ -95,6 +95,12 @@ class Acquisition:
     @property
     def stopped(self) -> bool:
         return self._stop.is_set()
+
+    @property
+    def missed(self) -> int:
+        """Frames that sources knew of and did not hand out, all openings together."""
+        observer = self._observer
+        return self._missed + (observer.missed if observer is not None else 0)
 
     def picture(self, timeout_s: float) -> Picture | None:
         """The newest picture with its seq as counted here; None while there is none."""
@@ -126,13 +132,13 @@ class Acquisition:
                     self._enter(State.FAILED, str(error))
                     return
                 self._enter(State.LOST, str(error))
-            except Exception as error:  # noqa: BLE001 - a fault must be seen, not end in silence
+            except Exception as error:
                 log.debug("acquisition failed", exc_info=True)
                 kind = type(error).__name__
                 self._enter(State.FAILED, f"internal error, please report it: {kind}: {error}")
                 return
             finally:
-                self._observer = None
+                self._missed, self._observer = self.missed, None
             pause_s = BACK_OFF_S[min(self._failures, len(BACK_OFF_S) - 1)]
             self._failures += 1
             self._wait(pause_s)
@@ -157,7 +163,7 @@ class Acquisition:
 
     def _deliver(self, observation: Observation, observer: Observer) -> None:
         seq = observation.seq + self._seq_offset
-        self.missed += seq - self.next_seq
+        self._missed += seq - self.next_seq
         self.next_seq = seq + 1
         try:
             self._on_observation(replace(observation, seq=seq), observer)

@@ -100,13 +100,12 @@ def average_of(
         nan = math.nan
         return Average(nan, nan, nan, nan, len(good), window_s, statistic)
     x, y = good.T
-    widen = 1.0
-    centre = np.mean
-    if statistic is Statistic.MEDIAN:
-        widen, centre = math.sqrt(math.pi / 2), np.median
+    median = statistic is Statistic.MEDIAN
+    widen = math.sqrt(math.pi / 2) if median else 1.0
+    centre_x, centre_y = np.median(good, axis=0) if median else np.mean(good, axis=0)
     return Average(
-        x_arcsec=float(centre(x)),
-        y_arcsec=float(centre(y)),
+        x_arcsec=float(centre_x),
+        y_arcsec=float(centre_y),
         x_se_arcsec=widen * standard_error(x),
         y_se_arcsec=widen * standard_error(y),
         n=len(good),

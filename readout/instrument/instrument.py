@@ -45,7 +45,8 @@ class Event:
 @dataclass(frozen=True, slots=True)
 class Status:
     """The instrument at one instant. ``frames`` counts all measured, ``missed`` those a source
-    knows it did not deliver."""
+    knows it did not deliver.
+    """
 
     source: str | None
     state: State

@@ -4,9 +4,10 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from functools import reduce
 from operator import or_
+from typing import NamedTuple
 
 import numpy as np
 
@@ -33,55 +34,58 @@ def join(readings: Sequence[Reading]) -> Joined:
     (combined uncertainty without the noise) stays as it is.
     """
     good = [r for r in readings if r.good]
-    last = readings[-1]
-    if 2 * len(good) < len(readings) or not good:
-        nan = math.nan
-        quality = reduce(or_, (r.quality for r in readings), Quality.OK)
-        void = replace(
-            last,
-            **dict.fromkeys(_VALUES, nan),
-            t_s=float(np.mean([r.t_s for r in readings])),
-            t_utc_ns=_mean_utc_ns(readings),
-            quality=quality,
-        )
-        return Joined(void, len(good), nan, nan)
-    n = len(good)
-    mean = {name: float(np.mean([getattr(r, name) for r in good])) for name in _MEANS}
-    noise = {
-        name: math.sqrt(sum(getattr(r, name) ** 2 for r in good)) / n
-        for name in ("x_sd_arcsec", "y_sd_arcsec", "x_sd_px", "y_sd_px")
-    }
-    common = {axis: float(np.mean([_common_var(r, axis) for r in good])) for axis in ("x", "y")}
-    joined = replace(
-        last,
-        **mean,
-        **noise,
-        t_utc_ns=_mean_utc_ns(good),
-        x_u_arcsec=math.sqrt(common["x"] + noise["x_sd_arcsec"] ** 2),
-        y_u_arcsec=math.sqrt(common["y"] + noise["y_sd_arcsec"] ** 2),
-        quality=Quality.OK,
+    used = good if good and 2 * len(good) >= len(readings) else []
+    rows = used or readings
+    x, y = (_joined([axis(r) for r in used]) for axis in (_x, _y))
+    joined = Reading(
+        seq=readings[-1].seq,
+        t_s=_mean([r.t_s for r in rows]),
+        t_utc_ns=sum(r.t_utc_ns for r in rows) // len(rows),
+        x_arcsec=x.mean,
+        y_arcsec=y.mean,
+        x_sd_arcsec=x.sd,
+        y_sd_arcsec=y.sd,
+        x_u_arcsec=x.u,
+        y_u_arcsec=y.u,
+        x_px=_mean([r.x_px for r in used]),
+        y_px=_mean([r.y_px for r in used]),
+        x_sd_px=_sd_of_mean([r.x_sd_px for r in used]),
+        y_sd_px=_sd_of_mean([r.y_sd_px for r in used]),
+        quality=Quality.OK if used else reduce(or_, (r.quality for r in readings)),
+        calibration_id=readings[-1].calibration_id,
     )
-    return Joined(
-        joined, n, *(_scatter([getattr(r, a) for r in good]) for a in ("x_arcsec", "y_arcsec"))
-    )
+    return Joined(joined, len(good), x.scatter, y.scatter)
 
 
-_MEANS = ("t_s", "x_arcsec", "y_arcsec", "x_px", "y_px")
-_VALUES = (
-    *("x_arcsec", "y_arcsec", "x_sd_arcsec", "y_sd_arcsec", "x_u_arcsec", "y_u_arcsec"),
-    *("x_px", "y_px", "x_sd_px", "y_sd_px"),
-)
+_Row = tuple[float, float, float]
 
 
-def _common_var(reading: Reading, axis: str) -> float:
-    combined: float = getattr(reading, f"{axis}_u_arcsec")
-    noise: float = getattr(reading, f"{axis}_sd_arcsec")
-    return max(0.0, combined**2 - noise**2)
+class _Axis(NamedTuple):
+    mean: float
+    sd: float
+    u: float
+    scatter: float
 
 
-def _mean_utc_ns(readings: Sequence[Reading]) -> int:
-    return sum(r.t_utc_ns for r in readings) // len(readings)
+def _x(reading: Reading) -> _Row:
+    return reading.x_arcsec, reading.x_sd_arcsec, reading.x_u_arcsec
 
 
-def _scatter(values: list[float]) -> float:
-    return float(np.std(values, ddof=1)) if len(values) > 1 else math.nan
+def _y(reading: Reading) -> _Row:
+    return reading.y_arcsec, reading.y_sd_arcsec, reading.y_u_arcsec
+
+
+def _joined(rows: list[_Row]) -> _Axis:
+    values, noise = [value for value, _, _ in rows], [sd for _, sd, _ in rows]
+    sd = _sd_of_mean(noise)
+    common_var = _mean([max(0.0, u**2 - sd**2) for _, sd, u in rows])
+    scatter = float(np.std(values, ddof=1)) if len(values) > 1 else math.nan
+    return _Axis(_mean(values), sd, math.sqrt(common_var + sd**2), scatter)
+
+
+def _mean(values: list[float]) -> float:
+    return float(np.mean(values)) if values else math.nan
+
+
+def _sd_of_mean(noise: list[float]) -> float:
+    return math.sqrt(sum(sd**2 for sd in noise)) / len(noise) if noise else math.nan

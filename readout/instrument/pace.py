@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from collections import deque
 from statistics import median
 
@@ -24,7 +25,7 @@ class Pace:
         times = list(self._times_ns)
         if len(times) < 2:
             return None
-        return median(b - a for a, b in zip(times, times[1:], strict=False)) * 1e-9
+        return median(b - a for a, b in itertools.pairwise(times)) * 1e-9
 
     def per_s(self, now_ns: int) -> float:
         """Frames a second over the span that ends now; 0 when none came in it."""

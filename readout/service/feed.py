@@ -8,6 +8,7 @@ event loop, and one call into the loop serves all of them.
 from __future__ import annotations
 
 import asyncio
+import itertools
 import threading
 from collections import deque
 from dataclasses import dataclass, field
@@ -183,7 +184,7 @@ def thinned(columns: Columns, points: int) -> Columns:
         return columns
     keep: set[int] = {0, n - 1}
     edges = np.linspace(0, n, max(1, points // 4) + 1).astype(int)
-    for begin, end in zip(edges, edges[1:], strict=False):
+    for begin, end in itertools.pairwise(edges):
         for name in ("x_arcsec", "y_arcsec"):
             values = columns[name][begin:end]
             measured = np.flatnonzero(np.isfinite(values))

@@ -147,7 +147,7 @@ def _watch_start(outcome: _Outcome, options: Options) -> Callable[[State, str], 
 def _listening(port: int) -> Iterator[socket.socket]:
     """A socket bound to the loopback address; ours, so that a port in use is ours to report."""
     with socket.socket(socket.AF_INET, socket.SOCK_STREAM) as listener:
-        if os.name == "nt":  # there, address reuse would let two programs share a port
+        if sys.platform == "win32":  # there, address reuse would let two programs share a port
             listener.setsockopt(socket.SOL_SOCKET, socket.SO_EXCLUSIVEADDRUSE, 1)
         else:
             listener.setsockopt(socket.SOL_SOCKET, socket.SO_REUSEADDR, 1)

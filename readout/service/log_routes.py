@@ -34,11 +34,11 @@ def log_routes(feed: Feed) -> APIRouter:
     @routes.get("/log")
     async def get_log(
         every_s: Annotated[float, Query(ge=0, le=86_400)] = 1.0,
-        format: Literal["ndjson", "csv"] = "ndjson",  # noqa: A002 - the name in the address
+        form: Annotated[Literal["ndjson", "csv"], Query(alias="format")] = "ndjson",
     ) -> StreamingResponse:
         """Means over ``every_s`` seconds with count and scatter; 0: every reading."""
-        lines = _csv_lines if format == "csv" else _json_lines
-        media_type = "text/csv" if format == "csv" else "application/x-ndjson"
+        lines = _csv_lines if form == "csv" else _json_lines
+        media_type = "text/csv" if form == "csv" else "application/x-ndjson"
         return StreamingResponse(lines(feed, every_s), media_type=media_type)
 
     return routes

@@ -24,6 +24,8 @@ Number = float | None
 
 
 class AverageMessage(TypedDict):
+    """The averaged tilt and its standard error."""
+
     x_arcsec: Number
     y_arcsec: Number
     x_se_arcsec: Number
@@ -34,6 +36,8 @@ class AverageMessage(TypedDict):
 
 
 class ReadingMessage(TypedDict):
+    """One reading. ``x_rel_arcsec``: absolute minus zero, null while no zero is set."""
+
     seq: int
     t_utc: str
     t_s: Number
@@ -74,6 +78,8 @@ class ReadingsMessage(TypedDict):
 
 
 class ArmMessage(TypedDict):
+    """A fitted arm; its angle is positive clockwise on screen."""
+
     angle_deg: Number
     width_px: Number
     contrast: Number
@@ -81,6 +87,8 @@ class ArmMessage(TypedDict):
 
 
 class SightingMessage(TypedDict):
+    """Where the return image lies in the newest picture."""
+
     seq: int
     x_px: Number
     y_px: Number
@@ -110,6 +118,8 @@ class CalibrationMessage(TypedDict):
 
 
 class ZeroMessage(TypedDict):
+    """The zero that is set."""
+
     x_arcsec: Number
     y_arcsec: Number
     x_sd_arcsec: Number
@@ -121,6 +131,8 @@ class ZeroMessage(TypedDict):
 
 
 class StatusMessage(TypedDict):
+    """What the instrument is doing."""
+
     source: str | None
     source_name: str
     simulated: bool
@@ -141,6 +153,8 @@ class StatusMessage(TypedDict):
 
 
 class EventMessage(TypedDict):
+    """Something that happened beside the readings."""
+
     kind: Literal["event"]
     t_s: Number
     t_utc: str
@@ -149,6 +163,8 @@ class EventMessage(TypedDict):
 
 
 class HealthMessage(TypedDict):
+    """Sent while readings flow."""
+
     state: str
 
 
@@ -158,6 +174,7 @@ def encode(message: Any) -> str:
 
 
 def average_message(average: Average | None) -> AverageMessage | None:
+    """None stays None."""
     if average is None:
         return None
     return {
@@ -172,6 +189,7 @@ def average_message(average: Average | None) -> AverageMessage | None:
 
 
 def reading_message(reading: Reading, zero: Zero | None, average: Average | None) -> ReadingMessage:
+    """The newest reading, against the zero if there is one."""
     return {
         "seq": reading.seq,
         "t_utc": utc_text(reading.t_utc_ns),
@@ -241,9 +259,7 @@ def _columns_message(
 
 
 def _numbers(column: NDArray[Any]) -> list[Number]:
-    finite = np.isfinite(column)
-    values = np.where(finite, column, 0.0).round(6).tolist()
-    return [v if ok else None for v, ok in zip(values, finite.tolist(), strict=True)]
+    return [rounded(value) for value in column.tolist()]
 
 
 def _arm_message(arm: Arm | None) -> ArmMessage | None:
@@ -258,6 +274,7 @@ def _arm_message(arm: Arm | None) -> ArmMessage | None:
 
 
 def sighting_message(observation: Observation) -> SightingMessage:
+    """The sighting of the newest picture."""
     sighting = observation.sighting
     return {
         "seq": observation.seq,
@@ -273,6 +290,7 @@ def sighting_message(observation: Observation) -> SightingMessage:
 
 
 def calibration_message(calibration: Calibration | None) -> CalibrationMessage | None:
+    """None stays None."""
     if calibration is None:
         return None
     scale_x, scale_y = calibration.scale_arcsec_per_px
@@ -297,6 +315,7 @@ def calibration_message(calibration: Calibration | None) -> CalibrationMessage |
 
 
 def zero_message(zero: Zero | None) -> ZeroMessage | None:
+    """None stays None."""
     if zero is None:
         return None
     return {
@@ -318,6 +337,7 @@ def status_message(
     dropped: int,
     session_start_utc_ns: int,
 ) -> StatusMessage:
+    """``dropped``: readings lost to slow viewers."""
     return {
         "source": without_password(status.source) if status.source else None,
         "source_name": described.title if described else "",
@@ -340,6 +360,7 @@ def status_message(
 
 
 def event_message(event: Event) -> EventMessage:
+    """An event, as the stream carries it."""
     return {
         "kind": "event",
         "t_s": rounded(event.t_s),

@@ -27,6 +27,7 @@ class Problem(Exception):
 
 
 def problem_response(status: int, detail: str) -> JSONResponse:
+    """The answer that tells of a problem."""
     title = HTTPStatus(status).phrase
     body = {"type": "about:blank", "title": title, "status": status, "detail": detail}
     return JSONResponse(body, status_code=status, media_type=MEDIA_TYPE)

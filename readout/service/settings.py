@@ -54,7 +54,7 @@ class OpticsSettings(_Model):
 class Settings(_Model):
     """All settings; each has a default."""
 
-    schema_: Literal["readout.settings/1"] = Field(default=SCHEMA, alias="schema")
+    schema_: Literal["readout.settings/1"] = Field(default="readout.settings/1", alias="schema")
     unit: Unit = Unit.ARCSEC
     theme: Literal["auto", "day", "night"] = "auto"
     target: Target = Target.CROSSHAIR
@@ -72,6 +72,7 @@ class Settings(_Model):
 
 
 def default_settings_path() -> Path:
+    """The file in the folder the platform gives to settings."""
     return user_config_path("readout", appauthor=False) / "settings.json"
 
 
@@ -142,6 +143,8 @@ def _merge(old: dict[str, Any], changes: dict[str, Any]) -> dict[str, Any]:
     merged = dict(old)
     for key, value in changes.items():
         before = merged.get(key)
-        both = isinstance(before, dict) and isinstance(value, dict)
-        merged[key] = _merge(before, value) if both else value
+        if isinstance(before, dict) and isinstance(value, dict):
+            merged[key] = _merge(before, value)
+        else:
+            merged[key] = value
     return merged

@@ -11,7 +11,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from readout.files.readings_file import ReadingsWriter, reading_row
+from readout.files.readings_file import ReadingsWriter, reading_row, rounded
 from readout.files.utc import utc_text
 from readout.model import Quality, Reading
 
@@ -38,6 +38,12 @@ def test_a_row_is_json_without_nan_and_keeps_the_number(value: float) -> None:
         assert row["x_arcsec"] == pytest.approx(value, abs=5.1e-7, rel=1e-15)
     else:
         assert row["x_arcsec"] is None
+
+
+@given(st.floats(1e-12, 1e-3))
+def test_a_small_uncertainty_keeps_four_digits(value: float) -> None:
+    # half a unit of the fourth digit is at most 5e-4 of the value
+    assert rounded(value) == pytest.approx(value, rel=5.1e-4)
 
 
 def test_csv_of_named_frames() -> None:

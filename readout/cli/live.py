@@ -1,0 +1,57 @@
+"""``readout live``."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+from readout.cli.options import SOURCES, CalibrationOption, SettingsOption, TargetOption
+from readout.cli.say import print_line
+
+EXAMPLE = (
+    "Example: `readout live --source usb:0` measures with the first camera. "
+    "Without a camera, `readout live` shows a simulated mirror."
+)
+
+
+def live(
+    source: Annotated[
+        str | None,
+        typer.Option(
+            metavar="SOURCE",
+            help=f"{SOURCES}. Without it: the source of the settings, else simulated.",
+        ),
+    ] = None,
+    target: TargetOption = None,
+    calibration: CalibrationOption = None,
+    port: Annotated[int, typer.Option(min=0, max=65535, help="0: any free port.")] = 8470,
+    data: Annotated[
+        Path | None, typer.Option(metavar="DIR", help="Folder for what is recorded.")
+    ] = None,
+    settings: SettingsOption = None,
+    browser: Annotated[
+        bool | None,
+        typer.Option("--browser/--no-browser", help="Default: from a terminal with a display."),
+    ] = None,
+) -> None:
+    """Measure without end, and serve the dashboard and the endpoints on this machine.
+
+    Ctrl-C ends it.
+    """
+    from platformdirs import user_data_path
+
+    from readout.service.control import Options
+    from readout.service.live import Place, run_live
+    from readout.service.settings import default_settings_path
+
+    place = Place(
+        port=port,
+        data=data or user_data_path("readout", appauthor=False),
+        settings=settings or default_settings_path(),
+    )
+    run_live(Options(source, target, calibration), place, browser=browser, say=print_line)
+
+
+command = live

@@ -1,0 +1,78 @@
+"""Talking to the person or program at the other end: results, failures, progress."""
+
+from __future__ import annotations
+
+import json
+import sys
+import time
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+from typing import Any, NoReturn
+
+import typer
+
+QUIET_S = 1.0
+"""Work shorter than this shows no progress."""
+
+
+def fail(line: str) -> NoReturn:
+    """Say what is wrong and leave with status 1."""
+    warn(line)
+    sys.exit(1)
+
+
+def warn(line: str) -> None:
+    """One line on standard error."""
+    sys.stderr.write("readout: " + " ".join(line.splitlines()) + "\n")
+    sys.stderr.flush()
+
+
+def note(line: str) -> None:
+    """A remark on standard error, beside the result."""
+    sys.stderr.write(line + "\n")
+
+
+def print_json(row: dict[str, Any]) -> None:
+    """One object on one line of standard output, out at once."""
+    print_line(json.dumps(row, allow_nan=False, ensure_ascii=False))
+
+
+def print_line(line: str) -> None:
+    """One line of standard output, out at once."""
+    typer.echo(line)
+    sys.stdout.flush()
+
+
+@contextmanager
+def progress(
+    what: str, total: int | None = None, *, show: bool = True
+) -> Iterator[Callable[[int], None]]:
+    """A function to tell how much is done, shown on standard error if that is a terminal.
+
+    Nothing is shown for work that takes less than a second, nor unless ``show``.
+    """
+    if not (show and sys.stderr.isatty()):
+        yield lambda _done: None
+        return
+    from rich.console import Console
+    from rich.progress import MofNCompleteColumn, Progress, SpinnerColumn, TextColumn
+
+    bar = Progress(
+        SpinnerColumn(),
+        TextColumn(what),
+        MofNCompleteColumn(),
+        console=Console(stderr=True),
+        transient=True,
+    )
+    task = bar.add_task(what, total=total)
+    begin_s = time.monotonic()
+
+    def tell(done: int) -> None:
+        bar.update(task, completed=done)
+        if not bar.live.is_started and time.monotonic() - begin_s > QUIET_S:
+            bar.start()
+
+    try:
+        yield tell
+    finally:
+        bar.stop()

@@ -1,0 +1,80 @@
+"""One source measured through to its end, in the calling thread."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+from readout.errors import BadInput
+from readout.instrument.acquisition import Acquisition, State
+from readout.instrument.instrument import Instrument
+from readout.model import Reading, Target
+
+
+class Measuring:
+    """Hands each reading to ``write``, until the source ends, a limit is reached or ``stop``.
+
+    ``most``: frames; ``seconds``: since the first frame. ``warn`` gets a line when the source
+    falters and is waited for. ``n`` counts the readings written, ``good`` those without a doubt.
+    """
+
+    def __init__(
+        self,
+        instrument: Instrument,
+        write: Callable[[Reading], None],
+        *,
+        warn: Callable[[str], None],
+        most: int | None = None,
+        seconds: float | None = None,
+    ) -> None:
+        self._instrument = instrument
+        self._write = write
+        self._warn = warn
+        self._most = most
+        self._seconds = seconds
+        self._acquisition: Acquisition | None = None
+        self._failure: str | None = None
+        self._broken: OSError | None = None
+        self.n = 0
+        self.good = 0
+        instrument.on_reading.append(self._take)
+        instrument.on_state.append(self._see)
+
+    def run(self, source: str, *, target: Target) -> None:
+        """Measure ``source``.
+
+        Raises BadInput if it cannot be used, and the OSError of ``write``; what was written before
+        stays.
+        """
+        self._acquisition = self._instrument.use(source, target=target)
+        self._acquisition.run()
+        if self._broken is not None:
+            raise self._broken
+        if self._failure is not None:
+            raise BadInput(self._failure)
+
+    def stop(self) -> None:
+        """End after the reading in hand; may be called from a signal handler."""
+        if self._acquisition is not None:
+            self._acquisition.stop()
+
+    def _take(self, reading: Reading) -> None:
+        over = self._seconds is not None and reading.t_s > self._seconds
+        if over or self._broken is not None or self.n == self._most:
+            self.stop()
+            return
+        try:
+            self._write(reading)
+        except OSError as error:  # a full disk, a reader who has left
+            self._broken = error
+            self.stop()
+            return
+        self.n += 1
+        self.good += reading.good
+        if self.n == self._most:
+            self.stop()
+
+    def _see(self, state: State, detail: str) -> None:
+        if state is State.FAILED:
+            self._failure = detail
+        elif state in (State.LOST, State.STALLED):
+            self._warn(detail)
