@@ -20,7 +20,7 @@ from urllib.parse import SplitResult, unquote, urlsplit
 
 from readout import __version__
 from readout.capture.damaged import blank
-from readout.capture.multipart import JPEG_END, MultipartReader
+from readout.capture.multipart import MultipartReader
 from readout.capture.repeats import RepeatWatch
 from readout.capture.timebase import Clock, TimeBase
 from readout.errors import BadInput, SourceLost, SourceStalled
@@ -100,8 +100,6 @@ class MjpegSource:
     def _decoded(self, data: bytes) -> tuple[Pixels, int, Quality] | None:
         """Pixels, full scale and flags; None for a damaged picture of unknown size."""
         try:
-            if JPEG_END not in data[-64:]:
-                raise BadInput("a JPEG without its end")
             pixels, full_scale = decode_picture(data)
         except BadInput:
             if self._like is None:
@@ -124,6 +122,7 @@ class _Link:
         boundary = self._response.headers.get_param("boundary")
         if not kind.startswith("multipart/") or not isinstance(boundary, str):
             self._response.close()
+            self._socket.close()
             raise BadInput(f"{url} sends {kind}, no MJPEG stream: check the path of the address")
         self._parser = MultipartReader(boundary)
         self._thread = threading.Thread(target=self._run, name="mjpeg", daemon=True)
@@ -145,6 +144,7 @@ class _Link:
             self._socket.shutdown(socket.SHUT_RDWR)
         self._thread.join(timeout=5.0)
         self._response.close()
+        self._socket.close()
 
     def _run(self) -> None:
         try:
@@ -184,6 +184,7 @@ def _connect(
         raise SourceLost(f"{url} cannot be reached ({reason}): check address and camera") from error
     if response.status != http.client.OK:
         response.close()
+        link.close()
         message = f"{url} answers {response.status} {response.reason}: check the address"
         raise (SourceLost if response.status >= 500 else BadInput)(message)
     link.settimeout(_SILENCE_S)

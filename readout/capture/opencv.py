@@ -15,6 +15,8 @@ _SETTINGS = {
     "OPENCV_VIDEOIO_MSMF_ENABLE_HW_TRANSFORMS": "0",
     # Camera permission on macOS is asked for by the main thread, never by a reading one.
     "OPENCV_AVFOUNDATION_SKIP_AUTH": "1",
+    # The library beneath says nothing of its own: a person gets one line, ours.
+    "OPENCV_FFMPEG_LOGLEVEL": "-8",
     # Streams over TCP: a lost datagram would be a torn frame.
     "OPENCV_FFMPEG_CAPTURE_OPTIONS": "rtsp_transport;tcp",
 }
