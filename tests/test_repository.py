@@ -7,16 +7,22 @@ from __future__ import annotations
 
 import re
 import subprocess
+import tomllib
 from pathlib import Path
 
 import pytest
+import typer.core
+import typer.main
+
+from readout import __version__, cli
 
 ROOT = Path(__file__).parent.parent
 
 # Addresses that a committed text may hold: this machine, names kept free for examples (RFC 2606),
-# private networks in examples (RFC 1918 and RFC 5737), names of XML vocabularies and of standards.
+# private networks in examples (RFC 1918 and RFC 5737), names without a dot, names of XML
+# vocabularies and of standards.
 ALLOWED_HOSTS = re.compile(
-    r"(127\.0\.0\.1|localhost|\[::1\]|0\.0\.0\.0|testserver|.*\.?example(\.(com|net|org))?"
+    r"(127\.0\.0\.1|[a-z]+|\[::1\]|0\.0\.0\.0|.*\.?example(\.(com|net|org))?"
     r"|.*\.(test|invalid)|192\.168\.\d+\.\d+|192\.0\.2\.\d+|10\.\d+\.\d+\.\d+"
     r"|www\.w3\.org|(dx\.)?doi\.org|www\.itl\.nist\.gov|www\.rfc-editor\.org)",
     re.IGNORECASE,
@@ -135,7 +141,103 @@ def test_one_package_opens_cameras_and_videos() -> None:
     assert [c for c in calls if not c.startswith("readout/capture/")] == []
 
 
-def test_version_stands_in_the_changelog() -> None:
-    from readout import __version__
+def readme() -> str:
+    return (ROOT / "README.md").read_text(encoding="utf-8")
 
+
+def shell_lines() -> list[str]:
+    """Lines of the fenced blocks, and code within the text, that start the program."""
+    text = readme()
+    lines = [
+        line.strip()
+        for block in re.findall(r"```\w+\n(.*?)```", text, re.DOTALL)
+        for line in block.splitlines()
+    ]
+    return lines + re.findall(r"`(readout [^`]+)`", text)
+
+
+def program_calls() -> list[list[str]]:
+    """Arguments of every call of the program in the README."""
+    calls = []
+    for line in shell_lines():
+        for part in line.split("&&"):
+            words = part.split()
+            if words and re.split(r"[\\/]", words[0])[-1] == "readout" and len(words) > 1:
+                calls.append(words[1:])
+    return calls
+
+
+def commands() -> dict[str, set[str]]:
+    """The program's commands, each with its options."""
+    group = typer.main.get_command(cli.app)
+    assert isinstance(group, typer.core.TyperGroup)
+    return {
+        name: {"--help"}.union(*((*p.opts, *p.secondary_opts) for p in command.params))
+        for name, command in group.commands.items()
+        if not command.hidden
+    }
+
+
+def test_every_command_of_the_program_stands_in_the_readme() -> None:
+    assert {call[0] for call in program_calls()} >= set(commands())
+
+
+def test_every_call_in_the_readme_is_one_the_program_knows() -> None:
+    known = commands()
+    calls = [call for call in program_calls() if call[0] != "COMMAND"]
+    assert len(calls) > 5
+    for name, *words in calls:
+        assert name in known, f"readout {name}"
+        assert {w for w in words if w.startswith("--")} <= known[name], f"readout {name} {words}"
+
+
+def test_both_commands_set_up_everything() -> None:
+    lines = shell_lines()
+    for start, end in [
+        ("python3 -m venv .venv && .venv/bin/pip install -c constraints.txt", "readout live"),
+        ("python3 -m venv .venv && .venv/bin/pip install -c constraints.txt", "pytest"),
+    ]:
+        assert [line for line in lines if line.startswith(start) and line.endswith(end)]
+    for line in ("py -m venv .venv", r".venv\Scripts\readout live", r".venv\Scripts\pytest"):
+        assert line in lines
+
+
+def test_the_extras_named_in_the_readme_exist() -> None:
+    project = tomllib.loads((ROOT / "pyproject.toml").read_text(encoding="utf-8"))["project"]
+    named = set(re.findall(r"\.\[(\w+)\]", readme()))
+    assert named
+    assert named <= set(project["optional-dependencies"])
+
+
+def test_files_named_in_the_texts_exist() -> None:
+    for text in ("README.md", "DEVELOPERS.md", "docs/geometry.md"):
+        folder = (ROOT / text).parent
+        content = (ROOT / text).read_text(encoding="utf-8")
+        links = re.findall(r"\]\(([\w./-]+)\)", content)
+        missing = [link for link in links if not (folder / link).exists()]
+        assert missing == [], text
+
+
+@pytest.mark.parametrize(
+    "caution",
+    [
+        "never look into the instrument",
+        "laser",
+        "never point the instrument at the sun",
+        "lock it out and make it safe",
+        "before hands go near, support it",
+        "local codes and licensed practice come first",
+    ],
+)
+def test_the_cautions_are_there(caution: str) -> None:
+    assert caution in re.sub(r"\s+", " ", readme().lower())
+
+
+def test_the_cautions_come_before_the_first_use() -> None:
+    text = readme().lower()
+    assert text.index("never look into the instrument") < text.index("what to do first")
+    assert text.index("lock it out") < text.index("what to do first")
+
+
+def test_version_stands_in_the_changelog() -> None:
     assert f"## {__version__}" in (ROOT / "CHANGELOG.md").read_text(encoding="utf-8")
