@@ -55,6 +55,13 @@ def test_smooth_at_every_time_also_where_bumps_and_cells_begin(start_s: float) -
         assert np.abs(np.diff(axis)).max() < (161 + 31 + 10) * 1e-3
 
 
+def test_a_ring_goes_on_into_the_next_cell() -> None:
+    """At 2000 cell borders, some soon after a bump: the same from both sides."""
+    border = 30.0 * np.arange(1, 2001)
+    before, after = (np.stack(Motion(seed=12).tilt(border + side)) for side in (-1e-9, 0.0))
+    assert np.abs(before - after).max() < 1e-6
+
+
 def test_bounded_for_a_week() -> None:
     """Tones of fixed rms cannot exceed sqrt(2 n) times it; bumps and shifts add at most theirs."""
     x, y = Motion(seed=4).tilt(np.arange(0.0, 7 * DAY_S, 1.7))
