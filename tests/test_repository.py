@@ -14,7 +14,8 @@ import pytest
 import typer.core
 import typer.main
 
-from readout import __version__, cli
+from readout import __version__
+from readout.cli.app import app
 
 ROOT = Path(__file__).parent.parent
 
@@ -169,7 +170,7 @@ def program_calls() -> list[list[str]]:
 
 def commands() -> dict[str, set[str]]:
     """The program's commands, each with its options."""
-    group = typer.main.get_command(cli.app)
+    group = typer.main.get_command(app)
     assert isinstance(group, typer.core.TyperGroup)
     return {
         name: {"--help"}.union(*((*p.opts, *p.secondary_opts) for p in command.params))
