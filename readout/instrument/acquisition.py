@@ -49,7 +49,8 @@ class Acquisition:
 
     ``on_observation`` gets each observation, its seq counted on from ``first_seq`` through all
     re-openings (what the source itself counted as missing stays a gap). ``on_state`` gets each
-    change of state with one line for people. Both are called from the acquisition's own thread.
+    change of state or of its detail, one line for people. Both are called from the acquisition's
+    own thread.
     ``patient``: wait for a live source that is not there at first; otherwise the first opening
     must succeed. ``wait(seconds)`` returns early, with True, when the acquisition is stopped.
     """
@@ -74,9 +75,11 @@ class Acquisition:
         self._wait = wait or self._stop.wait
         self._thread: threading.Thread | None = None
         self._observer: Observer | None = None
+        self._last_picture: Picture | None = None
         self._failures = 0
         self._seq_offset = 0
         self._state: State | None = None
+        self._detail = ""
         self.next_seq = first_seq
         self._missed = 0
         self.pace = Pace()
@@ -103,9 +106,14 @@ class Acquisition:
         return self._missed + (observer.missed if observer is not None else 0)
 
     def picture(self, timeout_s: float) -> Picture | None:
-        """The newest picture with its seq as counted here; None while there is none."""
+        """The newest picture with its seq as counted here; None while there is none.
+
+        Of a source read in this process, the last one is still there when it has ended.
+        """
         observer, offset = self._observer, self._seq_offset
-        picture = observer.picture(timeout_s) if observer is not None else None
+        if observer is None:
+            return self._last_picture
+        picture = observer.picture(timeout_s)
         if picture is None:
             return None
         return replace(picture, frame=replace(picture.frame, seq=picture.frame.seq + offset))
@@ -113,7 +121,8 @@ class Acquisition:
     def run(self) -> None:
         """The loop itself; returns when the source has ended or failed, or on ``stop``."""
         while not self._stop.is_set():
-            self._enter(State.OPENING, "")
+            if self._state is not State.LOST:  # which it stays until a frame comes again
+                self._enter(State.OPENING, "")
             live = False
             try:
                 observer = self._open_observer()
@@ -138,7 +147,7 @@ class Acquisition:
                 self._enter(State.FAILED, f"internal error, please report it: {kind}: {error}")
                 return
             finally:
-                self._missed, self._observer = self.missed, None
+                self._leave()
             pause_s = BACK_OFF_S[min(self._failures, len(BACK_OFF_S) - 1)]
             self._failures += 1
             self._wait(pause_s)
@@ -173,6 +182,11 @@ class Acquisition:
         self._patient = True
         self._enter(State.MEASURING, "")
 
+    def _leave(self) -> None:
+        """Keep what outlasts an observer; it is closed."""
+        self._last_picture = self.picture(0.0)
+        self._missed, self._observer = self.missed, None
+
     def _judge_silence(self, observer: Observer, silent_s: float, nothing_yet: bool) -> None:
         if not observer.live:  # a folder on a slow disk, a replay before its next frame
             return
@@ -187,8 +201,6 @@ class Acquisition:
             raise SourceLost(f"no frame for {silent_s:.0f} s")
 
     def _enter(self, state: State, detail: str) -> None:
-        if state is not self._state or detail:
-            changed = state is not self._state
-            self._state = state
-            if changed or state is not State.STALLED:
-                self._on_state(state, detail)
+        if (state, detail) != (self._state, self._detail):
+            self._state, self._detail = state, detail
+            self._on_state(state, detail)

@@ -306,7 +306,7 @@ class Instrument:
         if state is State.MEASURING:
             happened = "recovered" if before is State.STALLED else "opened"
             self.tell(happened, f"{self._source}: measuring")
-        elif state in _EVENT_OF_STATE:
+        elif state in _EVENT_OF_STATE and state is not before:
             self.tell(_EVENT_OF_STATE[state], detail or f"{self._source}: {state.value}")
         for listener in self.on_state:
             listener(state, detail)

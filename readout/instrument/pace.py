@@ -8,7 +8,7 @@ from statistics import median
 
 
 class Pace:
-    """Keeps the arrival times of the frames of the last two seconds (at least of the last few)."""
+    """Keeps the arrival times of the frames of the last two seconds (of the last nine at least)."""
 
     def __init__(self, *, span_s: float = 2.0) -> None:
         self._span_ns = round(span_s * 1e9)
@@ -16,7 +16,7 @@ class Pace:
 
     def add(self, t_ns: int) -> None:
         self._times_ns.append(t_ns)
-        while len(self._times_ns) > 3 and t_ns - self._times_ns[0] > self._span_ns:
+        while len(self._times_ns) > 9 and t_ns - self._times_ns[0] > self._span_ns:
             self._times_ns.popleft()
 
     @property

@@ -1,0 +1,144 @@
+"""Observing in a child process: its errors, its silence, its death, and ours."""
+
+from __future__ import annotations
+
+import os
+import signal
+import subprocess
+import sys
+import time
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+from readout.errors import SourceLost, SourceStalled
+from readout.instrument.child import ChildObserver
+from readout.model import Observation, Quality, Target
+from tests.instrument.fakes import HEIGHT_PX, WIDTH_PX, open_driver
+
+ROOT = Path(__file__).parents[2]
+
+
+def child(manner: str, **bounds: float) -> ChildObserver:
+    return ChildObserver(
+        f"usb:{manner}", target=Target.CROSSHAIR, open_source=open_driver, **bounds
+    )
+
+
+def next_of(observer: ChildObserver, within_s: float = 20.0) -> Observation:
+    deadline_s = time.monotonic() + within_s
+    while time.monotonic() < deadline_s:
+        try:
+            return observer.observe(0.2)
+        except SourceStalled:
+            continue
+    pytest.fail("no observation from the child")
+
+
+def gone(pid: int) -> bool:
+    try:
+        os.kill(pid, 0)
+    except ProcessLookupError:
+        return True
+    stat = Path(f"/proc/{pid}/stat")
+    return stat.exists() and stat.read_text().rpartition(")")[2].split()[0] == "Z"
+
+
+def test_observations_come_in_order_then_the_loss_by_its_own_words() -> None:
+    with child("frames") as observer:
+        seen = [next_of(observer) for _ in range(10)]
+        with pytest.raises(SourceLost, match="the cable was pulled"):
+            next_of(observer)
+    assert [o.seq for o in seen] == list(range(10))
+    assert (seen[0].width_px, seen[0].height_px) == (WIDTH_PX, HEIGHT_PX)
+    assert Quality.NO_IMAGE in seen[0].sighting.quality  # even pictures hold no crosshair
+
+
+def test_what_cannot_be_opened_says_so() -> None:
+    with child("absent") as observer, pytest.raises(SourceLost, match="not connected"):
+        next_of(observer)
+
+
+def test_opening_never_blocks_the_caller() -> None:
+    begin_s = time.monotonic()
+    with child("hang-in-open") as observer, pytest.raises(SourceStalled):
+        observer.observe(0.05)
+    # spawning, one short wait, and ending a child deaf to everything but SIGKILL (3 x 0.3 s)
+    assert time.monotonic() - begin_s < 5.0
+
+
+@pytest.mark.parametrize(
+    ("manner", "bounds"),
+    [("hang", {"silent_at_most_s": 0.5}), ("hang-in-open", {"open_within_s": 1.0})],
+)
+def test_a_hanging_driver_is_given_up_and_killed(manner: str, bounds: dict[str, float]) -> None:
+    with child(manner, **bounds) as observer:
+        pid = observer.process_id
+        assert pid is not None
+        with pytest.raises(SourceLost, match="has not answered"):
+            while True:
+                next_of(observer)
+        begin_s = time.monotonic()
+    assert time.monotonic() - begin_s < 2.0
+    assert gone(pid)
+
+
+def test_a_crash_is_a_loss() -> None:
+    with child("crash") as observer, pytest.raises(SourceLost, match="has died"):
+        while True:
+            next_of(observer)
+
+
+def test_a_picture_crosses_when_asked_for() -> None:
+    from concurrent.futures import ThreadPoolExecutor
+
+    with child("slow") as observer, ThreadPoolExecutor(1) as pool:
+        next_of(observer)
+        asked = pool.submit(observer.picture, 10.0)
+        while not asked.done():
+            next_of(observer)
+        picture = asked.result()
+    assert picture is not None
+    assert picture.frame.pixels.shape == (HEIGHT_PX, WIDTH_PX)
+    assert np.all(picture.frame.pixels == picture.frame.seq)  # as the driver fills them
+    assert observer.picture(0.1) is None  # closed
+
+
+PARENT = """
+import time
+from readout.model import Target
+from readout.instrument.child import ChildObserver
+from readout.errors import SourceStalled
+from tests.instrument.fakes import open_driver
+
+if __name__ == "__main__":
+    with ChildObserver("usb:hang", target=Target.CROSSHAIR, open_source=open_driver) as observer:
+        while True:
+            try:
+                observer.observe(0.2)
+                break
+            except SourceStalled:
+                continue
+        print(observer.process_id, flush=True)
+        time.sleep(60)
+"""
+
+
+@pytest.mark.skipif(sys.platform == "win32", reason="kills with SIGKILL")
+def test_a_child_inside_a_hanging_driver_ends_with_its_parent(tmp_path: Path) -> None:
+    script = tmp_path / "parent.py"
+    script.write_text(PARENT, "utf-8")
+    environment = {**os.environ, "PYTHONPATH": str(ROOT)}
+    with subprocess.Popen(
+        [sys.executable, str(script)], stdout=subprocess.PIPE, text=True, env=environment
+    ) as parent:
+        assert parent.stdout is not None
+        pid = int(parent.stdout.readline())
+        assert not gone(pid)
+        parent.send_signal(signal.SIGKILL)
+        parent.wait(5.0)
+    deadline_s = time.monotonic() + 5.0
+    while not gone(pid) and time.monotonic() < deadline_s:
+        time.sleep(0.02)
+    assert gone(pid)
