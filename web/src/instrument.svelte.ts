@@ -86,9 +86,21 @@ export class Instrument {
     };
   }
 
-  /** Newest time that may be drawn: that of the hold while one is on. */
+  /**
+   * The right end of what is drawn: that of the hold while one is on, else the newest reading;
+   * when readings stay out it goes on, so that the strip grows white. What has ended stands.
+   */
   get now_s(): number {
-    return this.held?.t_s ?? this.columns.t_s.at(-1) ?? 0;
+    if (this.held) return this.held.t_s;
+    const newest_s = this.columns.t_s.at(-1) ?? 0;
+    const over = this.connected && (this.status?.state === 'ended' || this.status?.state === 'failed');
+    return this.alive || over ? newest_s : newest_s + this.age_s;
+  }
+
+  /** What the right end of the strip is called. */
+  get endWord(): string {
+    if (this.held) return 'held';
+    return this.connected && this.status?.state === 'ended' ? 'end' : 'now';
   }
 
   hold(): void {

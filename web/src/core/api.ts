@@ -32,8 +32,8 @@ const json = (body: unknown): RequestInit => ({
   body: JSON.stringify(body),
 });
 
-export async function recent(from_seq: number): Promise<Readings> {
-  return readingsOf(await (await ask(`api/recent?from_seq=${from_seq}&points=3000`)).json());
+export async function recent(from_seq: number, points: number): Promise<Readings> {
+  return readingsOf(await (await ask(`api/recent?from_seq=${from_seq}&points=${points}`)).json());
 }
 
 export async function readSettings(): Promise<Settings> {

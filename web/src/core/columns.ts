@@ -55,10 +55,11 @@ export class Columns {
     return true;
   }
 
-  /** Rows of a message that are newer than what is here; returns how many were taken. */
-  append(readings: Readings, gap_s: number): number {
+  /** Rows of a message that are newer than what is here and before `before_seq`; returns how many were taken. */
+  append(readings: Readings, gap_s: number, before_seq = Infinity): number {
     let taken = 0;
     for (let i = 0; i < readings.seq.length; i++) {
+      if ((readings.seq[i] ?? 0) >= before_seq) break;
       taken += Number(this.push(rowOf(readings, i), gap_s));
     }
     this.prune();

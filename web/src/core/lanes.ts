@@ -43,7 +43,7 @@ export class LaneMaker {
       marks: [...marksOf(x_low, frame.span, upper, place), ...marksOf(y_low, frame.span, 0, place)],
       span: frame.span,
       low: [x_low, y_low],
-      gaps: gapsOf(t_s, xs),
+      gaps: gapsOf(t_s, xs, to_s),
     };
   }
 }
@@ -67,7 +67,7 @@ function marksOf(low: number, span: number, base: number, place: Place): Lanes['
   }));
 }
 
-function gapsOf(t_s: readonly number[], values: readonly (number | null)[]): [number, number][] {
+function gapsOf(t_s: readonly number[], values: readonly (number | null)[], to_s: number): [number, number][] {
   const gaps: [number, number][] = [];
   let from: number | null = null;
   values.forEach((value, i) => {
@@ -78,9 +78,15 @@ function gapsOf(t_s: readonly number[], values: readonly (number | null)[]): [nu
     }
   });
   const end = t_s.at(-1);
-  if (from !== null && end !== undefined) gaps.push([from, end]);
+  if (end !== undefined) {
+    from ??= to_s - end > END_GAP_S ? end : null;
+    if (from !== null) gaps.push([from, Math.max(end, to_s)]);
+  }
   return gaps;
 }
+
+/** Readings come in lumps: only a longer white end is called a gap. */
+const END_GAP_S = 0.5;
 
 /** Words for times on the axis: how long ago while the strip follows, else the clock. */
 export function timeMarks(
@@ -100,8 +106,8 @@ function timeStep(least_s: number): number {
   return steps.find((step) => step >= least_s) ?? 600;
 }
 
-export function agoWords(ago_s: number, span_s: number): string {
-  if (Math.abs(ago_s) < 1e-6) return 'now';
+export function agoWords(ago_s: number, span_s: number, endWord: string): string {
+  if (Math.abs(ago_s) < 1e-6) return endWord;
   if (span_s > 100) {
     const minutes = ago_s / 60;
     return `−${Number.isInteger(minutes) ? minutes : minutes.toFixed(1)} min`;

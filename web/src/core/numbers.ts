@@ -11,6 +11,13 @@ export function decimalsFor(sd: number | null, most = 4): number {
   return Math.min(most, Math.max(0, 1 - Math.floor(Math.log10(sd))));
 }
 
+/** As `decimalsFor`, but kept at `now` while the noise only hovers about the change (a third). */
+export function decimalsNear(sd: number | null, now: number, most: number): number {
+  if (sd === null) return decimalsFor(sd, most);
+  const [most_now, least_now] = [decimalsFor(sd / 1.3, most), decimalsFor(sd * 1.3, most)];
+  return Math.min(most_now, Math.max(least_now, now));
+}
+
 /** The place of the first digit of `u`: -2 for 0.012. Digits right of it are below `u`. */
 export function placeOf(u: number | null): number {
   if (u === null || !Number.isFinite(u) || u <= 0) return -Infinity;

@@ -44,6 +44,26 @@ export function graduation(span: number, most: number): Graduation {
 }
 
 /**
+ * Graduation of a rule from -range to +range whose ends carry numbers: the finest 1-2-5 step that
+ * divides the range and leaves each number `room_px` on `length_px`.
+ */
+export function ruleGraduation(range: number, length_px: number, room_px: number): Graduation {
+  const whole = (v: number): boolean => Math.abs(v - Math.round(v)) < 1e-6;
+  let numbered = step125((2 * range * room_px) / length_px);
+  while (numbered < range && !whole(range / numbered)) numbered = step125(numbered * 1.01);
+  return graduation(numbered, 1);
+}
+
+const SPANS = [1, 1.5, 2, 3, 4, 5, 7, 10];
+
+/** The smallest round length not below `least` (> 0): finer steps than 1-2-5, to waste less room. */
+export function roundSpan(least: number): number {
+  const decade = 10 ** Math.floor(Math.log10(least) + 1e-9);
+  const factor = SPANS.find((span) => span * decade >= least * (1 - 1e-9)) ?? 10;
+  return factor * decade;
+}
+
+/**
  * The half range of a scale around zero, 1-2-5. Opens at once when the value leaves it, closes
  * when the value has stayed inside the smaller one for `wait_s`.
  */

@@ -6,7 +6,7 @@ export class Settled {
   private since_s: number | null = null;
 
   constructor(
-    private value: number,
+    public value: number,
     private readonly grow_s: number,
     private readonly shrink_s: number,
   ) {}

@@ -14,7 +14,7 @@ export interface Shown {
   unit: Unit;
   x: AxisShown;
   y: AxisShown;
-  /** Absolute tilt, for the drawing of the mirror; null without a calibration. */
+  /** The same tilt in arc-seconds, for the drawing of the mirror; null without a calibration. */
   x_arcsec: number | null;
   y_arcsec: number | null;
   basis: 'average' | 'single' | 'none';
@@ -52,13 +52,16 @@ export function shownAngle(
 ): Shown {
   const averaged = average !== null && average.x_arcsec !== null && average.y_arcsec !== null;
   const single = !averaged && newest.x_arcsec !== null && newest.y_arcsec !== null;
-  const axis = (name: 'x' | 'y'): AxisShown => {
+  const tilt = (name: 'x' | 'y'): number | null => {
     const absolute = averaged ? average[`${name}_arcsec`] : newest[`${name}_arcsec`];
-    if (absolute === null) return NOTHING;
+    return absolute === null ? null : absolute - (zero?.[`${name}_arcsec`] ?? 0);
+  };
+  const axis = (name: 'x' | 'y'): AxisShown => {
+    const value = tilt(name);
+    if (value === null) return NOTHING;
     const sd = newest[`${name}_sd_arcsec`];
     const noise = averaged ? average[`${name}_se_arcsec`] : sd;
     const u = combined(newest[`${name}_u_arcsec`], sd, noise, zero?.[`${name}_sd_arcsec`] ?? 0);
-    const value = absolute - (zero?.[`${name}_arcsec`] ?? 0);
     return {
       value: fromArcsec(value, unit),
       noise: noise === null ? null : spreadFromArcsec(noise, value, unit),
@@ -69,8 +72,8 @@ export function shownAngle(
     unit,
     x: axis('x'),
     y: axis('y'),
-    x_arcsec: averaged ? average.x_arcsec : newest.x_arcsec,
-    y_arcsec: averaged ? average.y_arcsec : newest.y_arcsec,
+    x_arcsec: tilt('x'),
+    y_arcsec: tilt('y'),
     basis: averaged ? 'average' : single ? 'single' : 'none',
     basisWords: averaged ? averageWords(average) : single ? 'one reading alone' : '',
     quality: newest.quality,

@@ -1,9 +1,9 @@
-import { step125 } from './scale';
+import { roundSpan } from './scale';
 
 export type Extent = readonly [low: number, high: number];
 
 export interface Frame {
-  /** Length shown by a window of share 1, a 1-2-5 number. */
+  /** Length shown by a window of share 1, a round number. */
   span: number;
   /** Lower end of each window; it shows `span` times its share from there. */
   low: number[];
@@ -29,17 +29,17 @@ export class Windows {
       least,
       ...extents.map((extent, i) => (extent ? (extent[1] - extent[0]) / this.share(i) : 0)),
     );
-    const roomy = step125(need / 0.7);
+    const roomy = roundSpan(need / 0.7);
     const frame = this.frame;
     if (frame === null || need > 0.9 * frame.span) {
       this.since_s = null;
       return (this.frame = this.around(extents, roomy, null));
     }
-    if (step125(need / 0.55) < frame.span) {
+    if (roundSpan(need / 0.55) < frame.span) {
       this.since_s ??= t_s;
       if (t_s - this.since_s >= this.wait_s) {
         this.since_s = null;
-        return (this.frame = this.around(extents, step125(need / 0.55), null));
+        return (this.frame = this.around(extents, roundSpan(need / 0.55), null));
       }
     } else {
       this.since_s = null;

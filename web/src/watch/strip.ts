@@ -88,7 +88,7 @@ export class StripPlot {
       width: 600,
       height: 180,
       pxAlign: 1,
-      padding: [20, 8, 0, 0],
+      padding: [20, 28, 0, 0],
       legend: { show: false },
       cursor: { y: false, drag: { x: false, y: false }, points: { show: false } },
       scales: {
