@@ -34,7 +34,7 @@ SURE = 4.5
 """a ridge this many noise sd high is hardly noise: some 10^4 places are looked at"""
 FULL_VOTE = 10.0
 LEAST_BANDS = 5
-LEAST_SHARE = 0.15
+LEAST_SHARE = 0.1
 """an arm must be seen in this share of the bands"""
 
 
@@ -147,14 +147,16 @@ def _vote(
     table[:, 1:-1] = table[:, :-2] + table[:, 1:-1] + table[:, 2:]
     best_slope, best_cell = np.unravel_index(int(table.argmax()), table.shape)
     slope, middle_x = float(slopes[best_slope]), float(best_cell - columns // 2)
-    near = np.zeros(0, dtype=bool)
+    in_band = np.tile(band, RIDGES_PER_BAND)
+    sure = np.zeros(0, dtype=np.intp)
     for tolerance in (4.0, 3.0, 2.0, 2.0, 1.5):
-        near = (np.abs(x - middle_x - slope * (y - middle_y)) <= tolerance) & (height > SURE / 2)
-        if np.unique(y[near]).size < LEAST_BANDS:
+        near = np.abs(x - middle_x - slope * (y - middle_y)) <= tolerance
+        best = _highest_of_each(in_band, np.where(near & (height > SURE / 2), height, 0.0))
+        if best.size < LEAST_BANDS:
             return None
-        slope, middle_x = np.polyfit(y[near] - middle_y, x[near], 1, w=np.sqrt(vote[near]))
-    sure = near & (height > SURE)
-    seen = np.unique(y[sure]).size
+        slope, middle_x = np.polyfit(y[best] - middle_y, x[best], 1, w=np.sqrt(vote[best]))
+        sure = best[height[best] > SURE]
+    seen = sure.size
     if seen < max(LEAST_BANDS, LEAST_SHARE * bands) or abs(slope) > STEEPEST:
         return None
     return (
@@ -162,3 +164,11 @@ def _vote(
         float(np.median(height[sure])) * math.sqrt(seen / bands),
         float(np.median(scale[sure])),
     )
+
+
+def _highest_of_each(band: NDArray[np.intp], height: F64) -> NDArray[np.intp]:
+    """Index of the highest ridge of each band that has one above 0."""
+    order = np.argsort(-height, kind="stable")
+    _, first = np.unique(band[order], return_index=True)
+    best = order[first]
+    return np.asarray(best[height[best] > 0])

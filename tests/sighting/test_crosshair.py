@@ -91,6 +91,18 @@ def test_anywhere_in_the_frame_at_any_turn():
             assert np.sign(arm.contrast) == np.sign(crosshair.contrast)
 
 
+@pytest.mark.parametrize("contrast", [6000.0, 330.0])
+def test_no_frame_is_lost_at_any_phase(contrast):
+    """Level and upright lines that keep to one row or column of the averaged picture, too."""
+    rng = np.random.default_rng(18)
+    crosshair = replace(BRIGHT, contrast=contrast)
+    for k in range(64):
+        x, y = 320 + (k * 0.618034) % 1, 240 + k / 64
+        found = locate(frame((480, 640), x, y, crosshair, rng=rng), full_scale=255)
+        assert abs(found.x_px - x) < 5 * found.x_sd_px
+        assert abs(found.y_px - y) < 5 * found.y_sd_px
+
+
 def test_a_prior_changes_nothing_but_the_time():
     rng = np.random.default_rng(13)
     before = locate(frame(SHAPE, 150.0, 110.0, rng=rng), full_scale=255)
