@@ -12,8 +12,8 @@ from readout.errors import NotNow
 from readout.instrument.averaging import Average, Statistic, average_of
 from readout.model import F64, Reading
 
-STILL_WITHIN_ARCSEC = 0.1
-"""Motion smaller than what the eye resolves on a drum does not hinder a zero (common practice)."""
+STILL_WITHIN_ARCSEC = 0.2
+"""Twice what the eye resolves on a drum (common practice): less motion does not hinder a zero."""
 
 
 @dataclass(frozen=True, slots=True)

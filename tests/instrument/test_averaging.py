@@ -1,0 +1,107 @@
+"""The average and its standard error, against series whose true mean is known."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+from scipy.signal import lfilter
+
+from readout.instrument.averaging import (
+    Statistic,
+    TrailingWindow,
+    average_of,
+    standard_error,
+)
+from readout.model import F64, Quality
+from tests.instrument.fakes import reading, unmeasured
+
+SEED = 20261201
+
+
+def ar1(rng: np.random.Generator, rho: float, shape: tuple[int, int]) -> F64:
+    """Stationary first-order autoregressive series of variance 1 and mean 0, one a row."""
+    noise = rng.normal(size=shape) * math.sqrt(1 - rho**2)
+    noise[:, 0] /= math.sqrt(1 - rho**2)
+    return np.asarray(lfilter([1.0], [1.0, -rho], noise, axis=1))
+
+
+def true_sd_of_mean(rho: float, n: int) -> float:
+    """sqrt((1 + 2 sum (1 - k/n) rho^k) / n): the exact variance of the mean of n AR(1) values."""
+    k = np.arange(1, n)
+    return math.sqrt((1 + 2 * float(np.sum((1 - k / n) * rho**k))) / n)
+
+
+@pytest.mark.parametrize("rho", [0.5, 0.9])
+def test_correlated_readings_are_covered_where_the_naive_error_fails(rho: float) -> None:
+    print(f"seed {SEED}")
+    n, repeats = 1000, 1000
+    series = ar1(np.random.default_rng(SEED), rho, (repeats, n))
+    means, claimed = series.mean(axis=1), np.array([standard_error(row) for row in series])
+    naive = series.std(axis=1, ddof=1) / math.sqrt(n)
+    # normal law: 68.3 % within one standard error; 5 % tolerance, 3.4 times the binomial sd
+    assert np.mean(np.abs(means) < claimed) == pytest.approx(0.683, abs=0.05)
+    assert np.mean(np.abs(means) < naive) < 0.5
+    rms = math.sqrt(float(np.mean(claimed**2)))
+    assert rms == pytest.approx(true_sd_of_mean(rho, n), rel=0.1)
+    assert rms == pytest.approx(means.std(), rel=0.1)
+
+
+def test_independent_readings_get_s_over_root_n() -> None:
+    print(f"seed {SEED}")
+    n, repeats = 1000, 500
+    series = np.random.default_rng(SEED).normal(size=(repeats, n))
+    claimed = np.array([standard_error(row) for row in series])
+    plain = series.std(axis=1, ddof=1) / math.sqrt(n)
+    assert np.all(claimed >= plain * (1 - 1e-12))  # never below, but for the last bit
+    assert np.mean(claimed / plain) == pytest.approx(1.0, abs=0.05)
+    assert np.mean(np.abs(series.mean(axis=1)) < claimed) == pytest.approx(0.683, abs=0.06)
+
+
+@given(st.lists(st.floats(-1e4, 1e4), min_size=2, max_size=80))
+def test_the_standard_error_is_a_number_and_never_below_s_over_root_n(values: list[float]) -> None:
+    series = np.array(values)
+    claimed = standard_error(series)
+    assert math.isfinite(claimed)
+    assert claimed >= series.std(ddof=1) / math.sqrt(series.size) * (1 - 1e-9)
+
+
+def test_scaling_the_readings_scales_their_error() -> None:
+    series = ar1(np.random.default_rng(SEED), 0.8, (1, 400))[0]
+    assert standard_error(1e-3 * series + 5.0) == pytest.approx(1e-3 * standard_error(series))
+
+
+def test_one_reading_has_no_standard_error() -> None:
+    assert math.isnan(standard_error(np.array([1.0])))
+
+
+def test_mean_and_median_leave_out_what_is_flagged() -> None:
+    rows = [reading(k, float(x), -float(x)) for k, x in enumerate([1, 2, 6])]
+    rows.append(reading(3, 900.0, 900.0, quality=Quality.SATURATED))
+    mean = average_of(rows, window_s=1.0)
+    assert (mean.x_arcsec, mean.y_arcsec, mean.n) == (3.0, -3.0, 3)
+    median = average_of(rows, window_s=1.0, statistic=Statistic.MEDIAN)
+    assert (median.x_arcsec, median.y_arcsec) == (2.0, -2.0)
+    # variance of the median of normal values: pi/2 times that of the mean (Kendall and Stuart)
+    assert median.x_se_arcsec == pytest.approx(mean.x_se_arcsec * math.sqrt(math.pi / 2))
+
+
+@pytest.mark.parametrize(("good", "bad", "valid"), [(2, 2, True), (2, 3, False), (0, 1, False)])
+def test_an_average_needs_half_of_its_readings_good(good: int, bad: int, valid: bool) -> None:
+    rows = [reading(k, 1.0, 1.0) for k in range(good)] + [unmeasured(good + k) for k in range(bad)]
+    average = average_of(rows, window_s=1.0)
+    assert average.valid is valid
+    assert average.n == good
+    assert math.isfinite(average.x_arcsec) is valid
+
+
+def test_the_window_trails_the_newest_reading() -> None:
+    window = TrailingWindow(1.0)
+    for k in range(25):  # ten a second
+        window.add(reading(k))
+    assert [r.seq for r in window.rows()] == list(range(15, 25))
+    window.add(reading(25, t_s=99.0))
+    assert [r.seq for r in window.rows()] == [25]

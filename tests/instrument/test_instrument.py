@@ -1,0 +1,230 @@
+"""The instrument as a whole, over scripted observers."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable
+from dataclasses import replace
+
+import pytest
+
+from readout.angle import Calibration, nominal_calibration
+from readout.capture.timebase import TimeBase
+from readout.errors import BadInput, NotNow, SourceLost
+from readout.instrument import Event, Instrument, Optics, State
+from readout.instrument.instrument import refuse_unfit
+from readout.instrument.measuring import Measuring
+from readout.instrument.observer import Observer
+from readout.model import Quality, Reading, Target, no_sighting
+from tests.instrument.fakes import (
+    HEIGHT_PX,
+    WIDTH_PX,
+    FakeClock,
+    ScriptedObserver,
+    Step,
+    sighting,
+)
+
+
+def calibration(**changes: object) -> Calibration:
+    made = nominal_calibration(
+        focal_length_mm=300.0, pitch_um=3.45, image_width_px=WIDTH_PX, image_height_px=HEIGHT_PX
+    )
+    return replace(made, **changes)
+
+
+class Bench:
+    """An instrument whose sources play scripts; ``use`` runs one to its end."""
+
+    def __init__(
+        self,
+        *scripts: Iterable[Step],
+        scale: Calibration | Optics | None = None,
+        own: Calibration | None = None,
+        live: bool = True,
+        from_first_frame: bool = False,
+    ) -> None:
+        self.clock = FakeClock()
+        self._scripts = list(scripts)
+        self._own, self._live = own, live
+        self.readings: list[Reading] = []
+        self.events: list[Event] = []
+        self.instrument = Instrument(
+            scale=scale,
+            observe=self._observe,
+            start=TimeBase(self.clock.now_ns, 5_000_000_000),
+            from_first_frame=from_first_frame,
+            clock_ns=self.clock,
+        )
+        self.instrument.on_reading.append(self.readings.append)
+        self.instrument.on_event.append(self.events.append)
+
+    def _observe(self, source: str, target: Target) -> Observer:
+        del source, target
+        script = self._scripts.pop(0)
+        return ScriptedObserver(self.clock, script, live=self._live, calibration=self._own)
+
+    def run(self, source: str = "scripted", *, target: Target = Target.CROSSHAIR) -> Bench:
+        acquisition = self.instrument.use(source, target=target)
+        acquisition._wait = self.clock.wait
+        acquisition.run()
+        return self
+
+    @property
+    def state(self) -> tuple[State, str]:
+        status = self.instrument.status()
+        return status.state, status.state_detail
+
+
+def test_a_frame_becomes_a_reading_in_arcseconds() -> None:
+    bench = Bench([sighting(40.0, 20.0)], scale=calibration()).run()
+    (reading,) = bench.readings
+    # right of the centre by 8.5 px and above it by 3.5 px, each 206264.806 * pitch / (2 f)
+    scale = 206264.806 * 3.45e-3 / (2 * 300.0)
+    assert reading.x_arcsec == pytest.approx(8.5 * scale, rel=1e-6)
+    assert reading.y_arcsec == pytest.approx(3.5 * scale, rel=1e-6)
+    assert reading.quality is Quality.OK
+    assert bench.instrument.newest is not None
+    assert bench.instrument.newest[1] is reading
+
+
+def test_what_cannot_be_measured_is_a_reading_all_the_same() -> None:
+    bench = Bench([None, no_sighting(Quality.NO_IMAGE), None], scale=calibration()).run()
+    assert [r.seq for r in bench.readings] == [0, 1, 2]
+    assert math.isnan(bench.readings[1].x_arcsec)
+    assert bench.readings[1].quality is Quality.NO_IMAGE
+    status = bench.instrument.status()
+    assert (status.frames, status.frames_unusable) == (3, 1)
+
+
+def test_without_a_scale_positions_stand_and_angles_are_void() -> None:
+    bench = Bench([None]).run()
+    assert bench.readings[0].x_px == 32.0
+    assert math.isnan(bench.readings[0].x_arcsec)
+    assert bench.instrument.status().calibration is None
+
+
+def test_optics_give_a_nominal_calibration_for_the_size_of_the_picture() -> None:
+    bench = Bench([None], scale=Optics(300.0, 3.45)).run()
+    used = bench.instrument.status().calibration
+    assert used is not None
+    assert (used.method, used.signs) == ("nominal", "unproven")
+    assert (used.image_width_px, used.image_height_px) == (WIDTH_PX, HEIGHT_PX)
+
+
+def test_a_source_with_its_own_calibration_uses_it_unless_a_file_is_given() -> None:
+    own, given = calibration(id="own"), calibration(id="given")
+    assert Bench([None], own=own).run().readings[0].calibration_id == "own"
+    optics = Bench([None], own=own, scale=Optics(1.0, 1.0)).run()
+    assert optics.readings[0].calibration_id == "own"
+    assert Bench([None], own=own, scale=given).run().readings[0].calibration_id == "given"
+
+
+def test_a_calibration_of_another_size_is_refused_in_one_line() -> None:
+    bench = Bench([None], scale=calibration(image_width_px=1280, image_height_px=720)).run()
+    state, line = bench.state
+    assert state is State.FAILED
+    assert "1280 × 720" in line
+    assert f"{WIDTH_PX} × {HEIGHT_PX}" in line
+    assert "\n" not in line
+    assert bench.readings == []
+
+
+def test_a_calibration_of_another_target_is_refused() -> None:
+    with pytest.raises(BadInput, match="spot"):
+        refuse_unfit(calibration(target=Target.SPOT), WIDTH_PX, HEIGHT_PX, Target.CROSSHAIR)
+    bench = Bench([None], scale=calibration()).run(target=Target.SPOT)
+    assert bench.state[0] is State.FAILED
+
+
+def test_pictures_that_change_their_size_are_refused_and_what_came_before_stands() -> None:
+    bench = Bench([None, None, (100, 80)], scale=calibration(), live=False).run()
+    state, line = bench.state
+    assert state is State.FAILED
+    assert "100 × 80" in line
+    assert len(bench.readings) == 2
+
+
+def test_time_counts_from_the_start_of_the_program_or_from_the_first_frame() -> None:
+    program = Bench([1.0, None, None], scale=calibration()).run()
+    # 1 s of silence, then frames every 0.1 s
+    assert [r.t_s for r in program.readings] == pytest.approx([1.1, 1.2])
+    frames = Bench([1.0, None, None], scale=calibration(), from_first_frame=True).run()
+    assert [r.t_s for r in frames.readings] == pytest.approx([0.0, 0.1])
+
+
+def test_seq_and_counts_go_on_over_a_change_of_source() -> None:
+    bench = Bench([None, None], [None], scale=calibration()).run().run("another")
+    assert [r.seq for r in bench.readings] == [0, 1, 2]
+    assert bench.instrument.status().frames == 3
+    assert bench.instrument.source == "another"
+
+
+def test_events_tell_what_happened_once_each_in_one_line() -> None:
+    gone = SourceLost("gone")
+    script: list[Step] = [*[None] * 5, 0.9, None, gone]
+    bench = Bench(script, [SourceLost("still away")], [None], scale=calibration()).run()
+    told = [event.event for event in bench.events]
+    assert told == ["opened", "stalled", "recovered", "lost", "opened", "ended"]
+    assert all(event.text and "\n" not in event.text for event in bench.events)
+    assert [e.t_s for e in bench.events] == sorted(e.t_s for e in bench.events)
+
+
+def test_zero_is_set_taken_back_and_lost_with_the_source() -> None:
+    bench = Bench([None] * 20, [None], scale=calibration()).run()
+    instrument = bench.instrument
+    zero = instrument.set_zero()
+    assert zero.x_arcsec == pytest.approx(bench.readings[0].x_arcsec)
+    assert instrument.status().zero == zero
+    instrument.clear_zero()
+    assert instrument.zero is None
+    instrument.set_zero()
+    bench.run()
+    assert instrument.zero is None
+
+
+def test_no_zero_without_readings() -> None:
+    with pytest.raises(NotNow):
+        Bench().instrument.set_zero()
+
+
+def test_a_new_scale_begins_average_and_zero_anew() -> None:
+    bench = Bench([None] * 10, scale=calibration()).run()
+    bench.instrument.set_zero()
+    bench.instrument.set_scale(Optics(150.0, 3.45))
+    assert bench.instrument.zero is None
+    assert [e.event for e in bench.events][-1] == "calibration"
+    with pytest.raises(NotNow):
+        bench.instrument.set_zero()
+
+
+def test_the_average_is_null_before_there_is_a_reading() -> None:
+    assert Bench().instrument.average() is None
+    average = Bench([None] * 5, scale=calibration()).run().instrument.average()
+    assert average is not None
+    assert average.n == 5
+
+
+def test_measuring_stops_at_its_limit_with_what_was_asked_for() -> None:
+    bench = Bench([None] * 50, scale=calibration(), from_first_frame=True)
+    measuring = Measuring(bench.instrument, lambda _: None, warn=print, most=7)
+    measuring.run("scripted", target=Target.CROSSHAIR)
+    assert (measuring.n, measuring.good) == (7, 7)
+    bench = Bench([None] * 50, scale=calibration(), from_first_frame=True)
+    measuring = Measuring(bench.instrument, lambda _: None, warn=print, seconds=1.05)
+    measuring.run("scripted", target=Target.CROSSHAIR)
+    assert measuring.n == 11  # 0.0, 0.1 ... 1.0 s
+
+
+def test_measuring_keeps_what_was_written_when_the_disk_is_full() -> None:
+    bench = Bench([None] * 50, scale=calibration())
+    written: list[Reading] = []
+
+    def write(reading: Reading) -> None:
+        if len(written) == 3:
+            raise OSError(28, "No space left on device")
+        written.append(reading)
+
+    with pytest.raises(OSError, match="No space"):
+        Measuring(bench.instrument, write, warn=print).run("scripted", target=Target.CROSSHAIR)
+    assert len(written) == 3
