@@ -43,7 +43,7 @@ const MOST_POINTS = 600;
 export function inkOf(columns: Columns, place: Place, from_s: number, to_s: number): Ink {
   const first = columns.indexAt(from_s);
   const last = Math.min(columns.length, columns.indexAt(to_s + 1e-6));
-  const stride = Math.max(1, Math.ceil((last - first) / MOST_POINTS));
+  const bin_s = (to_s - from_s) / MOST_POINTS;
   const xs = columns.of(place.xSeries);
   const ys = columns.of(place.ySeries);
   const ink: Ink = { t_s: [], x: [], y: [] };
@@ -54,11 +54,14 @@ export function inkOf(columns: Columns, place: Place, from_s: number, to_s: numb
     ink.x.push(x === null ? null : place.x(x));
     ink.y.push(y === null ? null : place.y(y));
   };
-  // Counted from whole strides of the newest row's number, so that the same rows are taken again
-  // from frame to frame and the trail does not shimmer.
+  // The first row of each bin of absolute time: the same rows are taken again from frame to frame,
+  // and the trail does not shimmer.
+  let before = Number.NaN;
   for (let i = first; i < last; i++) {
-    const row = xs[i] ?? null;
-    if (row === null || Math.round((columns.t_s[i] ?? 0) * 1e3) % stride === 0 || i === last - 1) add(i);
+    const bin = Math.floor((columns.t_s[i] ?? 0) / bin_s);
+    const gap = xs[i] === null && ink.x.at(-1) !== null;
+    if (bin !== before || gap || i === last - 1) add(i);
+    before = bin;
   }
   return ink;
 }

@@ -103,7 +103,7 @@ export function timeMarks(
 /** Steps people count time in. */
 function timeStep(least_s: number): number {
   const steps = [0.1, 0.2, 0.5, 1, 2, 5, 10, 15, 30, 60, 120, 300];
-  return steps.find((step) => step >= least_s) ?? 600;
+  return steps.find((step) => step >= least_s * (1 - 1e-9)) ?? 600;
 }
 
 export function agoWords(ago_s: number, span_s: number, endWord: string): string {

@@ -14,8 +14,8 @@ export function direction(axis: Axis, value: number | null): string {
 /** How a person says it. */
 export function lean(axis: Axis, value: number | null): string {
   if (value === null || !Number.isFinite(value)) return '';
-  if (axis === 'y') return value < 0 ? 'top edge leans back' : 'top edge leans towards you';
-  return value < 0 ? 'right edge turned away' : 'right edge turned towards you';
+  if (axis === 'y') return value < 0 ? 'top edge leans back' : 'top edge leans forward';
+  return value < 0 ? 'right edge turned away' : 'right edge turned near';
 }
 
 const QUALITY: Record<string, string> = {
