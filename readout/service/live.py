@@ -99,6 +99,10 @@ def _serve(
             await super().startup(sockets)
             on_ready()
 
+        async def shutdown(self, sockets: list[socket.socket] | None = None) -> None:
+            feed.detach()  # lets the streams end by themselves
+            await super().shutdown(sockets)
+
         @contextmanager
         def capture_signals(self) -> Iterator[None]:
             yield
@@ -116,7 +120,6 @@ def _serve(
 
     def end(_signal: int = 0, _frame: FrameType | None = None) -> None:
         server.should_exit = True
-        feed.detach()
 
     outcome.end.append(end)
     if outcome.failure is not None:  # while the server was being made

@@ -1,0 +1,176 @@
+"""What the service says of the readings: shapes of the contract, null for what is missing."""
+
+from __future__ import annotations
+
+import json
+import math
+
+import cv2
+import numpy as np
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+from starlette.testclient import TestClient
+
+from readout.errors import SourceLost
+from readout.model import Arm, Quality, Reading, Sighting, no_sighting
+from readout.service.feed import Feed
+from readout.service.messages import (
+    encode,
+    reading_message,
+    readings_message,
+    recent_message,
+    sighting_message,
+)
+from tests.instrument.fakes import FakeClock, observation
+from tests.service.conftest import Rig
+
+FORBIDDEN = ("NaN", "Infinity")
+
+
+def strict(text: str) -> object:
+    """JSON without the constants that no other language reads."""
+
+    def refuse(constant: str) -> object:
+        raise AssertionError(f"{constant} on the wire")
+
+    return json.loads(text, parse_constant=refuse)
+
+
+number = st.floats(allow_nan=True, allow_infinity=True)
+
+
+@given(values=st.lists(number, min_size=11, max_size=11), flags=st.integers(0, 2**13 - 1))
+def test_no_number_that_is_none_ever_reaches_the_wire(values: list[float], flags: int) -> None:
+    reading = Reading(7, values[0], 10**18, *values[1:], quality=Quality(flags))
+    feed = Feed(capacity=4)
+    feed.append(reading)
+    clock = FakeClock()
+    arm = Arm(*values[:4])
+    seen = Sighting(values[0], values[1], (1.0, 0.0, 1.0), Quality(flags), arm, None, values[2])
+    messages = [
+        encode(reading_message(reading, None, None)),
+        encode(readings_message([reading], dropped=0, average=None)),
+        encode(recent_message(feed.rows(), None)),
+        encode(sighting_message(observation(0, clock, seen=seen))),
+    ]
+    for message in messages:
+        strict(message)
+    sent = json.loads(messages[0])
+    assert (sent["x_arcsec"] is None) == (not math.isfinite(values[1]))
+    assert sent["quality"] == Quality(flags).words()
+
+
+def test_status_says_what_is_going_on(rig: Rig, client: TestClient) -> None:
+    status = client.get("/api/status").json()
+    assert (status["source"], status["state"], status["calibration"]) == (None, "opening", None)
+    assert status["session_start_utc"] == "2023-11-14T22:13:20.000Z"  # 1.7e9 s after 1970
+    rig.measure([None, no_sighting(Quality.NO_IMAGE)])
+    status = client.get("/api/status").json()
+    assert (status["source"], status["simulated"]) == ("simulated", True)
+    assert (status["state"], status["frames"], status["frames_unusable"]) == ("ended", 2, 1)
+    assert (status["image_width_px"], status["image_height_px"]) == (64, 48)
+    assert status["calibration"]["signs"] == "unproven"
+    assert (status["zero"], status["run"]) == (None, None)
+
+
+def test_the_field_is_what_the_corners_of_the_picture_mean(rig: Rig, client: TestClient) -> None:
+    rig.measure()
+    field = client.get("/api/status").json()["calibration"]["field_arcsec"]
+    # 32 px to a side and 24 px up, each 206264.806 * pitch / (2 f) arcsec (small angles)
+    scale = 206264.806 * 3.45e-3 / (2 * 300.0)
+    expected = [(-32, 24), (32, 24), (32, -24), (-32, -24)]
+    assert np.array(field) == pytest.approx(np.array(expected) * scale, rel=1e-5)
+
+
+def test_reading_and_zero(rig: Rig, client: TestClient) -> None:
+    assert client.get("/api/reading").status_code == 404
+    rig.measure()
+    reading = client.get("/api/reading").json()
+    assert reading["seq"] == 9
+    assert reading["t_s"] == pytest.approx(1.0)
+    assert reading["t_utc"] == "2023-11-14T22:13:21.000Z" or reading["t_utc"].endswith("Z")
+    assert reading["x_rel_arcsec"] is None
+    assert reading["average"]["n"] == 10
+    set_to = client.post("/api/zero")
+    assert set_to.status_code == 200
+    assert set_to.json()["x_arcsec"] == pytest.approx(reading["x_arcsec"])
+    assert client.get("/api/reading").json()["x_rel_arcsec"] == pytest.approx(0.0, abs=1e-6)
+    assert client.get("/api/status").json()["zero"]["n"] == 10
+    assert client.delete("/api/zero").status_code == 204
+    assert client.get("/api/reading").json()["x_rel_arcsec"] is None
+
+
+def test_zero_is_refused_while_flagged(rig: Rig, client: TestClient) -> None:
+    rig.measure([None, None, no_sighting(Quality.NO_IMAGE)])
+    refused = client.post("/api/zero")
+    assert refused.status_code == 409
+    assert refused.headers["content-type"] == "application/problem+json"
+    assert "no image" in refused.json()["detail"]
+
+
+def test_sighting(rig: Rig, client: TestClient) -> None:
+    arm = Arm(angle_deg=0.5, width_px=4.0, contrast=100.0, background=10.0)
+    seen = Sighting(30.5, 20.25, (1e-4, 0.0, 1e-4), Quality.AT_EDGE, arm, None, 110.0)
+    assert client.get("/api/sighting").status_code == 404
+    rig.measure([seen])
+    assert client.get("/api/sighting").json() == {
+        "seq": 0,
+        "x_px": 30.5,
+        "y_px": 20.25,
+        "upright": {"angle_deg": 0.5, "width_px": 4.0, "contrast": 100.0, "background": 10.0},
+        "level": None,
+        "image_width_px": 64,
+        "image_height_px": 48,
+        "peak": 110.0,
+        "quality": ["at_edge"],
+    }
+
+
+def test_recent_rows(rig: Rig, client: TestClient) -> None:
+    rig.measure([None] * 5 + [no_sighting(Quality.DIM)])
+    recent = client.get("/api/recent").json()
+    assert recent["kind"] == "readings"
+    assert recent["seq"] == [0, 1, 2, 3, 4, 5]
+    assert recent["x_arcsec"][5] is None
+    assert recent["quality"][4:] == [[], ["dim"]]
+    lengths = {len(value) for value in recent.values() if isinstance(value, list)}
+    assert lengths == {6}
+    assert client.get("/api/recent?from_seq=4").json()["seq"] == [4, 5]
+    assert client.get("/api/recent?points=1").status_code == 422
+
+
+def test_the_picture(rig: Rig, client: TestClient) -> None:
+    assert client.get("/api/frame.jpg").status_code == 503
+    rig.measure()
+    plain, drawn = client.get("/api/frame.jpg"), client.get("/api/frame.jpg?overlay=1")
+    assert plain.headers["content-type"] == "image/jpeg"
+    assert plain.headers["x-seq"] == "9"
+    picture = cv2.imdecode(np.frombuffer(plain.content, np.uint8), cv2.IMREAD_GRAYSCALE)
+    assert picture.shape == (48, 64)
+    assert cv2.imdecode(np.frombuffer(drawn.content, np.uint8), cv2.IMREAD_COLOR).shape[2] == 3
+
+
+@pytest.mark.parametrize(
+    ("script", "state", "word"),
+    [
+        ([None], "ended", "end"),
+        ([SourceLost("camera 7 is not connected")], "failed", "camera 7 is not connected"),
+    ],
+)
+def test_health_gives_the_reason(
+    rig: Rig, client: TestClient, script: list[None], state: str, word: str
+) -> None:
+    rig.measure(script)
+    health = client.get("/api/health")
+    assert health.status_code == 503
+    assert word in health.json()["detail"]
+    assert client.get("/api/status").json()["state"] == state
+
+
+def test_health_is_good_while_readings_flow(rig: Rig, client: TestClient) -> None:
+    answers = []
+    rig.instrument.on_reading.append(lambda _: answers.append(client.get("/api/health")))
+    rig.measure([None, None])
+    assert answers[1].status_code == 200
+    assert answers[1].json() == {"state": "measuring"}
