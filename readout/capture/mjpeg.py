@@ -2,7 +2,7 @@
 
 Read by a thread of its own, for three reasons: the stamp is that of the arrival, not of the
 moment somebody asked; a wait can end without harm to the connection; and what comes in faster
-than it is measured is dropped, oldest first, and counted, instead of growing old in a buffer.
+than it is measured is dropped, oldest first, instead of growing old in a buffer.
 """
 
 from __future__ import annotations
@@ -31,12 +31,16 @@ _QUEUE_FRAMES = 8
 _SILENCE_S = 30.0  # after this the connection counts as dead
 _BLOCK_BYTES = 65536
 
+_Arrival = tuple[int, int, bytes]
+"""Number, monotonic time in nanoseconds and content of a picture."""
+
 
 class MjpegSource:
     """Frames of one MJPEG stream, in grey, stamped when their last byte arrived.
 
-    A damaged picture becomes a black frame marked ``damaged``; one that comes before any sound one
-    (its size is not known yet) is only counted. ``dropped`` counts what was not handed out.
+    ``seq`` counts pictures as they arrive: one that was dropped is a gap. A damaged picture
+    becomes a black frame marked ``damaged``; one that comes before any sound one is dropped,
+    for its size is not known yet.
     """
 
     live = True
@@ -54,18 +58,11 @@ class MjpegSource:
         self._timebase = TimeBase(0, 0)
         self._link: _Link | None = None
         self._repeats = RepeatWatch()
-        self._seq = 0
-        self._dropped_damaged = 0
         self._like: tuple[tuple[int, ...], int] | None = None
-
-    @property
-    def dropped(self) -> int:
-        """Pictures that arrived and were not handed out, since the stream was opened."""
-        return self._dropped_damaged + (self._link.dropped if self._link else 0)
 
     def __enter__(self) -> Self:
         self._timebase = TimeBase.now(self._clock)
-        self._repeats, self._seq, self._dropped_damaged, self._like = RepeatWatch(), 0, 0, None
+        self._repeats, self._like = RepeatWatch(), None
         self._link = _Link(self._url, self._parts, self._connect_timeout_s, self._clock)
         return self
 
@@ -84,15 +81,12 @@ class MjpegSource:
         if self._link is None:
             raise SourceLost(f"{self._url} is not open: open it first")
         deadline_ns = time.monotonic_ns() + round(timeout_s * 1e9)
-        while True:
+        decoded = None
+        while decoded is None:
             left_s = max(0.0, (deadline_ns - time.monotonic_ns()) * 1e-9)
-            t_mono_ns, data = self._link.next(left_s)
+            seq, t_mono_ns, data = self._link.next(left_s)
             decoded = self._decoded(data)
-            if decoded is not None:
-                break
-            self._dropped_damaged += 1
         pixels, full_scale, quality = decoded
-        seq, self._seq = self._seq, self._seq + 1
         return Frame(
             pixels, seq, t_mono_ns, self._timebase.utc_ns(t_mono_ns), full_scale, quality=quality
         )
@@ -113,10 +107,9 @@ class _Link:
     """The connection and the thread that empties it."""
 
     def __init__(self, url: str, parts: SplitResult, timeout_s: float, clock: Clock) -> None:
-        self.dropped = 0
         self._url, self._clock = url, clock
         self._end = "ended by the server"
-        self._items: queue.Queue[tuple[int, bytes] | None] = queue.Queue(_QUEUE_FRAMES + 1)
+        self._items: queue.Queue[_Arrival | None] = queue.Queue(_QUEUE_FRAMES + 1)
         self._socket, self._response = _connect(url, parts, timeout_s)
         kind = self._response.headers.get_content_type()
         boundary = self._response.headers.get_param("boundary")
@@ -128,8 +121,8 @@ class _Link:
         self._thread = threading.Thread(target=self._run, name="mjpeg", daemon=True)
         self._thread.start()
 
-    def next(self, timeout_s: float) -> tuple[int, bytes]:
-        """Arrival and content of the next picture."""
+    def next(self, timeout_s: float) -> _Arrival:
+        """The next picture."""
         try:
             item = self._items.get(timeout=timeout_s)
         except queue.Empty:
@@ -147,22 +140,23 @@ class _Link:
         self._socket.close()
 
     def _run(self) -> None:
+        seq = 0
         try:
             while data := self._response.read1(_BLOCK_BYTES):
                 t_mono_ns = self._clock()
                 for part in self._parser.feed(data):
-                    self._offer((t_mono_ns, part))
+                    self._offer((seq, t_mono_ns, part))
+                    seq += 1
         except TimeoutError:
             self._end = f"silent for {_SILENCE_S:g} s"
         except (OSError, ValueError, http.client.HTTPException) as error:
             self._end = f"broken off ({error})"
         self._offer(None)
 
-    def _offer(self, item: tuple[int, bytes] | None) -> None:
+    def _offer(self, item: _Arrival | None) -> None:
         if item is not None and self._items.qsize() >= _QUEUE_FRAMES:
             with contextlib.suppress(queue.Empty):
                 self._items.get_nowait()
-                self.dropped += 1
         self._items.put(item)
 
 

@@ -30,6 +30,8 @@ class Source(Protocol):
     def read(self, timeout_s: float) -> Frame:
         """The next frame, within ``timeout_s`` seconds.
 
+        ``seq`` counts from 0 and leaves a gap for each frame known to be dropped.
+
         Raises
         ------
         SourceStalled

@@ -35,6 +35,8 @@ PREFERRED = ("Y12", "Y10", "GREY", "YUYV", "UYVY", "NV12", "Y16", "MJPG")
 _FULL_SCALE = {"Y10": 1023, "Y12": 4095, "Y16": 65535}
 _ENOUGH_PER_S = 15.0
 _BUFFERS = 3
+_OLD_NS = 200_000_000
+_STAMP_BELIEVED_NS = 2_000_000_000
 
 
 def backend() -> int:
@@ -59,7 +61,12 @@ def choose_mode(modes: list[v4l2.Mode]) -> v4l2.Mode | None:
 
 
 class UsbCamera:
-    """Frames of one camera, in grey, stamped right after the grab.
+    """Frames of one camera, in grey.
+
+    The stamp is the driver's own where it has one on the same clock (V4L2: when the picture began
+    to arrive), else that of the moment right after the grab. A reader slower than the camera
+    would measure what waits in the driver's buffers, ever older: pictures older than 0.2 s are
+    skipped as long as a newer one is there, and ``seq`` leaves a gap for each.
 
     Frames of the first second are marked ``settling``, a picture delivered twice ``duplicate``, a
     JPEG that came broken ``damaged``.
@@ -84,6 +91,7 @@ class UsbCamera:
         self._repeats = RepeatWatch()
         self._seq = 0
         self._t_first_ns: int | None = None
+        self._t_last_ns = 0
         self._format = ""
         self._shape = (0, 0)
 
@@ -114,7 +122,8 @@ class UsbCamera:
         self._capture = capture
         self._negotiate(self._mode or (choose_mode(_modes(camera)) if on_linux else None))
         self._timebase = TimeBase.now(self._clock)
-        self._repeats, self._seq, self._t_first_ns = RepeatWatch(), 0, None
+        self._repeats, self._seq = RepeatWatch(), 0
+        self._t_first_ns, self._t_last_ns = None, 0
         return self
 
     def __exit__(
@@ -132,13 +141,17 @@ class UsbCamera:
         capture = self._capture
         if capture is None:
             raise SourceLost(f"camera {self._which} is not open: open it first")
-        self._wait(capture, timeout_s)
-        grabbed = capture.grab()
-        t_mono_ns = self._clock()
-        retrieved, picture = capture.retrieve() if grabbed else (False, None)
+        if not self._ready(capture, timeout_s):
+            raise self._silent(timeout_s)
+        t_mono_ns = self._grab(capture)
+        while self._clock() - t_mono_ns > _OLD_NS and self._ready(capture, 0.0):
+            t_mono_ns = self._grab(capture)
+            self._seq += 1
+        retrieved, picture = capture.retrieve()
         if not retrieved or picture is None:
             raise self._lost()
         pixels, full_scale, quality = self._pixels(picture)
+        self._t_last_ns = t_mono_ns
         if self._t_first_ns is None:
             self._t_first_ns = t_mono_ns
         if t_mono_ns - self._t_first_ns < self._settle_ns:
@@ -166,18 +179,32 @@ class UsbCamera:
             int(capture.get(cv2.CAP_PROP_FRAME_WIDTH)),
         )
 
-    def _wait(self, capture: cv2.VideoCapture, timeout_s: float) -> None:
-        """Wait for a frame where the system lets us; elsewhere the grab itself is bounded."""
+    def _ready(self, capture: cv2.VideoCapture, timeout_s: float) -> bool:
+        """True once a frame waits, where the system tells; elsewhere the grab itself is bounded."""
         if SYSTEM != "Linux":
-            return
+            return timeout_s > 0
         try:
-            ready, _ = cv2.VideoCapture.waitAny([capture], round(timeout_s * 1e9))
+            ready, _ = cv2.VideoCapture.waitAny([capture], max(1, round(timeout_s * 1e9)))
         except cv2.error:
             raise self._lost() from None
-        if not ready:
-            if not Path(self._camera.path if self._camera else "").exists():
-                raise self._lost()
-            raise SourceStalled(f"camera {self._which}: no frame within {timeout_s:.3g} s")
+        return bool(ready)
+
+    def _grab(self, capture: cv2.VideoCapture) -> int:
+        """Take the next frame; returns its time on the monotonic clock."""
+        if not capture.grab():
+            raise self._lost()
+        now_ns = self._clock()
+        if SYSTEM == "Linux":
+            driver_ns = round(capture.get(cv2.CAP_PROP_POS_MSEC) * 1e6)
+            age_ns = now_ns - driver_ns
+            if driver_ns > self._t_last_ns and 0 <= age_ns < _STAMP_BELIEVED_NS:
+                return driver_ns
+        return now_ns
+
+    def _silent(self, timeout_s: float) -> SourceStalled | SourceLost:
+        if not Path(self._camera.path if self._camera else "").exists():
+            return self._lost()
+        return SourceStalled(f"camera {self._which}: no frame within {timeout_s:.3g} s")
 
     def _lost(self) -> SourceLost:
         """Close what has failed: it would go on giving old frames or none."""

@@ -11,6 +11,7 @@ import numpy as np
 class FakeCapture:
     """Behaves as a driver's capture does, including its bad manners.
 
+    ``stamps_ms``: what the driver says of the time of each picture; nothing without it.
     ``script``: what each grab brings: a picture, "fails" (grab refused), "torn" (grab taken,
     nothing to retrieve) or "silent" (no frame comes). Once a grab failed, retrieving gives the
     picture before, as V4L2 does; and it goes on saying that it is open.
@@ -21,6 +22,7 @@ class FakeCapture:
         self.set_calls: list[tuple[int, float]] = []
         self.values: dict[int, float] = {}
         self.released = 0
+        self.stamps_ms: list[float] = []
         self._picture: np.ndarray | None = None
         self._torn = False
 
@@ -43,6 +45,8 @@ class FakeCapture:
         if isinstance(item, str):
             return item == "torn"
         self._picture = item
+        if self.stamps_ms:
+            self.values[cv2.CAP_PROP_POS_MSEC] = self.stamps_ms.pop(0)
         return True
 
     def retrieve(self) -> tuple[bool, np.ndarray | None]:
@@ -72,7 +76,7 @@ def video_capture(fake: FakeCapture) -> type:
             if fake.script and isinstance(fake.script[0], str) and fake.script[0] == "silent":
                 fake.script.pop(0)
                 return False, []
-            return True, [0]
+            return bool(fake.script) or timeoutNs > 1, [0]
 
     return Opened
 
@@ -101,6 +105,3 @@ def ticking(step_ns: int = 40_000_000) -> Callable[[], int]:
         return now[0]
 
     return clock
-
-
-FOURCC = cv2.CAP_PROP_FOURCC

@@ -113,6 +113,36 @@ def test_silence_of_a_camera_that_is_gone_is_lost(bench: Bench):
             source.read(0.5)
 
 
+def test_the_stamp_is_the_drivers_where_it_can_be_believed(bench: Bench):
+    clock = FakeClock(10_000_000_000)
+    source = bench.source([scene(k) for k in range(5)], clock=clock)
+    #              sound,  no stamp, falls,  far off, in the future
+    bench.fake.stamps_ms = [9990.5, -1.0, 9000.0, 1.0, 99999.0]
+    with source:
+        stamps = [source.read(1.0).t_mono_ns for _ in range(5)]
+    assert stamps == [9_990_500_000, *[10_000_000_000] * 4]
+
+
+def test_a_slow_reader_skips_what_grew_old_in_the_buffers(bench: Bench):
+    clock = FakeClock(10_000_000_000)
+    source = bench.source([scene(k) for k in range(5)], clock=clock)
+    bench.fake.stamps_ms = [9700.0, 9750.0, 9850.0, 9900.0, 9950.0]
+    with source:
+        frames = [source.read(1.0) for _ in range(3)]
+    # 0.3 s and 0.25 s old: skipped; 0.15 s: the first one young enough; then none is lost
+    assert [frame.seq for frame in frames] == [2, 3, 4]
+    np.testing.assert_array_equal(frames[0].pixels, scene(2))
+    assert frames[0].t_mono_ns == 9_850_000_000
+
+
+def test_an_old_picture_is_better_than_none(bench: Bench):
+    source = bench.source([scene(0)], clock=FakeClock(10_000_000_000))
+    bench.fake.stamps_ms = [9000.0]
+    with source:
+        frame = source.read(1.0)
+    assert (frame.seq, frame.t_mono_ns) == (0, 9_000_000_000)
+
+
 def test_the_first_second_is_settling(bench: Bench):
     clock = FakeClock()
     frames = []
