@@ -42,6 +42,7 @@ def live(
     """
     from platformdirs import user_data_path
 
+    from readout.files.calibration_file import load_calibration
     from readout.service.control import Options
     from readout.service.live import Place, run_live
     from readout.service.settings import default_settings_path
@@ -51,7 +52,8 @@ def live(
         data=data or user_data_path("readout", appauthor=False),
         settings=settings or default_settings_path(),
     )
-    run_live(Options(source, target, calibration), place, browser=browser, say=print_line)
+    options = Options(source, target, load_calibration(calibration) if calibration else None)
+    run_live(options, place, browser=browser, say=print_line)
 
 
 command = live

@@ -24,7 +24,7 @@ class Options:
 
     source: str | None = None
     target: Target | None = None
-    calibration: Path | None = None
+    calibration: Calibration | None = None
 
 
 class Control:
@@ -35,6 +35,7 @@ class Control:
         self._store = store
         self._options = options
         self._lock = threading.Lock()
+        self._from_settings: Calibration | None = None
 
     @property
     def settings(self) -> Settings:
@@ -43,8 +44,9 @@ class Control:
     def start(self) -> None:
         """Begin to measure, in the acquisition's thread. Raises BadInput as `readout live` says."""
         settings = self._store.current
+        self._from_settings = _calibration_named(settings)
         self._instrument.set_averaging(settings.average_s, settings.statistic)
-        self._instrument.set_scale(self._scale(settings))
+        self._instrument.set_scale(self._scale(settings, self._from_settings))
         self._use(settings, patient=self._options.source is None)
 
     def change(self, changes: dict[str, Any]) -> Settings:
@@ -55,7 +57,10 @@ class Control:
         with self._lock:
             before = self._store.current
             after = self._store.merged(changes)
-            scale = self._scale(after)
+            from_settings = self._from_settings
+            if "calibration" in changes:  # read anew even if the name is the same
+                from_settings = _calibration_named(after)
+            scale = self._scale(after, from_settings)
             describe_source(self._source(after))
             same_source = self._source(after) == self._source(before)
             same_target = self._target(after) is self._target(before)
@@ -68,6 +73,7 @@ class Control:
                     self._target(after),
                 )
             self._store.keep(after)
+            self._from_settings = from_settings
             self._instrument.set_averaging(after.average_s, after.statistic)
             if same_source and same_target:
                 self._instrument.set_scale(scale)
@@ -89,9 +95,11 @@ class Control:
     def _target(self, settings: Settings) -> Target:
         return self._options.target or settings.target
 
-    def _scale(self, settings: Settings) -> Calibration | Optics | None:
-        if self._options.calibration is not None:
-            return load_calibration(self._options.calibration)
-        if settings.calibration is not None:
-            return load_calibration(Path(settings.calibration))
-        return settings.optics.optics
+    def _scale(
+        self, settings: Settings, from_settings: Calibration | None
+    ) -> Calibration | Optics | None:
+        return self._options.calibration or from_settings or settings.optics.optics
+
+
+def _calibration_named(settings: Settings) -> Calibration | None:
+    return load_calibration(Path(settings.calibration)) if settings.calibration else None

@@ -73,6 +73,8 @@ async def _rows(feed: Feed, every_s: float) -> AsyncIterator[list[Row]]:
                 told_dropped = subscription.dropped
             if rows:
                 yield rows
+        if rows := interval.rows([]):  # the service ends: what is held is not lost
+            yield rows
     finally:
         feed.unsubscribe(subscription)
 

@@ -96,6 +96,10 @@ class SettingsStore:
 
         Raises BadInput for a value that cannot be.
         """
+        try:
+            json.dumps(changes, allow_nan=False)
+        except ValueError as error:
+            raise BadInput("a number is infinite or none at all: correct it") from error
         return _checked(_merge(self._current.document(), changes), "")
 
     def keep(self, settings: Settings) -> None:
@@ -127,16 +131,12 @@ def _load(path: Path) -> Settings:
 
 def _checked(document: dict[str, Any], where: str) -> Settings:
     try:
-        settings = Settings.model_validate(document)
-        json.dumps(settings.document(), allow_nan=False)
+        return Settings.model_validate(document)
     except ValidationError as error:
         fault = error.errors()[0]
         name = ".".join(str(part) for part in fault["loc"])
         message = fault["msg"][0].lower() + fault["msg"][1:]
         raise BadInput(f"{where}{name}: {message}") from error
-    except ValueError as error:
-        raise BadInput(f"{where}a number is infinite or none at all: correct it") from error
-    return settings
 
 
 def _merge(old: dict[str, Any], changes: dict[str, Any]) -> dict[str, Any]:

@@ -11,7 +11,7 @@ from starlette.testclient import TestClient
 
 from readout.angle import Calibration, nominal_calibration
 from readout.capture.timebase import TimeBase
-from readout.instrument import Instrument, Optics
+from readout.instrument import Instrument
 from readout.instrument.observer import Observer
 from readout.model import Target
 from readout.service.app import make_app
@@ -22,6 +22,7 @@ from tests.instrument.fakes import HEIGHT_PX, WIDTH_PX, FakeClock, ScriptedObser
 
 PORT = 8470
 HERE = f"http://127.0.0.1:{PORT}"
+STREAM = f"ws://127.0.0.1:{PORT}/api/stream"
 
 
 def small_calibration() -> Calibration:
@@ -39,7 +40,6 @@ class Rig:
         self.script: list[Step] = []
         self.observers: list[ScriptedObserver] = []
         self.instrument = Instrument(
-            scale=small_calibration(),
             observe=self._observe,
             start=TimeBase(self.clock.now_ns, 1_700_000_000_000_000_000),
             clock_ns=self.clock,
@@ -49,6 +49,7 @@ class Rig:
         self.instrument.on_state.append(lambda *_: self.feed.announce())
         self.store = SettingsStore(folder / "settings.json")
         self.control = Control(self.instrument, self.store, Options())
+        self.fix_calibration(small_calibration())
         self.static = folder / "static"
 
     def _observe(self, source: str, target: Target) -> Observer:
@@ -62,8 +63,10 @@ class Rig:
         acquisition._wait = self.clock.wait
         acquisition.run()
 
-    def scale(self, scale: Calibration | Optics | None) -> None:
-        self.instrument.set_scale(scale)
+    def fix_calibration(self, calibration: Calibration | None) -> None:
+        """As given on the command line; None leaves the scale to the settings."""
+        self.control._options = Options(calibration=calibration)
+        self.instrument.set_scale(calibration)
 
     @contextmanager
     def asked(self) -> Iterator[TestClient]:

@@ -6,7 +6,7 @@ import pytest
 from starlette.testclient import TestClient
 from starlette.websockets import WebSocketDisconnect
 
-from tests.service.conftest import HERE
+from tests.service.conftest import HERE, STREAM
 
 STRANGERS = [
     "readout.example:8470",
@@ -26,6 +26,9 @@ def test_this_machine_is_answered(client: TestClient, host: str) -> None:
     assert answer.status_code == 200
     assert answer.headers["content-security-policy"].startswith("default-src 'self'")
     assert answer.headers["x-content-type-options"] == "nosniff"
+    headers = {"Host": host, "Origin": f"http://{host}"}
+    with client.websocket_connect(STREAM, headers=headers) as session:
+        assert session.receive_json()["kind"] == "status"
 
 
 @pytest.mark.parametrize("host", STRANGERS)
@@ -35,7 +38,7 @@ def test_another_host_name_is_refused(client: TestClient, host: str) -> None:
     assert answer.headers["content-type"] == "application/problem+json"
     with (
         pytest.raises(WebSocketDisconnect),
-        client.websocket_connect("/api/stream", headers={"Host": host}),
+        client.websocket_connect(STREAM, headers={"Host": host}),
     ):
         pass
 
@@ -61,7 +64,7 @@ def test_a_page_of_another_address_is_refused(client: TestClient, origin: str) -
         assert answer.headers["content-type"] == "application/problem+json"
     with (
         pytest.raises(WebSocketDisconnect),
-        client.websocket_connect("/api/stream", headers=headers),
+        client.websocket_connect(STREAM, headers=headers),
     ):
         pass
 

@@ -1,0 +1,107 @@
+"""The logging endpoint: rows as they come, means with count and scatter, losses told."""
+
+from __future__ import annotations
+
+import asyncio
+import csv
+import io
+import json
+import math
+from collections.abc import AsyncIterator, Callable
+
+import numpy as np
+import pytest
+
+from readout.model import Reading
+from readout.service import log_routes
+from readout.service.feed import Feed
+from readout.service.log_routes import Interval
+from tests.instrument.fakes import reading, unmeasured
+
+Lines = Callable[[Feed, float], AsyncIterator[str]]
+
+
+def logged(lines: Lines, every_s: float, readings: list[Reading]) -> str:
+    """What a client reads that comes before the readings and stays until the end."""
+
+    async def run() -> str:
+        feed = Feed(capacity=1000)
+        feed.attach(asyncio.get_running_loop())
+        text: list[str] = []
+
+        async def client() -> None:
+            async for line in lines(feed, every_s):
+                text.append(line)  # noqa: PERF401 (what was read stays when the client is ended)
+
+        reading_client = asyncio.create_task(client())
+        await asyncio.sleep(0)
+        for each in readings:
+            feed.append(each)
+        await asyncio.sleep(0)
+        await asyncio.sleep(0)
+        feed.detach()
+        await asyncio.wait_for(reading_client, 5.0)
+        assert not feed._subscriptions
+        return "".join(text)
+
+    return asyncio.run(run())
+
+
+def test_every_reading_as_json_lines() -> None:
+    text = logged(log_routes._json_lines, 0.0, [reading(0, 1.5), unmeasured(1)])
+    rows = [json.loads(line) for line in text.splitlines()]
+    assert [row["x_arcsec"] for row in rows] == [1.5, None]
+    assert rows[0]["t_utc"] == "1970-01-01T00:00:00.000Z"
+    assert rows[1]["quality"] == ["no_image"]
+    assert "n" not in rows[0]
+
+
+def test_means_with_count_and_scatter() -> None:
+    values = np.random.default_rng(2).normal(size=30)  # ten a second for 3 s
+    text = logged(log_routes._json_lines, 1.0, [reading(k, x) for k, x in enumerate(values)])
+    rows = [json.loads(line) for line in text.splitlines()]
+    assert len(rows) == 3  # the last one at the end
+    assert rows[0]["x_arcsec"] == pytest.approx(values[:10].mean(), abs=1e-6)
+    assert rows[1]["x_scatter_arcsec"] == pytest.approx(values[10:20].std(ddof=1), abs=1e-6)
+    assert [row["n"] for row in rows] == [10, 10, 10]
+    assert [row["t_s"] for row in rows] == pytest.approx([0.45, 1.45, 2.45])
+
+
+def test_csv_has_one_header_and_empty_cells() -> None:
+    text = logged(
+        log_routes._csv_lines, 1.0, [reading(k, 2.0) for k in range(10)] + [unmeasured(10)]
+    )
+    rows = list(csv.DictReader(io.StringIO(text)))
+    assert rows[0]["x_arcsec"] == "2.0"
+    assert rows[0]["n"] == "10"
+    assert rows[0]["dropped"] == ""
+    assert rows[1]["x_arcsec"] == rows[1]["x_scatter_arcsec"] == ""
+    assert rows[1]["quality"] == "no_image"
+
+
+def test_a_client_that_lags_is_told_how_many_it_lost(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr(log_routes, "QUEUE", 4)
+    readings = [reading(k) for k in range(10)]
+    rows = [json.loads(line) for line in logged(log_routes._json_lines, 0.0, readings).splitlines()]
+    assert {"dropped": 6} in rows
+    assert [round(row["t_s"] * 10) for row in rows if "t_s" in row] == [6, 7, 8, 9]
+    table = logged(log_routes._csv_lines, 0.0, readings)
+    last = list(csv.DictReader(io.StringIO(table)))[-1]
+    assert last["dropped"] == "6"
+    assert last["t_utc"] == ""
+
+
+def test_an_interval_ends_with_the_first_reading_of_the_next_or_with_silence() -> None:
+    interval = Interval(0.5)
+    assert interval.rows([reading(k) for k in range(5)]) == []  # 0.0 to 0.4 s
+    (row,) = interval.rows([reading(5)])
+    assert (row["n"], row["t_s"]) == (5, pytest.approx(0.2))
+    (row,) = interval.rows([])
+    assert row["n"] == 1
+    assert interval.rows([]) == []
+
+
+def test_a_gap_brings_no_rows() -> None:
+    rows = Interval(1.0).rows([reading(0), reading(1, t_s=60.0), reading(2, t_s=61.0)])
+    assert [row["t_s"] for row in rows] == [0.0, 60.0]
+    assert not any(isinstance(v, float) and math.isnan(v) for row in rows for v in row.values())

@@ -1,0 +1,188 @@
+"""Settings: merged, kept whole, refused with a line, never lost."""
+
+from __future__ import annotations
+
+import json
+from dataclasses import replace
+from pathlib import Path
+
+import pytest
+from starlette.testclient import TestClient
+
+from readout.errors import BadInput
+from readout.files.calibration_file import save_calibration
+from readout.service.settings import Settings, SettingsStore
+from tests.service.conftest import Rig, small_calibration
+
+
+def test_defaults_are_what_the_page_expects(client: TestClient) -> None:
+    assert client.get("/api/settings").json() == {
+        "schema": "readout.settings/1",
+        "unit": "arcsec",
+        "theme": "auto",
+        "target": "crosshair",
+        "source": None,
+        "calibration": None,
+        "average_s": 1.0,
+        "statistic": "mean",
+        "goal": {"x_arcsec": None, "y_arcsec": None},
+        "tolerance_arcsec": None,
+        "optics": {"focal_length_mm": None, "pitch_um": None, "mounting": "straight"},
+    }
+
+
+def test_changes_are_merged_kept_and_answered_whole(rig: Rig, client: TestClient) -> None:
+    client.put("/api/settings", json={"goal": {"x_arcsec": 1.5}, "unit": "mm/m"})
+    answer = client.put("/api/settings", json={"goal": {"y_arcsec": -2}}).json()
+    assert answer["goal"] == {"x_arcsec": 1.5, "y_arcsec": -2.0}
+    assert answer["unit"] == "mm/m"
+    assert SettingsStore(rig.store.path).current.document() == answer
+
+
+def test_unknown_keys_are_kept_at_every_level(rig: Rig, client: TestClient, tmp_path: Path) -> None:
+    path = tmp_path / "other.json"
+    path.write_text(
+        json.dumps({"schema": "readout.settings/1", "later": {"a": [1]}, "goal": {"z": 3}}), "utf-8"
+    )
+    store = SettingsStore(path)
+    store.keep(store.merged({"unit": "urad"}))
+    kept = json.loads(path.read_text("utf-8"))
+    assert kept["later"] == {"a": [1]}
+    assert kept["goal"]["z"] == 3
+    assert kept["unit"] == "urad"
+
+
+@pytest.mark.parametrize(
+    ("change", "word"),
+    [
+        ({"unit": "furlong"}, "unit"),
+        ({"theme": "pink"}, "theme"),
+        ({"target": "cat"}, "target"),
+        ({"average_s": 0}, "average_s"),
+        ({"average_s": 1e9}, "average_s"),
+        ({"statistic": "mode"}, "statistic"),
+        ({"tolerance_arcsec": -1}, "tolerance_arcsec"),
+        ({"goal": {"x_arcsec": "high"}}, "goal.x_arcsec"),
+        ({"goal": 3}, "goal"),
+        ({"optics": {"mounting": "askew"}}, "optics.mounting"),
+        ({"optics": {"focal_length_mm": 0}}, "optics.focal_length_mm"),
+        ({"source": "nowhere at all"}, "nowhere at all"),
+        ({"calibration": "/none.json"}, "none.json"),
+        ({"schema": "other/1"}, "schema"),
+    ],
+)
+def test_bad_values_are_refused_in_plain_words_and_nothing_changes(
+    rig: Rig, client: TestClient, change: dict[str, object], word: str
+) -> None:
+    before = client.get("/api/settings").json()
+    answer = client.put("/api/settings", json=change)
+    assert answer.status_code == 422
+    assert word in answer.json()["detail"]
+    assert client.get("/api/settings").json() == before
+    assert not rig.store.path.exists()
+
+
+@pytest.mark.parametrize("body", ["[]", "3", "{", '{"later": NaN}', '{"average_s": Infinity}'])
+def test_a_body_that_is_no_object_or_no_json_is_refused(client: TestClient, body: str) -> None:
+    answer = client.put("/api/settings", content=body, headers={"Content-Type": "application/json"})
+    assert answer.status_code == 422
+    assert answer.headers["content-type"] == "application/problem+json"
+
+
+@pytest.mark.parametrize(
+    "content", [b"", b"{", b"\xff", b"[]", b"{}", b'{"schema": "readout.settings/1", "unit": 3}']
+)
+def test_a_broken_file_is_refused_in_one_line_and_left_alone(
+    tmp_path: Path, content: bytes
+) -> None:
+    path = tmp_path / "settings.json"
+    path.write_bytes(content)
+    with pytest.raises(BadInput) as refused:
+        SettingsStore(path)
+    assert str(path) in str(refused.value)
+    assert "\n" not in str(refused.value)
+    assert path.read_bytes() == content
+
+
+def test_no_file_means_defaults_and_none_is_written(tmp_path: Path) -> None:
+    path = tmp_path / "deep" / "settings.json"
+    store = SettingsStore(path)
+    assert store.current == Settings()
+    assert not path.parent.exists()
+    store.keep(store.merged({"theme": "night"}))
+    assert SettingsStore(path).current.theme == "night"
+
+
+def test_settings_that_cannot_be_written_are_refused(rig: Rig, client: TestClient) -> None:
+    rig.store.path = rig.store.path.parent / "file" / "settings.json"
+    rig.store.path.parent.write_text("in the way", "utf-8")
+    answer = client.put("/api/settings", json={"unit": "urad"})
+    assert answer.status_code == 422
+    assert "cannot write" in answer.json()["detail"]
+    assert client.get("/api/settings").json()["unit"] == "arcsec"
+
+
+def test_averaging_takes_effect_at_once(rig: Rig, client: TestClient) -> None:
+    rig.measure([None] * 30)
+    client.put("/api/settings", json={"average_s": 0.55, "statistic": "median"})
+    average = client.get("/api/reading").json()["average"]
+    assert (average["window_s"], average["statistic"], average["n"]) == (0.55, "median", 6)
+
+
+def test_optics_take_effect_at_once_without_a_calibration_file(
+    rig: Rig, client: TestClient
+) -> None:
+    rig.fix_calibration(None)
+    seen: list[tuple[int, str | None]] = []
+    rig.instrument.on_reading.append(lambda r: seen.append((r.seq, r.calibration_id)))
+
+    def set_optics_after_the_first(reading: object) -> None:
+        del reading
+        if len(seen) == 1:
+            optics = {"focal_length_mm": 200.0, "pitch_um": 3.0}
+            assert client.put("/api/settings", json={"optics": optics}).status_code == 200
+
+    rig.instrument.on_reading.append(set_optics_after_the_first)
+    rig.measure([None] * 3)
+    assert seen[0] == (0, None)
+    assert str(seen[1][1]).startswith("nominal-")
+
+
+def test_a_calibration_file_that_does_not_fit_is_refused(
+    rig: Rig, client: TestClient, tmp_path: Path
+) -> None:
+    rig.fix_calibration(None)
+    rig.measure()
+    other, fits = tmp_path / "other.json", tmp_path / "fits.json"
+    save_calibration(other, replace(small_calibration(), image_width_px=1280))
+    save_calibration(fits, replace(small_calibration(), id="from-file"))
+    refused = client.put("/api/settings", json={"calibration": str(other)})
+    assert refused.status_code == 422
+    assert "1280" in refused.json()["detail"]
+    assert client.put("/api/settings", json={"calibration": str(fits)}).status_code == 200
+    fits.unlink()  # what is in use stays in use
+    assert client.put("/api/settings", json={"theme": "night"}).status_code == 200
+    rig.measure()
+    assert rig.instrument.status().calibration.id == "from-file"
+
+
+def test_a_calibration_of_the_command_line_wins(
+    rig: Rig, client: TestClient, tmp_path: Path
+) -> None:
+    path = tmp_path / "c.json"
+    save_calibration(path, replace(small_calibration(), id="from-file"))
+    client.put("/api/settings", json={"calibration": str(path)})
+    rig.measure()
+    assert rig.instrument.status().calibration == small_calibration()
+
+
+def test_another_source_is_measured_at_once(rig: Rig, client: TestClient, tmp_path: Path) -> None:
+    (tmp_path / "frames").mkdir()
+    rig.measure([None, None])
+    rig.script = [None]
+    answer = client.put("/api/settings", json={"source": str(tmp_path / "frames")})
+    assert answer.status_code == 200
+    rig.instrument._acquisition._thread.join(5.0)
+    status = client.get("/api/status").json()
+    assert status["source_name"] == "folder frames"
+    assert status["frames"] == 3

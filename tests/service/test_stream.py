@@ -1,0 +1,108 @@
+"""The stream over a WebSocket, as a page reads it."""
+
+from __future__ import annotations
+
+import time
+from typing import Any
+
+import pytest
+from starlette.testclient import TestClient, WebSocketTestSession
+
+from readout.model import Quality, no_sighting
+from readout.service import stream
+from readout.service.feed import Feed
+from tests.instrument.fakes import reading
+from tests.service.conftest import STREAM, Rig
+
+COLUMNS = {
+    *("seq", "t_s", "x_arcsec", "y_arcsec", "x_sd_arcsec", "y_sd_arcsec"),
+    *("x_u_arcsec", "y_u_arcsec", "x_px", "y_px", "quality"),
+}
+
+
+def messages_until(session: WebSocketTestSession, kind: str, **found: object) -> list[Any]:
+    """All messages up to the first of ``kind`` with these contents."""
+    messages: list[Any] = []
+    deadline_s = time.monotonic() + 10.0
+    while time.monotonic() < deadline_s:
+        messages.append(session.receive_json())
+        last = messages[-1]
+        if last["kind"] == kind and all(last.get(k) == v for k, v in found.items()):
+            return messages
+    pytest.fail(f"no {kind} with {found} in {messages}")
+
+
+def test_status_comes_at_once_then_readings_events_and_changes(
+    rig: Rig, client: TestClient
+) -> None:
+    with client.websocket_connect(STREAM) as session:
+        first = session.receive_json()
+        assert (first["kind"], first["state"]) == ("status", "opening")
+        rig.measure([None, None, no_sighting(Quality.NO_IMAGE)])
+        messages = messages_until(session, "status", state="ended")
+    readings = [m for m in messages if m["kind"] == "readings"]
+    for message in readings:
+        assert set(message) >= COLUMNS | {"dropped", "average"}
+        assert len({len(message[name]) for name in COLUMNS}) == 1
+    assert [seq for m in readings for seq in m["seq"]] == [0, 1, 2]
+    assert [q for m in readings for q in m["quality"]] == [[], [], ["no_image"]]
+    assert readings[-1]["x_arcsec"][-1] is None
+    events = [m for m in messages if m["kind"] == "event"]
+    assert [m["event"] for m in events] == ["opened", "ended"]
+    assert set(events[0]) == {"kind", "t_s", "t_utc", "event", "text"}
+
+
+def test_two_viewers_see_the_same_and_a_leaving_one_is_let_go(rig: Rig, client: TestClient) -> None:
+    with client.websocket_connect(STREAM) as stays:
+        with client.websocket_connect(STREAM) as leaves:
+            leaves.receive_json()
+            rig.measure([None])
+            messages_until(leaves, "readings", seq=[0])
+        rig.feed.append(reading(1))
+        messages_until(stays, "readings", seq=[1])
+    deadline_s = time.monotonic() + 5.0
+    while rig.feed._subscriptions and time.monotonic() < deadline_s:
+        time.sleep(0.01)
+    assert not rig.feed._subscriptions
+
+
+def test_what_a_slow_viewer_lost_is_told_in_its_next_message(
+    rig: Rig, client: TestClient, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr(stream, "QUEUE", 4)
+    with client.websocket_connect(STREAM) as session:
+        session.receive_json()
+        (subscription,) = rig.feed._subscriptions
+        for k in range(10):  # as if they had come during one send
+            subscription._readings.append(reading(k)) if k < 4 else subscription.offer(reading(k))
+        rig.feed.announce()
+        message = messages_until(session, "readings")[-1]
+    assert message["seq"] == [6, 7, 8, 9]
+    assert message["dropped"] == 6
+    assert rig.feed.dropped == 6
+
+
+def test_changes_of_settings_and_zero_reach_the_viewers(rig: Rig, client: TestClient) -> None:
+    rig.measure()
+    with client.websocket_connect(STREAM) as session:
+        session.receive_json()
+        client.post("/api/zero")
+        assert messages_until(session, "status")[-1]["zero"]["n"] == 10
+        client.put("/api/settings", json={"unit": "urad"})
+        messages_until(session, "event", event="settings")
+
+
+def test_the_stream_ends_with_the_service(rig: Rig) -> None:
+    with rig.asked() as client, client.websocket_connect(STREAM) as session:
+        session.receive_json()
+        rig.feed.detach()
+        closing = session.receive()
+        while closing["type"] == "websocket.send":
+            closing = session.receive()
+    assert closing["type"] == "websocket.close"
+
+
+def test_a_feed_without_viewers_takes_readings_all_the_same() -> None:
+    feed = Feed(capacity=3)
+    feed.append(reading(0))
+    assert feed.dropped == 0
