@@ -2,8 +2,8 @@ import { recent, readSettings, Refused, setZero, takeZeroBack, writeSettings } f
 import { Columns } from './core/columns';
 import { Feed } from './core/feed';
 import { ProtocolError } from './core/fields';
-import { oncePerFrame } from './core/pace';
-import { decode, type Average, type Readings, type SourceEvent, type Status } from './core/protocol';
+import { nextFrame, Pace, unhurried } from './core/pace';
+import { decode, type Average, type Message, type Readings, type SourceEvent, type Status } from './core/protocol';
 import { FIRST_SETTINGS, type Settings } from './core/settings';
 import { shownAngle, shownPosition, type Newest, type Shown } from './core/shown';
 import { BROWSER, Connection } from './core/socket';
@@ -57,7 +57,11 @@ export class Instrument {
   private average: Average | null = null;
   private arrived_ms = 0;
   private ticks = 0;
-  private readonly paint = oncePerFrame(() => (this.pulse += 1));
+  private readonly lessMotion = matchMedia('(prefers-reduced-motion: reduce)');
+  private readonly paint = new Pace(
+    () => (this.pulse += 1),
+    () => (this.lessMotion.matches ? unhurried : nextFrame),
+  );
   private readonly feed = new Feed(this.columns, recent, (change) => {
     if (change === 'cleared') this.events = [];
     this.paint.ask();
@@ -141,7 +145,15 @@ export class Instrument {
   }
 
   private take(text: string): void {
-    const message = decode(text);
+    try {
+      this.takeMessage(decode(text));
+    } catch (error) {
+      if (!(error instanceof ProtocolError)) throw error;
+      this.refusal = `${error.message}: this page and the service do not fit, load it again`;
+    }
+  }
+
+  private takeMessage(message: Message): void {
     switch (message.kind) {
       case 'readings':
         this.takeReadings(message);

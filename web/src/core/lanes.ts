@@ -21,7 +21,7 @@ export interface Lanes {
 export class LaneMaker {
   private readonly windows = new Windows([1, 1]);
 
-  make(columns: Columns, place: Place, from_s: number, to_s: number, noise: number, now_s: number): Lanes {
+  make(columns: Columns, place: Place, from_s: number, to_s: number, grain: number, now_s: number): Lanes {
     const first = Math.max(0, columns.indexAt(from_s) - 1);
     const last = Math.min(columns.length, columns.indexAt(to_s) + 1);
     const t_s = columns.t_s.slice(first, last);
@@ -29,7 +29,7 @@ export class LaneMaker {
     const ys = valuesOf(columns.of(place.ySeries), first, last, place.y);
     const frame = this.windows.next(
       [extentOf(xs), extentOf(ys)],
-      Math.max(10 * noise, place.least),
+      Math.max(10 * grain, place.least),
       now_s,
     );
     const [x_low = 0, y_low = 0] = frame.low;

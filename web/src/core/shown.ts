@@ -17,6 +17,8 @@ export interface Shown {
   /** The same tilt in arc-seconds, for the drawing of the mirror; null without a calibration. */
   x_arcsec: number | null;
   y_arcsec: number | null;
+  /** Standard uncertainty of one reading from noise alone, the larger axis; 0 when unknown. */
+  grain: number;
   basis: 'average' | 'single' | 'none';
   /** e.g. "mean of 1.0 s". */
   basisWords: string;
@@ -74,6 +76,7 @@ export function shownAngle(
     y: axis('y'),
     x_arcsec: tilt('x'),
     y_arcsec: tilt('y'),
+    grain: fromArcsec(Math.max(newest.x_sd_arcsec ?? 0, newest.y_sd_arcsec ?? 0), unit),
     basis: averaged ? 'average' : single ? 'single' : 'none',
     basisWords: averaged ? averageWords(average) : single ? 'one reading alone' : '',
     quality: newest.quality,
@@ -95,6 +98,7 @@ export function shownPosition(x: Spread | null, y: Spread | null, newest: Newest
     y: axis(y),
     x_arcsec: null,
     y_arcsec: null,
+    grain: Math.max(x?.sd ?? 0, y?.sd ?? 0),
     basis: there ? 'average' : 'none',
     basisWords: averageWords({ statistic: 'mean', window_s }),
     quality: newest.quality,

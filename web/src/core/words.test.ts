@@ -20,7 +20,8 @@ describe('directions', () => {
   it('agree with how a person says it', () => {
     expect(lean('y', -3)).toContain('back');
     expect(lean('y', 3)).toContain('forward');
-    expect(lean('x', -3)).toContain('away');
+    expect(lean('x', -3)).toContain('back');
+    expect(lean('x', 3)).toContain('forward');
   });
 });
 

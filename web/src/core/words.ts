@@ -15,7 +15,7 @@ export function direction(axis: Axis, value: number | null): string {
 export function lean(axis: Axis, value: number | null): string {
   if (value === null || !Number.isFinite(value)) return '';
   if (axis === 'y') return value < 0 ? 'top edge leans back' : 'top edge leans forward';
-  return value < 0 ? 'right edge turned away' : 'right edge turned near';
+  return value < 0 ? 'right edge swings back' : 'right edge swings forward';
 }
 
 const QUALITY: Record<string, string> = {
