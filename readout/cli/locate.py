@@ -11,8 +11,8 @@ import typer
 from readout.cli.options import JsonOption
 from readout.cli.say import print_json, print_line, warn
 from readout.errors import BadInput
-from readout.files.readings_file import Cell, rounded
 from readout.model import Sighting, Target
+from readout.rows import Cell, rounded
 from readout.units import decimals_for
 
 EXAMPLE = "Example: `readout locate frame_*.png --json`"

@@ -21,8 +21,9 @@ from readout.cli.options import (
 )
 from readout.cli.say import note, print_json, print_line, progress, warn
 from readout.errors import BadInput
-from readout.files.readings_file import ReadingsWriter, reading_row
+from readout.files.readings_file import ReadingsWriter
 from readout.model import Reading, Target
+from readout.rows import reading_row
 from readout.units import decimals_for, signed
 
 EXAMPLE = "Example: `readout measure frames --calibration frames/calibration.json --csv angles.csv`"

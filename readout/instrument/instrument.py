@@ -14,13 +14,13 @@ from dataclasses import dataclass
 from readout.angle import Calibration, Mounting, nominal_calibration, reading_of
 from readout.capture.timebase import TimeBase
 from readout.errors import BadInput
-from readout.files.utc import utc_text
 from readout.instrument.acquisition import Acquisition, State
 from readout.instrument.averaging import Average, Statistic, TrailingWindow, average_of
 from readout.instrument.observer import Observer, Picture
 from readout.instrument.opening import open_observer
 from readout.instrument.zero import Zero, zero_from
 from readout.model import Observation, Reading, Target
+from readout.utc import utc_text
 
 
 @dataclass(frozen=True, slots=True)

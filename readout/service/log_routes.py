@@ -15,15 +15,14 @@ from typing import Annotated, Literal
 from fastapi import APIRouter, Query
 from fastapi.responses import StreamingResponse
 
-from readout.files.readings_file import VALUE_COLUMNS, Cell, csv_cell, reading_row, rounded
-from readout.files.utc import utc_text
 from readout.instrument.joining import Joined, join
 from readout.model import Reading
+from readout.rows import SPREAD_COLUMNS, VALUE_COLUMNS, Cell, csv_cell, reading_row, rounded
 from readout.service.feed import Feed, Subscription
 from readout.service.messages import encode
+from readout.utc import utc_text
 
 QUEUE = 20_000
-AVERAGED = ("n", "x_scatter_arcsec", "y_scatter_arcsec")
 Row = dict[str, Cell]
 
 
@@ -50,7 +49,7 @@ async def _json_lines(feed: Feed, every_s: float) -> AsyncIterator[str]:
 
 
 async def _csv_lines(feed: Feed, every_s: float) -> AsyncIterator[str]:
-    averaged = AVERAGED if every_s > 0 else ()
+    averaged = SPREAD_COLUMNS if every_s > 0 else ()
     columns = ["t_utc", *VALUE_COLUMNS, "quality", *averaged, "dropped"]
     yield ",".join(columns) + "\n"
     async for rows in _rows(feed, every_s):

@@ -14,11 +14,11 @@ from readout import __version__
 from readout.angle import Calibration
 from readout.capture.mjpeg import without_password
 from readout.capture.open import SourceDescription
-from readout.files.readings_file import rounded
-from readout.files.utc import utc_text
 from readout.instrument import Average, Event, Status, Zero
 from readout.model import Arm, Observation, Quality, Reading
+from readout.rows import rounded
 from readout.service.feed import FLOATS, Columns
+from readout.utc import utc_text
 
 Number = float | None
 

@@ -11,9 +11,10 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from readout.files.readings_file import ReadingsWriter, reading_row, rounded
-from readout.files.utc import utc_text
+from readout.files.readings_file import ReadingsWriter
 from readout.model import Quality, Reading
+from readout.rows import reading_row, rounded
+from readout.utc import utc_text
 
 COLUMNS = [
     "t_s",

@@ -1,0 +1,55 @@
+"""Readings as rows: one set of columns for CSV files, JSON lines, the logging endpoint and exports.
+
+A missing number is None in a row (null in JSON) and an empty cell in CSV. Numbers are rounded to
+six decimals (1e-6 arcsec, 1 µs: far below anything that can be measured), small ones to four
+digits, so that no uncertainty is rounded away.
+"""
+
+from __future__ import annotations
+
+import math
+
+from readout.model import Reading
+from readout.utc import utc_text
+
+Cell = str | float | int | list[str] | None
+
+VALUE_COLUMNS = (
+    "t_s",
+    "x_arcsec",
+    "y_arcsec",
+    "x_sd_arcsec",
+    "y_sd_arcsec",
+    "x_u_arcsec",
+    "y_u_arcsec",
+)
+SPREAD_COLUMNS = ("n", "x_scatter_arcsec", "y_scatter_arcsec")
+"""What a row that is a mean has besides."""
+
+
+def rounded(value: float) -> float | None:
+    """``value`` to six decimals or four digits, whichever is finer; None unless it is finite."""
+    if not math.isfinite(value):
+        return None
+    return round(value, 6) if abs(value) >= 1e-3 else float(f"{value:.4g}")
+
+
+def reading_row(reading: Reading) -> dict[str, Cell]:
+    """The row of one reading: ``file`` or ``t_utc`` first, then values, then the quality words."""
+    row: dict[str, Cell] = (
+        {"file": reading.name} if reading.name else {"t_utc": utc_text(reading.t_utc_ns)}
+    )
+    row.update({column: rounded(getattr(reading, column)) for column in VALUE_COLUMNS})
+    row["quality"] = reading.quality.words()
+    return row
+
+
+def csv_cell(cell: Cell) -> str | float | int:
+    """A cell as CSV writes it: empty for None, words separated by spaces."""
+    match cell:
+        case None:
+            return ""
+        case list():
+            return " ".join(cell)
+        case _:
+            return cell
