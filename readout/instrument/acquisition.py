@@ -131,7 +131,10 @@ class Acquisition:
                     self._follow(observer)
                 return
             except SourceEnded as end:
-                self._enter(State.ENDED, str(end))
+                if self._observer is None:  # it has given nothing
+                    self._enter(State.FAILED, f"not one frame could be read ({end})")
+                else:
+                    self._enter(State.ENDED, str(end))
                 return
             except Refused as refused:
                 self._enter(State.FAILED, str(refused))

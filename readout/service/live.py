@@ -2,18 +2,23 @@
 
 from __future__ import annotations
 
+import asyncio
 import os
 import signal
 import socket
 import sys
+import threading
 import webbrowser
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from pathlib import Path
 from types import FrameType
+from typing import TYPE_CHECKING, Any
 
 from readout import __version__
+from readout.capture.mjpeg import without_password
+from readout.capture.open import describe_source
 from readout.errors import BadInput, Busy
 from readout.instrument import Instrument, State
 from readout.instrument.opening import open_observer
@@ -21,7 +26,11 @@ from readout.service.control import Control, Options
 from readout.service.feed import Feed
 from readout.service.settings import SettingsStore
 
+if TYPE_CHECKING:
+    import uvicorn
+
 HOST = "127.0.0.1"
+BEGINS_WITHIN_S = 2.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -33,13 +42,29 @@ class Place:
     settings: Path
 
 
-@dataclass(slots=True)
-class _Outcome:
-    """Why the service has to end, if the source chosen on the command line failed at once."""
+class _Beginning:
+    """How the source named on the command line begins: if it fails at once, so does the command.
 
-    measured: bool = False
-    failure: str | None = None
-    end: list[Callable[[], None]] = field(default_factory=list)
+    A source of the settings is waited for instead, or changed in the dashboard.
+    """
+
+    def __init__(self, source: str | None) -> None:
+        self._named = source is not None
+        self._known = threading.Event()
+        self.failure: str | None = None
+        if not self._named:
+            self._known.set()
+
+    def see(self, state: State, detail: str) -> None:
+        """Listens to the instrument's states."""
+        if state is State.FAILED and not self._known.is_set():
+            self.failure = detail
+        if state is not State.OPENING:
+            self._known.set()
+
+    async def known(self, within_s: float) -> None:
+        """Wait until it is known, ``within_s`` at most."""
+        await asyncio.to_thread(self._known.wait, within_s)
 
 
 def run_live(
@@ -50,6 +75,8 @@ def run_live(
     ``browser``: open one; None: only from a terminal with a display. ``say`` prints a line.
     Raises BadInput or Busy, with one line, where it cannot begin.
     """
+    if options.source is not None:
+        describe_source(options.source)
     store = SettingsStore(place.settings)
     _make_folder(place.data)
     with _listening(place.port) as listener:
@@ -57,47 +84,65 @@ def run_live(
         feed = Feed()
         instrument = Instrument(observe=lambda s, t: open_observer(s, t, paced=True))
         control = Control(instrument, store, options)
-        outcome = _Outcome()
+        beginning = _Beginning(options.source)
         instrument.on_reading.append(feed.append)
         instrument.on_event.append(feed.announce)
         instrument.on_state.append(lambda *_: feed.announce())
-        instrument.on_state.append(_watch_start(outcome, options))
+        instrument.on_state.append(beginning.see)
+
+        def welcome() -> None:
+            address = f"http://{HOST}:{port}/"
+            for line in _welcome(address, place.data, instrument):
+                say(line)
+            if browser if browser is not None else _at_a_screen():
+                webbrowser.open(address)
+
         control.start()
         try:
-            _serve(
-                instrument,
-                feed,
-                control,
-                listener,
-                outcome,
-                lambda: _welcome(port, place.data, instrument, browser=browser, say=say),
-            )
+            import uvicorn  # half a second: the acquisition has begun by now
+
+            from readout.service.app import make_app
+
+            app = make_app(instrument, feed, control, port=port)
+            _serve(uvicorn.Config(app, **_SERVER), listener, feed, beginning, welcome)
         finally:
             instrument.stop()
-    if outcome.failure is not None:
-        raise BadInput(outcome.failure)
+    if beginning.failure is not None:
+        raise BadInput(beginning.failure)
+
+
+_SERVER: dict[str, Any] = {
+    "log_level": "warning",
+    "access_log": False,
+    "server_header": False,
+    "ws": "websockets-sansio",
+    "ws_max_size": 65_536,
+    "timeout_graceful_shutdown": 1,
+}
 
 
 def _serve(
-    instrument: Instrument,
-    feed: Feed,
-    control: Control,
+    config: uvicorn.Config,
     listener: socket.socket,
-    outcome: _Outcome,
-    on_ready: Callable[[], None],
+    feed: Feed,
+    beginning: _Beginning,
+    welcome: Callable[[], None],
 ) -> None:
-    import uvicorn  # half a second: the acquisition has begun by now
-
-    from readout.service.app import make_app
-
-    app = make_app(instrument, feed, control, port=int(listener.getsockname()[1]))
+    import uvicorn
 
     class Server(uvicorn.Server):
-        """Tells when it is ready; ends on our signals instead of its own handling of them."""
+        """Tells when it is ready, and ends on our signals instead of its own handling of them."""
 
         async def startup(self, sockets: list[socket.socket] | None = None) -> None:
             await super().startup(sockets)
-            on_ready()
+            await beginning.known(BEGINS_WITHIN_S)
+            if beginning.failure is not None:
+                self.should_exit = True
+            elif not self.should_exit:
+                welcome()
+
+        async def on_tick(self, counter: int) -> bool:
+            return beginning.failure is not None or await super().on_tick(counter)
 
         async def shutdown(self, sockets: list[socket.socket] | None = None) -> None:
             feed.detach()  # lets the streams end by themselves
@@ -107,43 +152,17 @@ def _serve(
         def capture_signals(self) -> Iterator[None]:
             yield
 
-    config = uvicorn.Config(
-        app,
-        log_level="warning",
-        access_log=False,
-        server_header=False,
-        ws="websockets-sansio",
-        ws_max_size=65_536,
-        timeout_graceful_shutdown=1,
-    )
     server = Server(config)
 
-    def end(_signal: int = 0, _frame: FrameType | None = None) -> None:
+    def end(_signal: int, _frame: FrameType | None) -> None:
         server.should_exit = True
 
-    outcome.end.append(end)
-    if outcome.failure is not None:  # while the server was being made
-        return
-    before = {s: signal.signal(s, end) for s in (signal.SIGINT, signal.SIGTERM)}
+    before = {number: signal.signal(number, end) for number in (signal.SIGINT, signal.SIGTERM)}
     try:
         server.run(sockets=[listener])
     finally:
         for number, handler in before.items():
             signal.signal(number, handler)
-
-
-def _watch_start(outcome: _Outcome, options: Options) -> Callable[[State, str], None]:
-    """A source named on the command line that fails before it gave a frame ends the command."""
-
-    def watch(state: State, detail: str) -> None:
-        if state is State.MEASURING:
-            outcome.measured = True
-        elif state is State.FAILED and options.source is not None and not outcome.measured:
-            outcome.failure = detail
-            for end in outcome.end:
-                end()
-
-    return watch
 
 
 @contextmanager
@@ -174,21 +193,10 @@ def _make_folder(folder: Path) -> None:
         ) from error
 
 
-def _welcome(
-    port: int,
-    data: Path,
-    instrument: Instrument,
-    *,
-    browser: bool | None,
-    say: Callable[[str], None],
-) -> None:
-    address = f"http://{HOST}:{port}/"
-    say(f"readout {__version__} at {address}")
-    say(f"data in {data}")
-    source = instrument.source
-    say(f"source: {source}" if source != "simulated" else "source: SIMULATED, no real mirror")
-    if browser if browser is not None else _at_a_screen():
-        webbrowser.open(address)
+def _welcome(address: str, data: Path, instrument: Instrument) -> list[str]:
+    source = instrument.source or ""
+    shown = "SIMULATED, no real mirror" if source == "simulated" else without_password(source)
+    return [f"readout {__version__} at {address}", f"data in {data}", f"source: {shown}"]
 
 
 def _at_a_screen() -> bool:

@@ -66,6 +66,12 @@ def test_a_folder_is_measured_and_ends() -> None:
     assert run.observers[0].entered == run.observers[0].left == 1
 
 
+def test_a_source_that_ends_before_its_first_frame_has_failed() -> None:
+    state, detail = Recorder([], live=False).run().states[-1]
+    assert state is State.FAILED
+    assert "not one frame" in detail
+
+
 def test_silence_is_stalled_after_half_a_second_and_measuring_again_with_the_next_frame() -> None:
     run = Recorder([None] * 5 + [0.4, None, 0.9, None]).run()
     assert run.words == ["opening", "measuring", "stalled", "measuring", "ended"]
