@@ -1,7 +1,16 @@
 """From the place of the return image to the tilt of the mirror, and what that is worth."""
 
 from readout.angle.calibration import Calibration
+from readout.angle.known_tilts import Camera, TiltSet, calibrate_known_tilts
 from readout.angle.nominal import Mounting, nominal_calibration
 from readout.angle.reading import reading_of
 
-__all__ = ["Calibration", "Mounting", "nominal_calibration", "reading_of"]
+__all__ = [
+    "Calibration",
+    "Camera",
+    "Mounting",
+    "TiltSet",
+    "calibrate_known_tilts",
+    "nominal_calibration",
+    "reading_of",
+]

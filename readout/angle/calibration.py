@@ -22,6 +22,12 @@ PARAMETERS = ("a_xx", "a_xy", "a_yx", "a_yy", "p0_x_px", "p0_y_px", "k1")
 Row2 = tuple[float, float]
 
 
+def matrix_rows(matrix: F64) -> tuple[Row2, Row2]:
+    """A (2, 2) array as the rows a calibration keeps."""
+    (a_xx, a_xy), (a_yx, a_yy) = matrix.tolist()
+    return (a_xx, a_xy), (a_yx, a_yy)
+
+
 @dataclass(frozen=True, slots=True)
 class Calibration:
     """A fixed relation of pixels to mirror tilt, with the covariance of its parameters.

@@ -8,7 +8,7 @@ from enum import StrEnum
 
 import numpy as np
 
-from readout.angle.calibration import Calibration
+from readout.angle.calibration import Calibration, matrix_rows
 from readout.errors import BadInput
 from readout.model import F64, Target
 
@@ -86,7 +86,6 @@ def nominal_calibration(
         "rotation_deg": rotation_deg,
         "rotation_sd_deg": rotation_sd_deg,
     }
-    (a_xx, a_xy), (a_yx, a_yy) = matrix.tolist()
     fingerprint = hashlib.sha256(
         repr((sorted(made_from.items()), image_width_px, image_height_px, target)).encode()
     )
@@ -94,7 +93,7 @@ def nominal_calibration(
         id=f"nominal-{fingerprint.hexdigest()[:10]}",
         created_utc=created_utc,
         method="nominal",
-        matrix=((a_xx, a_xy), (a_yx, a_yy)),
+        matrix=matrix_rows(matrix),
         p0_px=((image_width_px - 1) / 2, (image_height_px - 1) / 2),
         image_width_px=image_width_px,
         image_height_px=image_height_px,

@@ -10,7 +10,7 @@ from typing import Annotated
 import typer
 
 from readout import __version__
-from readout.cli import cameras, live, locate, measure, simulate
+from readout.cli import calibrate, cameras, live, locate, measure, simulate
 from readout.cli.say import fail
 from readout.errors import BadInput, ReadoutError
 
@@ -30,7 +30,7 @@ app = typer.Typer(
     rich_markup_mode="markdown",
     context_settings={"help_option_names": ["-h", "--help"]},
 )
-for command in (live, cameras, locate, measure, simulate):
+for command in (live, cameras, locate, measure, calibrate, simulate):
     app.command(epilog=command.EXAMPLE)(command.command)
 
 

@@ -1,0 +1,116 @@
+"""``readout calibrate``."""
+
+from __future__ import annotations
+
+import math
+import sys
+import time
+from pathlib import Path
+from typing import TYPE_CHECKING, Annotated, Any
+
+import typer
+
+from readout.cli.options import JsonOption
+from readout.cli.say import note, print_json, print_line, progress
+from readout.units import decimals_for, signed
+
+EXAMPLE = "Example: `readout calibrate calib_images/bench_stage --out bench.json`"
+
+if TYPE_CHECKING:
+    from readout.angle import Calibration
+
+
+def calibrate(
+    folder: Annotated[
+        Path,
+        typer.Argument(metavar="SET", help="Folder with frames, tilts.csv and set.toml."),
+    ],
+    out: Annotated[
+        Path | None, typer.Option(metavar="FILE", help="Keep the calibration in this file.")
+    ] = None,
+    json: JsonOption = False,
+    report: Annotated[
+        Path | None, typer.Option(metavar="FILE.html", help="Write a page with figure and table.")
+    ] = None,
+) -> None:
+    """Calibrate from frames taken at known mirror tilts.
+
+    The tilts may have a common unknown zero, which is fitted. The uncertainty printed is a
+    standard uncertainty of the scale; what is left over is listed frame by frame.
+    """
+    from readout.files.calibration_file import save_calibration
+    from readout.files.calibration_set import read_calibration_set
+    from readout.utc import utc_text
+    from readout.instrument.calibrating import calibrate_set
+
+    given = read_calibration_set(folder)
+    with progress("frames", len(given.tilts)) as show:
+        made = calibrate_set(given, created_utc=utc_text(time.time_ns()), on_frame=show)
+    if out is not None:
+        save_calibration(out, made)
+    if report is not None:
+        from readout.files.atomic import write_text_whole
+        from readout.report.calibration_page import calibration_page
+
+        write_text_whole(report, calibration_page(made))
+    if json:
+        print_json(_object(made))
+        return
+    for line in _lines(made, given.nominal_focal_length_mm):
+        print_line(line)
+    if out is None and sys.stderr.isatty():
+        note("not kept: give --out FILE to keep it")
+
+
+def _object(made: Calibration) -> dict[str, Any]:
+    scale_x, scale_y = made.scale_arcsec_per_px
+    return {
+        "id": made.id,
+        "focal_length_px": made.focal_length_px,
+        "focal_length_px_sd": made.focal_length_px_sd,
+        "focal_length_mm": made.focal_length_mm,
+        "scale_x_arcsec_per_px": scale_x,
+        "scale_y_arcsec_per_px": scale_y,
+        "rotation_deg": made.rotation_deg,
+        "mirrored": made.mirrored,
+        "signs": made.signs,
+        "residual_rms_arcsec": made.residual_rms_arcsec,
+        "n": made.n,
+        "method": made.method,
+        "warnings": list(made.warnings),
+    }
+
+
+def _lines(made: Calibration, nominal_mm: float | None) -> list[str]:
+    """What a person wants to know, the answer first."""
+    focal, sd = made.focal_length_px, made.focal_length_px_sd
+    scale_x, scale_y = made.scale_arcsec_per_px
+    lines = [f"focal length   {focal:.{decimals_for(sd)}f} ± {sd:.{decimals_for(sd)}f} px"]
+    if made.focal_length_mm is not None:
+        sd_mm = sd / focal * made.focal_length_mm
+        beside = "" if nominal_mm is None else f" (nominal {nominal_mm:g} mm)"
+        value = f"{made.focal_length_mm:.{decimals_for(sd_mm)}f} ± {sd_mm:.{decimals_for(sd_mm)}f}"
+        lines.append(f"               {value} mm{beside}")
+    way = "mirrored" if made.mirrored else "not mirrored"
+    lines += [
+        f"scale          {scale_x:.6f}″ a pixel along X, {scale_y:.6f}″ along Y",
+        f"growing X      {made.rotation_deg:.3f}° clockwise from the picture's right, {way}",
+        f"left over      {made.residual_rms_arcsec or 0.0:.4f}″ rms, {made.n} frames",
+        f"method         {made.method}",
+        *(f"note           {warning}" for warning in made.warnings),
+        "",
+        f"{'frame':<24} {'x px':>10} {'y px':>10} {'left X ″':>10} {'left Y ″':>10}",
+    ]
+    for row in made.residuals:
+        left = (
+            signed(math.nan if row[key] is None else row[key], 4)
+            for key in ("x_residual_arcsec", "y_residual_arcsec")
+        )
+        x_left, y_left = left
+        lines.append(
+            f"{row['file']:<24} {row['x_px']:10.3f} {row['y_px']:10.3f} {x_left:>10} {y_left:>10}"
+        )
+    return lines
+
+
+command = calibrate

@@ -1,0 +1,179 @@
+"""Calibration from known tilts: truth, honesty, rank, and one general solver beside it."""
+
+from dataclasses import replace
+
+import numpy as np
+import pytest
+from scipy.optimize import curve_fit
+
+from readout.angle import Camera, Mounting, TiltSet, calibrate_known_tilts, nominal_calibration
+from readout.errors import BadInput
+from readout.model import F64
+
+TRUE = nominal_calibration(
+    focal_length_mm=290.37,
+    pitch_um=3.45,
+    image_width_px=640,
+    image_height_px=480,
+    rotation_deg=1.7,
+    mounting=Mounting.SWAPPED_SIDES,
+)
+CAMERA = Camera(640, 480, 3.45, Mounting.SWAPPED_SIDES)
+GRID = np.stack(
+    [g.ravel() for g in np.meshgrid(np.linspace(-300, 300, 5), np.linspace(-200, 200, 3))], axis=1
+)
+ZERO = np.array([14.2, -8.6])
+TILT_SD, PLACE_SD = 0.02, 0.001
+
+
+def tilt_set(rng: np.random.Generator, shown: F64 = GRID, given: F64 | None = None) -> TiltSet:
+    """Positions a stage with error and a camera with noise would give."""
+    true = shown + ZERO + rng.normal(0, TILT_SD, shown.shape)
+    places = np.stack(TRUE.position(true[:, 0], true[:, 1]), axis=1)
+    n = len(shown)
+    return TiltSet(
+        names=tuple(f"{k}.png" for k in range(n)),
+        position_px=places + rng.normal(0, PLACE_SD, places.shape),
+        position_cov_px2=np.tile([PLACE_SD**2, 0.0, PLACE_SD**2], (n, 1)),
+        tilt_arcsec=shown if given is None else np.where(given, shown, np.nan),
+        sd_arcsec=np.full(n, TILT_SD),
+    )
+
+
+def claim(found) -> float:
+    """Error of the focal length in claimed sd."""
+    return (found.focal_length_px - TRUE.focal_length_px) / found.focal_length_px_sd
+
+
+def test_recovers_everything():
+    found = calibrate_known_tilts(tilt_set(np.random.default_rng(1)), CAMERA)
+    assert found.focal_length_px == pytest.approx(TRUE.focal_length_px, rel=1e-4)
+    assert abs(claim(found)) < 3
+    assert found.rotation_deg == pytest.approx(TRUE.rotation_deg, abs=0.02)
+    assert found.mirrored == TRUE.mirrored
+    assert found.method == "known tilts, both axes"
+    assert found.n == 15
+    assert found.residual_rms_arcsec == pytest.approx(TILT_SD, rel=0.4)
+
+
+def test_the_claimed_sd_covers_the_truth():
+    """1000 repeats: 68 % within one sd to +-1.5 %, the contract asks for 5."""
+    rng = np.random.default_rng(2)
+    z = np.array([claim(calibrate_known_tilts(tilt_set(rng), CAMERA)) for _ in range(1000)])
+    assert 0.63 < np.mean(np.abs(z) < 1) < 0.73
+    assert abs(z.mean()) < 4 / np.sqrt(1000)
+
+
+def test_held_out_tilts_are_measured_right():
+    rng = np.random.default_rng(3)
+    found = calibrate_known_tilts(tilt_set(rng), CAMERA)
+    tilts = rng.uniform((-300, -200), (300, 200), (200, 2))
+    places = TRUE.position(tilts[:, 0], tilts[:, 1])
+    error = np.stack(found.tilt(*places), axis=1) - tilts
+    assert np.sqrt((error**2).mean()) < 0.012
+    claimed = np.array([np.diag(found.calibration_cov(*p)) for p in np.transpose(places)])
+    assert np.mean(error**2 / claimed) < 9
+
+
+def test_agrees_with_a_general_fit():
+    """scipy.optimize.curve_fit on the exact forward model (position of a tilt), weighted by the
+    same uncertainties: same focal length to a twentieth of its sd, same claim to 5 %."""
+    given = tilt_set(np.random.default_rng(4))
+    found = calibrate_known_tilts(given, CAMERA)
+
+    def forward(_, a, b, c, d, z_x, z_y):
+        at = replace(TRUE, matrix=((a * 1e-5, b * 1e-5), (c * 1e-5, d * 1e-5)))
+        shifted = given.tilt_arcsec + np.array([z_x, z_y])
+        return np.ravel(np.stack(at.position(shifted[:, 0], shifted[:, 1]), axis=1))
+
+    sd_px = np.hypot(TILT_SD / TRUE.scale_arcsec_per_px[0], PLACE_SD)
+    start = [*(np.ravel(TRUE.matrix) * 1e5), 0.0, 0.0]
+    general, cov = curve_fit(
+        forward,
+        np.zeros(30),
+        given.position_px.ravel(),
+        start,
+        sigma=np.full(30, sd_px),
+        absolute_sigma=True,
+    )
+    focal = abs(np.linalg.det(general[:4].reshape(2, 2) * 1e-5)) ** -0.5
+    assert found.focal_length_px == pytest.approx(focal, abs=0.05 * found.focal_length_px_sd)
+    gradient = -0.5 * focal * np.linalg.inv(general[:4].reshape(2, 2)).T.ravel()
+    sd = np.sqrt(gradient @ cov[:4, :4] @ gradient)
+    assert found.focal_length_px_sd == pytest.approx(sd, rel=0.05)
+
+
+def test_the_scale_of_the_stage_is_not_averaged_down():
+    given = tilt_set(np.random.default_rng(5))
+    found = calibrate_known_tilts(given, CAMERA, scale_rel_sd=1e-3)
+    assert found.focal_length_px_sd / found.focal_length_px == pytest.approx(1e-3, rel=0.01)
+
+
+def test_one_axis_after_the_other():
+    shown = np.array(
+        [(x, 5.0) for x in np.linspace(-300, 300, 7)]
+        + [(3.0, y) for y in (-200, -100, 0, 100, 200.0)]
+    )
+    given = np.zeros(shown.shape, dtype=bool)
+    given[:7, 0] = given[7:, 1] = True
+    rng = np.random.default_rng(6)
+    z = []
+    for _ in range(100):
+        found = calibrate_known_tilts(tilt_set(rng, shown, given), CAMERA)
+        z.append(claim(found))
+    assert found.method == "known tilts, one axis after the other"
+    assert found.mirrored == TRUE.mirrored
+    assert 0.5 < np.mean(np.abs(z) < 1) < 0.85
+
+
+@pytest.mark.parametrize("axis", [0, 1])
+def test_one_axis_alone_takes_pixels_for_square(axis):
+    shown = np.full((7, 2), 5.0)
+    shown[:, axis] = np.linspace(-300, 300, 7)
+    given = np.zeros(shown.shape, dtype=bool)
+    given[:, axis] = True
+    rng = np.random.default_rng(7)
+    z = []
+    for _ in range(100):
+        found = calibrate_known_tilts(tilt_set(rng, shown, given), CAMERA)
+        z.append(claim(found))
+    assert "square pixels" in found.method
+    assert any("one axis only" in warning for warning in found.warnings)
+    assert 0.5 < np.mean(np.abs(z) < 1) < 0.85
+    assert found.rotation_deg == pytest.approx(TRUE.rotation_deg, abs=0.02)
+    assert found.mirrored == TRUE.mirrored
+
+
+def test_scatter_beyond_the_claim_widens_it_and_is_said():
+    rng = np.random.default_rng(8)
+    honest = calibrate_known_tilts(tilt_set(rng), CAMERA)
+    optimist = replace(tilt_set(rng), sd_arcsec=np.full(15, TILT_SD / 10))
+    found = calibrate_known_tilts(optimist, CAMERA)
+    assert any("times what the uncertainties allow" in warning for warning in found.warnings)
+    assert found.focal_length_px_sd == pytest.approx(honest.focal_length_px_sd, rel=0.4)
+
+
+def test_a_row_far_off_is_named():
+    given = tilt_set(np.random.default_rng(9))
+    tilts = given.tilt_arcsec.copy()
+    tilts[6, 0] += 5.0
+    found = calibrate_known_tilts(replace(given, tilt_arcsec=tilts), CAMERA)
+    assert any("6.png" in warning or "times what" in warning for warning in found.warnings)
+
+
+@pytest.mark.parametrize(
+    ("shown", "words"),
+    [
+        (GRID[:2], "at least three"),
+        (GRID * 0, "do not determine"),
+        (np.stack([GRID[:, 0], GRID[:, 0] / 2], axis=1), "do not determine"),
+    ],
+)
+def test_rank_is_tested_before_solving(shown, words):
+    with pytest.raises(BadInput, match=words):
+        calibrate_known_tilts(tilt_set(np.random.default_rng(10), shown), CAMERA)
+
+
+def test_tilts_too_small_for_their_uncertainty():
+    with pytest.raises(BadInput, match="too small"):
+        calibrate_known_tilts(tilt_set(np.random.default_rng(11), GRID * 1e-4), CAMERA)

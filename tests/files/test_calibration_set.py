@@ -1,0 +1,113 @@
+"""Reading a calibration set: what it says, and each refusal in one line."""
+
+import math
+
+import pytest
+
+from readout.errors import BadInput
+from readout.files.calibration_set import read_calibration_set
+
+TILTS = "file,x_arcsec,y_arcsec,sd_arcsec\na.png,1.5,,0.02\nb.png,-3,4,0.02\n"
+LEVER = "file,lever_mm,height_mm,height_sd_mm,axis\n"
+
+
+def write(folder, tilts=TILTS, about=None):
+    (folder / "tilts.csv").write_text(tilts, encoding="utf-8")
+    if about is not None:
+        (folder / "set.toml").write_text(about, encoding="utf-8")
+    for name in ("a.png", "b.png"):
+        (folder / name).touch()
+    return folder
+
+
+def test_tilts_with_an_empty_axis(tmp_path):
+    found = read_calibration_set(write(tmp_path))
+    first, second = found.tilts
+    assert (first.file, first.x_arcsec, first.sd_arcsec) == ("a.png", 1.5, 0.02)
+    assert math.isnan(first.y_arcsec)
+    assert (second.x_arcsec, second.y_arcsec) == (-3.0, 4.0)
+    assert found.scale_rel_sd == 0.0
+    assert found.pitch_um is None
+
+
+def test_what_set_toml_says(tmp_path):
+    about = """
+    note = "on the slab"
+    [camera]
+    pixel_um = 3.45
+    mounting = "half_turn"
+    [optics]
+    focal_length_mm = 300
+    [stage]
+    scale_rel_sd = 2e-4
+    """
+    found = read_calibration_set(write(tmp_path, about=about))
+    assert (found.pitch_um, found.mounting.value) == (3.45, "half_turn")
+    assert (found.nominal_focal_length_mm, found.scale_rel_sd) == (300.0, 2e-4)
+    assert found.note == "on the slab"
+
+
+def test_a_lever_raised_by_gauge_blocks(tmp_path):
+    """Sine of the angle = height / lever (the sine bar of the workshop); 1 mm on 500 mm and its
+    uncertainty of 1 um: 412.5303" +- 0.4125", by hand from arcsin 0.002."""
+    rows = LEVER + "a.png,500,1,0.001,y\nb.png,500,-1,0.001,y\n"
+    found = read_calibration_set(write(tmp_path, rows, "[stage]\nlever_sd_mm = 0.5\n"))
+    up, down = found.tilts
+    assert up.y_arcsec == pytest.approx(math.degrees(math.asin(0.002)) * 3600)
+    assert up.y_arcsec == pytest.approx(412.5299, abs=5e-4)
+    assert down.y_arcsec == -up.y_arcsec
+    assert up.sd_arcsec == pytest.approx(0.41253, abs=1e-5)
+    assert math.isnan(up.x_arcsec)
+    assert found.scale_rel_sd == pytest.approx(1e-3)
+
+
+def test_a_horizontal_lever_is_a_tangent(tmp_path):
+    rows = LEVER + "a.png,100,10,0.001,x\nb.png,100,0,0.001,x\n"
+    found = read_calibration_set(write(tmp_path, rows, 'lever_is = "horizontal"\n'))
+    assert found.tilts[0].x_arcsec == pytest.approx(math.degrees(math.atan(0.1)) * 3600)
+
+
+@pytest.mark.parametrize(
+    ("tilts", "words"),
+    [
+        ("", "columns of none"),
+        ("file,x,y,sd\n", "columns file,x,y,sd"),
+        ("file,x_arcsec,y_arcsec,sd_arcsec\n", "no tilts"),
+        (TILTS.replace("-3", "minus three"), "line 3: x_arcsec is 'minus three', not a number"),
+        (TILTS.replace("-3", "nan"), "leave it empty"),
+        (TILTS.replace("-3,4", ","), "line 3: neither"),
+        (TILTS.replace("4,0.02", "4,"), "line 3: sd_arcsec must be 0 or more, it is empty"),
+        (TILTS.replace("b.png", "c.png"), "names c.png, which is not in the folder"),
+        (TILTS.replace("b.png", "a.png"), "named twice"),
+        (TILTS.replace("b.png", "../b.png"), "no file of this folder"),
+        (LEVER + "a.png,10,20,0.001,x\n", "cannot be raised"),
+        (LEVER + "a.png,100,1,0.001,z\n", "axis is z"),
+        (LEVER + "a.png,100,,0.001,x\n", "height_mm is empty"),
+    ],
+)
+def test_each_refusal_names_row_and_remedy(tmp_path, tilts, words):
+    with pytest.raises(BadInput, match=words) as refusal:
+        read_calibration_set(write(tmp_path, tilts))
+    assert "\n" not in str(refusal.value)
+
+
+@pytest.mark.parametrize(
+    ("about", "words"),
+    [
+        ("[camera]\npixel_um = -1\n", "camera.pixel_um"),
+        ("[camera]\npixle_um = 1\n", "camera.pixle_um"),
+        ("target = 'moon'\n", "target"),
+        ("this is no toml", "mend it"),
+        ("[graduation]\nspacing_arcsec = 10\n", "graduated"),
+    ],
+)
+def test_what_set_toml_may_not_say(tmp_path, about, words):
+    with pytest.raises(BadInput, match=words):
+        read_calibration_set(write(tmp_path, about=about))
+
+
+def test_missing_things(tmp_path):
+    with pytest.raises(BadInput, match="is no folder"):
+        read_calibration_set(tmp_path / "nowhere")
+    with pytest.raises(BadInput, match=r"tilts\.csv does not exist"):
+        read_calibration_set(tmp_path)
