@@ -26,8 +26,8 @@ export class Instrument {
   connected = $state(true);
   status = $state.raw<Status | null>(null);
   shown = $state.raw<Shown | null>(null);
-  /** Seconds since the last reading arrived in this page. */
-  age_s = $state(0);
+  /** Seconds since the last reading arrived in this page; null when it was read before. */
+  age_s = $state<number | null>(null);
   events = $state.raw<readonly SourceEvent[]>([]);
   settings = $state.raw<Settings>(FIRST_SETTINGS);
   held = $state.raw<Held | null>(null);
@@ -62,7 +62,7 @@ export class Instrument {
     () => (this.pulse += 1),
     () => (this.lessMotion.matches ? unhurried : nextFrame),
   );
-  private readonly feed = new Feed(this.columns, recent, (change) => {
+  private readonly feed = new Feed(this.columns, (from_seq, points) => this.past(from_seq, points), (change) => {
     if (change === 'cleared') this.events = [];
     this.paint.ask();
   });
@@ -98,7 +98,7 @@ export class Instrument {
     if (this.held) return this.held.t_s;
     const newest_s = this.columns.t_s.at(-1) ?? 0;
     const over = this.connected && (this.status?.state === 'ended' || this.status?.state === 'failed');
-    return this.alive || over ? newest_s : newest_s + this.age_s;
+    return this.alive || over ? newest_s : newest_s + (this.age_s ?? 0);
   }
 
   /** What the right end of the strip is called. */
@@ -171,6 +171,16 @@ export class Instrument {
         throw new Error(String(never));
       }
     }
+  }
+
+  /** What the service still holds; its newest row is shown until another one comes, if one does. */
+  private async past(from_seq: number, points: number): Promise<Readings> {
+    const readings = await recent(from_seq, points);
+    if (this.newest === null && readings.seq.length > 0) {
+      this.newest = newestOf(readings, readings.seq.length - 1);
+      this.average = readings.average;
+    }
+    return readings;
   }
 
   private takeReadings(readings: Readings): void {
