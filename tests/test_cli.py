@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import json
+import socket
 from collections.abc import Callable
 from importlib import metadata
 from pathlib import Path
@@ -257,6 +258,26 @@ def test_a_folder_with_frames_of_two_sizes_keeps_what_came_before(
     run = readout("measure", mixed, "--calibration", calibration, "--csv", out)
     fails_in_one_line(run, "frame_000003.png", "80 × 100", "320 × 240")
     assert len(out.read_text("utf-8").splitlines()) == 1 + 3
+
+
+# -- live, as far as it gets without beginning (the rest: tests/service/test_live.py) -------------
+
+
+def test_live_refuses_to_begin_in_one_line(readout: Command, tmp_path: Path) -> None:
+    broken = tmp_path / "broken.json"
+    broken.write_text("{", "utf-8")
+    kept = ("--settings", tmp_path / "settings.json", "--data", tmp_path / "data")
+    fails_in_one_line(readout("live", *kept, "--source", "nonsense"), "nonsense")
+    fails_in_one_line(readout("live", *kept, "--calibration", broken), "broken.json")
+    fails_in_one_line(readout("live", "--settings", broken), "broken.json")
+    assert broken.read_text("utf-8") == "{"
+    line = readout("live", "--settings", tmp_path / "none.json", "--data", broken / "data")
+    fails_in_one_line(line, "--data")
+    with socket.socket() as other:
+        other.bind(("127.0.0.1", 0))
+        other.listen()
+        port = other.getsockname()[1]
+        fails_in_one_line(readout("live", *kept, "--port", port), str(port), "--port")
 
 
 # -- simulate and cameras -------------------------------------------------------------------------

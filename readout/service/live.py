@@ -112,7 +112,7 @@ def run_live(
 
 
 _SERVER: dict[str, Any] = {
-    "log_level": "warning",
+    "log_level": "critical",  # what concerns the user we say ourselves, in one line
     "access_log": False,
     "server_header": False,
     "ws": "websockets-sansio",

@@ -56,7 +56,8 @@ def answer_with_problems(app: FastAPI) -> None:
             case ReadoutError():
                 return problem_response(503, str(error))
             case _:
-                log.error("a request failed", exc_info=error)
+                log.error("a request failed: %s: %s", type(error).__name__, error)
+                log.debug("where", exc_info=error)
                 return problem_response(500, "a fault in readout itself: please report it")
 
     kinds: tuple[type[Exception], ...] = (

@@ -8,6 +8,7 @@ noticed. A send that takes longer than three seconds ends the connection.
 from __future__ import annotations
 
 import asyncio
+import contextlib
 from collections.abc import Callable
 
 from fastapi import APIRouter, WebSocket, WebSocketDisconnect
@@ -19,6 +20,7 @@ from readout.service.messages import StatusMessage, encode, event_message, readi
 QUEUE = 600
 STATUS_EVERY_S = 1.0
 SEND_WITHIN_S = 3.0
+GOODBYE_WITHIN_S = 0.3
 TRY_AGAIN_LATER = 1013  # RFC 6455 registry: the server is overloaded, as seen from this viewer
 GOING_AWAY = 1001
 
@@ -72,9 +74,15 @@ async def _send_all(
             try:
                 await asyncio.wait_for(viewer.send_text(message), SEND_WITHIN_S)
             except TimeoutError:
-                await asyncio.wait_for(viewer.close(TRY_AGAIN_LATER), SEND_WITHIN_S)
+                await _close(viewer, TRY_AGAIN_LATER)
                 return
-    await viewer.close(GOING_AWAY)
+    await _close(viewer, GOING_AWAY)
+
+
+async def _close(viewer: WebSocket, code: int) -> None:
+    """Say goodbye, without waiting for one who does not listen; the server drops it then."""
+    with contextlib.suppress(TimeoutError):
+        await asyncio.wait_for(viewer.close(code), GOODBYE_WITHIN_S)
 
 
 def _messages(batch: Batch, subscription: Subscription, instrument: Instrument) -> list[str]:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import asyncio
 import time
 from typing import Any
 
@@ -100,6 +101,46 @@ def test_the_stream_ends_with_the_service(rig: Rig) -> None:
         while closing["type"] == "websocket.send":
             closing = session.receive()
     assert closing["type"] == "websocket.close"
+
+
+class DeafViewer:
+    """Takes a message or two; then its buffers are full and sending never comes back."""
+
+    def __init__(self) -> None:
+        self.taken: list[str] = []
+        self.closed_with: int | None = None
+
+    async def send_text(self, message: str) -> None:
+        if len(self.taken) == 2:
+            await asyncio.Event().wait()
+        self.taken.append(message)
+
+    async def close(self, code: int) -> None:
+        self.closed_with = code
+        await asyncio.Event().wait()  # neither does closing
+
+
+def test_a_viewer_that_takes_nothing_for_too_long_is_let_go(
+    rig: Rig, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr(stream, "SEND_WITHIN_S", 0.05)
+    monkeypatch.setattr(stream, "GOODBYE_WITHIN_S", 0.05)
+    deaf = DeafViewer()
+
+    async def run() -> None:
+        rig.feed.attach(asyncio.get_running_loop())
+        subscription = rig.feed.subscribe(10)
+
+        def status() -> dict[str, str]:
+            subscription.offer(reading(len(deaf.taken)))  # there is always more to send
+            return {}
+
+        sending = stream._send_all(deaf, subscription, rig.instrument, status)
+        await asyncio.wait_for(sending, 10.0)
+
+    asyncio.run(run())
+    assert len(deaf.taken) == 2
+    assert deaf.closed_with == stream.TRY_AGAIN_LATER
 
 
 def test_a_feed_without_viewers_takes_readings_all_the_same() -> None:
