@@ -98,7 +98,7 @@ class Instrument:
         self._calibration: Calibration | None = None
         self._statistic = statistic
         self._window = TrailingWindow(window_s)
-        self._average: tuple[int, Average] | None = None
+        self._average: tuple[float, Average] | None = None
         self._zero: Zero | None = None
         self._newest: tuple[Observation, Reading] | None = None
         self._acquisition: Acquisition | None = None
@@ -107,7 +107,7 @@ class Instrument:
         self._state = State.OPENING
         self._detail = ""
         self._size_px: tuple[int, int] | None = None
-        self._scale_chosen = False
+        self._size_known = self._scale_chosen = False
         self._t_zero_ns = None if from_first_frame else self.start_time.t_mono_ns
         self._frames = self._unusable = self._missed = 0
 
@@ -132,7 +132,9 @@ class Instrument:
             self._source, self._target = source, target
             self._state, self._detail = State.OPENING, ""
             self._missed += before.missed if before else 0
-            self._forget_source()
+            self._size_px = self._calibration = None
+            self._size_known = False
+            self._forget_readings()
             self._acquisition = Acquisition(
                 lambda: self._observe(source, target),
                 on_observation=self._take,
@@ -195,16 +197,20 @@ class Instrument:
             )
 
     def average(self) -> Average | None:
-        """The average over the trailing window; None before the first reading."""
+        """The average over the trailing window; None before the first reading.
+
+        It is taken anew after a hundredth of the window, so that a long one costs no more than a
+        short one.
+        """
         with self._lock:
             if self._newest is None:
                 return None
-            seq = self._newest[1].seq
-            if self._average is None or self._average[0] != seq:
+            t_s, window_s = self._newest[1].t_s, self._window.window_s
+            if self._average is None or abs(t_s - self._average[0]) >= window_s / 100:
                 average = average_of(
-                    self._window.rows(), window_s=self._window.window_s, statistic=self._statistic
+                    self._window.rows(), window_s=window_s, statistic=self._statistic
                 )
-                self._average = seq, average
+                self._average = t_s, average
             return self._average[1]
 
     # -- what can be set ----------------------------------------------------------------------
@@ -253,8 +259,10 @@ class Instrument:
     def _take(self, observation: Observation, observer: Observer) -> None:
         size_px = observation.width_px, observation.height_px
         with self._lock:
-            if self._size_px != size_px:
-                self._see_size(size_px, observation.name)
+            if not self._size_known:  # newly opened: perhaps in another mode
+                self._size_px, self._size_known, self._scale_chosen = size_px, True, False
+            elif self._size_px != size_px:
+                raise _size_changed(self._size_px, size_px, observation.name)
             if not self._scale_chosen:
                 self._calibration = self._calibration_for(size_px, observer.calibration)
                 self._scale_chosen = True
@@ -268,14 +276,6 @@ class Instrument:
             self._unusable += not observation.sighting.found
         for listener in self.on_reading:
             listener(reading)
-
-    def _see_size(self, size_px: tuple[int, int], name: str | None) -> None:
-        if self._size_px is not None:
-            raise BadInput(
-                f"{name or 'the picture'} is {size_px[0]} × {size_px[1]} px, those before it were "
-                f"{self._size_px[0]} × {self._size_px[1]} px: give pictures of one size"
-            )
-        self._size_px = size_px
 
     def _calibration_for(
         self, size_px: tuple[int, int], own: Calibration | None
@@ -302,7 +302,8 @@ class Instrument:
         with self._lock:
             before, self._state, self._detail = self._state, state, detail
             if state is State.LOST:
-                self._forget_source()
+                self._size_known = False
+                self._forget_readings()
         if state is State.MEASURING:
             happened = "recovered" if before is State.STALLED else "opened"
             self.tell(happened, f"{self._source}: measuring")
@@ -323,16 +324,21 @@ class Instrument:
         for listener in self.on_event:
             listener(happened)
 
-    def _forget_source(self) -> None:
-        self._size_px = self._calibration = None
-        self._scale_chosen = False
-        self._forget_readings()
-
     def _forget_readings(self) -> None:
         """A zero or an average never reaches across a gap in which anything may have moved."""
         self._window.clear()
         self._average = None
         self._zero = None
+
+
+def _size_changed(
+    before: tuple[int, int] | None, now: tuple[int, int], name: str | None
+) -> BadInput:
+    was = f"{before[0]} × {before[1]}" if before else "unknown"
+    return BadInput(
+        f"{name or 'the picture'} is {now[0]} × {now[1]} px, those before it were {was} px: "
+        "give pictures of one size"
+    )
 
 
 def refuse_unfit(calibration: Calibration, width_px: int, height_px: int, target: Target) -> None:

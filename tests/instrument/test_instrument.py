@@ -11,7 +11,7 @@ import pytest
 from readout.angle import Calibration, nominal_calibration
 from readout.capture.timebase import TimeBase
 from readout.errors import BadInput, NotNow, SourceLost
-from readout.instrument import Event, Instrument, Optics, State
+from readout.instrument import Event, Instrument, Optics, State, Statistic
 from readout.instrument.instrument import refuse_unfit
 from readout.instrument.measuring import Measuring
 from readout.instrument.observer import Observer
@@ -145,6 +145,17 @@ def test_pictures_that_change_their_size_are_refused_and_what_came_before_stands
     assert len(bench.readings) == 2
 
 
+def test_a_source_opened_anew_may_come_in_another_size_if_the_scale_allows() -> None:
+    scripts = [[None, SourceLost("gone")], [(100, 80)]]
+    bench = Bench(*scripts, scale=Optics(300.0, 3.45)).run()
+    assert [r.seq for r in bench.readings] == [0, 1]
+    status = bench.instrument.status()
+    assert (status.image_width_px, status.image_height_px) == (100, 80)
+    assert status.calibration is not None
+    assert status.calibration.image_width_px == 100
+    assert Bench(*scripts, scale=calibration()).run().state[0] is State.FAILED
+
+
 def test_time_counts_from_the_start_of_the_program_or_from_the_first_frame() -> None:
     program = Bench([1.0, None, None], scale=calibration()).run()
     # 1 s of silence, then frames every 0.1 s
@@ -196,6 +207,23 @@ def test_a_new_scale_begins_average_and_zero_anew() -> None:
     assert [e.event for e in bench.events][-1] == "calibration"
     with pytest.raises(NotNow):
         bench.instrument.set_zero()
+
+
+def test_a_long_average_is_taken_anew_after_a_hundredth_of_its_window() -> None:
+    bench = Bench([None] * 30, scale=calibration())
+    bench.instrument.set_averaging(25.0, Statistic.MEAN)
+    counts: list[int] = []
+
+    def look(reading: Reading) -> None:
+        average = bench.instrument.average()
+        assert average is not None
+        counts.append(average.n)
+
+    bench.instrument.on_reading.append(look)
+    bench.run()
+    # ten readings a second: the third is the first one later than 0.25 s
+    assert len(set(counts)) == 10
+    assert counts[-1] >= 28
 
 
 def test_the_average_is_null_before_there_is_a_reading() -> None:
