@@ -32,3 +32,7 @@ class Busy(ReadoutError):
 
 class NotNow(ReadoutError):
     """What was asked for cannot be done at this moment: wait for what the message names."""
+
+
+class NotRecorded(ReadoutError):
+    """Readings could not be written to the log: nothing after this is kept until a new run."""

@@ -1,0 +1,7 @@
+"""Runs and their readings, kept so that a crash takes nothing that was acknowledged."""
+
+from readout.logbook.connection import FILE_NAME
+from readout.logbook.reader import LogReader, Run
+from readout.logbook.writer import Logbook, NewRun, Spread
+
+__all__ = ["FILE_NAME", "LogReader", "Logbook", "NewRun", "Run", "Spread"]
