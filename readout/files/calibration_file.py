@@ -58,7 +58,9 @@ class _File(_Model):
 
 def save_calibration(path: Path, calibration: Calibration) -> None:
     """Write ``calibration`` to ``path``, replacing the file whole. Raises BadInput if it cannot."""
-    write_text_whole(path, json.dumps(_document(calibration), indent=2, allow_nan=False) + "\n")
+    write_text_whole(
+        path, json.dumps(calibration_document(calibration), indent=2, allow_nan=False) + "\n"
+    )
 
 
 def load_calibration(path: Path) -> Calibration:
@@ -118,7 +120,8 @@ def load_calibration(path: Path) -> Calibration:
     )
 
 
-def _document(calibration: Calibration) -> dict[str, Any]:
+def calibration_document(calibration: Calibration) -> dict[str, Any]:
+    """What a calibration file holds, as JSON takes it."""
     (a_xx, a_xy), (a_yx, a_yy) = calibration.matrix
     scale_x, scale_y = calibration.scale_arcsec_per_px
     rms = calibration.residual_rms_arcsec

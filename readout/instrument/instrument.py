@@ -172,6 +172,12 @@ class Instrument:
         return self._target
 
     @property
+    def calibration(self) -> Calibration | None:
+        """The one the next reading will have, as far as it is known."""
+        with self._lock:
+            return self._calibration
+
+    @property
     def zero(self) -> Zero | None:
         with self._lock:
             return self._zero
@@ -312,15 +318,14 @@ class Instrument:
         for listener in self.on_state:
             listener(state, detail)
 
+    def now(self) -> tuple[float, int]:
+        """The present: seconds since the program's start, and UTC in nanoseconds."""
+        t_ns = self._clock_ns()
+        return (t_ns - self.start_time.t_mono_ns) * 1e-9, self.start_time.utc_ns(t_ns)
+
     def tell(self, event: str, text: str) -> None:
         """Tell the listeners of something that happens now."""
-        t_ns = self._clock_ns()
-        happened = Event(
-            t_s=(t_ns - self.start_time.t_mono_ns) * 1e-9,
-            t_utc_ns=self.start_time.utc_ns(t_ns),
-            event=event,
-            text=text,
-        )
+        happened = Event(*self.now(), event, text)
         for listener in self.on_event:
             listener(happened)
 

@@ -57,6 +57,33 @@ def join(readings: Sequence[Reading]) -> Joined:
     return Joined(joined, len(good), x.scatter, y.scatter)
 
 
+class Intervals:
+    """Joins readings interval by interval; the intervals are counted from ``origin_s``.
+
+    A change of the calibration ends an interval early: angles of two scales have no mean.
+    """
+
+    def __init__(self, every_s: float, *, origin_s: float = 0.0) -> None:
+        self._every_s = every_s
+        self._origin_s = origin_s
+        self._held: list[Reading] = []
+        self._number = -1
+
+    def add(self, reading: Reading) -> Joined | None:
+        """The row of the interval before, if ``reading`` is the first of another one."""
+        number = math.floor((reading.t_s - self._origin_s) / self._every_s)
+        other_scale = bool(self._held) and self._held[-1].calibration_id != reading.calibration_id
+        complete = self.close() if number != self._number or other_scale else None
+        self._number = number
+        self._held.append(reading)
+        return complete
+
+    def close(self) -> Joined | None:
+        """The row of what is held, which is then forgotten; None if nothing is."""
+        held, self._held = self._held, []
+        return join(held) if held else None
+
+
 _Row = tuple[float, float, float]
 
 

@@ -8,14 +8,13 @@ from __future__ import annotations
 
 import csv
 import io
-import math
 from collections.abc import AsyncIterator
 from typing import Annotated, Literal
 
 from fastapi import APIRouter, Query
 from fastapi.responses import StreamingResponse
 
-from readout.instrument.joining import Joined, join
+from readout.instrument.joining import Intervals, Joined
 from readout.model import Reading
 from readout.rows import SPREAD_COLUMNS, VALUE_COLUMNS, Cell, csv_cell, reading_row, rounded
 from readout.service.feed import Feed, Subscription
@@ -84,34 +83,17 @@ async def _next(subscription: Subscription, every_s: float) -> list[Reading]:
 
 
 class Interval:
-    """Collects readings and gives a row for each interval that is over (``every_s`` 0: each)."""
+    """Gives a row for each interval that is over (``every_s`` 0: for each reading)."""
 
     def __init__(self, every_s: float) -> None:
-        self._every_s = every_s
-        self._held: list[Reading] = []
-        self._number = -1
+        self._intervals = Intervals(every_s) if every_s > 0 else None
 
     def rows(self, readings: list[Reading]) -> list[Row]:
         """Rows that are complete with ``readings``; none for ever so long means the held ones."""
-        if self._every_s == 0:
+        if self._intervals is None:
             return [_unnamed(r) for r in readings]
-        complete: list[Row] = []
-        for reading in readings:
-            number = math.floor(reading.t_s / self._every_s)
-            if number != self._number:
-                complete.extend(self._close())
-                self._number = number
-            self._held.append(reading)
-        if not readings:
-            complete.extend(self._close())
-        return complete
-
-    def _close(self) -> list[Row]:
-        if not self._held:
-            return []
-        joined = join(self._held)
-        self._held = []
-        return [_joined_row(joined)]
+        joined = [self._intervals.add(r) for r in readings] or [self._intervals.close()]
+        return [_joined_row(row) for row in joined if row is not None]
 
 
 def _joined_row(joined: Joined) -> Row:
