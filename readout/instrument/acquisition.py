@@ -174,6 +174,8 @@ class Acquisition:
             self._deliver(observation, observer)
 
     def _deliver(self, observation: Observation, observer: Observer) -> None:
+        if self._stop.is_set():  # it came too late: somebody else may be measuring by now
+            return
         seq = observation.seq + self._seq_offset
         self._missed += seq - self.next_seq
         self.next_seq = seq + 1
@@ -204,6 +206,6 @@ class Acquisition:
             raise SourceLost(f"no frame for {silent_s:.0f} s")
 
     def _enter(self, state: State, detail: str) -> None:
-        if (state, detail) != (self._state, self._detail):
+        if (state, detail) != (self._state, self._detail) and not self._stop.is_set():
             self._state, self._detail = state, detail
             self._on_state(state, detail)

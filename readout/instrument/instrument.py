@@ -168,6 +168,11 @@ class Instrument:
         return self._source
 
     @property
+    def scale(self) -> Calibration | Optics | None:
+        """What was given as the scale; what is used of it: ``status().calibration``."""
+        return self._scale
+
+    @property
     def target(self) -> Target:
         return self._target
 
@@ -242,7 +247,8 @@ class Instrument:
             self._scale = scale
             self._scale_chosen = False
             self._forget_readings()
-        self.tell("calibration", "the scale was changed")
+        if self._acquisition is not None:
+            self.tell("calibration", "the scale was changed")
 
     def set_zero(self) -> Zero:
         """Zero at the averaged value. Raises NotNow while flagged or moving."""

@@ -14,6 +14,7 @@ from fastapi.staticfiles import StaticFiles
 from readout import __version__
 from readout.capture.open import describe_source
 from readout.instrument import Instrument
+from readout.instrument.recorder import Recorder
 from readout.service.control import Control
 from readout.service.feed import Feed
 from readout.service.guard import Guard
@@ -21,6 +22,7 @@ from readout.service.log_routes import log_routes
 from readout.service.messages import StatusMessage, status_message
 from readout.service.problems import answer_with_problems
 from readout.service.reading_routes import reading_routes
+from readout.service.run_routes import run_routes
 from readout.service.setting_routes import setting_routes
 from readout.service.stream import stream_routes
 
@@ -35,7 +37,13 @@ The readings are there all the same: <a href="/api/status">/api/status</a>,
 
 
 def make_app(
-    instrument: Instrument, feed: Feed, control: Control, *, port: int, static: Path = STATIC
+    instrument: Instrument,
+    feed: Feed,
+    control: Control,
+    recorder: Recorder,
+    *,
+    port: int,
+    static: Path = STATIC,
 ) -> FastAPI:
     """The application that serves ``instrument`` on ``port`` of this machine."""
 
@@ -44,6 +52,7 @@ def make_app(
         return status_message(
             now,
             described=describe_source(now.source) if now.source else None,
+            recording=recorder.recording,
             dropped=feed.dropped,
             session_start_utc_ns=instrument.start_time.t_utc_ns,
         )
@@ -61,6 +70,7 @@ def make_app(
     app.include_router(reading_routes(instrument, feed, status))
     app.include_router(log_routes(feed))
     app.include_router(setting_routes(instrument, feed, control))
+    app.include_router(run_routes(recorder, control))
     app.include_router(stream_routes(instrument, feed, status))
     if (static / "index.html").is_file():
         app.mount("/", StaticFiles(directory=static, html=True))

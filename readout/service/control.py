@@ -10,7 +10,7 @@ from typing import Any
 from readout.angle import Calibration
 from readout.capture.open import describe_source
 from readout.files.calibration_file import load_calibration
-from readout.instrument import Instrument, Optics
+from readout.instrument import Instrument, Optics, State
 from readout.instrument.instrument import refuse_unfit
 from readout.model import Target
 from readout.service.settings import Settings, SettingsStore
@@ -55,34 +55,53 @@ class Control:
         Raises BadInput, and changes nothing, for a value that cannot be used.
         """
         with self._lock:
-            before = self._store.current
-            after = self._store.merged(changes)
+            before, after = self._store.current, self._store.merged(changes)
+            if "source" in changes:
+                describe_source(self._source(after))
             from_settings = self._from_settings
             if "calibration" in changes:  # read anew even if the name is the same
                 from_settings = _calibration_named(after)
             scale = self._scale(after, from_settings)
-            describe_source(self._source(after))
-            same_source = self._source(after) == self._source(before)
-            same_target = self._target(after) is self._target(before)
-            status = self._instrument.status()
-            if same_source and isinstance(scale, Calibration) and status.image_width_px:
-                refuse_unfit(
-                    scale,
-                    status.image_width_px,
-                    status.image_height_px or 0,
-                    self._target(after),
-                )
+            anew = self._has_to_open_anew(before, after, changes, scale)
+            if not anew:
+                self._refuse_unfit(scale, after)
             self._store.keep(after)
             self._from_settings = from_settings
             self._instrument.set_averaging(after.average_s, after.statistic)
-            if same_source and same_target:
-                self._instrument.set_scale(scale)
-            else:
+            if anew:
                 self._instrument.stop()
-                self._instrument.set_scale(scale)
+            self._instrument.set_scale(scale)
+            if anew:
                 self._use(after, patient=True)
         self._instrument.tell("settings", "the settings were changed")
         return after
+
+    def _has_to_open_anew(
+        self,
+        before: Settings,
+        after: Settings,
+        changes: dict[str, Any],
+        scale: Calibration | Optics | None,
+    ) -> bool:
+        """True for another source or target, and for another try after a failure or an end."""
+        if self._source(before) != self._source(after):
+            return True
+        if self._target(before) is not self._target(after):
+            return True
+        match self._instrument.status().state:
+            case State.FAILED:
+                return "source" in changes or scale != self._instrument.scale
+            case State.ENDED:
+                return "source" in changes
+            case _:
+                return False
+
+    def _refuse_unfit(self, scale: Calibration | Optics | None, settings: Settings) -> None:
+        now = self._instrument.status()
+        if not isinstance(scale, Calibration) or scale == self._instrument.scale:
+            return
+        if now.image_width_px is not None and now.image_height_px is not None:
+            refuse_unfit(scale, now.image_width_px, now.image_height_px, self._target(settings))
 
     def _use(self, settings: Settings, *, patient: bool) -> None:
         self._instrument.use(

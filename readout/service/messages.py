@@ -15,6 +15,7 @@ from readout.angle import Calibration
 from readout.capture.mjpeg import without_password
 from readout.capture.open import SourceDescription
 from readout.instrument import Average, Event, Status, Zero
+from readout.instrument.recorder import Recording
 from readout.model import Arm, Observation, Quality, Reading
 from readout.rows import rounded
 from readout.service.feed import FLOATS, Columns
@@ -130,6 +131,16 @@ class ZeroMessage(TypedDict):
     set_utc: str
 
 
+class RunNowMessage(TypedDict):
+    """The run being recorded; ``readings``: rows so far."""
+
+    id: int
+    title: str
+    started_utc: str
+    every_s: float
+    readings: int
+
+
 class StatusMessage(TypedDict):
     """What the instrument is doing."""
 
@@ -147,7 +158,7 @@ class StatusMessage(TypedDict):
     image_height_px: int | None
     calibration: CalibrationMessage | None
     zero: ZeroMessage | None
-    run: None
+    run: RunNowMessage | None
     session_start_utc: str
     version: str
 
@@ -330,10 +341,24 @@ def zero_message(zero: Zero | None) -> ZeroMessage | None:
     }
 
 
+def run_now_message(recording: Recording | None) -> RunNowMessage | None:
+    """None stays None."""
+    if recording is None:
+        return None
+    return {
+        "id": recording.id,
+        "title": recording.title,
+        "started_utc": utc_text(recording.started_utc_ns),
+        "every_s": recording.every_s,
+        "readings": recording.readings,
+    }
+
+
 def status_message(
     status: Status,
     *,
     described: SourceDescription | None,
+    recording: Recording | None,
     dropped: int,
     session_start_utc_ns: int,
 ) -> StatusMessage:
@@ -353,7 +378,7 @@ def status_message(
         "image_height_px": status.image_height_px,
         "calibration": calibration_message(status.calibration),
         "zero": zero_message(status.zero),
-        "run": None,
+        "run": run_now_message(recording),
         "session_start_utc": utc_text(session_start_utc_ns),
         "version": __version__,
     }

@@ -193,6 +193,31 @@ def test_the_last_picture_outlasts_the_source_with_the_seq_of_its_reading() -> N
     assert picture.frame.seq == run.seqs[-1] == 2
 
 
+def test_one_that_was_stopped_says_nothing_more() -> None:
+    """A source that returns long after the stop must not mix with the next one's readings."""
+    recorder = Recorder([None, None, SourceLost("gone")])
+    opened = recorder._open
+
+    def open_stopping_in_the_second_read() -> Observer:
+        observer = opened()
+        observe = observer.observe
+
+        def observe_late(timeout_s: float) -> Observation:
+            seen = observe(timeout_s)
+            if seen.seq == 1:
+                recorder.acquisition.stop()
+            return seen
+
+        observer.observe = observe_late
+        return observer
+
+    recorder.acquisition._open_observer = open_stopping_in_the_second_read
+    recorder.run()
+    assert recorder.seqs == [0]
+    assert recorder.words == ["opening", "measuring"]
+    assert recorder.observers[0].left == 1
+
+
 def test_stop_ends_a_long_pause_at_once() -> None:
     clock = FakeClock()
     opened = threading.Event()

@@ -9,8 +9,9 @@ from pathlib import Path
 import pytest
 from starlette.testclient import TestClient
 
-from readout.errors import BadInput
+from readout.errors import BadInput, SourceLost
 from readout.files.calibration_file import save_calibration
+from readout.service.control import Options
 from readout.service.settings import Settings, SettingsStore
 from tests.service.conftest import Rig, small_calibration
 
@@ -174,6 +175,41 @@ def test_a_calibration_of_the_command_line_wins(
     client.put("/api/settings", json={"calibration": str(path)})
     rig.measure()
     assert rig.instrument.status().calibration == small_calibration()
+
+
+def test_a_source_that_has_vanished_hinders_no_other_change(
+    rig: Rig, client: TestClient, tmp_path: Path
+) -> None:
+    folder = tmp_path / "frames"
+    folder.mkdir()
+    assert client.put("/api/settings", json={"source": str(folder)}).status_code == 200
+    folder.rmdir()
+    assert client.put("/api/settings", json={"theme": "night"}).status_code == 200
+
+
+def test_a_failed_source_is_tried_again_when_it_is_chosen_again(
+    rig: Rig, client: TestClient
+) -> None:
+    rig.measure([SourceLost("not connected")])
+    assert client.get("/api/status").json()["state"] == "failed"
+    rig.script = [None]
+    client.put("/api/settings", json={"theme": "night"})
+    assert len(rig.observers) == 1
+    client.put("/api/settings", json={"source": "simulated"})
+    rig.instrument._acquisition._thread.join(5.0)
+    assert client.get("/api/status").json()["frames"] == 1
+
+
+def test_a_scale_that_did_not_fit_is_mended_by_another_one(rig: Rig, client: TestClient) -> None:
+    rig.fix_calibration(replace(small_calibration(), image_width_px=1280))
+    rig.measure([None])
+    assert client.get("/api/status").json()["state"] == "failed"
+    rig.control._options = Options()  # as if the misfit had come from the settings
+    rig.script = [None]
+    optics = {"focal_length_mm": 300.0, "pitch_um": 3.45}
+    assert client.put("/api/settings", json={"optics": optics}).status_code == 200
+    rig.instrument._acquisition._thread.join(5.0)
+    assert client.get("/api/reading").json()["x_arcsec"] is not None
 
 
 def test_another_source_is_measured_at_once(rig: Rig, client: TestClient, tmp_path: Path) -> None:

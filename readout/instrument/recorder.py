@@ -1,0 +1,172 @@
+"""From the instrument into the log: one run at a time.
+
+Readings and events come from the acquisition's thread, which is never made to wait. A run that
+cannot be written any more is ended and told of; measuring goes on.
+"""
+
+from __future__ import annotations
+
+import contextlib
+import json
+import threading
+from dataclasses import dataclass
+from typing import Any
+
+from readout import __version__
+from readout.capture.mjpeg import without_password
+from readout.errors import NotNow, NotRecorded
+from readout.files.calibration_file import calibration_document
+from readout.instrument.instrument import Event, Instrument
+from readout.instrument.joining import Intervals, Joined
+from readout.logbook import Logbook, NewRun, Spread
+from readout.model import Reading
+
+
+@dataclass(frozen=True, slots=True)
+class Recording:
+    """The run being recorded. ``readings``: rows so far."""
+
+    id: int
+    title: str
+    started_utc_ns: int
+    every_s: float
+    readings: int
+
+
+@dataclass(slots=True)
+class _Open:
+    """A run and where it stands. ``begin_s``: its start, as readings count seconds."""
+
+    id: int
+    new: NewRun
+    begin_s: float
+    intervals: Intervals | None
+    readings: int = 0
+    calibration_id: str | None = None
+
+
+class Recorder:
+    """Records the readings of ``instrument`` in ``logbook``, from ``start`` to ``stop``."""
+
+    def __init__(self, instrument: Instrument, logbook: Logbook) -> None:
+        self._instrument = instrument
+        self._logbook = logbook
+        self._switching = threading.Lock()  # one start or stop at a time; may wait for the disk
+        self._lock = threading.Lock()  # of what follows; never held for longer than an instant
+        self._open: _Open | None = None
+        instrument.on_reading.append(self._take)
+        instrument.on_event.append(self._hear)
+
+    @property
+    def recording(self) -> Recording | None:
+        """The run being recorded now."""
+        with self._lock:
+            run = self._open
+            if run is None:
+                return None
+            new = run.new
+            return Recording(run.id, new.title, new.started_utc_ns, new.every_s, run.readings)
+
+    def start(
+        self, *, title: str, note: str = "", every_s: float = 0.0, settings: dict[str, Any]
+    ) -> int:
+        """Begin a run and answer its id; ``settings`` are kept with it, without passwords.
+
+        Raises NotNow while another one is recorded, NotRecorded if the log cannot be written.
+        """
+        with self._switching:
+            if self._open is not None:
+                raise NotNow(f"run {self._open.id} is being recorded: stop it first")
+            begin_s, started_utc_ns = self._instrument.now()
+            new = NewRun(
+                title=title,
+                note=note,
+                started_utc_ns=started_utc_ns,
+                source=without_password(self._instrument.source or ""),
+                every_s=every_s,
+                settings=_without_passwords(settings),
+                version=__version__,
+            )
+            run_id = self._logbook.start(new)
+            intervals = Intervals(every_s, origin_s=begin_s) if every_s > 0 else None
+            with self._lock:
+                self._open = _Open(run_id, new, begin_s, intervals)
+        self._instrument.tell("run_started", f"run {run_id} has begun")
+        return run_id
+
+    def stop(self, run_id: int) -> None:
+        """End the run; everything of it is written on return.
+
+        Raises NotNow if it is not the one being recorded, NotRecorded if its end cannot be
+        written.
+        """
+        with self._switching:
+            run = self._open
+            if run is None or run.id != run_id:
+                raise NotNow(f"run {run_id} is not being recorded: there is nothing to stop")
+            with self._lock:
+                self._close_interval(run)
+                self._open = None
+            self._instrument.tell("run_stopped", f"run {run_id} ended, {run.readings} rows")
+            self._logbook.end(self._instrument.now()[1])
+
+    def close(self) -> None:
+        """End the run that is open, if there is one."""
+        recording = self.recording
+        if recording is not None:
+            self.stop(recording.id)
+
+    # -- called by the acquisition ------------------------------------------------------------
+
+    def _take(self, reading: Reading) -> None:
+        run: _Open | None = None
+        try:
+            with self._lock:
+                run = self._open
+                if run is not None and reading.t_s >= run.begin_s:
+                    self._record(run, reading)
+        except NotRecorded as error:
+            with self._lock:
+                self._open = None
+            if run is not None:
+                self._instrument.tell("run_stopped", f"run {run.id} was broken off: {error}")
+
+    def _record(self, run: _Open, reading: Reading) -> None:
+        if reading.calibration_id != run.calibration_id:
+            self._note_calibration(run, reading)
+        if run.intervals is None:
+            self._logbook.append(reading, t_s=reading.t_s - run.begin_s)
+            run.readings += 1
+        else:
+            self._append_joined(run, run.intervals.add(reading))
+
+    def _close_interval(self, run: _Open) -> None:
+        if run.intervals is not None:
+            # What cannot be written any more is told of when the run is ended.
+            with contextlib.suppress(NotRecorded):
+                self._append_joined(run, run.intervals.close())
+
+    def _append_joined(self, run: _Open, joined: Joined | None) -> None:
+        if joined is None:
+            return
+        spread = Spread(joined.n, joined.x_scatter_arcsec, joined.y_scatter_arcsec)
+        t_s = joined.reading.t_s - run.begin_s
+        self._logbook.append(joined.reading, t_s=t_s, spread=spread)
+        run.readings += 1
+
+    def _note_calibration(self, run: _Open, reading: Reading) -> None:
+        calibration = self._instrument.calibration
+        if calibration is not None and calibration.id == reading.calibration_id:
+            document = json.dumps(calibration_document(calibration), allow_nan=False)
+            self._logbook.note_calibration(reading.seq, calibration.id, document)
+            run.calibration_id = calibration.id
+
+    def _hear(self, event: Event) -> None:
+        # A log that cannot be written cannot hold the event that says so; viewers have it.
+        with contextlib.suppress(NotRecorded):
+            self._logbook.note_event(event.t_utc_ns, event.event, event.text)
+
+
+def _without_passwords(settings: dict[str, Any]) -> dict[str, Any]:
+    source = settings.get("source")
+    return settings | {"source": without_password(source)} if isinstance(source, str) else settings
