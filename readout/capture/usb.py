@@ -36,7 +36,7 @@ _FULL_SCALE = {"Y10": 1023, "Y12": 4095, "Y16": 65535}
 _ENOUGH_PER_S = 15.0
 _BUFFERS = 3
 _OLD_NS = 200_000_000
-_STAMP_BELIEVED_NS = 2_000_000_000
+_STAMP_BELIEVED_NS = 60_000_000_000
 
 
 def backend() -> int:
@@ -143,13 +143,12 @@ class UsbCamera:
             raise SourceLost(f"camera {self._which} is not open: open it first")
         if not self._ready(capture, timeout_s):
             raise self._silent(timeout_s)
-        t_mono_ns = self._grab(capture)
-        while self._clock() - t_mono_ns > _OLD_NS and self._ready(capture, 0.0):
-            t_mono_ns = self._grab(capture)
+        picture, t_mono_ns = self._take(capture)
+        for _ in range(_BUFFERS):
+            if self._clock() - t_mono_ns <= _OLD_NS or not self._ready(capture, 0.0):
+                break
+            picture, t_mono_ns = self._take(capture)
             self._seq += 1
-        retrieved, picture = capture.retrieve()
-        if not retrieved or picture is None:
-            raise self._lost()
         pixels, full_scale, quality = self._pixels(picture)
         self._t_last_ns = t_mono_ns
         if self._t_first_ns is None:
@@ -189,17 +188,21 @@ class UsbCamera:
             raise self._lost() from None
         return bool(ready)
 
-    def _grab(self, capture: cv2.VideoCapture) -> int:
-        """Take the next frame; returns its time on the monotonic clock."""
-        if not capture.grab():
+    def _take(self, capture: cv2.VideoCapture) -> tuple[np.ndarray, int]:
+        """The next buffer and its time on the monotonic clock.
+
+        Grab and retrieve always go together: a second grab would give the same buffer again.
+        """
+        grabbed = capture.grab()
+        t_mono_ns = self._clock()
+        retrieved, picture = capture.retrieve() if grabbed else (False, None)
+        if not retrieved or picture is None:
             raise self._lost()
-        now_ns = self._clock()
         if SYSTEM == "Linux":
             driver_ns = round(capture.get(cv2.CAP_PROP_POS_MSEC) * 1e6)
-            age_ns = now_ns - driver_ns
-            if driver_ns > self._t_last_ns and 0 <= age_ns < _STAMP_BELIEVED_NS:
-                return driver_ns
-        return now_ns
+            if max(self._t_last_ns, t_mono_ns - _STAMP_BELIEVED_NS) < driver_ns <= t_mono_ns:
+                t_mono_ns = driver_ns
+        return picture, t_mono_ns
 
     def _silent(self, timeout_s: float) -> SourceStalled | SourceLost:
         if not Path(self._camera.path if self._camera else "").exists():

@@ -14,7 +14,8 @@ class FakeCapture:
     ``stamps_ms``: what the driver says of the time of each picture; nothing without it.
     ``script``: what each grab brings: a picture, "fails" (grab refused), "torn" (grab taken,
     nothing to retrieve) or "silent" (no frame comes). Once a grab failed, retrieving gives the
-    picture before, as V4L2 does; and it goes on saying that it is open.
+    picture before, as V4L2 does; it goes on saying that it is open; and a second grab without
+    retrieving in between gives the same picture once more.
     """
 
     def __init__(self, script: list[np.ndarray | str], *, opens: bool = True) -> None:
@@ -24,7 +25,7 @@ class FakeCapture:
         self.released = 0
         self.stamps_ms: list[float] = []
         self._picture: np.ndarray | None = None
-        self._torn = False
+        self._torn = self._pending = False
 
     def isOpened(self) -> bool:  # noqa: N802 (OpenCV's name)
         return self.opens
@@ -38,18 +39,21 @@ class FakeCapture:
         return self.values.get(what, -1.0)
 
     def grab(self) -> bool:
+        if self._pending:
+            return True
         if not self.script:
             return False
         item = self.script.pop(0)
         self._torn = isinstance(item, str) and item == "torn"
         if isinstance(item, str):
             return item == "torn"
-        self._picture = item
+        self._picture, self._pending = item, True
         if self.stamps_ms:
             self.values[cv2.CAP_PROP_POS_MSEC] = self.stamps_ms.pop(0)
         return True
 
     def retrieve(self) -> tuple[bool, np.ndarray | None]:
+        self._pending = False
         if self._torn:
             return False, None
         return self._picture is not None, self._picture
