@@ -10,6 +10,7 @@ import contextlib
 import json
 import threading
 from dataclasses import dataclass
+from pathlib import Path
 from typing import Any
 
 from readout import __version__
@@ -56,6 +57,11 @@ class Recorder:
         self._open: _Open | None = None
         instrument.on_reading.append(self._take)
         instrument.on_event.append(self._hear)
+
+    @property
+    def path(self) -> Path:
+        """Where the log lies, to be read by anybody."""
+        return self._logbook.path
 
     @property
     def recording(self) -> Recording | None:

@@ -2,6 +2,7 @@
 
 from readout.logbook.connection import FILE_NAME
 from readout.logbook.reader import LogReader, Run
+from readout.logbook.series import Series
 from readout.logbook.writer import Logbook, NewRun, Spread
 
-__all__ = ["FILE_NAME", "LogReader", "Logbook", "NewRun", "Run", "Spread"]
+__all__ = ["FILE_NAME", "LogReader", "Logbook", "NewRun", "Run", "Series", "Spread"]

@@ -54,7 +54,7 @@ def open_reading(path: Path) -> sqlite3.Connection:
     uri = f"file:{quote(str(path.absolute()))}?mode=ro"
     connection: sqlite3.Connection | None = None
     try:
-        connection = sqlite3.connect(uri, uri=True, timeout=WAIT_S, isolation_level=None)
+        connection = _connect(uri)
         try:
             version = schema.version_of(connection)
         except sqlite3.OperationalError:
@@ -63,7 +63,7 @@ def open_reading(path: Path) -> sqlite3.Connection:
             if path.with_name(path.name + "-wal").exists():
                 raise
             connection.close()
-            connection = sqlite3.connect(uri + "&immutable=1", uri=True, isolation_level=None)
+            connection = _connect(uri + "&immutable=1")
             version = schema.version_of(connection)
         _refuse_foreign(connection, path)
         if version == 0:
@@ -107,6 +107,13 @@ def held(path: Path) -> Iterator[None]:
                 "with --data"
             ) from error
         yield
+
+
+def _connect(uri: str) -> sqlite3.Connection:
+    """An export is read on by whichever thread is free, one after the other."""
+    return sqlite3.connect(
+        uri, uri=True, timeout=WAIT_S, isolation_level=None, check_same_thread=False
+    )
 
 
 def _refuse_foreign(connection: sqlite3.Connection, path: Path) -> None:

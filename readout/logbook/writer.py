@@ -101,7 +101,8 @@ class Logbook:
         self._inbox: queue.Queue[_Row | _Note | _Job | None] = queue.Queue(capacity)
         self._lock = threading.Lock()
         self._run_id: int | None = None
-        self._failure: NotRecorded | None = None
+        self._failure: NotRecorded | None = None  # what callers are told
+        self._broken = False  # what the writer knows: rows of this run have been lost
         self._committed_seq: int | None = None
         with ExitStack() as stack:
             stack.enter_context(held(path))
@@ -135,7 +136,7 @@ class Logbook:
         with self._lock:
             if self._run_id is not None and self._failure is None:
                 raise NotNow(f"run {self._run_id} is being recorded: stop it first")
-            run_id = int(self._do(lambda connection: _insert_run(connection, run)))
+            run_id = int(self._do(lambda connection: self._begin(connection, run)))
             self._failure, self._committed_seq, self._run_id = None, None, run_id
             return run_id
 
@@ -203,10 +204,11 @@ class Logbook:
         try:
             self._inbox.put_nowait(item)
         except queue.Full:
-            raise NotRecorded(
+            self._failure = NotRecorded(
                 f"the log {self.path} is written too slowly, its queue is full: use a faster disk "
-                "or record means (every_s)"
-            ) from None
+                "or record means, then start a new run"
+            )
+            raise self._failure from None
 
     def _do(self, work: Callable[[sqlite3.Connection], Any]) -> Any:
         """Have the writer do ``work`` after all that is queued, in a transaction of its own."""
@@ -229,15 +231,21 @@ class Logbook:
         more = True
         while more:
             rows, notes, job, more = self._gather()
-            if (rows or notes) and self._failure is None:
+            if (rows or notes) and not self._broken:
                 self._commit(rows, notes)
             if job is not None:
                 self._answer(job)
+
+    def _begin(self, connection: sqlite3.Connection, run: NewRun) -> int:
+        run_id = _insert_run(connection, run)
+        self._broken = False
+        return run_id
 
     def _commit(self, rows: list[_Row], notes: list[_Note]) -> None:
         try:
             _in_transaction(self._connection, lambda: _write(self._connection, rows, notes))
         except sqlite3.Error as error:
+            self._broken = True
             self._failure = self._not_recorded(error)
             self._on_failure(str(self._failure))
         else:

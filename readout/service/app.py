@@ -70,7 +70,7 @@ def make_app(
     app.include_router(reading_routes(instrument, feed, status))
     app.include_router(log_routes(feed))
     app.include_router(setting_routes(instrument, feed, control))
-    app.include_router(run_routes(recorder, control))
+    app.include_router(run_routes(recorder, feed, control))
     app.include_router(stream_routes(instrument, feed, status))
     if (static / "index.html").is_file():
         app.mount("/", StaticFiles(directory=static, html=True))

@@ -12,6 +12,7 @@ import webbrowser
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
 from types import FrameType
 from typing import TYPE_CHECKING, Any
@@ -22,6 +23,8 @@ from readout.capture.open import describe_source
 from readout.errors import BadInput, Busy
 from readout.instrument import Instrument, State
 from readout.instrument.opening import open_observer
+from readout.instrument.recorder import Recorder
+from readout.logbook import FILE_NAME, Logbook
 from readout.service.control import Control, Options
 from readout.service.feed import Feed
 from readout.service.settings import SettingsStore
@@ -79,10 +82,16 @@ def run_live(
         describe_source(options.source)
     store = SettingsStore(place.settings)
     _make_folder(place.data)
-    with _listening(place.port) as listener:
+    instrument = Instrument(observe=lambda s, t: open_observer(s, t, paced=True))
+    with (
+        _listening(place.port) as listener,
+        Logbook(
+            place.data / FILE_NAME, on_failure=partial(instrument.tell, "log_failed")
+        ) as logbook,
+    ):
         port = int(listener.getsockname()[1])
         feed = Feed()
-        instrument = Instrument(observe=lambda s, t: open_observer(s, t, paced=True))
+        recorder = Recorder(instrument, logbook)
         control = Control(instrument, store, options)
         beginning = _Beginning(options.source)
         instrument.on_reading.append(feed.append)
@@ -103,10 +112,11 @@ def run_live(
 
             from readout.service.app import make_app
 
-            app = make_app(instrument, feed, control, port=port)
+            app = make_app(instrument, feed, control, recorder, port=port)
             _serve(uvicorn.Config(app, **_SERVER), listener, feed, beginning, welcome)
         finally:
             instrument.stop()
+            recorder.close()
     if beginning.failure is not None:
         raise BadInput(beginning.failure)
 

@@ -13,6 +13,8 @@ from readout.angle import Calibration, nominal_calibration
 from readout.capture.timebase import TimeBase
 from readout.instrument import Instrument
 from readout.instrument.observer import Observer
+from readout.instrument.recorder import Recorder
+from readout.logbook import FILE_NAME, Logbook
 from readout.model import Target
 from readout.service.app import make_app
 from readout.service.control import Control, Options
@@ -51,6 +53,8 @@ class Rig:
         self.control = Control(self.instrument, self.store, Options())
         self.fix_calibration(small_calibration())
         self.static = folder / "static"
+        self.logbook = Logbook(folder / FILE_NAME)
+        self.recorder = Recorder(self.instrument, self.logbook)
 
     def _observe(self, source: str, target: Target) -> Observer:
         del source, target
@@ -70,14 +74,23 @@ class Rig:
 
     @contextmanager
     def asked(self) -> Iterator[TestClient]:
-        app = make_app(self.instrument, self.feed, self.control, port=PORT, static=self.static)
+        app = make_app(
+            self.instrument,
+            self.feed,
+            self.control,
+            self.recorder,
+            port=PORT,
+            static=self.static,
+        )
         with TestClient(app, base_url=HERE, raise_server_exceptions=False) as client:
             yield client
 
 
 @pytest.fixture
-def rig(tmp_path: Path) -> Rig:
-    return Rig(tmp_path)
+def rig(tmp_path: Path) -> Iterator[Rig]:
+    rig = Rig(tmp_path)
+    yield rig
+    rig.logbook.close()
 
 
 @pytest.fixture
