@@ -10,6 +10,7 @@ import subprocess
 import tomllib
 from pathlib import Path
 
+import click
 import pytest
 import typer.core
 import typer.main
@@ -173,10 +174,17 @@ def commands() -> dict[str, set[str]]:
     group = typer.main.get_command(app)
     assert isinstance(group, typer.core.TyperGroup)
     return {
-        name: {"--help"}.union(*((*p.opts, *p.secondary_opts) for p in command.params))
+        name: {"--help"} | options(command)
         for name, command in group.commands.items()
         if not command.hidden
     }
+
+
+def options(command: click.Command) -> set[str]:
+    """Its options, and those of the commands below it."""
+    below = command.commands.values() if isinstance(command, click.Group) else ()
+    own = {name for p in command.params for name in (*p.opts, *p.secondary_opts)}
+    return own.union(*map(options, below))
 
 
 def test_every_command_of_the_program_stands_in_the_readme() -> None:

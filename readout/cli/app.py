@@ -10,7 +10,7 @@ from typing import Annotated
 import typer
 
 from readout import __version__
-from readout.cli import calibrate, cameras, live, locate, measure, simulate
+from readout.cli import calibrate, cameras, live, locate, measure, runs, simulate
 from readout.cli.say import fail
 from readout.errors import BadInput, ReadoutError
 
@@ -32,6 +32,7 @@ app = typer.Typer(
 )
 for command in (live, cameras, locate, measure, calibrate, simulate):
     app.command(epilog=command.EXAMPLE)(command.command)
+app.add_typer(runs.app, name="runs", epilog=runs.EXAMPLE, help="What has been recorded.")
 
 
 def main() -> None:

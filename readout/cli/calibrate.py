@@ -40,8 +40,8 @@ def calibrate(
     """
     from readout.files.calibration_file import save_calibration
     from readout.files.calibration_set import read_calibration_set
-    from readout.utc import utc_text
     from readout.instrument.calibrating import calibrate_set
+    from readout.utc import utc_text
 
     given = read_calibration_set(folder)
     with progress("frames", len(given.tilts)) as show:

@@ -2,12 +2,18 @@
 
 from __future__ import annotations
 
-from pathlib import Path
 from typing import Annotated
 
 import typer
 
-from readout.cli.options import SOURCES, CalibrationOption, SettingsOption, TargetOption
+from readout.cli.options import (
+    SOURCES,
+    CalibrationOption,
+    DataOption,
+    SettingsOption,
+    TargetOption,
+    data_folder,
+)
 from readout.cli.say import print_line
 
 EXAMPLE = (
@@ -27,9 +33,7 @@ def live(
     target: TargetOption = None,
     calibration: CalibrationOption = None,
     port: Annotated[int, typer.Option(min=0, max=65535, help="0: any free port.")] = 8470,
-    data: Annotated[
-        Path | None, typer.Option(metavar="DIR", help="Folder for what is recorded.")
-    ] = None,
+    data: DataOption = None,
     settings: SettingsOption = None,
     browser: Annotated[
         bool | None,
@@ -40,8 +44,6 @@ def live(
 
     Ctrl-C ends it.
     """
-    from platformdirs import user_data_path
-
     from readout.files.calibration_file import load_calibration
     from readout.service.control import Options
     from readout.service.live import Place, run_live
@@ -49,7 +51,7 @@ def live(
 
     place = Place(
         port=port,
-        data=data or user_data_path("readout", appauthor=False),
+        data=data_folder(data),
         settings=settings or default_settings_path(),
     )
     options = Options(source, target, load_calibration(calibration) if calibration else None)

@@ -8,7 +8,7 @@ import sys
 from collections.abc import Callable, Iterator
 from contextlib import ExitStack, contextmanager
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated, TextIO
+from typing import TYPE_CHECKING, Annotated
 
 import typer
 
@@ -19,7 +19,7 @@ from readout.cli.options import (
     JsonOption,
     SettingsOption,
 )
-from readout.cli.say import note, print_json, print_line, progress, warn
+from readout.cli.say import note, opened, print_json, print_line, progress, warn
 from readout.errors import BadInput
 from readout.files.readings_file import ReadingsWriter
 from readout.model import Reading, Target
@@ -104,13 +104,6 @@ def _optics_of_settings(path: Path | None) -> Optics:
     return optics
 
 
-def _opened(path: Path) -> TextIO:
-    try:
-        return path.open("w", encoding="utf-8", newline="")
-    except OSError as error:
-        raise BadInput(f"cannot write {path} ({error.strerror}): choose another place") from error
-
-
 @contextmanager
 def _writing(csv: Path | None, *, json: bool) -> Iterator[Write]:
     """Where the rows go: JSON lines and a CSV file together if both are asked for."""
@@ -120,7 +113,7 @@ def _writing(csv: Path | None, *, json: bool) -> Iterator[Write]:
             writes.append(lambda reading: print_json(reading_row(reading)))
         if csv is not None:
             to_stdout = str(csv) == "-"
-            file = sys.stdout if to_stdout else stack.enter_context(_opened(csv))
+            file = sys.stdout if to_stdout else stack.enter_context(opened(csv))
             writes.append(stack.enter_context(ReadingsWriter(file)).write)
         if not writes:
             writes.append(lambda reading: print_line(_words(reading)))

@@ -7,9 +7,12 @@ import sys
 import time
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
-from typing import Any, NoReturn
+from pathlib import Path
+from typing import Any, NoReturn, TextIO
 
 import typer
+
+from readout.errors import BadInput
 
 QUIET_S = 1.0
 """Work shorter than this shows no progress."""
@@ -41,6 +44,14 @@ def print_line(line: str) -> None:
     """One line of standard output, out at once."""
     typer.echo(line)
     sys.stdout.flush()
+
+
+def opened(path: Path) -> TextIO:
+    """The file at ``path``, to be written anew. Raises BadInput where it cannot be."""
+    try:
+        return path.open("w", encoding="utf-8", newline="")
+    except OSError as error:
+        raise BadInput(f"cannot write {path} ({error.strerror}): choose another place") from error
 
 
 @contextmanager
