@@ -125,11 +125,14 @@ def _times_from_table(folder: Path, names: list[str]) -> list[int] | None:
     for table in (folder / name for name in TIME_TABLES):
         if not table.is_file():
             continue
-        with table.open(encoding="utf-8-sig", newline="") as file:
-            rows = csv.DictReader(file)
-            if not {"file", "t_s"} <= set(rows.fieldnames or ()):
-                continue
-            known = {row["file"]: row["t_s"] for row in rows}
+        try:
+            with table.open(encoding="utf-8-sig", newline="") as file:
+                rows = csv.DictReader(file)
+                if not {"file", "t_s"} <= set(rows.fieldnames or ()):
+                    continue
+                known = {row["file"]: row["t_s"] or "" for row in rows}
+        except (OSError, UnicodeDecodeError, csv.Error) as error:
+            raise BadInput(f"{table} cannot be read as CSV ({error}): correct it") from error
         return [_t_ns(known, name, table) - _t_ns(known, names[0], table) for name in names]
     return None
 

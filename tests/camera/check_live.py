@@ -82,7 +82,7 @@ def ask(path: str, timeout_s: float = ANSWER_S) -> tuple[int, dict[str, Any]]:
             return answer.status, json.load(answer)
     except urllib.error.HTTPError as error:
         return error.code, json.load(error)
-    except urllib.error.URLError:
+    except (urllib.error.URLError, ConnectionError):
         return 0, {}
 
 
@@ -207,7 +207,8 @@ def main(fourcc: str) -> int:
     began = time.monotonic()
     live = subprocess.Popen(command, env={**os.environ, "PYTHONPATH": str(folder)})
     try:
-        until(state_is("measuring", timeout_s=START_S), START_S, "state measuring at the start")
+        measuring = state_is("measuring", timeout_s=START_S)
+        until(lambda: measuring() or live.poll() is not None, START_S, "state measuring")
         print(
             f"       first reading {time.monotonic() - began:.1f} s after the command", flush=True
         )

@@ -66,10 +66,15 @@ def test_a_table_of_other_things_is_left_alone(folder: Path):
 
 @pytest.mark.parametrize(
     ("rows", "message"),
-    [("a1.png,0\n", "no row for a10.png"), ("a1.png,soon\n", "t_s of a1.png is no number")],
+    [
+        ("a1.png,0\n", "no row for a10.png"),
+        ("a1.png,soon\n", "t_s of a1.png is no number"),
+        ("a1.png\n", "t_s of a1.png is no number"),
+        ("a1.png,0\xff\n", "cannot be read as CSV"),
+    ],
 )
 def test_a_table_with_holes_is_refused(folder: Path, rows: str, message: str):
-    (folder / "times.csv").write_text("file,t_s\n" + rows, encoding="utf-8")
+    (folder / "times.csv").write_text("file,t_s\n" + rows, encoding="latin-1")
     with pytest.raises(BadInput, match=message) as caught:
         FolderSource(folder).__enter__()
     one_line(caught.value)
