@@ -9,8 +9,8 @@ import re
 import subprocess
 import tomllib
 from pathlib import Path
+from typing import Any
 
-import click
 import pytest
 import typer.core
 import typer.main
@@ -180,9 +180,10 @@ def commands() -> dict[str, set[str]]:
     }
 
 
-def options(command: click.Command) -> set[str]:
+def options(command: Any) -> set[str]:
     """Its options, and those of the commands below it."""
-    below = command.commands.values() if isinstance(command, click.Group) else ()
+    group = isinstance(command, typer.core.TyperGroup)
+    below = command.commands.values() if group else ()
     own = {name for p in command.params for name in (*p.opts, *p.secondary_opts)}
     return own.union(*map(options, below))
 
