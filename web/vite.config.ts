@@ -19,5 +19,5 @@ export default defineConfig({
     host: '127.0.0.1',
     proxy: { '/api': { target: service, ws: true, changeOrigin: true } },
   },
-  test: { environment: 'node', include: ['src/**/*.test.ts'] },
+  test: { environment: 'node', css: true, include: ['src/**/*.test.ts'] },
 });

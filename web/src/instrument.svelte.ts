@@ -13,12 +13,15 @@ import { noticesOf, type Notice } from './core/words';
 
 const KEPT_S = 600;
 const TICK_MS = 100;
+const REFUSAL_MS = 10_000;
 const STATISTICS_S = 30;
 const KEPT_EVENTS = 100;
 
 export interface Held {
   at: Date;
   t_s: number;
+  newest: Newest | null;
+  average: Average | null;
 }
 
 /** Everything the page knows of the instrument, and the few things it can ask of it. */
@@ -56,6 +59,7 @@ export class Instrument {
   private newest: Newest | null = null;
   private average: Average | null = null;
   private arrived_ms = 0;
+  private refused_ms = 0;
   private ticks = 0;
   private readonly lessMotion = matchMedia('(prefers-reduced-motion: reduce)');
   private readonly paint = new Pace(
@@ -63,7 +67,7 @@ export class Instrument {
     () => (this.lessMotion.matches ? unhurried : nextFrame),
   );
   private readonly feed = new Feed(this.columns, (from_seq, points) => this.past(from_seq, points), (change) => {
-    if (change === 'cleared') this.events = [];
+    if (change === 'cleared') this.forget();
     this.paint.ask();
   });
 
@@ -108,7 +112,8 @@ export class Instrument {
   }
 
   hold(): void {
-    this.held = this.held ? null : { at: new Date(), t_s: this.columns.t_s.at(-1) ?? 0 };
+    const { newest, average } = this;
+    this.held = this.held ? null : { at: new Date(), t_s: this.columns.t_s.at(-1) ?? 0, newest, average };
   }
 
   async change(part: Partial<Settings>): Promise<void> {
@@ -140,8 +145,21 @@ export class Instrument {
     } catch (error) {
       if (!(error instanceof Refused || error instanceof ProtocolError)) throw error;
       undo();
-      this.refusal = error.message;
+      this.refuse(error.message);
     }
+  }
+
+  private refuse(line: string): void {
+    this.refusal = line;
+    this.refused_ms = performance.now();
+  }
+
+  /** Another program answers now: its readings have nothing to do with those before. */
+  private forget(): void {
+    this.newest = this.average = this.shown = this.held = null;
+    this.age_s = null;
+    this.arrived_ms = 0;
+    this.events = [];
   }
 
   private take(text: string): void {
@@ -149,7 +167,7 @@ export class Instrument {
       this.takeMessage(decode(text));
     } catch (error) {
       if (!(error instanceof ProtocolError)) throw error;
-      this.refusal = `${error.message}: this page and the service do not fit, load it again`;
+      this.refuse(`${error.message}: this page and the service do not fit, load it again`);
     }
   }
 
@@ -196,21 +214,23 @@ export class Instrument {
   private tick(now_ms: number): void {
     this.ticks += 1;
     if (this.arrived_ms > 0) this.age_s = (now_ms - this.arrived_ms) / 1000;
-    if (this.held || this.newest === null || this.status === null) return;
-    // What stands there when the source stops is kept as it was, and drawn as no longer true.
-    if (!this.alive && this.shown !== null) return;
+    if (this.refusal !== '' && now_ms - this.refused_ms > REFUSAL_MS) this.refusal = '';
+    const newest = this.held ? this.held.newest : this.newest;
+    const average = this.held ? this.held.average : this.average;
+    if (newest === null || this.status === null) return;
     this.shown =
       this.status.calibration === null
-        ? this.positionShown(this.newest)
-        : shownAngle(this.average, this.newest, this.status.zero, this.settings.unit);
-    if (this.ticks % 5 === 0) this.spread = this.spreadNow();
+        ? this.positionShown(newest)
+        : shownAngle(average, newest, this.status.zero, this.settings.unit);
+    if (this.ticks % 5 === 0 && !this.held) this.spread = this.spreadNow();
   }
 
   private positionShown(newest: Newest): Shown {
-    const from = this.columns.indexAt((this.columns.t_s.at(-1) ?? 0) - this.settings.average_s);
+    const to_s = this.held?.t_s ?? this.columns.t_s.at(-1) ?? 0;
+    const [from, to] = [this.columns.indexAt(to_s - this.settings.average_s), this.columns.indexAt(to_s + 1e-6)];
     return shownPosition(
-      spreadOf(this.columns.of('x_px').slice(from)),
-      spreadOf(this.columns.of('y_px').slice(from)),
+      spreadOf(this.columns.of('x_px').slice(from, to)),
+      spreadOf(this.columns.of('y_px').slice(from, to)),
       newest,
       this.settings.average_s,
     );

@@ -5,7 +5,7 @@ import { signed } from './numbers';
 import { extentOf, Windows } from './windows';
 
 /** Two lanes, X above Y, at one scale: a lane is 1 high, with a strip of ground between them. */
-const BETWEEN = 0.12;
+const BETWEEN = 0.22;
 export const LANES_TOP = 2 + BETWEEN;
 
 export interface Lanes {
@@ -21,7 +21,7 @@ export interface Lanes {
 export class LaneMaker {
   private readonly windows = new Windows([1, 1]);
 
-  make(columns: Columns, place: Place, from_s: number, to_s: number, grain: number, now_s: number): Lanes {
+  make(columns: Columns, place: Place, from_s: number, to_s: number, grain: number, now_s: number, most = 4): Lanes {
     const first = Math.max(0, columns.indexAt(from_s) - 1);
     const last = Math.min(columns.length, columns.indexAt(to_s) + 1);
     const t_s = columns.t_s.slice(first, last);
@@ -40,7 +40,7 @@ export class LaneMaker {
         xs.map((v) => (v === null ? null : upper + (v - x_low) / frame.span)),
         ys.map((v) => (v === null ? null : (v - y_low) / frame.span)),
       ],
-      marks: [...marksOf(x_low, frame.span, upper, place), ...marksOf(y_low, frame.span, 0, place)],
+      marks: [...marksOf(x_low, frame.span, upper, place, most), ...marksOf(y_low, frame.span, 0, place, most)],
       span: frame.span,
       low: [x_low, y_low],
       gaps: gapsOf(t_s, xs, to_s),
@@ -57,8 +57,8 @@ function valuesOf(
   return column.slice(first, last).map((value) => (value === null ? null : convert(value)));
 }
 
-function marksOf(low: number, span: number, base: number, place: Place): Lanes['marks'] {
-  const step = graduation(span, 4).numbered;
+function marksOf(low: number, span: number, base: number, place: Place, most: number): Lanes['marks'] {
+  const step = graduation(span, most).numbered;
   const decimals = decimalsOfStep(step);
   return ticks(low, low + span, step).map((value) => ({
     at: base + (value - low) / span,

@@ -4,7 +4,6 @@ import type { AngleUnit } from './units';
 export const UNITS = ['arcsec', 'urad', 'mm/m'] as const satisfies readonly AngleUnit[];
 export const THEMES = ['auto', 'day', 'night'] as const;
 export const MOUNTINGS = ['straight', 'swapped_sides', 'upside_down', 'half_turn'] as const;
-export const WINDOWS_S = [0.2, 0.5, 1, 2, 5, 10, 30] as const;
 
 export type Theme = (typeof THEMES)[number];
 export type Mounting = (typeof MOUNTINGS)[number];
@@ -29,6 +28,13 @@ export const FIRST_SETTINGS: Settings = {
   average_s: 1,
   optics: { focal_length_mm: null, pitch_um: null, mounting: 'straight' },
 };
+
+const WINDOWS_S = [0.2, 0.5, 1, 2, 5, 10, 30];
+
+/** Averaging times to choose from; one set elsewhere is among them. */
+export function windowsWith(average_s: number): number[] {
+  return [...new Set([...WINDOWS_S, average_s])].sort((a, b) => a - b);
+}
 
 export function settingsOf(value: unknown): Settings {
   const fields = Fields.of(value, 'settings');
