@@ -20,9 +20,10 @@ import logging
 import multiprocessing
 import os
 import signal
+import sys
 import threading
 import time
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from multiprocessing.connection import Connection, wait
 from types import TracebackType
 from typing import Any, Self
@@ -84,7 +85,8 @@ class ChildObserver:
         self._process = context.Process(
             target=_child, args=(theirs, *self._arguments), name="camera", daemon=True
         )
-        self._process.start()
+        with _interrupts_blocked():
+            self._process.start()
         theirs.close()
         self._ready = False
         self._heard_s = time.monotonic()
@@ -168,6 +170,19 @@ class ChildObserver:
         return ("waiting",)
 
 
+@contextlib.contextmanager
+def _interrupts_blocked() -> Iterator[None]:
+    """A child begun in here never hears Ctrl-C, not even while it imports: its parent ends it."""
+    if sys.platform == "win32":
+        yield
+        return
+    before = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
+    try:
+        yield
+    finally:
+        signal.pthread_sigmask(signal.SIG_SETMASK, before)
+
+
 def _end(process: multiprocessing.process.BaseProcess) -> None:
     """End the child: it was asked already; then terminate, then kill, each with a bounded wait."""
     process.join(ASKED_TO_END_S)
@@ -188,7 +203,7 @@ def _error(name: str, line: str) -> ReadoutError:
 
 def _child(pipe: Connection, source: str, target: Target, open_source: OpenSource | None) -> None:
     """What runs in the child."""
-    signal.signal(signal.SIGINT, signal.SIG_IGN)  # Ctrl-C reaches the parent, which ends us
+    signal.signal(signal.SIGINT, signal.SIG_IGN)  # where it could not be blocked before
     threading.Thread(target=_end_with_parent, daemon=True).start()
     try:
         from readout.sighting import locate

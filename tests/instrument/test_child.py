@@ -13,7 +13,9 @@ import numpy as np
 import pytest
 
 from readout.errors import SourceLost, SourceStalled
+from readout.instrument.acquisition import Acquisition, State
 from readout.instrument.child import ChildObserver
+from readout.instrument.observer import Observer
 from readout.model import Observation, Quality, Target
 from tests.instrument.fakes import HEIGHT_PX, WIDTH_PX, open_driver
 
@@ -90,6 +92,45 @@ def test_a_crash_is_a_loss() -> None:
             next_of(observer)
 
 
+@pytest.mark.skipif(sys.platform == "win32", reason="sends SIGINT")
+def test_ctrl_c_in_the_terminal_does_not_reach_it(capfd: pytest.CaptureFixture[str]) -> None:
+    with child("slow") as observer:
+        pid = observer.process_id
+        assert pid is not None
+        os.kill(pid, signal.SIGINT)  # while it starts
+        next_of(observer)
+        os.kill(pid, signal.SIGINT)
+        assert next_of(observer).seq == 1
+    assert capfd.readouterr().err == ""
+
+
+def test_a_lost_camera_is_opened_in_a_new_process_and_seq_goes_on() -> None:
+    """Three children one after the other, each giving ten frames before its cable is pulled."""
+    seqs: list[int] = []
+    states: list[State] = []
+
+    def take(observation: Observation, observer: Observer) -> None:
+        del observer
+        seqs.append(observation.seq)
+        if len(seqs) == 25:
+            acquisition.stop()
+
+    acquisition = Acquisition(
+        lambda: child("frames"),
+        on_observation=take,
+        on_state=lambda state, _: states.append(state),
+        wait=lambda _: False,
+    )
+    acquisition.run()
+    assert seqs == list(range(25))
+    assert states == [
+        State.OPENING,
+        *(State.MEASURING, State.LOST),
+        *(State.MEASURING, State.LOST),
+        State.MEASURING,
+    ]
+
+
 def test_a_picture_crosses_when_asked_for() -> None:
     from concurrent.futures import ThreadPoolExecutor
 
@@ -108,7 +149,9 @@ def test_a_picture_crosses_when_asked_for() -> None:
 PARENT = """
 import time
 from readout.model import Target
+from readout.instrument.acquisition import Acquisition, State
 from readout.instrument.child import ChildObserver
+from readout.instrument.observer import Observer
 from readout.errors import SourceStalled
 from tests.instrument.fakes import open_driver
 
