@@ -220,7 +220,7 @@ def test_the_extras_named_in_the_readme_exist() -> None:
 
 
 def test_files_named_in_the_texts_exist() -> None:
-    for text in ("README.md", "DEVELOPERS.md", "docs/geometry.md"):
+    for text in ("README.md", "DEVELOPERS.md", "docs/geometry.md", "docs/uncertainty.md"):
         folder = (ROOT / text).parent
         content = (ROOT / text).read_text(encoding="utf-8")
         links = re.findall(r"\]\(([\w./-]+)\)", content)
