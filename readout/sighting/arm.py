@@ -16,7 +16,7 @@ CUTS = 6
 SETTLED_PX = 0.01
 SMOOTHED_ROWS = 15
 LIT = 0.4
-"""an arm ends where its height falls below this share of its usual height"""
+"""an arm ends where its height falls below this share of its best"""
 
 
 @dataclass(frozen=True, slots=True)
@@ -96,7 +96,7 @@ def _lit(strip: Strip, shape: Shape) -> Strip | None:
     padded = np.pad(height, width // 2, mode="edge")
     smooth = np.convolve(padded, np.full(width, 1 / width), "valid")
     smooth *= math.copysign(1.0, shape.contrast)
-    keep = smooth > LIT * np.percentile(smooth, 75)
+    keep = smooth > LIT * np.percentile(smooth, 95)
     return strip.only(keep).about_its_middle() if keep.sum() >= 8 else None
 
 

@@ -32,7 +32,6 @@ STEEPEST = math.tan(math.radians(12))
 SLOPES = 49
 SURE = 4.5
 """a ridge this many noise sd high is hardly noise: some 10^4 places are looked at"""
-FULL_VOTE = 10.0
 LEAST_BANDS = 5
 LEAST_SHARE = 0.1
 """an arm must be seen in this share of the bands"""
@@ -135,7 +134,7 @@ def _vote(
     height = np.concatenate(votes)
     scale = np.concatenate(width)
     y = np.tile(row_of_band, RIDGES_PER_BAND)
-    vote = np.clip(height, 0, FULL_VOTE) * (height > SURE / 2)
+    vote = np.log1p(height) * (height > SURE / 2)  # the brighter of two lines, but no blob, wins
     middle_y = float(row_of_band.mean())
     slopes = np.linspace(-STEEPEST, STEEPEST, SLOPES)
     crossing = x[None, :] - slopes[:, None] * (y - middle_y)[None, :]

@@ -28,6 +28,9 @@ STEPS = 3
 DAMPING = np.array([1e-9, 1e-9, 1e-9, 0.01, 0.01, 1e-9, 1e-9])
 """Marquardt damping of half width and blur: of a line thinner than its blur only one is seen"""
 
+LEAST_COLUMN = 1e-50
+"""a column of the Jacobian this small against the largest says nothing"""
+
 
 @dataclass(frozen=True, slots=True)
 class Shape:
@@ -134,8 +137,10 @@ def _step(value: float, change: float, longest: float, least: float, most: float
 
 
 def _inverse(normal: F64, damping: F64 | float = 1e-9) -> F64 | None:
-    """Inverse of normal equations with columns of very different size; None if not finite."""
-    scale = np.sqrt(np.maximum(np.diag(normal), 1e-300))
+    """Inverse of normal equations with columns of very different size; None if there is none."""
+    scale = np.sqrt(np.diag(normal))
+    if not scale.min() > LEAST_COLUMN * scale.max():
+        return None
     try:
         inverse = np.linalg.inv(normal / np.outer(scale, scale) + damping * np.eye(len(scale)))
     except np.linalg.LinAlgError:

@@ -9,7 +9,8 @@ import pytest
 from readout.model import Quality
 from readout.sighting import locate
 from readout.simulation.bound import crossing_bound_cov
-from readout.simulation.sensor import Sensor
+from readout.simulation.crosshair import crosshair_image
+from readout.simulation.sensor import Sensor, expose
 from tests.sighting.frames import BRIGHT, DARK, SENSOR, frame
 
 SHAPE = (240, 320)
@@ -143,6 +144,32 @@ def test_short_arms_and_one_outside_the_frame():
     lone = locate(frame(SHAPE, 160.2, -60.0, rng=rng), full_scale=255)
     assert not lone.found
     assert lone.quality is Quality.ONE_AXIS
+
+
+def test_the_brighter_of_two_returns_is_taken():
+    """A window gives a second, fainter return beside the first."""
+    rng = np.random.default_rng(19)
+    ghost = replace(BRIGHT, background=0.0, contrast=0.3 * BRIGHT.contrast)
+    for _ in range(5):
+        x, y = rng.uniform(120, 200), rng.uniform(90, 150)
+        both = crosshair_image(SHAPE, x, y, BRIGHT) + crosshair_image(SHAPE, x + 40, y - 35, ghost)
+        found = locate(expose(both, SENSOR, rng), full_scale=255)
+        assert abs(found.x_px - x) < 5 * found.x_sd_px
+        assert abs(found.y_px - y) < 5 * found.y_sd_px
+
+
+def test_dark_lines_in_a_round_bright_field():
+    """The field stop cuts the arms short and its edge is a step, not a line."""
+    rng = np.random.default_rng(26)
+    y, x = np.mgrid[: SHAPE[0], : SHAPE[1]]
+    field = 1 / (1 + np.exp((np.hypot(x - 160, y - 120) - 105) / 5))
+    for _ in range(5):
+        at_x, at_y = rng.uniform(130, 190), rng.uniform(90, 150)
+        crosshair = replace(DARK, rotation_deg=rng.uniform(-6, 6))
+        light = 100 + field * crosshair_image(SHAPE, at_x, at_y, crosshair)
+        found = locate(expose(light, SENSOR, rng), full_scale=255)
+        assert abs(found.x_px - at_x) < 5 * found.x_sd_px < 0.1
+        assert abs(found.y_px - at_y) < 5 * found.y_sd_px < 0.1
 
 
 def test_sixteen_bits_say_the_same_as_eight_but_finer():
