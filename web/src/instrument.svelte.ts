@@ -3,7 +3,14 @@ import { Columns } from './core/columns';
 import { Feed } from './core/feed';
 import { ProtocolError } from './core/fields';
 import { nextFrame, Pace, unhurried } from './core/pace';
-import { decode, type Average, type Message, type Readings, type SourceEvent, type Status } from './core/protocol';
+import {
+  decode,
+  type Average,
+  type Message,
+  type Readings,
+  type SourceEvent,
+  type Status,
+} from './core/protocol';
 import { FIRST_SETTINGS, type Settings } from './core/settings';
 import { shownAngle, shownPosition, type Newest, type Shown } from './core/shown';
 import { BROWSER, Connection } from './core/socket';
@@ -51,9 +58,20 @@ export class Instrument {
       this.status?.simulated ?? false,
     ),
   );
+  calibration = $derived(this.status?.calibration ?? null);
+  provenSigns = $derived(this.calibration?.signs === 'proven');
+  zero = $derived(this.status?.zero ?? null);
+  image_px: [number, number] = $derived([
+    this.status?.image_width_px ?? 640,
+    this.status?.image_height_px ?? 480,
+  ]);
   /** The numbers are those of now. */
   alive: boolean = $derived(this.connected && this.status?.state === 'measuring');
-  unit: Unit = $derived(this.status !== null && this.status.calibration === null ? 'px' : this.settings.unit);
+  /** What is drawn follows the mirror. */
+  current: boolean = $derived(this.alive && this.held === null);
+  unit: Unit = $derived(
+    this.status !== null && this.status.calibration === null ? 'px' : this.settings.unit,
+  );
   gap_s = $derived(Math.max(0.5, 3 / Math.max(this.status?.frames_per_s ?? 30, 0.1)));
 
   private newest: Newest | null = null;
@@ -66,10 +84,14 @@ export class Instrument {
     () => (this.pulse += 1),
     () => (this.lessMotion.matches ? unhurried : nextFrame),
   );
-  private readonly feed = new Feed(this.columns, (from_seq, points) => this.past(from_seq, points), (change) => {
-    if (change === 'cleared') this.forget();
-    this.paint.ask();
-  });
+  private readonly feed = new Feed(
+    this.columns,
+    (from_seq, points) => this.past(from_seq, points),
+    (change) => {
+      if (change === 'cleared') this.forget();
+      this.paint.ask();
+    },
+  );
 
   /** Opens the stream; the answer ends it. */
   start(): () => void {
@@ -101,7 +123,8 @@ export class Instrument {
   get now_s(): number {
     if (this.held) return this.held.t_s;
     const newest_s = this.columns.t_s.at(-1) ?? 0;
-    const over = this.connected && (this.status?.state === 'ended' || this.status?.state === 'failed');
+    const over =
+      this.connected && (this.status?.state === 'ended' || this.status?.state === 'failed');
     return this.alive || over ? newest_s : newest_s + (this.age_s ?? 0);
   }
 
@@ -113,22 +136,27 @@ export class Instrument {
 
   hold(): void {
     const { newest, average } = this;
-    this.held = this.held ? null : { at: new Date(), t_s: this.columns.t_s.at(-1) ?? 0, newest, average };
+    this.held = this.held
+      ? null
+      : { at: new Date(), t_s: this.columns.t_s.at(-1) ?? 0, newest, average };
   }
 
   async change(part: Partial<Settings>): Promise<void> {
     const before = this.settings;
     this.settings = { ...before, ...part };
-    await this.ask(async () => {
-      this.settings = await writeSettings(part);
-    }, () => (this.settings = before));
+    await this.ask(
+      async () => {
+        this.settings = await writeSettings(part);
+      },
+      () => (this.settings = before),
+    );
   }
 
-  zero(): Promise<void> {
+  setZero(): Promise<void> {
     return this.ask(setZero);
   }
 
-  unzero(): Promise<void> {
+  takeZeroBack(): Promise<void> {
     return this.ask(takeZeroBack);
   }
 
@@ -227,7 +255,10 @@ export class Instrument {
 
   private positionShown(newest: Newest): Shown {
     const to_s = this.held?.t_s ?? this.columns.t_s.at(-1) ?? 0;
-    const [from, to] = [this.columns.indexAt(to_s - this.settings.average_s), this.columns.indexAt(to_s + 1e-6)];
+    const [from, to] = [
+      this.columns.indexAt(to_s - this.settings.average_s),
+      this.columns.indexAt(to_s + 1e-6),
+    ];
     return shownPosition(
       spreadOf(this.columns.of('x_px').slice(from, to)),
       spreadOf(this.columns.of('y_px').slice(from, to)),

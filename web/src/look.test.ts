@@ -3,7 +3,9 @@ import css from './look.css?raw';
 
 function palette(selector: string): Record<string, string> {
   const body = css.slice(css.indexOf(`${selector} {`)).split('}')[0] ?? '';
-  return Object.fromEntries([...body.matchAll(/--([a-z]+): (#[0-9a-f]{6});/g)].map(([, name, colour]) => [name, colour]));
+  return Object.fromEntries(
+    [...body.matchAll(/--([a-z]+): (#[0-9a-f]{6});/g)].map(([, name, colour]) => [name, colour]),
+  );
 }
 
 /** Relative luminance and contrast ratio by their definitions (WCAG 2.2, W3C 2023). */
@@ -30,10 +32,12 @@ describe.each([
   ['night', ":root[data-theme='night']"],
 ])('by %s', (_, selector) => {
   const colours = palette(selector);
-  const on = (ink: string, ground: string): number => contrast(colours[ink] ?? '', colours[ground] ?? '');
+  const on = (ink: string, ground: string): number =>
+    contrast(colours[ink] ?? '', colours[ground] ?? '');
 
   it.each(['paper', 'sheet'])('numbers stand out on the %s, and words can be read', (ground) => {
     expect(on('ink', ground)).toBeGreaterThanOrEqual(7);
-    for (const ink of ['soft', 'below', 'x', 'y']) expect(on(ink, ground)).toBeGreaterThanOrEqual(4.5);
+    for (const ink of ['soft', 'below', 'x', 'y'])
+      expect(on(ink, ground)).toBeGreaterThanOrEqual(4.5);
   });
 });

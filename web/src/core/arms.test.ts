@@ -4,7 +4,8 @@ import { armEnds } from './arms';
 // Angles positive clockwise on screen: upright arm along (-sin a, cos a), level along (cos a, sin a).
 it('draws the arms through the crossing at their angles', () => {
   const { upright, level } = armEnds({ x: 100, y: 50 }, 30, 90, 10);
-  const numbers = (d: string | null): number[] => (d ?? '').split(/[ML ]/).filter(Boolean).map(Number);
+  const numbers = (d: string | null): number[] =>
+    (d ?? '').split(/[ML ]/).filter(Boolean).map(Number);
   const [x0 = 0, y0 = 0, x1 = 0, y1 = 0] = numbers(upright);
   expect([(x0 + x1) / 2, (y0 + y1) / 2]).toEqual([100, 50]);
   expect(x1 - 100).toBeCloseTo(-10 * Math.sin(Math.PI / 6), 9);

@@ -12,7 +12,8 @@ export function armEnds(
     `M${cross.x - dx * reach_px} ${cross.y - dy * reach_px}L${cross.x + dx * reach_px} ${cross.y + dy * reach_px}`;
   const rad = (deg: number): number => (deg * Math.PI) / 180;
   return {
-    upright: upright_deg === null ? null : line(-Math.sin(rad(upright_deg)), Math.cos(rad(upright_deg))),
+    upright:
+      upright_deg === null ? null : line(-Math.sin(rad(upright_deg)), Math.cos(rad(upright_deg))),
     level: level_deg === null ? null : line(Math.cos(rad(level_deg)), Math.sin(rad(level_deg))),
   };
 }

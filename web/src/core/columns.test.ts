@@ -3,7 +3,13 @@ import { Columns, type Row } from './columns';
 import { readings } from './samples';
 
 const row = (seq: number, t_s: number, x: number | null = 1): Row => ({
-  seq, t_s, x_arcsec: x, y_arcsec: x, x_px: x, y_px: x, good: x !== null,
+  seq,
+  t_s,
+  x_arcsec: x,
+  y_arcsec: x,
+  x_px: x,
+  y_px: x,
+  good: x !== null,
 });
 
 describe('columns', () => {

@@ -11,7 +11,12 @@ function range(from: number, to: number): number[] {
 }
 
 /** A service that holds rows 0 … last and thins nothing. */
-function world(last: () => number): { feed: Feed; columns: Columns; asked: number[]; changes: string[] } {
+function world(last: () => number): {
+  feed: Feed;
+  columns: Columns;
+  asked: number[];
+  changes: string[];
+} {
   const columns = new Columns(1e6);
   const asked: number[] = [];
   const changes: string[] = [];
@@ -19,7 +24,12 @@ function world(last: () => number): { feed: Feed; columns: Columns; asked: numbe
     asked.push(from_seq);
     return Promise.resolve(readings(range(from_seq, last())));
   };
-  return { feed: new Feed(columns, recent, (change) => changes.push(change)), columns, asked, changes };
+  return {
+    feed: new Feed(columns, recent, (change) => changes.push(change)),
+    columns,
+    asked,
+    changes,
+  };
 }
 
 describe('a feed', () => {
@@ -70,7 +80,11 @@ describe('a feed', () => {
 
   it('goes on from now when the past cannot be had', async () => {
     const columns = new Columns(100);
-    const feed = new Feed(columns, () => Promise.reject(new Error('no')), () => {});
+    const feed = new Feed(
+      columns,
+      () => Promise.reject(new Error('no')),
+      () => {},
+    );
     feed.opened();
     const caught = feed.sessionIs('a', GAP_S);
     feed.take(readings([7]), GAP_S);

@@ -18,7 +18,15 @@ export interface Place {
 export function fieldPlace(unit: Unit, zero: Zero | null): Place {
   if (unit === 'px') {
     const same = (v: number): number => v;
-    return { xSeries: 'x_px', ySeries: 'y_px', x: same, y: same, yDown: true, signed: false, least: 0.01 };
+    return {
+      xSeries: 'x_px',
+      ySeries: 'y_px',
+      x: same,
+      y: same,
+      yDown: true,
+      signed: false,
+      least: 0.01,
+    };
   }
   return {
     xSeries: 'x_arcsec',
@@ -64,4 +72,35 @@ export function inkOf(columns: Columns, place: Place, from_s: number, to_s: numb
     before = bin;
   }
   return ink;
+}
+
+const PIECES = 10;
+
+/**
+ * The way as SVG paths, the oldest tenth of the time first, so that the ink can thin towards the
+ * past; each begins where the one before ends, and gaps stay open.
+ */
+export function strokesOf(
+  ink: Ink,
+  from_s: number,
+  to_s: number,
+  across: (x: number) => number,
+  down: (y: number) => number,
+): string[] {
+  const paths: string[] = Array.from({ length: PIECES }, () => '');
+  let before: { piece: number; d: string } | null = null;
+  for (let i = 0; i < ink.t_s.length; i++) {
+    const x = ink.x[i] ?? null;
+    const y = ink.y[i] ?? null;
+    if (x === null || y === null) {
+      before = null;
+      continue;
+    }
+    const share = ((ink.t_s[i] ?? from_s) - from_s) / (to_s - from_s);
+    const piece = Math.min(PIECES - 1, Math.max(0, Math.floor(share * PIECES)));
+    const d = `${across(x).toFixed(1)} ${down(y).toFixed(1)}`;
+    paths[piece] += before?.piece === piece ? `L${d}` : before ? `M${before.d}L${d}` : `M${d}`;
+    before = { piece, d };
+  }
+  return paths;
 }

@@ -21,7 +21,15 @@ export interface Lanes {
 export class LaneMaker {
   private readonly windows = new Windows([1, 1]);
 
-  make(columns: Columns, place: Place, from_s: number, to_s: number, grain: number, now_s: number, most = 4): Lanes {
+  make(
+    columns: Columns,
+    place: Place,
+    from_s: number,
+    to_s: number,
+    grain: number,
+    now_s: number,
+    most = 4,
+  ): Lanes {
     const first = Math.max(0, columns.indexAt(from_s) - 1);
     const last = Math.min(columns.length, columns.indexAt(to_s) + 1);
     const t_s = columns.t_s.slice(first, last);
@@ -40,7 +48,10 @@ export class LaneMaker {
         xs.map((v) => (v === null ? null : upper + (v - x_low) / frame.span)),
         ys.map((v) => (v === null ? null : (v - y_low) / frame.span)),
       ],
-      marks: [...marksOf(x_low, frame.span, upper, place, most), ...marksOf(y_low, frame.span, 0, place, most)],
+      marks: [
+        ...marksOf(x_low, frame.span, upper, place, most),
+        ...marksOf(y_low, frame.span, 0, place, most),
+      ],
       span: frame.span,
       low: [x_low, y_low],
       gaps: gapsOf(t_s, xs, to_s),
@@ -57,7 +68,13 @@ function valuesOf(
   return column.slice(first, last).map((value) => (value === null ? null : convert(value)));
 }
 
-function marksOf(low: number, span: number, base: number, place: Place, most: number): Lanes['marks'] {
+function marksOf(
+  low: number,
+  span: number,
+  base: number,
+  place: Place,
+  most: number,
+): Lanes['marks'] {
   const step = graduation(span, most).numbered;
   const decimals = decimalsOfStep(step);
   return ticks(low, low + span, step).map((value) => ({
@@ -67,7 +84,11 @@ function marksOf(low: number, span: number, base: number, place: Place, most: nu
   }));
 }
 
-function gapsOf(t_s: readonly number[], values: readonly (number | null)[], to_s: number): [number, number][] {
+function gapsOf(
+  t_s: readonly number[],
+  values: readonly (number | null)[],
+  to_s: number,
+): [number, number][] {
   const gaps: [number, number][] = [];
   let from: number | null = null;
   values.forEach((value, i) => {
@@ -113,10 +134,4 @@ export function agoWords(ago_s: number, span_s: number, endWord: string): string
     return `−${Number.isInteger(minutes) ? minutes : minutes.toFixed(1)} min`;
   }
   return `−${Number(ago_s.toFixed(1))} s`;
-}
-
-export function clockWords(session_start_utc: string, t_s: number): string {
-  const at = new Date(Date.parse(session_start_utc) + t_s * 1000);
-  const two = (n: number): string => String(n).padStart(2, '0');
-  return `${two(at.getHours())}:${two(at.getMinutes())}:${two(at.getSeconds())}`;
 }

@@ -5,12 +5,20 @@ import { ARCSEC_PER_RAD } from './units';
 const TEN_DEG = (10 / 180) * Math.PI * ARCSEC_PER_RAD;
 
 describe('the drawing of the mirror', () => {
-  const heights = (x: number, y: number): { left: number; right: number; top: number; bottom: number } => {
+  const heights = (
+    x: number,
+    y: number,
+  ): { left: number; right: number; top: number; bottom: number } => {
     const { front } = drawMirror(x, y);
     const at = (i: number): Point => front[i] ?? [Number.NaN, Number.NaN];
     const [tl, tr, br, bl] = [at(0), at(1), at(2), at(3)];
     const length = (a: Point, b: Point): number => Math.hypot(a[0] - b[0], a[1] - b[1]);
-    return { left: length(tl, bl), right: length(tr, br), top: length(tl, tr), bottom: length(bl, br) };
+    return {
+      left: length(tl, bl),
+      right: length(tr, br),
+      top: length(tl, tr),
+      bottom: length(bl, br),
+    };
   };
 
   // The axes of the project; in perspective what is nearer is larger.

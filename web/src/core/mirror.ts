@@ -18,7 +18,10 @@ export function exaggeration(range_arcsec: number): number {
  * the untilted mirror is 1. Axes of the mirror by the normal n = (sin X cos Y, sin Y, cos X cos Y),
  * z away from the observer.
  */
-export function projection(x_arcsec: number, y_arcsec: number): (right: number, up: number, back?: number) => Point {
+export function projection(
+  x_arcsec: number,
+  y_arcsec: number,
+): (right: number, up: number, back?: number) => Point {
   const x = x_arcsec / ARCSEC_PER_RAD;
   const y = y_arcsec / ARCSEC_PER_RAD;
   const [sx, cx, sy, cy] = [Math.sin(x), Math.cos(x), Math.sin(y), Math.cos(y)];
@@ -41,7 +44,12 @@ export interface MirrorDrawing {
 
 export function drawMirror(x_arcsec: number, y_arcsec: number): MirrorDrawing {
   const at = projection(x_arcsec, y_arcsec);
-  const corners: [number, number][] = [[-1, 1], [1, 1], [1, -1], [-1, -1]];
+  const corners: [number, number][] = [
+    [-1, 1],
+    [1, 1],
+    [1, -1],
+    [-1, -1],
+  ];
   return {
     front: corners.map(([right, up]) => at(right, up)),
     back: corners.map(([right, up]) => at(right, up, THICKNESS)),

@@ -1,5 +1,14 @@
 import { describe, expect, it } from 'vitest';
-import { decimalsFor, decimalsNear, placeOf, plain, signed, slotsOf, uncertainty, wholesOf } from './numbers';
+import {
+  decimalsFor,
+  decimalsNear,
+  placeOf,
+  plain,
+  signed,
+  slotsOf,
+  uncertainty,
+  wholesOf,
+} from './numbers';
 
 describe('decimals', () => {
   // JCGM 100:2008, 7.2.6: two significant digits of the standard uncertainty; its example of
@@ -43,15 +52,21 @@ describe('printing', () => {
 });
 
 describe('slots', () => {
-  const text = (...of: Parameters<typeof slotsOf>): string => slotsOf(...of).map((slot) => slot.character).join('');
+  const text = (...of: Parameters<typeof slotsOf>): string =>
+    slotsOf(...of)
+      .map((slot) => slot.character)
+      .join('');
 
   it('has the same count for every value of as many places', () => {
-    const counts = [12.8476, -3.2, 0, null, -999.9999].map((value) => slotsOf(value, 3, 4, 0.01).length);
+    const counts = [12.8476, -3.2, 0, null, -999.9999].map(
+      (value) => slotsOf(value, 3, 4, 0.01).length,
+    );
     expect(new Set(counts)).toEqual(new Set([1 + 3 + 1 + 4]));
   });
 
   it('puts points under one another', () => {
-    const at = (value: number): number => slotsOf(value, 3, 2, null).findIndex((slot) => slot.kind === 'point');
+    const at = (value: number): number =>
+      slotsOf(value, 3, 2, null).findIndex((slot) => slot.kind === 'point');
     expect(at(-3.2)).toBe(at(123.45));
   });
 
@@ -62,7 +77,10 @@ describe('slots', () => {
 
   it('marks digits below the standard uncertainty, on both sides of the point', () => {
     const below = (value: number, u: number): string =>
-      slotsOf(value, 3, 3, u).filter((slot) => slot.below).map((slot) => slot.character).join('');
+      slotsOf(value, 3, 3, u)
+        .filter((slot) => slot.below)
+        .map((slot) => slot.character)
+        .join('');
     expect(below(12.847, 0.012)).toBe('7');
     expect(below(12.847, 0.35)).toBe('47');
     expect(below(112.847, 13)).toBe('2.847');

@@ -6,7 +6,10 @@ const axis = (value: number, noise: number): AxisShown => ({ value, noise, u: no
 
 describe('places', () => {
   it('are the same for both, enough for the larger and for the finer', () => {
-    expect(new Places().next([axis(1234, 0.5), axis(-2, 0.002)], 0)).toEqual({ wholes: 4, decimals: 4 });
+    expect(new Places().next([axis(1234, 0.5), axis(-2, 0.002)], 0)).toEqual({
+      wholes: 4,
+      decimals: 4,
+    });
   });
 
   it('do not flicker with the noise', () => {

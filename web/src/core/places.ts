@@ -18,7 +18,9 @@ export class Places {
     const now = this.decimals?.value ?? DECIMALS_WITHOUT_NOISE;
     let decimals = now;
     if (present.length > 0) {
-      const wish = Math.max(...present.map((axis) => decimalsNear(axis.noise ?? axis.u, now, MOST_DECIMALS)));
+      const wish = Math.max(
+        ...present.map((axis) => decimalsNear(axis.noise ?? axis.u, now, MOST_DECIMALS)),
+      );
       this.decimals ??= new Settled(wish, 2, 4);
       decimals = this.decimals.next(wish, t_s);
     }

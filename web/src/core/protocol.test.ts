@@ -7,7 +7,13 @@ describe('a message of the stream', () => {
   it('is told apart by its kind', () => {
     expect(decode(JSON.stringify(readings([1, 2]))).kind).toBe('readings');
     expect(decode(JSON.stringify(status())).kind).toBe('status');
-    const event = { kind: 'event', t_s: 1.5, t_utc: '2026-12-01T09:00:00.000Z', event: 'stalled', text: 'no picture' };
+    const event = {
+      kind: 'event',
+      t_s: 1.5,
+      t_utc: '2026-12-01T09:00:00.000Z',
+      event: 'stalled',
+      text: 'no picture',
+    };
     expect(decode(JSON.stringify(event))).toEqual(event);
   });
 
@@ -20,10 +26,22 @@ describe('a message of the stream', () => {
     ['no JSON', '{', /not JSON/],
     ['no object', '[]', /not an object/],
     ['an unknown kind', '{"kind":"song"}', /unknown kind "song"/],
-    ['columns of two lengths', JSON.stringify({ ...readings([1, 2]), t_s: [0] }), /t_s has 1 rows, seq has 2/],
-    ['words for numbers', JSON.stringify({ ...readings([1]), x_px: ['a'] }), /x_px is not a number/],
+    [
+      'columns of two lengths',
+      JSON.stringify({ ...readings([1, 2]), t_s: [0] }),
+      /t_s has 1 rows, seq has 2/,
+    ],
+    [
+      'words for numbers',
+      JSON.stringify({ ...readings([1]), x_px: ['a'] }),
+      /x_px is not a number/,
+    ],
     ['an unknown state', JSON.stringify({ ...status(), state: 'dozing' }), /state is not one of/],
-    ['quality that is no list', JSON.stringify({ ...readings([1]), quality: ['dim'] }), /not a list of words/],
+    [
+      'quality that is no list',
+      JSON.stringify({ ...readings([1]), quality: ['dim'] }),
+      /not a list of words/,
+    ],
   ];
   it.each(bad)('is refused with %s', (_, text, line) => {
     expect(() => decode(text)).toThrow(ProtocolError);
@@ -45,8 +63,15 @@ describe('a status', () => {
 
 it('reads the fit of a picture without an image', () => {
   const fit = fitOf({
-    seq: 3, x_px: null, y_px: null, upright: null, level: null,
-    image_width_px: 640, image_height_px: 480, peak: null, quality: ['no_image'],
+    seq: 3,
+    x_px: null,
+    y_px: null,
+    upright: null,
+    level: null,
+    image_width_px: 640,
+    image_height_px: 480,
+    peak: null,
+    quality: ['no_image'],
   });
   expect(fit.x_px).toBeNull();
   expect(fit.quality).toEqual(['no_image']);

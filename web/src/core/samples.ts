@@ -43,7 +43,12 @@ export function status(): Status {
       scale_y_arcsec_per_px: 1.186,
       created_utc: null,
       warnings: [],
-      field_arcsec: [[-380, 285], [380, 285], [380, -285], [-380, -285]],
+      field_arcsec: [
+        [-380, 285],
+        [380, 285],
+        [380, -285],
+        [-380, -285],
+      ],
     },
     zero: null,
     session_start_utc: '2026-12-01T09:00:00.000Z',

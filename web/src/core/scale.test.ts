@@ -1,9 +1,26 @@
 import { describe, expect, it } from 'vitest';
-import { decimalsOfStep, graduation, roundSpan, ruleGraduation, step125, SteppedRange, ticks } from './scale';
+import {
+  decimalsOfStep,
+  graduation,
+  roundSpan,
+  ruleGraduation,
+  step125,
+  SteppedRange,
+  ticks,
+} from './scale';
 
 describe('1-2-5 steps', () => {
   it('gives the smallest that is enough', () => {
-    const cases: [number, number][] = [[1, 1], [1.01, 2], [2, 2], [2.1, 5], [5.1, 10], [0.03, 0.05], [0.011, 0.02], [700, 1000]];
+    const cases: [number, number][] = [
+      [1, 1],
+      [1.01, 2],
+      [2, 2],
+      [2.1, 5],
+      [5.1, 10],
+      [0.03, 0.05],
+      [0.011, 0.02],
+      [700, 1000],
+    ];
     for (const [least, step] of cases) expect(step125(least)).toBe(step);
   });
 

@@ -1,6 +1,7 @@
 /** The smallest of …, 1, 2, 5, 10, 20, 50, … that is not below `least` (> 0). */
 export function step125(least: number): number {
-  if (!(least > 0) || !Number.isFinite(least)) throw new RangeError(`need a step > 0, got ${least}`);
+  if (!(least > 0) || !Number.isFinite(least))
+    throw new RangeError(`need a step > 0, got ${least}`);
   const exponent = Math.floor(Math.log10(least) + 1e-9);
   for (const factor of [1, 2, 5, 10]) {
     const step = power(factor, exponent);
@@ -24,8 +25,9 @@ export function ticks(low: number, high: number, step: number): number[] {
   const first = Math.ceil(low / step - 1e-9);
   const last = Math.floor(high / step + 1e-9);
   const decimals = decimalsOfStep(step);
-  return Array.from({ length: Math.max(0, last - first + 1) }, (_, i) =>
-    Number(((first + i) * step).toFixed(decimals)) || 0,
+  return Array.from(
+    { length: Math.max(0, last - first + 1) },
+    (_, i) => Number(((first + i) * step).toFixed(decimals)) || 0,
   );
 }
 

@@ -23,7 +23,9 @@ describe('settings', () => {
 
   it('of an unknown kind are refused with the name of what is wrong', () => {
     expect(() => settingsOf({ ...whole, unit: 'degree' })).toThrow(ProtocolError);
-    expect(() => settingsOf({ ...whole, unit: 'degree' })).toThrow(/unit is not one of arcsec, urad, mm\/m/);
+    expect(() => settingsOf({ ...whole, unit: 'degree' })).toThrow(
+      /unit is not one of arcsec, urad, mm\/m/,
+    );
     expect(() => settingsOf({ ...whole, optics: null })).toThrow(/optics is not an object/);
   });
 

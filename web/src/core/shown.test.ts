@@ -3,13 +3,33 @@ import type { Average, Zero } from './protocol';
 import { shownAngle, shownPosition, type Newest } from './shown';
 
 const newest: Newest = {
-  x_arcsec: 10.5, y_arcsec: -3, x_sd_arcsec: 0.3, y_sd_arcsec: 0.3,
-  x_u_arcsec: 0.5, y_u_arcsec: 0.5, x_px: 320, y_px: 240, quality: [],
+  x_arcsec: 10.5,
+  y_arcsec: -3,
+  x_sd_arcsec: 0.3,
+  y_sd_arcsec: 0.3,
+  x_u_arcsec: 0.5,
+  y_u_arcsec: 0.5,
+  x_px: 320,
+  y_px: 240,
+  quality: [],
 };
 const average: Average = {
-  x_arcsec: 10, y_arcsec: -3.2, x_se_arcsec: 0.05, y_se_arcsec: 0.05, n: 30, window_s: 1, statistic: 'mean',
+  x_arcsec: 10,
+  y_arcsec: -3.2,
+  x_se_arcsec: 0.05,
+  y_se_arcsec: 0.05,
+  n: 30,
+  window_s: 1,
+  statistic: 'mean',
 };
-const zero: Zero = { x_arcsec: 4, y_arcsec: -1, x_sd_arcsec: 0.03, y_sd_arcsec: 0.03, n: 30, set_utc: '' };
+const zero: Zero = {
+  x_arcsec: 4,
+  y_arcsec: -1,
+  x_sd_arcsec: 0.03,
+  y_sd_arcsec: 0.03,
+  n: 30,
+  set_utc: '',
+};
 
 describe('the number shown', () => {
   it('is the average, with its noise and its combined uncertainty', () => {
@@ -22,7 +42,12 @@ describe('the number shown', () => {
   });
 
   it('is one reading alone, said so, where there is no average', () => {
-    const shown = shownAngle({ ...average, x_arcsec: null, y_arcsec: null }, { ...newest, quality: ['unlocked'] }, null, 'arcsec');
+    const shown = shownAngle(
+      { ...average, x_arcsec: null, y_arcsec: null },
+      { ...newest, quality: ['unlocked'] },
+      null,
+      'arcsec',
+    );
     expect(shown.basis).toBe('single');
     expect(shown.x.value).toBe(10.5);
     expect(shown.x.u).toBeCloseTo(0.5, 12);
@@ -53,7 +78,12 @@ describe('the number shown', () => {
 
 describe('the position shown', () => {
   it('has the standard error of its mean', () => {
-    const shown = shownPosition({ n: 25, mean: 320.5, sd: 0.1 }, { n: 25, mean: 240, sd: 0.1 }, newest, 1);
+    const shown = shownPosition(
+      { n: 25, mean: 320.5, sd: 0.1 },
+      { n: 25, mean: 240, sd: 0.1 },
+      newest,
+      1,
+    );
     expect(shown.x).toEqual({ value: 320.5, noise: 0.1 / 5, u: 0.1 / 5 });
     expect(shown.unit).toBe('px');
   });

@@ -85,7 +85,12 @@ export function shownAngle(
 }
 
 /** Without a calibration: where the return lies in the picture, averaged by the page. */
-export function shownPosition(x: Spread | null, y: Spread | null, newest: Newest, window_s: number): Shown {
+export function shownPosition(
+  x: Spread | null,
+  y: Spread | null,
+  newest: Newest,
+  window_s: number,
+): Shown {
   const there = newest.x_px !== null && newest.y_px !== null;
   const axis = (spread: Spread | null): AxisShown => {
     if (!there || spread === null) return NOTHING;
@@ -115,7 +120,12 @@ export function averageWords(average: { statistic: string; window_s: number }): 
  * the zero (JCGM 100:2008, 5.1.2). The common share is not reduced by subtracting a zero: what
  * cancels there is not known here, and too large is the safe side.
  */
-function combined(u: number | null, sd: number | null, noise: number | null, zero_sd: number): number | null {
+function combined(
+  u: number | null,
+  sd: number | null,
+  noise: number | null,
+  zero_sd: number,
+): number | null {
   if (u === null) return null;
   const common2 = Math.max(0, u * u - (sd ?? 0) ** 2);
   return Math.sqrt(common2 + (noise ?? sd ?? 0) ** 2 + zero_sd * zero_sd);

@@ -33,7 +33,9 @@ class FakeWorld implements World {
   advance(by_ms: number): void {
     const end_ms = this.now_ms + by_ms;
     for (;;) {
-      const due = this.timers.filter((timer) => timer.at_ms <= end_ms).sort((a, b) => a.at_ms - b.at_ms)[0];
+      const due = this.timers
+        .filter((timer) => timer.at_ms <= end_ms)
+        .sort((a, b) => a.at_ms - b.at_ms)[0];
       if (!due) break;
       this.timers = this.timers.filter((timer) => timer !== due);
       this.now_ms = due.at_ms;
@@ -59,7 +61,11 @@ describe('a connection', () => {
     heard = [];
     connection = new Connection(
       'ws://127.0.0.1/api/stream',
-      { onOpen: () => heard.push('open'), onText: (text) => heard.push(text), onDown: () => heard.push('down') },
+      {
+        onOpen: () => heard.push('open'),
+        onText: (text) => heard.push(text),
+        onDown: () => heard.push('down'),
+      },
       world,
     );
   });

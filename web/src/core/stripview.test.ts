@@ -21,7 +21,8 @@ describe('the view of the strip', () => {
   it('keeps the place under the pointer when it is stretched', () => {
     const view = { span_s: 100, end_s: 500 };
     const closer = zoom(view, 0.5, 0.25, past);
-    const place = (v: { span_s: number; end_s: number | null }): number => (v.end_s ?? 0) - 0.75 * v.span_s;
+    const place = (v: { span_s: number; end_s: number | null }): number =>
+      (v.end_s ?? 0) - 0.75 * v.span_s;
     expect(place(closer)).toBeCloseTo(place(view), 9);
   });
 

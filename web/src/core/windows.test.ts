@@ -4,7 +4,14 @@ import { extentOf, Windows } from './windows';
 describe('windows', () => {
   it('hold what they are given, at one scale', () => {
     const windows = new Windows([4 / 3, 1]);
-    const frame = windows.next([[3, 5], [-9, -8]], 0.1, 0);
+    const frame = windows.next(
+      [
+        [3, 5],
+        [-9, -8],
+      ],
+      0.1,
+      0,
+    );
     expect(frame.low[0]).toBeLessThanOrEqual(3);
     expect((frame.low[0] ?? 0) + (frame.span * 4) / 3).toBeGreaterThanOrEqual(5);
     expect(frame.low[1]).toBeLessThanOrEqual(-9);

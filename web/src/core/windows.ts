@@ -54,7 +54,8 @@ export class Windows {
       const old = kept?.low[i];
       if (extent === null) return old ?? -length / 2;
       const edge = 0.03 * length;
-      if (old !== undefined && extent[0] >= old + edge && extent[1] <= old + length - edge) return old;
+      if (old !== undefined && extent[0] >= old + edge && extent[1] <= old + length - edge)
+        return old;
       const grid = span / 10;
       return Math.round(((extent[0] + extent[1]) / 2 - length / 2) / grid) * grid;
     });

@@ -28,7 +28,8 @@ describe('directions', () => {
 it('has plain words for every quality word of the contract', () => {
   const contract =
     'no_image dim saturated blurred astigmatic vignetted at_edge one_axis several_returns damaged duplicate settling unlocked';
-  for (const word of contract.split(' ')) expect(qualityWords(word).length).toBeGreaterThan(word.length + 5);
+  for (const word of contract.split(' '))
+    expect(qualityWords(word).length).toBeGreaterThan(word.length + 5);
   expect(qualityWords('some_new_word')).toBe('some new word');
 });
 
@@ -40,18 +41,25 @@ describe('notices', () => {
   });
 
   it('differ in words from each other', () => {
-    const titles = STATES.flatMap((state) => noticesOf(true, state, '', false)).map((notice) => notice.title);
+    const titles = STATES.flatMap((state) => noticesOf(true, state, '', false)).map(
+      (notice) => notice.title,
+    );
     titles.push(...noticesOf(false, null, '', true).map((notice) => notice.title));
     expect(new Set(titles).size).toBe(titles.length);
     expect(titles.length).toBe(7);
   });
 
   it('say what the service says about the state', () => {
-    expect(noticesOf(true, 'failed', 'there is no camera 7', false)[0]?.text).toBe('there is no camera 7');
+    expect(noticesOf(true, 'failed', 'there is no camera 7', false)[0]?.text).toBe(
+      'there is no camera 7',
+    );
   });
 
   it('do not trust the last state heard once the page is cut off', () => {
-    expect(noticesOf(false, 'stalled', '', true).map((notice) => notice.trouble)).toEqual(['cut_off', 'simulated']);
+    expect(noticesOf(false, 'stalled', '', true).map((notice) => notice.trouble)).toEqual([
+      'cut_off',
+      'simulated',
+    ]);
   });
 });
 

@@ -49,14 +49,22 @@ export interface Notice {
 
 const NOTICES: Record<Exclude<State, 'measuring'>, [string, string]> = {
   opening: ['OPENING', 'the source is being opened; no reading yet'],
-  stalled: ['STALLED', 'the source is open but sends no picture; the last reading is shown struck out'],
+  stalled: [
+    'STALLED',
+    'the source is open but sends no picture; the last reading is shown struck out',
+  ],
   lost: ['SOURCE LOST', 'the camera is gone; it is being opened again'],
   ended: ['ENDED', 'the last picture has been read; the last reading is shown struck out'],
   failed: ['CANNOT OPEN', 'the source needs you'],
 };
 
 /** Every notice that is due, the gravest first. */
-export function noticesOf(connected: boolean, state: State | null, detail: string, simulated: boolean): Notice[] {
+export function noticesOf(
+  connected: boolean,
+  state: State | null,
+  detail: string,
+  simulated: boolean,
+): Notice[] {
   const notices: Notice[] = [];
   if (!connected) {
     notices.push({

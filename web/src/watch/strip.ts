@@ -95,11 +95,7 @@ export class StripPlot {
         t: { time: false, auto: false },
         lanes: { auto: false, range: [0, LANES_TOP] },
       },
-      series: [
-        { scale: 't' },
-        this.line('x'),
-        this.line('y'),
-      ],
+      series: [{ scale: 't' }, this.line('x'), this.line('y')],
       axes: [
         {
           scale: 't',
