@@ -99,6 +99,8 @@ def residual_figure(calibration: Calibration) -> str:
             fontsize=9,
         )
         buffer = io.StringIO()
-        figure.savefig(buffer, format="svg", metadata=dict.fromkeys(("Date", "Creator", "Format", "Type")))
+        figure.savefig(
+            buffer, format="svg", metadata=dict.fromkeys(("Date", "Creator", "Format", "Type"))
+        )
     svg = buffer.getvalue()
     return svg[svg.index("<svg") :]
