@@ -22,6 +22,8 @@ DIM_CONTRAST = 3.0
 """an arm less than this many pixel noises high is called dim"""
 SATURATED_SHARE = 0.002
 AT_EDGE_WIDTHS = 2.0
+SLACK_PX = 2.0
+"""left out beside the other arm, so that a small move needs no second fit"""
 
 
 def locate_crosshair(pixels: Pixels, *, full_scale: int, prior: Sighting | None = None) -> Sighting:
@@ -78,27 +80,28 @@ def _fit_both(
     pixels: Pixels, upright: Line, level: Line, upright_shape: Shape, level_shape: Shape
 ) -> tuple[ArmFit, ArmFit] | None:
     """Fit each arm without the stretch where the other one crosses it; None unless both hold."""
-    x, y = crossing(upright, level)
-    first = fit_arm(
-        pixels,
-        upright,
-        upright_shape,
-        skip_from=y - level_shape.reach_px,
-        skip_to=y + level_shape.reach_px,
-    )
-    if first is None or not _credible(first):
+    y_left_out, reach = crossing(upright, level)[1], level_shape.reach_px + SLACK_PX
+    first = _fit_without(pixels, upright, upright_shape, y_left_out, reach)
+    if first is None:
         return None
-    x, y = crossing(first.line, level)
-    reach = first.shape.reach_px + 1
-    second = fit_arm(pixels.T, level, level_shape, skip_from=x - reach, skip_to=x + reach)
-    if second is None or not _credible(second):
+    x, _ = crossing(first.line, level)
+    reach_of_first = first.shape.reach_px + SLACK_PX
+    second = _fit_without(pixels.T, level, level_shape, x, reach_of_first)
+    if second is None or first.shape.contrast * second.shape.contrast < 0:
         return None
-    x, y = crossing(first.line, second.line)
-    reach = second.shape.reach_px + 1
-    first = fit_arm(pixels, first.line, first.shape, skip_from=y - reach, skip_to=y + reach)
-    if first is None or not _credible(first) or first.shape.contrast * second.shape.contrast < 0:
-        return None
-    return first, second
+    _, y = crossing(first.line, second.line)
+    if abs(y - y_left_out) + second.shape.reach_px > reach:  # something of the other arm was in
+        reach = second.shape.reach_px + SLACK_PX
+        first = _fit_without(pixels, first.line, first.shape, y, reach)
+    return None if first is None else (first, second)
+
+
+def _fit_without(
+    pixels: Pixels, line: Line, shape: Shape, middle: float, reach: float
+) -> ArmFit | None:
+    """A credible fit of an arm without the stretch where the other one crosses it, or None."""
+    fit = fit_arm(pixels, line, shape, skip_from=middle - reach, skip_to=middle + reach)
+    return fit if fit is not None and _credible(fit) else None
 
 
 def _credible(fit: ArmFit) -> bool:

@@ -23,8 +23,9 @@ from readout.sighting.fold import Fold
 from readout.sighting.profile import full_width_at_half_maximum, line_profile
 
 QUANTISATION_VAR = 1 / 12
-STEPS = 3
-"""unweighted steps before the weighted one"""
+MOST_STEPS = 4
+SETTLED = 0.02
+"""pixels by which width, blur and line may still change in the step before the weighted one"""
 DAMPING = np.array([1e-9, 1e-9, 1e-9, 0.01, 0.01, 1e-9, 1e-9])
 """Marquardt damping of half width and blur: of a line thinner than its blur only one is seen"""
 
@@ -83,7 +84,8 @@ def solve_fold(fold: Fold, cosine: float, shape: Shape) -> Solution | None:
     """
     weight = np.ones_like(fold.level)
     shift = turn = 0.0
-    for step in range(STEPS + 1):
+    weighted = False
+    for step in range(MOST_STEPS):
         profile = line_profile(fold.u - cosine * shift, shape.half_width, shape.blur, cosine)
         levels = _linear_part(fold, profile.value, weight)
         if levels is None:
@@ -92,7 +94,7 @@ def solve_fold(fold: Fold, cosine: float, shape: Shape) -> Solution | None:
         shape = replace(shape, background=background, gradient=gradient, contrast=contrast)
         model = background + gradient * fold.u + contrast * profile.value
         flank = -contrast * cosine * profile.by_u
-        if step == STEPS:
+        if weighted:
             weight = 1 / _pixel_variance(fold, model, flank, contrast * profile.value)
         jacobian = np.stack(
             [
@@ -118,6 +120,9 @@ def solve_fold(fold: Fold, cosine: float, shape: Shape) -> Solution | None:
         )
         shift = _step(shift, change[5], 2 * size, -20 * size, 20 * size)
         turn += float(change[6])
+        if weighted:
+            break
+        weighted = step == MOST_STEPS - 2 or np.abs(change[3:6]).max() < SETTLED
     mean_level = fold.level / fold.n
     around = mean_level - fold.level.sum() / (fold.n.sum() * fold.u.shape[1])
     left = float((fold.n * (mean_level - model) ** 2).sum())
