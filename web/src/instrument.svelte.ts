@@ -24,11 +24,15 @@ const REFUSAL_MS = 10_000;
 const STATISTICS_S = 30;
 const KEPT_EVENTS = 100;
 
-export interface Held {
-  at: Date;
-  t_s: number;
-  newest: Newest | null;
+/** What a number on display was made of. */
+interface Row {
+  newest: Newest;
   average: Average | null;
+  t_s: number;
+}
+
+export interface Held extends Row {
+  at: Date;
 }
 
 /** Everything the page knows of the instrument, and the few things it can ask of it. */
@@ -74,6 +78,8 @@ export class Instrument {
   );
   gap_s = $derived(Math.max(0.5, 3 / Math.max(this.status?.frames_per_s ?? 30, 0.1)));
 
+  private onDisplay: Row | null = null;
+  private manner = '';
   private newest: Newest | null = null;
   private average: Average | null = null;
   private arrived_ms = 0;
@@ -135,10 +141,7 @@ export class Instrument {
   }
 
   hold(): void {
-    const { newest, average } = this;
-    this.held = this.held
-      ? null
-      : { at: new Date(), t_s: this.columns.t_s.at(-1) ?? 0, newest, average };
+    this.held = this.held || !this.onDisplay ? null : { ...this.onDisplay, at: new Date() };
   }
 
   async change(part: Partial<Settings>): Promise<void> {
@@ -184,7 +187,7 @@ export class Instrument {
 
   /** Another program answers now: its readings have nothing to do with those before. */
   private forget(): void {
-    this.newest = this.average = this.shown = this.held = null;
+    this.newest = this.average = this.onDisplay = this.shown = this.held = null;
     this.age_s = null;
     this.arrived_ms = 0;
     this.events = [];
@@ -243,18 +246,26 @@ export class Instrument {
     this.ticks += 1;
     if (this.arrived_ms > 0) this.age_s = (now_ms - this.arrived_ms) / 1000;
     if (this.refusal !== '' && now_ms - this.refused_ms > REFUSAL_MS) this.refusal = '';
-    const newest = this.held ? this.held.newest : this.newest;
-    const average = this.held ? this.held.average : this.average;
-    if (newest === null || this.status === null) return;
+    if (this.held === null) this.onDisplay = this.newestRow();
+    const row = this.held ?? this.onDisplay;
+    if (row === null || this.status === null) return;
+    // What is held changes its unit or its zero when asked to, and nothing else.
+    const manner = [this.unit, this.zero?.set_utc, this.calibration?.id].join();
+    if (this.held && manner === this.manner) return;
+    this.manner = manner;
     this.shown =
       this.status.calibration === null
-        ? this.positionShown(newest)
-        : shownAngle(average, newest, this.status.zero, this.settings.unit);
+        ? this.positionShown(row)
+        : shownAngle(row.average, row.newest, this.status.zero, this.settings.unit);
     if (this.ticks % 5 === 0 && !this.held) this.spread = this.spreadNow();
   }
 
-  private positionShown(newest: Newest): Shown {
-    const to_s = this.held?.t_s ?? this.columns.t_s.at(-1) ?? 0;
+  private newestRow(): Row | null {
+    const { newest, average } = this;
+    return newest && { newest, average, t_s: this.columns.t_s.at(-1) ?? 0 };
+  }
+
+  private positionShown({ newest, t_s: to_s }: Row): Shown {
     const [from, to] = [
       this.columns.indexAt(to_s - this.settings.average_s),
       this.columns.indexAt(to_s + 1e-6),
