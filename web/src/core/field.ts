@@ -45,7 +45,7 @@ export interface Ink {
   y: (number | null)[];
 }
 
-const MOST_POINTS = 600;
+const MOST_POINTS = 1800;
 
 /** The way between two times, thinned to what a small drawing can show; the newest row always. */
 export function inkOf(columns: Columns, place: Place, from_s: number, to_s: number): Ink {
