@@ -50,7 +50,7 @@ class ChildObserver:
 
     Entering starts the child and returns at once; until it is ready, ``observe`` raises
     SourceStalled. ``open_within_s`` and ``silent_at_most_s`` bound its silence before and after
-    it is ready. ``open_source`` is pickled into the child.
+    it has seen its first frame. ``open_source`` is pickled into the child.
     """
 
     live = True
@@ -122,9 +122,8 @@ class ChildObserver:
             message = self._receive(deadline_s - time.monotonic())
             match message:
                 case ("seen", Observation() as observation):
+                    self._ready = True  # not before: a slow machine needs its time for the first
                     return observation
-                case ("ready",):
-                    self._ready = True
                 case ("picture", picture):
                     with self._answered:
                         self._picture = picture
