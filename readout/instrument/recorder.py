@@ -20,7 +20,10 @@ from readout.files.calibration_file import calibration_document
 from readout.instrument.instrument import Event, Instrument
 from readout.instrument.joining import Intervals, Joined
 from readout.logbook import Logbook, NewRun, Spread
+from readout.logbook.writer import STOPPED
 from readout.model import Reading
+
+ENDED_WITH_READOUT = "readout was ended"
 
 
 @dataclass(frozen=True, slots=True)
@@ -100,7 +103,7 @@ class Recorder:
         self._instrument.tell("run_started", f"run {run_id} has begun")
         return run_id
 
-    def stop(self, run_id: int) -> None:
+    def stop(self, run_id: int, ending: str = STOPPED) -> None:
         """End the run; everything of it is written on return.
 
         Raises NotNow if it is not the one being recorded, NotRecorded if its end cannot be
@@ -114,13 +117,13 @@ class Recorder:
                 self._close_interval(run)
                 self._open = None
             self._instrument.tell("run_stopped", f"run {run_id} ended, {run.readings} rows")
-            self._logbook.end(self._instrument.now()[1])
+            self._logbook.end(self._instrument.now()[1], ending)
 
     def close(self) -> None:
         """End the run that is open, if there is one."""
         recording = self.recording
         if recording is not None:
-            self.stop(recording.id)
+            self.stop(recording.id, ENDED_WITH_READOUT)
 
     # -- called by the acquisition ------------------------------------------------------------
 

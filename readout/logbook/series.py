@@ -117,7 +117,8 @@ def _single(cells: Cells, step_s: float) -> Series:
 
 
 def _binned(cells: Cells, begin_s: float, bin_s: float, count: int) -> Series:
-    number = np.floor((cells.t_s - begin_s) / bin_s).astype(np.int64)
+    # A reading on an edge belongs to the bin that begins there, whatever the last bit says.
+    number = np.floor((cells.t_s - begin_s) / bin_s + 1e-9).astype(np.int64)
     number = np.clip(number, 0, count - 1)
 
     def total(values: F64 | I64) -> F64:
