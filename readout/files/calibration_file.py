@@ -70,18 +70,28 @@ def load_calibration(path: Path) -> Calibration:
     unknown schema, incomplete, or whose matrix cannot be turned round.
     """
     try:
-        document = json.loads(path.read_text(encoding="utf-8"))
+        content = path.read_bytes()
     except FileNotFoundError:
         raise BadInput(f"calibration file {path} does not exist: check the name") from None
     except OSError as error:
         raise BadInput(f"cannot read calibration file {path} ({error.strerror})") from error
+    return parse_calibration(content, name=str(path))
+
+
+def parse_calibration(text: bytes, *, name: str) -> Calibration:
+    """The calibration in what a file holds; ``name`` is what errors call the file.
+
+    Raises BadInput as ``load_calibration`` does.
+    """
+    try:
+        document = json.loads(text.decode("utf-8"))
     except ValueError as error:  # broken JSON and broken UTF-8
-        raise BadInput(f"{path} is no calibration file, it holds no JSON ({error})") from error
+        raise BadInput(f"{name} is no calibration file, it holds no JSON ({error})") from error
     schema = document.get("schema") if isinstance(document, dict) else None
     if schema != SCHEMA:
         found = "none" if schema is None else repr(schema)
         raise BadInput(
-            f"{path} has the schema {found}, this version reads {SCHEMA!r}: "
+            f"{name} has the schema {found}, this version reads {SCHEMA!r}: "
             "choose a calibration file, or one written by this version"
         )
     try:
@@ -90,14 +100,14 @@ def load_calibration(path: Path) -> Calibration:
         first = error.errors()[0]
         where = ".".join(str(part) for part in first["loc"])
         raise BadInput(
-            f"calibration file {path} cannot be used: {where}: {first['msg'].lower()}"
+            f"calibration file {name} cannot be used: {where}: {first['msg'].lower()}"
         ) from error
     p = content.parameters
     scale = max(abs(p.a_xx_per_px), abs(p.a_xy_per_px), abs(p.a_yx_per_px), abs(p.a_yy_per_px))
     determinant = p.a_xx_per_px * p.a_yy_per_px - p.a_xy_per_px * p.a_yx_per_px
     if not abs(determinant) > 1e-9 * scale**2:
         raise BadInput(
-            f"calibration file {path} cannot be used: its matrix does not tell the two axes apart"
+            f"calibration file {name} cannot be used: its matrix does not tell the two axes apart"
         )
     return Calibration(
         id=content.id,

@@ -15,6 +15,7 @@ from readout import __version__
 from readout.capture.open import describe_source
 from readout.instrument import Instrument
 from readout.instrument.recorder import Recorder
+from readout.service.calibration_routes import FOLDER, calibration_routes
 from readout.service.control import Control
 from readout.service.feed import Feed
 from readout.service.guard import Guard
@@ -70,6 +71,7 @@ def make_app(
     app.include_router(reading_routes(instrument, feed, status))
     app.include_router(log_routes(feed))
     app.include_router(setting_routes(instrument, feed, control))
+    app.include_router(calibration_routes(instrument, recorder.path.parent / FOLDER))
     app.include_router(run_routes(recorder, feed, control))
     app.include_router(stream_routes(instrument, feed, status))
     if (static / "index.html").is_file():

@@ -1,0 +1,86 @@
+"""Calibration files kept in the data folder, to choose from in the dashboard.
+
+One of them is put to use by naming its ``path`` as ``calibration`` in the settings.
+"""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Annotated
+
+from fastapi import APIRouter, Depends, Request
+from typing_extensions import TypedDict
+
+from readout.angle import Calibration
+from readout.files.calibration_shelf import keep_calibration, kept_calibrations
+from readout.instrument import Instrument
+from readout.rows import rounded
+from readout.service.problems import Problem
+
+FOLDER = "calibrations"
+LARGEST_BYTES = 5_000_000
+_A_FILE = {"requestBody": {"required": True, "content": {"application/json": {"schema": {}}}}}
+
+
+class KeptCalibrationMessage(TypedDict):
+    """A calibration to choose. ``active``: the readings are made with it now."""
+
+    id: str
+    created_utc: str
+    method: str
+    signs: str
+    target: str
+    focal_length_mm: float | None
+    focal_length_px: float | None
+    n: int
+    image_width_px: int
+    image_height_px: int
+    active: bool
+    path: str
+
+
+def calibration_routes(instrument: Instrument, folder: Path) -> APIRouter:
+    """Routes over the calibration files in ``folder``."""
+    routes = APIRouter(prefix="/api/calibrations", tags=["calibrations"])
+
+    @routes.get("")
+    def get_calibrations() -> list[KeptCalibrationMessage]:
+        """Those kept, the youngest first."""
+        in_use = instrument.status().calibration
+        return [_message(path, kept, in_use) for path, kept in kept_calibrations(folder)]
+
+    @routes.post("", status_code=201, openapi_extra=_A_FILE)
+    def post_calibration(text: Annotated[bytes, Depends(_body)]) -> KeptCalibrationMessage:
+        """Keep a calibration file, given as the body; it is not put to use by that."""
+        path, kept = keep_calibration(folder, text)
+        return _message(path, kept, instrument.status().calibration)
+
+    return routes
+
+
+async def _body(request: Request) -> bytes:
+    """The body as it came: the file is kept to the letter."""
+    text = bytearray()
+    async for part in request.stream():
+        text += part
+        if len(text) > LARGEST_BYTES:
+            raise Problem(413, "the file is larger than any calibration: choose another")
+    return bytes(text)
+
+
+def _message(path: Path, kept: Calibration, in_use: Calibration | None) -> KeptCalibrationMessage:
+    focal_mm = kept.focal_length_mm
+    return {
+        "id": kept.id,
+        "created_utc": kept.created_utc,
+        "method": kept.method,
+        "signs": kept.signs,
+        "target": kept.target.value,
+        "focal_length_mm": None if focal_mm is None else rounded(focal_mm),
+        "focal_length_px": rounded(kept.focal_length_px),
+        "n": kept.n,
+        "image_width_px": kept.image_width_px,
+        "image_height_px": kept.image_height_px,
+        "active": kept == in_use,
+        "path": str(path),
+    }
