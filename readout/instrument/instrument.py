@@ -6,6 +6,7 @@ everything else may be asked from any thread.
 
 from __future__ import annotations
 
+import contextlib
 import threading
 import time
 from collections.abc import Callable
@@ -96,6 +97,7 @@ class Instrument:
         self._lock = threading.RLock()
         self._scale = scale
         self._calibration: Calibration | None = None
+        self._own_calibration: Calibration | None = None
         self._statistic = statistic
         self._window = TrailingWindow(window_s)
         self._average: tuple[float, Average] | None = None
@@ -236,7 +238,8 @@ class Instrument:
             self._average = None
 
     def set_scale(self, scale: Calibration | Optics | None) -> None:
-        """Another scale, from the next reading on; the zero and the average start anew.
+        """Another scale, from the next reading on; the zero and the average start anew. Where the
+        source has ended there is no next one: the newest reading is made anew.
 
         A calibration that does not fit the pictures makes the acquisition fail: see
         ``refuse_unfit`` for asking first.
@@ -247,6 +250,8 @@ class Instrument:
             self._scale = scale
             self._scale_chosen = False
             self._forget_readings()
+            if self._state is State.ENDED:
+                self._read_newest_anew()
         if self._acquisition is not None:
             self.tell("calibration", "the scale was changed")
 
@@ -276,7 +281,8 @@ class Instrument:
             elif self._size_px != size_px:
                 raise _size_changed(self._size_px, size_px, observation.name)
             if not self._scale_chosen:
-                self._calibration = self._calibration_for(size_px, observer.calibration)
+                self._own_calibration = observer.calibration
+                self._calibration = self._calibration_for(size_px, self._own_calibration)
                 self._scale_chosen = True
             if self._t_zero_ns is None:
                 self._t_zero_ns = observation.t_mono_ns
@@ -288,6 +294,16 @@ class Instrument:
             self._unusable += not observation.sighting.found
         for listener in self.on_reading:
             listener(reading)
+
+    def _read_newest_anew(self) -> None:
+        if self._newest is None:
+            return
+        observation, before = self._newest
+        size_px = observation.width_px, observation.height_px
+        self._calibration = None
+        with contextlib.suppress(BadInput):  # one that does not fit these pictures is none
+            self._calibration = self._calibration_for(size_px, self._own_calibration)
+        self._newest = observation, reading_of(observation, self._calibration, before.t_s)
 
     def _calibration_for(
         self, size_px: tuple[int, int], own: Calibration | None

@@ -1,5 +1,7 @@
 """Readings on their way to viewers: the last ten minutes kept, each viewer with its own queue.
 
+The last events are kept as well, and are the first that a new viewer gets.
+
 The producer never waits for a viewer. A queue that is full drops its oldest reading and counts
 it. ``append`` and ``announce`` are called from the acquisition's thread; queues belong to the
 event loop, and one call into the loop serves all of them.
@@ -11,6 +13,7 @@ import asyncio
 import itertools
 import threading
 from collections import deque
+from collections.abc import Iterable
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -20,6 +23,7 @@ from readout.instrument import Event
 from readout.model import Reading
 
 KEPT_S = 600.0
+KEPT_EVENTS = 30
 FLOATS = (
     "t_s",
     "x_arcsec",
@@ -44,13 +48,15 @@ class Batch:
 
 
 class Subscription:
-    """The queue of one viewer, used within the event loop only."""
+    """The queue of one viewer, used within the event loop only. It begins with ``events``."""
 
-    def __init__(self, capacity: int) -> None:
+    def __init__(self, capacity: int, events: Iterable[Event] = ()) -> None:
         self._readings: deque[Reading] = deque(maxlen=capacity)
-        self._events: deque[Event] = deque(maxlen=100)
+        self._events: deque[Event] = deque(events, maxlen=100)
         self._status_changed = False
         self._ready = asyncio.Event()
+        if self._events:
+            self._ready.set()
         self.dropped = 0
         self.closed = False
 
@@ -94,6 +100,7 @@ class Feed:
         self._seq = np.empty(capacity, dtype=np.int64)
         self._quality = np.empty(capacity, dtype=np.int64)
         self._count = 0
+        self._events: deque[Event] = deque(maxlen=KEPT_EVENTS)
         self._lock = threading.Lock()
         self._loop: asyncio.AbstractEventLoop | None = None
         self._subscriptions: set[Subscription] = set()
@@ -117,12 +124,11 @@ class Feed:
 
     def _into_loop(self, item: Reading | Event | None) -> None:
         with self._lock:
+            if isinstance(item, Event):
+                self._events.append(item)
             if self._loop is not None and self._subscriptions:
-                self._loop.call_soon_threadsafe(self._fan_out, item)
-
-    def _fan_out(self, item: Reading | Event | None) -> None:
-        for subscription in self._subscriptions:
-            subscription.offer(item)
+                # Those of this instant: who comes later finds an event among the kept ones.
+                self._loop.call_soon_threadsafe(_fan_out, self._subscriptions, item)
 
     # -- from the event loop ------------------------------------------------------------------
 
@@ -139,8 +145,9 @@ class Feed:
                 subscription.close()
 
     def subscribe(self, capacity: int) -> Subscription:
-        subscription = Subscription(capacity)
+        """A queue for another viewer, which begins with the events of late."""
         with self._lock:
+            subscription = Subscription(capacity, self._events)
             self._subscriptions = self._subscriptions | {subscription}
             if self._loop is None:
                 subscription.close()
@@ -171,6 +178,11 @@ class Feed:
             columns.update({name: column[order] for name, column in self._floats.items()})
             columns["quality"] = self._quality[order]
         return columns
+
+
+def _fan_out(subscriptions: Iterable[Subscription], item: Reading | Event | None) -> None:
+    for subscription in subscriptions:
+        subscription.offer(item)
 
 
 def thinned(columns: Columns, points: int) -> Columns:

@@ -1,8 +1,9 @@
 """``WS /api/stream``: everything as it comes, to a viewer that may be slow.
 
-A reading goes out at once; what arrives while a send is under way forms the next message. A
-second task waits for the viewer to leave, so that one who does while the source is silent is
-noticed. A send that takes longer than three seconds ends the connection.
+First the status, then the last events, then all that comes. A reading goes out at once; what
+arrives while a send is under way forms the next message. A second task waits for the viewer to
+leave, so that one who does while the source is silent is noticed. A send that takes longer than
+three seconds ends the connection.
 """
 
 from __future__ import annotations
@@ -43,10 +44,11 @@ def stream_routes(
             feed.unsubscribe(subscription)
             for task in (leaving, sending):
                 task.cancel()
-            results = await asyncio.gather(leaving, sending, return_exceptions=True)
-        for result in results:
-            if isinstance(result, Exception) and not _is_departure(result):
-                raise result
+            await asyncio.wait({leaving, sending})
+        for task in (leaving, sending):
+            error = None if task.cancelled() else task.exception()
+            if isinstance(error, Exception) and not _is_departure(error):
+                raise error
 
     return routes
 
@@ -64,8 +66,8 @@ async def _send_all(
 ) -> None:
     loop = asyncio.get_running_loop()
     status_due = loop.time()
+    batch = Batch(status_changed=True)
     while not subscription.closed:
-        batch = await subscription.next(max(0.0, status_due - loop.time()))
         messages = _messages(batch, subscription, instrument)
         if batch.status_changed or loop.time() >= status_due:
             messages.append(encode({"kind": "status", **status()}))
@@ -76,6 +78,7 @@ async def _send_all(
             except TimeoutError:
                 await _close(viewer, TRY_AGAIN_LATER)
                 return
+        batch = await subscription.next(max(0.0, status_due - loop.time()))
     await _close(viewer, GOING_AWAY)
 
 

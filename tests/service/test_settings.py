@@ -222,3 +222,26 @@ def test_another_source_is_measured_at_once(rig: Rig, client: TestClient, tmp_pa
     status = client.get("/api/status").json()
     assert status["source_name"] == "folder frames"
     assert status["frames"] == 3
+
+
+def test_a_scale_given_after_the_end_applies_to_the_last_reading(
+    rig: Rig, client: TestClient, tmp_path: Path
+) -> None:
+    rig.fix_calibration(None)
+    rig.measure()
+    assert client.get("/api/status").json()["state"] == "ended"
+    assert client.get("/api/reading").json()["x_arcsec"] is None
+    before = client.get("/api/reading").json()
+    optics = {"focal_length_mm": 300.0, "pitch_um": 3.45}
+    client.put("/api/settings", json={"optics": optics})
+    status, after = client.get("/api/status").json(), client.get("/api/reading").json()
+    assert status["calibration"]["method"] == "nominal"
+    same = ("seq", "t_s", "t_utc", "x_px", "y_px")
+    assert [after[name] for name in same] == [before[name] for name in same]
+    # Truth: the same optics used from the beginning.
+    x, y = small_calibration().tilt(after["x_px"], after["y_px"])
+    assert (after["x_arcsec"], after["y_arcsec"]) == pytest.approx((x, y), abs=2e-6)
+    assert after["calibration_id"] == status["calibration"]["id"]
+    client.put("/api/settings", json={"optics": {"pitch_um": None}})
+    assert client.get("/api/status").json()["calibration"] is None
+    assert client.get("/api/reading").json()["x_arcsec"] is None

@@ -147,3 +147,18 @@ def test_a_feed_without_viewers_takes_readings_all_the_same() -> None:
     feed = Feed(capacity=3)
     feed.append(reading(0))
     assert feed.dropped == 0
+
+
+def test_a_viewer_that_comes_late_first_gets_the_last_events_each_once(
+    rig: Rig, client: TestClient
+) -> None:
+    rig.measure()
+    for number in range(40):
+        rig.instrument.tell("note", f"number {number}")
+    with client.websocket_connect(STREAM) as session:
+        assert session.receive_json()["kind"] == "status"
+        kept = [session.receive_json() for _ in range(30)]
+        assert [m["text"] for m in kept] == [f"number {number}" for number in range(10, 40)]
+        rig.instrument.tell("note", "the newest")
+        later = messages_until(session, "event", text="the newest")
+    assert [m["text"] for m in later if m["kind"] == "event"] == ["the newest"]
