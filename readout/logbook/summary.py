@@ -72,9 +72,9 @@ def summarise(
 
 def _axis(values: F64, good: NDArray[np.bool_], first: I64) -> AxisColumns:
     used = np.where(good, values, 0.0)
+    with np.errstate(over="ignore"):  # a number without sense is kept like any other
+        squares = np.add.reduceat(used * used, first)
+        total = np.add.reduceat(used, first)
     return AxisColumns(
-        np.fmin.reduceat(values, first),
-        np.fmax.reduceat(values, first),
-        np.add.reduceat(used, first),
-        np.add.reduceat(used * used, first),
+        np.fmin.reduceat(values, first), np.fmax.reduceat(values, first), total, squares
     )

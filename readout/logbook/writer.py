@@ -7,6 +7,7 @@ next ``append``; a queue that is full refuses. Nothing is lost in silence.
 
 from __future__ import annotations
 
+import contextlib
 import json
 import math
 import queue
@@ -192,10 +193,6 @@ class Logbook:
             except queue.Full:
                 continue
         self._thread.join()
-        while not self._inbox.empty():  # what came too late is refused, nobody waits for ever
-            late = self._inbox.get_nowait()
-            if isinstance(late, _Job):
-                late.done.set_exception(self._closed())
         self._open.close()
 
     def _queue(self, item: _Row | _Note) -> None:
@@ -217,9 +214,12 @@ class Logbook:
         while self._thread.is_alive():
             try:
                 self._inbox.put(job, timeout=0.1)
-                return done.result()
+                break
             except queue.Full:
                 continue
+        while self._thread.is_alive() or done.done():
+            with contextlib.suppress(TimeoutError):
+                return done.result(timeout=0.5)
         raise self._closed()
 
     def _closed(self) -> NotRecorded:
@@ -229,12 +229,15 @@ class Logbook:
 
     def _write_all(self) -> None:
         more = True
-        while more:
-            rows, notes, job, more = self._gather()
-            if (rows or notes) and not self._broken:
-                self._commit(rows, notes)
-            if job is not None:
-                self._answer(job)
+        try:
+            while more:
+                rows, notes, job, more = self._gather()
+                if (rows or notes) and not self._broken:
+                    self._commit(rows, notes)
+                if job is not None:
+                    self._answer(job)
+        finally:  # also where a fault of ours ends the thread: nobody may go on in good faith
+            self._failure = self._failure or self._closed()
 
     def _begin(self, connection: sqlite3.Connection, run: NewRun) -> int:
         run_id = _insert_run(connection, run)
@@ -280,6 +283,9 @@ class Logbook:
             result = _in_transaction(self._connection, lambda: job.work(self._connection))
         except sqlite3.Error as error:
             job.done.set_exception(self._not_recorded(error))
+        except BaseException as error:
+            job.done.set_exception(error)
+            raise
         else:
             job.done.set_result(result)
 

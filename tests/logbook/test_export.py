@@ -24,7 +24,7 @@ READINGS = [
     reading(0),
     unmeasured(1),
     reading(2, quality=Quality.AT_EDGE | Quality.DIM),
-    reading(3, 0.0, -0.0, x_sd_arcsec=0.00012345678),
+    reading(3, 0.0, -1.25e-7, x_sd_arcsec=0.00012345678),
 ]
 
 

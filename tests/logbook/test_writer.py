@@ -293,3 +293,16 @@ def test_a_closed_log_is_one_file(tmp_path: Path) -> None:
     assert {p.name for p in tmp_path.iterdir()} == {FILE_NAME, f"{FILE_NAME}.lock"}
     with closing(sqlite3.connect(tmp_path / FILE_NAME)) as connection:
         assert connection.execute("PRAGMA integrity_check").fetchone() == ("ok",)
+
+
+@pytest.mark.filterwarnings("ignore::pytest.PytestUnhandledThreadExceptionWarning")
+def test_a_fault_of_the_writing_thread_leaves_nobody_waiting(tmp_path: Path) -> None:
+    with Logbook(tmp_path / FILE_NAME) as log:
+        log.start(new_run())
+        with pytest.raises(ZeroDivisionError):
+            log._do(lambda _connection: 1 / 0)
+        log._thread.join()
+        with pytest.raises(NotRecorded, match="is closed"):
+            log.append(reading(0), t_s=0.0)
+        with pytest.raises(NotRecorded, match="is closed"):
+            log.end(0)
