@@ -9,6 +9,7 @@ from __future__ import annotations
 import os
 import platform
 import struct
+import sys
 from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
@@ -92,15 +93,16 @@ def _each(handle: int, request: int, question: bytes) -> Iterator[bytearray]:
 
 
 def _ask(handle: int, request: int, block: bytearray) -> bytearray | None:
-    if SYSTEM != "Linux":
-        return None
-    import fcntl
+    answer = None
+    if sys.platform == "linux":
+        import fcntl
 
-    try:
-        fcntl.ioctl(handle, request, block)
-    except OSError:
-        return None
-    return block
+        try:
+            fcntl.ioctl(handle, request, block)
+            answer = block
+        except OSError:
+            answer = None
+    return answer
 
 
 @contextmanager

@@ -71,7 +71,7 @@ class ChildObserver:
         self._silent_at_most_s = silent_at_most_s
         self._source = source
         self._process: multiprocessing.process.BaseProcess | None = None
-        self._pipe: Connection | None = None
+        self._pipe: Any = None  # a Connection; on Windows another class with the same methods
         self._ready = False
         self._heard_s = 0.0
         self._asking = threading.Lock()
@@ -174,12 +174,12 @@ def _interrupts_blocked() -> Iterator[None]:
     """A child begun in here never hears Ctrl-C, not even while it imports: its parent ends it."""
     if sys.platform == "win32":
         yield
-        return
-    before = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
-    try:
-        yield
-    finally:
-        signal.pthread_sigmask(signal.SIG_SETMASK, before)
+    else:
+        before = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
+        try:
+            yield
+        finally:
+            signal.pthread_sigmask(signal.SIG_SETMASK, before)
 
 
 def _end(process: multiprocessing.process.BaseProcess) -> None:
