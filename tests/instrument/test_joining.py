@@ -7,7 +7,7 @@ import math
 import numpy as np
 import pytest
 
-from readout.instrument.joining import join
+from readout.instrument.joining import Intervals, join
 from readout.model import Quality
 from tests.instrument.fakes import reading, unmeasured
 
@@ -52,3 +52,18 @@ def test_one_reading_has_no_scatter() -> None:
     joined = join([reading(0, 1.0)])
     assert (joined.reading.x_arcsec, joined.n) == (1.0, 1)
     assert math.isnan(joined.x_scatter_arcsec)
+
+
+@pytest.mark.parametrize("origin_s", [0.0, 0.25])
+def test_intervals_are_counted_from_their_origin(origin_s: float) -> None:
+    intervals = Intervals(0.5, origin_s=origin_s)
+    rows = [row for k in range(20) if (row := intervals.add(reading(k, float(k))))]
+    last = intervals.close()
+    assert last is not None
+    assert intervals.close() is None
+    members = {
+        0.0: [range(5), range(5, 10), range(10, 15), range(15, 20)],
+        0.25: [range(3), range(3, 8), range(8, 13), range(13, 18), range(18, 20)],
+    }[origin_s]
+    assert [row.n for row in (*rows, last)] == [len(m) for m in members]
+    assert [row.reading.x_arcsec for row in (*rows, last)] == [float(np.mean(m)) for m in members]
