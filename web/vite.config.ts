@@ -49,7 +49,10 @@ export default defineConfig({
   },
   server: {
     host: '127.0.0.1',
-    proxy: { '/api': { target: service, ws: true, changeOrigin: true } },
+    proxy: {
+      // The service answers its own page only, so what this server passes on looks like it.
+      '/api': { target: service, ws: true, changeOrigin: true, headers: { origin: service } },
+    },
   },
   test: { environment: 'node', css: true, include: ['src/**/*.test.ts'] },
 });

@@ -1,5 +1,16 @@
-import { recent, readSettings, Refused, setZero, takeZeroBack, writeSettings } from './core/api';
+import {
+  newestReading,
+  readSettings,
+  recent,
+  Refused,
+  setZero,
+  startRun,
+  stopRun,
+  takeZeroBack,
+  writeSettings,
+} from './core/api';
 import { Columns } from './core/columns';
+import { withEvent } from './core/events';
 import { Feed } from './core/feed';
 import { ProtocolError } from './core/fields';
 import { nextFrame, Pace, unhurried } from './core/pace';
@@ -7,12 +18,14 @@ import {
   decode,
   type Average,
   type Message,
+  type Newest,
   type Readings,
   type SourceEvent,
   type Status,
 } from './core/protocol';
+import type { NewRun } from './core/runs';
 import { FIRST_SETTINGS, type Settings } from './core/settings';
-import { shownAngle, shownPosition, type Newest, type Shown } from './core/shown';
+import { shownAngle, shownPosition, type Shown } from './core/shown';
 import { BROWSER, Connection } from './core/socket';
 import { spreadOf, type Spread } from './core/statistics';
 import type { Unit } from './core/units';
@@ -65,6 +78,8 @@ export class Instrument {
   calibration = $derived(this.status?.calibration ?? null);
   provenSigns = $derived(this.calibration?.signs === 'proven');
   zero = $derived(this.status?.zero ?? null);
+  /** The run being recorded. */
+  run = $derived(this.status?.run ?? null);
   image_px: [number, number] = $derived([
     this.status?.image_width_px ?? 640,
     this.status?.image_height_px ?? 480,
@@ -163,6 +178,14 @@ export class Instrument {
     return this.ask(takeZeroBack);
   }
 
+  startRun(run: NewRun): Promise<void> {
+    return this.ask(() => startRun(run));
+  }
+
+  stopRun(id: number): Promise<void> {
+    return this.ask(() => stopRun(id));
+  }
+
   private async loadSettings(): Promise<void> {
     await this.ask(async () => {
       this.settings = await readSettings();
@@ -208,11 +231,11 @@ export class Instrument {
         this.takeReadings(message);
         break;
       case 'status':
-        this.status = message;
+        this.takeStatus(message);
         void this.feed.sessionIs(message.session_start_utc, this.gap_s);
         break;
       case 'event':
-        this.events = [message, ...this.events].slice(0, KEPT_EVENTS);
+        this.events = withEvent(this.events, message, KEPT_EVENTS);
         this.paint.ask();
         break;
       default: {
@@ -220,6 +243,19 @@ export class Instrument {
         throw new Error(String(never));
       }
     }
+  }
+
+  /** Another scale while no reading comes: the last one is asked for again, as it is read now. */
+  private takeStatus(status: Status): void {
+    const before = this.status;
+    this.status = status;
+    const another = before !== null && before.calibration?.id !== status.calibration?.id;
+    if (!another || status.state === 'measuring' || this.newest === null) return;
+    void this.ask(async () => {
+      const { newest, average } = await newestReading();
+      this.newest = newest;
+      this.average = average;
+    });
   }
 
   /** What the service still holds; its newest row is shown until another one comes, if one does. */

@@ -1,5 +1,16 @@
+import { keptOf, type KeptCalibration } from './calibrations';
 import { Fields, ProtocolError } from './fields';
-import { fitOf, readingsOf, type Fit, type Readings } from './protocol';
+import type { Part } from './part';
+import { fitOf, readingOf, readingsOf, type Average, type Fit, type Newest, type Readings } from './protocol';
+import {
+  runsOf,
+  seriesOf,
+  wholeRunOf,
+  type NewRun,
+  type Run,
+  type Series,
+  type WholeRun,
+} from './runs';
 import { settingsOf, type Settings } from './settings';
 
 /** The service said no; the message is its own line for people. */
@@ -61,4 +72,48 @@ export async function fit(): Promise<Fit> {
 export async function picture(): Promise<{ seq: number; blob: Blob }> {
   const answer = await ask('api/frame.jpg');
   return { seq: Number(answer.headers.get('X-Seq') ?? -1), blob: await answer.blob() };
+}
+
+/** The newest reading, with the scale in use now. */
+export async function newestReading(): Promise<{ newest: Newest; average: Average | null }> {
+  return readingOf(await (await ask('api/reading')).json());
+}
+
+export async function runs(): Promise<Run[]> {
+  return runsOf(await (await ask('api/runs')).json());
+}
+
+export async function wholeRun(id: number): Promise<WholeRun> {
+  return wholeRunOf(await (await ask(`api/runs/${id}`)).json());
+}
+
+/** At most `points` bins of a part of a run, all of it without one. */
+export async function series(id: number, part: Part | null, points: number): Promise<Series> {
+  const range = part === null ? '' : `&from_s=${part.from_s}&to_s=${part.to_s}`;
+  return seriesOf(await (await ask(`api/runs/${id}/series?points=${points}${range}`)).json());
+}
+
+/** The run itself comes with the next status. */
+export async function startRun(run: NewRun): Promise<void> {
+  await ask('api/runs', { method: 'POST', ...json(run) });
+}
+
+export async function stopRun(id: number): Promise<void> {
+  await ask(`api/runs/${id}/stop`, { method: 'POST' });
+}
+
+export function exportAddress(id: number, format: 'csv' | 'ndjson'): string {
+  return `api/runs/${id}/export?format=${format}`;
+}
+
+export async function calibrations(): Promise<KeptCalibration[]> {
+  return keptOf(await (await ask('api/calibrations')).json());
+}
+
+/** Keeps a calibration file, as it is; it is not put to use by that. */
+export async function keepCalibration(file: Blob): Promise<KeptCalibration> {
+  const init = { method: 'POST', headers: { 'content-type': 'application/json' }, body: file };
+  const [kept] = keptOf([await (await ask('api/calibrations', init)).json()]);
+  if (kept === undefined) throw new ProtocolError('the service kept nothing');
+  return kept;
 }

@@ -15,6 +15,11 @@ export class Fields {
     return new Fields(value as Record<string, unknown>, where);
   }
 
+  static listOf(value: unknown, where: string): Fields[] {
+    if (!Array.isArray(value)) throw new ProtocolError(`${where} is not a list`);
+    return value.map((member) => Fields.of(member, where));
+  }
+
   number(name: string): number {
     return this.finite(this.members[name], name);
   }
@@ -68,6 +73,10 @@ export class Fields {
 
   object(name: string): Fields {
     return Fields.of(this.members[name], `${this.where}: ${name}`);
+  }
+
+  objects(name: string): Fields[] {
+    return Fields.listOf(this.members[name], `${this.where}: ${name}`);
   }
 
   objectOrNull(name: string): Fields | null {

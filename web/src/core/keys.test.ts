@@ -1,5 +1,5 @@
 import { describe, expect, it } from 'vitest';
-import { actionOf } from './keys';
+import { ACTIONS, actionOf, KEYS } from './keys';
 
 describe('keys', () => {
   const press = { key: 'z', ctrlKey: false, altKey: false, metaKey: false };
@@ -13,5 +13,13 @@ describe('keys', () => {
     expect(actionOf(press, true)).toBeNull();
     expect(actionOf({ ...press, ctrlKey: true }, false)).toBeNull();
     expect(actionOf({ ...press, key: 'F5' }, false)).toBeNull();
+  });
+
+  it('are all in the list that explains them', () => {
+    const names: Record<string, string> = { '←': 'ArrowLeft', '→': 'ArrowRight', '−': '-' };
+    const explained = KEYS.flatMap(({ keys }) => keys).map((key) => names[key] ?? key);
+    for (const key of explained) expect(actionOf({ ...press, key }, false), key).not.toBeNull();
+    const actions = new Set(explained.map((key) => actionOf({ ...press, key }, false)));
+    expect(actions.size).toBe(new Set(Object.values(ACTIONS)).size);
   });
 });

@@ -2,6 +2,9 @@ export type Action =
   | 'zero'
   | 'unzero'
   | 'hold'
+  | 'run'
+  | 'watch'
+  | 'runs'
   | 'unit'
   | 'theme'
   | 'strip_30'
@@ -12,13 +15,17 @@ export type Action =
   | 'closer'
   | 'wider'
   | 'now'
+  | 'whole'
   | 'settings'
   | 'help';
 
-const ACTIONS: Record<string, Action> = {
+export const ACTIONS: Record<string, Action> = {
   z: 'zero',
   t: 'unzero',
   h: 'hold',
+  r: 'run',
+  w: 'watch',
+  l: 'runs',
   u: 'unit',
   n: 'theme',
   '1': 'strip_30',
@@ -29,6 +36,8 @@ const ACTIONS: Record<string, Action> = {
   '+': 'closer',
   '-': 'wider',
   End: 'now',
+  '0': 'whole',
+  Home: 'whole',
   s: 'settings',
   '?': 'help',
 };
@@ -37,12 +46,16 @@ export const KEYS: { keys: string[]; does: string }[] = [
   { keys: ['Z'], does: 'set zero here' },
   { keys: ['T'], does: 'take zero back' },
   { keys: ['H'], does: 'hold the display, and follow again' },
+  { keys: ['R'], does: 'start a run, or stop the one being recorded' },
+  { keys: ['W'], does: 'to Watch' },
+  { keys: ['L'], does: 'to Runs, the list' },
   { keys: ['U'], does: 'next unit' },
   { keys: ['N'], does: 'day, night, or as the system says' },
   { keys: ['1', '2', '3'], does: 'strip of 30 s, 5 min, 10 min' },
-  { keys: ['←', '→'], does: 'move the strip to earlier and later' },
-  { keys: ['+', '−'], does: 'stretch the strip, and gather it' },
+  { keys: ['←', '→'], does: 'strip or run: to earlier and later' },
+  { keys: ['+', '−'], does: 'strip or run: stretch it, and gather it' },
   { keys: ['End'], does: 'strip back to now' },
+  { keys: ['0'], does: 'the whole run' },
   { keys: ['S'], does: 'settings' },
   { keys: ['?'], does: 'this list' },
 ];

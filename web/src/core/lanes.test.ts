@@ -15,7 +15,7 @@ describe('lanes', () => {
       1,
     );
     const { data } = new LaneMaker().make(columns, place, 0, 1, 0.01, 1);
-    const [, xs, ys] = data;
+    const [, xs = [], ys = []] = data;
     expect(xs.at(-1)).toBeNull();
     for (let i = 0; i < 6; i++) {
       expect(xs[i]).toBeGreaterThan(1);

@@ -2,7 +2,7 @@ import type { Columns } from './columns';
 import type { Place } from './field';
 import { decimalsOfStep, graduation, ticks } from './scale';
 import { signed } from './numbers';
-import { extentOf, Windows } from './windows';
+import { extentOf, Windows, type Frame } from './windows';
 
 /** Two lanes, X above Y, at one scale: a lane is 1 high, with a strip of ground between them. */
 const BETWEEN = 0.22;
@@ -10,7 +10,7 @@ export const LANES_TOP = 2 + BETWEEN;
 
 export interface Lanes {
   /** Columns for the plot: time, X and Y in lane heights; null where a gap is to be left. */
-  data: [number[], (number | null)[], (number | null)[]];
+  data: [number[], ...(number | null)[][]];
   marks: { at: number; label: string; zero: boolean }[];
   span: number;
   low: [x: number, y: number];
@@ -40,23 +40,39 @@ export class LaneMaker {
       Math.max(10 * grain, place.least),
       now_s,
     );
-    const [x_low = 0, y_low = 0] = frame.low;
-    const upper = 1 + BETWEEN;
+    const lanes = lanesAt(frame, place, most);
     return {
-      data: [
-        t_s,
-        xs.map((v) => (v === null ? null : upper + (v - x_low) / frame.span)),
-        ys.map((v) => (v === null ? null : (v - y_low) / frame.span)),
-      ],
-      marks: [
-        ...marksOf(x_low, frame.span, upper, place, most),
-        ...marksOf(y_low, frame.span, 0, place, most),
-      ],
+      data: [t_s, xs.map(lanes.ofX), ys.map(lanes.ofY)],
+      marks: lanes.marks,
       span: frame.span,
-      low: [x_low, y_low],
+      low: lanes.low,
       gaps: gapsOf(t_s, xs, to_s),
     };
   }
+}
+
+/** Where the lanes put a value when they stand at `frame`, and the marks beside them. */
+export function lanesAt(
+  frame: Frame,
+  place: Place,
+  most: number,
+): {
+  ofX: (value: number | null) => number | null;
+  ofY: (value: number | null) => number | null;
+  low: [number, number];
+  marks: Lanes['marks'];
+} {
+  const [x_low = 0, y_low = 0] = frame.low;
+  const upper = 1 + BETWEEN;
+  return {
+    ofX: (v) => (v === null ? null : upper + (v - x_low) / frame.span),
+    ofY: (v) => (v === null ? null : (v - y_low) / frame.span),
+    low: [x_low, y_low],
+    marks: [
+      ...marksOf(x_low, frame.span, upper, place, most),
+      ...marksOf(y_low, frame.span, 0, place, most),
+    ],
+  };
 }
 
 function valuesOf(
@@ -84,10 +100,11 @@ function marksOf(
   }));
 }
 
-function gapsOf(
+/** Stretches of nulls, up to the values beside them; `to_s`: where the time shown ends. */
+export function gapsOf(
   t_s: readonly number[],
   values: readonly (number | null)[],
-  to_s: number,
+  to_s = t_s.at(-1) ?? 0,
 ): [number, number][] {
   const gaps: [number, number][] = [];
   let from: number | null = null;

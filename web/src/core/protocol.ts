@@ -14,6 +14,19 @@ export interface Average {
   statistic: string;
 }
 
+/** The newest reading, one row of the stream. */
+export interface Newest {
+  x_arcsec: number | null;
+  y_arcsec: number | null;
+  x_sd_arcsec: number | null;
+  y_sd_arcsec: number | null;
+  x_u_arcsec: number | null;
+  y_u_arcsec: number | null;
+  x_px: number | null;
+  y_px: number | null;
+  quality: readonly string[];
+}
+
 /** Columns of one length, a row for each frame; null where nothing could be measured. */
 export interface Readings {
   kind: 'readings';
@@ -54,6 +67,15 @@ export interface Zero {
   set_utc: string;
 }
 
+/** The run being recorded. */
+export interface RunNow {
+  id: number;
+  title: string;
+  started_utc: string;
+  every_s: number;
+  readings: number;
+}
+
 export interface Status {
   kind: 'status';
   source: string;
@@ -69,6 +91,7 @@ export interface Status {
   image_height_px: number | null;
   calibration: CalibrationInUse | null;
   zero: Zero | null;
+  run: RunNow | null;
   session_start_utc: string;
   version: string;
 }
@@ -127,6 +150,25 @@ export function readingsOf(value: unknown): Readings {
   return readings;
 }
 
+/** One reading, as it is answered when asked for. */
+export function readingOf(value: unknown): { newest: Newest; average: Average | null } {
+  const fields = Fields.of(value, 'the reading');
+  return {
+    newest: {
+      x_arcsec: fields.numberOrNull('x_arcsec'),
+      y_arcsec: fields.numberOrNull('y_arcsec'),
+      x_sd_arcsec: fields.numberOrNull('x_sd_arcsec'),
+      y_sd_arcsec: fields.numberOrNull('y_sd_arcsec'),
+      x_u_arcsec: fields.numberOrNull('x_u_arcsec'),
+      y_u_arcsec: fields.numberOrNull('y_u_arcsec'),
+      x_px: fields.numberOrNull('x_px'),
+      y_px: fields.numberOrNull('y_px'),
+      quality: fields.words('quality'),
+    },
+    average: averageOf(fields.objectOrNull('average')),
+  };
+}
+
 function averageOf(fields: Fields | null): Average | null {
   return (
     fields && {
@@ -158,6 +200,7 @@ export function statusOf(value: unknown): Status {
     image_height_px: fields.numberOrNull('image_height_px'),
     calibration: calibrationOf(fields.objectOrNull('calibration')),
     zero: zeroOf(fields.objectOrNull('zero')),
+    run: runNowOf(fields.objectOrNull('run')),
     session_start_utc: fields.text('session_start_utc'),
     version: fields.text('version'),
   };
@@ -196,6 +239,18 @@ function zeroOf(fields: Fields | null): Zero | null {
       y_sd_arcsec: fields.numberOrNull('y_sd_arcsec') ?? 0,
       n: fields.number('n'),
       set_utc: fields.text('set_utc'),
+    }
+  );
+}
+
+function runNowOf(fields: Fields | null): RunNow | null {
+  return (
+    fields && {
+      id: fields.number('id'),
+      title: fields.text('title'),
+      started_utc: fields.text('started_utc'),
+      every_s: fields.number('every_s'),
+      readings: fields.number('readings'),
     }
   );
 }

@@ -51,6 +51,7 @@ export function status(): Status {
       ],
     },
     zero: null,
+    run: null,
     session_start_utc: '2026-12-01T09:00:00.000Z',
     version: '0.1.0',
   };

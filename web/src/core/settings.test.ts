@@ -7,6 +7,7 @@ const whole = {
   unit: 'mm/m',
   theme: 'night',
   average_s: 3,
+  calibration: '/data/bench.json',
   optics: { focal_length_mm: null, pitch_um: 3.45, mounting: 'half_turn' },
   something_new: 1,
 };
@@ -17,6 +18,7 @@ describe('settings', () => {
       unit: 'mm/m',
       theme: 'night',
       average_s: 3,
+      calibration: '/data/bench.json',
       optics: { focal_length_mm: null, pitch_um: 3.45, mounting: 'half_turn' },
     });
   });

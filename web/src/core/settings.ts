@@ -19,6 +19,8 @@ export interface Settings {
   unit: AngleUnit;
   theme: Theme;
   average_s: number;
+  /** Path of the calibration file chosen, on the service's machine. */
+  calibration: string | null;
   optics: Optics;
 }
 
@@ -26,6 +28,7 @@ export const FIRST_SETTINGS: Settings = {
   unit: 'arcsec',
   theme: 'auto',
   average_s: 1,
+  calibration: null,
   optics: { focal_length_mm: null, pitch_um: null, mounting: 'straight' },
 };
 
@@ -43,6 +46,7 @@ export function settingsOf(value: unknown): Settings {
     unit: fields.oneOf('unit', UNITS),
     theme: fields.oneOf('theme', THEMES),
     average_s: fields.number('average_s'),
+    calibration: fields.textOrNull('calibration'),
     optics: {
       focal_length_mm: optics.numberOrNull('focal_length_mm'),
       pitch_um: optics.numberOrNull('pitch_um'),

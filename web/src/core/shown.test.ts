@@ -1,6 +1,6 @@
 import { describe, expect, it } from 'vitest';
-import type { Average, Zero } from './protocol';
-import { shownAngle, shownPosition, type Newest } from './shown';
+import type { Average, Newest, Zero } from './protocol';
+import { shownAngle, shownPosition } from './shown';
 
 const newest: Newest = {
   x_arcsec: 10.5,

@@ -1,4 +1,4 @@
-import type { Average, Zero } from './protocol';
+import type { Average, Newest, Zero } from './protocol';
 import type { Spread } from './statistics';
 import { spreadFromArcsec, fromArcsec, type AngleUnit, type Unit } from './units';
 
@@ -25,19 +25,6 @@ export interface Shown {
   /** Quality words of the newest reading. */
   quality: readonly string[];
   relative: boolean;
-}
-
-/** The newest reading, one row of the stream. */
-export interface Newest {
-  x_arcsec: number | null;
-  y_arcsec: number | null;
-  x_sd_arcsec: number | null;
-  y_sd_arcsec: number | null;
-  x_u_arcsec: number | null;
-  y_u_arcsec: number | null;
-  x_px: number | null;
-  y_px: number | null;
-  quality: readonly string[];
 }
 
 export const NOTHING: AxisShown = { value: null, noise: null, u: null };

@@ -1,4 +1,6 @@
 import uPlot from 'uplot';
+import { lengthWords } from '../core/clock';
+import { alone } from '../core/envelope';
 import { LANES_TOP, type Lanes } from '../core/lanes';
 
 export interface Flag {
@@ -6,7 +8,7 @@ export interface Flag {
   text: string;
 }
 
-/** What the plot asks for at each drawing; the strip's component answers from its state. */
+/** What is drawn: the part of time shown, the lanes in it, the marks and flags. */
 export interface Scene {
   from_s: number;
   to_s: number;
@@ -14,6 +16,9 @@ export interface Scene {
   timeMarks: { at_s: number; text: string }[];
   flags: readonly Flag[];
 }
+
+/** `lines`: X and Y. `envelope`: their means, then lowest and highest of X, and of Y. */
+export type Manner = 'lines' | 'envelope';
 
 interface Palette {
   ink: string;
@@ -40,17 +45,21 @@ function paletteOf(element: Element): Palette {
   };
 }
 
-export class StripPlot {
+/** Two lanes over time, X above Y. */
+export class LanePlot {
   private readonly plot: uPlot;
   private palette: Palette;
   private scene: Scene | null = null;
 
   constructor(
     private readonly host: HTMLElement,
+    private readonly manner: Manner,
     onCursor: (t_s: number | null) => void,
   ) {
     this.palette = paletteOf(host);
-    this.plot = new uPlot(this.options(onCursor), [[], [], []], host);
+    const options = this.options(onCursor);
+    const empty = options.series.map((): number[] => []) as uPlot.AlignedData;
+    this.plot = new uPlot(options, empty, host);
   }
 
   draw(scene: Scene): void {
@@ -74,6 +83,19 @@ export class StripPlot {
     return Math.min(1, Math.max(0, (clientX - box.left) / box.width));
   }
 
+  /** The time at a place on the screen. */
+  timeAt(clientX: number): number {
+    return this.plot.posToVal(this.share(clientX) * this.widthPx, 't');
+  }
+
+  /** Marks a stretch between two places on the screen; null takes the mark away. */
+  mark(stretch: [fromX: number, toX: number] | null): void {
+    const [a, b] = (stretch ?? [0, 0]).map((x) => this.share(x) * this.widthPx).sort((p, q) => p - q);
+    const [left = 0, right = 0] = stretch === null ? [] : [a, b];
+    const height = this.plot.over.clientHeight;
+    this.plot.setSelect({ left, top: 0, width: right - left, height }, false);
+  }
+
   get widthPx(): number {
     return this.plot.over.clientWidth;
   }
@@ -95,7 +117,13 @@ export class StripPlot {
         t: { time: false, auto: false },
         lanes: { auto: false, range: [0, LANES_TOP] },
       },
-      series: [{ scale: 't' }, this.line('x'), this.line('y')],
+      series: [
+        { scale: 't' },
+        this.line('x'),
+        this.line('y'),
+        ...(this.manner === 'lines' ? [] : [this.edge(), this.edge(), this.edge(), this.edge()]),
+      ],
+      bands: this.manner === 'lines' ? [] : [this.band('x', 4, 3), this.band('y', 6, 5)],
       axes: [
         {
           scale: 't',
@@ -138,8 +166,24 @@ export class StripPlot {
       stroke: () => this.palette[axis],
       width: 1.25,
       spanGaps: false,
-      points: { show: false },
+      points: {
+        show: true,
+        size: 4,
+        stroke: () => this.palette[axis],
+        fill: () => this.palette[axis],
+        // Only those that no line shows; as many as there are would hide it.
+        filter: (plot, i) => alone(plot.data[i] ?? []),
+      },
     };
+  }
+
+  /** Highest and lowest: the band between them is what is seen. */
+  private edge(): uPlot.Series {
+    return { scale: 'lanes', width: 0, spanGaps: false, points: { show: false } };
+  }
+
+  private band(axis: 'x' | 'y', high: number, low: number): uPlot.Band {
+    return { series: [high, low], fill: () => `${this.palette[axis]}3d` };
   }
 
   /** Words in the gaps, flags of events, and a rule between the lanes. */
@@ -165,7 +209,7 @@ export class StripPlot {
     for (const [from_s, to_s] of scene.lanes.gaps) {
       const a = Math.max(left, at(from_s));
       const b = Math.min(left + width, at(to_s));
-      const text = `no reading ${(to_s - from_s).toFixed(1)} s`;
+      const text = `no reading ${lengthWords(to_s - from_s)}`;
       if (b - a > ctx.measureText(text).width + 12 * ratio) {
         ctx.fillText(text, (a + b) / 2, top + height / 2);
       }
