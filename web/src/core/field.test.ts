@@ -7,10 +7,29 @@ describe('the trail', () => {
   it('has the newest row, gaps, and not more points than can be seen', () => {
     const columns = new Columns(1000);
     for (let n = 0; n < 6000; n++) columns.append(readings([n], 0.01), 1);
-    const ink = inkOf(columns, fieldPlace('arcsec', null), 0, 60);
+    const ink = inkOf(columns, fieldPlace('arcsec', null), 0, 60, 1);
     expect(ink.t_s.at(-1)).toBeCloseTo(59.99, 9);
-    expect(ink.t_s.length).toBeLessThanOrEqual(1802);
+    expect(ink.t_s.length).toBeLessThanOrEqual(602);
     expect(ink.t_s.length).toBeGreaterThan(300);
+  });
+
+  it('goes where the averaged value goes', () => {
+    // X is the row's number, ten rows a second: the mean of the last second lies 4.5 rows back.
+    const columns = new Columns(1000);
+    for (let n = 0; n < 900; n++) columns.append(readings([n]), 1);
+    const ink = inkOf(columns, fieldPlace('arcsec', null), 30, 89.95, 0.95);
+    expect(ink.x.at(-1)).toBeCloseTo(899 - 4.5, 9);
+    expect(ink.x[0]).toBeCloseTo(300 - 4.5, 9);
+    expect(ink.y.at(-1)).toBeCloseTo(-(899 - 4.5), 9);
+  });
+
+  it('leaves doubtful readings out of the mean, but shows one alone', () => {
+    const columns = new Columns(1000);
+    columns.append({ ...readings([0, 1]), quality: [['dim'], ['dim']] }, 1);
+    const doubtful = inkOf(columns, fieldPlace('arcsec', null), 0, 1, 1);
+    expect(doubtful.x).toEqual([0, 1]);
+    columns.append(readings([2]), 1);
+    expect(inkOf(columns, fieldPlace('arcsec', null), 0, 1, 1).x.at(-1)).toBe(2);
   });
 });
 

@@ -45,30 +45,51 @@ export interface Ink {
   y: (number | null)[];
 }
 
-const MOST_POINTS = 1800;
+const MOST_POINTS = 600;
 
-/** The way between two times, thinned to what a small drawing can show; the newest row always. */
-export function inkOf(columns: Columns, place: Place, from_s: number, to_s: number): Ink {
-  const first = columns.indexAt(from_s);
+/**
+ * The way between two times as the display shows it: each point is the mean over the `window_s`
+ * before it of the readings without a doubt, or the reading alone where there are none. Thinned to
+ * what a small drawing can show; the newest row always.
+ */
+export function inkOf(
+  columns: Columns,
+  place: Place,
+  from_s: number,
+  to_s: number,
+  window_s: number,
+): Ink {
   const last = Math.min(columns.length, columns.indexAt(to_s + 1e-6));
   const bin_s = (to_s - from_s) / MOST_POINTS;
   const xs = columns.of(place.xSeries);
   const ys = columns.of(place.ySeries);
   const ink: Ink = { t_s: [], x: [], y: [] };
-  const add = (i: number): void => {
-    const x = xs[i] ?? null;
-    const y = ys[i] ?? null;
-    ink.t_s.push(columns.t_s[i] ?? 0);
-    ink.x.push(x === null ? null : place.x(x));
-    ink.y.push(y === null ? null : place.y(y));
+  const mean = { first: columns.indexAt(from_s - window_s), n: 0, x: 0, y: 0 };
+  const count = (i: number, by: 1 | -1): void => {
+    const [x, y] = [xs[i] ?? null, ys[i] ?? null];
+    if (!columns.good[i] || x === null || y === null) return;
+    mean.n += by;
+    mean.x += by * x;
+    mean.y += by * y;
   };
   // The first row of each bin of absolute time: the same rows are taken again from frame to frame,
   // and the trail does not shimmer.
   let before = Number.NaN;
-  for (let i = first; i < last; i++) {
-    const bin = Math.floor((columns.t_s[i] ?? 0) / bin_s);
-    const gap = xs[i] === null && ink.x.at(-1) !== null;
-    if (bin !== before || gap || i === last - 1) add(i);
+  for (let i = mean.first; i < last; i++) {
+    const t_s = columns.t_s[i] ?? 0;
+    count(i, 1);
+    while (mean.first < i && (columns.t_s[mean.first] ?? 0) <= t_s - window_s) {
+      count(mean.first++, -1);
+    }
+    if (t_s < from_s) continue;
+    const bin = Math.floor(t_s / bin_s);
+    const [x, y] = [xs[i] ?? null, ys[i] ?? null];
+    const gap = x === null && ink.x.at(-1) !== null;
+    if (bin !== before || gap || i === last - 1) {
+      ink.t_s.push(t_s);
+      ink.x.push(x === null ? null : place.x(mean.n > 0 ? mean.x / mean.n : x));
+      ink.y.push(y === null ? null : place.y(mean.n > 0 ? mean.y / mean.n : y));
+    }
     before = bin;
   }
   return ink;

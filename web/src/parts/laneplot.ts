@@ -27,6 +27,8 @@ interface Palette {
   paper: string;
   x: string;
   y: string;
+  /** How much of a colour a band takes, as two hexadecimal digits. */
+  band: string;
 }
 
 const FONT_PX = 13;
@@ -42,6 +44,7 @@ function paletteOf(element: Element): Palette {
     paper: read('paper'),
     x: read('x'),
     y: read('y'),
+    band: read('band'),
   };
 }
 
@@ -66,6 +69,7 @@ export class LanePlot {
     this.scene = scene;
     this.plot.setData(scene.lanes.data, false);
     this.plot.setScale('t', { min: scene.from_s, max: scene.to_s });
+    this.plot.redraw(false, true); // the marks are new even where the time is the same
   }
 
   resize(width: number, height: number): void {
@@ -183,7 +187,7 @@ export class LanePlot {
   }
 
   private band(axis: 'x' | 'y', high: number, low: number): uPlot.Band {
-    return { series: [high, low], fill: () => `${this.palette[axis]}3d` };
+    return { series: [high, low], fill: () => this.palette[axis] + this.palette.band };
   }
 
   /** Words in the gaps, flags of events, and a rule between the lanes. */
@@ -209,10 +213,10 @@ export class LanePlot {
     for (const [from_s, to_s] of scene.lanes.gaps) {
       const a = Math.max(left, at(from_s));
       const b = Math.min(left + width, at(to_s));
-      const text = `no reading ${lengthWords(to_s - from_s)}`;
-      if (b - a > ctx.measureText(text).width + 12 * ratio) {
-        ctx.fillText(text, (a + b) / 2, top + height / 2);
-      }
+      const length = lengthWords(to_s - from_s);
+      const fits = (text: string): boolean => b - a > ctx.measureText(text).width + 8 * ratio;
+      const text = [`no reading ${length}`, length].find(fits);
+      if (text !== undefined) ctx.fillText(text, (a + b) / 2, top + height / 2);
     }
     this.drawFlags(ctx, scene, at, { left, top, right: left + width, base }, ratio);
     ctx.restore();
