@@ -1,6 +1,7 @@
 import { readdirSync, readFileSync } from 'node:fs';
+import type { ClientRequest, IncomingMessage } from 'node:http';
 import { svelte } from '@sveltejs/vite-plugin-svelte';
-import type { Plugin } from 'vite';
+import type { Plugin, ProxyOptions } from 'vite';
 import { defineConfig } from 'vitest/config';
 
 // The service is asked on the port it uses by default; another one comes in through the
@@ -37,6 +38,20 @@ function licenceOf(name: string): string {
   throw new Error(`${name} is built in but has no licence file`);
 }
 
+/**
+ * The service answers its own page only. What the page served here asks is passed on as if it were
+ * that one; any other page's request keeps its origin, and is refused.
+ */
+const ownOrigin: NonNullable<ProxyOptions['configure']> = (proxy) => {
+  const rename = (passedOn: ClientRequest, asked: IncomingMessage): void => {
+    if (asked.headers.origin === `http://${asked.headers.host}`) {
+      passedOn.setHeader('origin', service);
+    }
+  };
+  proxy.on('proxyReq', rename);
+  proxy.on('proxyReqWs', rename);
+};
+
 export default defineConfig({
   base: './',
   plugins: [svelte(), licences()],
@@ -49,10 +64,7 @@ export default defineConfig({
   },
   server: {
     host: '127.0.0.1',
-    proxy: {
-      // The service answers its own page only, so what this server passes on looks like it.
-      '/api': { target: service, ws: true, changeOrigin: true, headers: { origin: service } },
-    },
+    proxy: { '/api': { target: service, ws: true, changeOrigin: true, configure: ownOrigin } },
   },
   test: { environment: 'node', css: true, include: ['src/**/*.test.ts'] },
 });
