@@ -10,7 +10,7 @@ import {
   writeSettings,
 } from './core/api';
 import { Columns } from './core/columns';
-import { withEvent } from './core/events';
+import { brokenOff, withEvent } from './core/events';
 import { Feed } from './core/feed';
 import { ProtocolError } from './core/fields';
 import { nextFrame, Pace, unhurried } from './core/pace';
@@ -67,6 +67,8 @@ export class Instrument {
 
   readonly columns = new Columns(KEPT_S);
 
+  private seenBroken: string | undefined = $state();
+
   notices: Notice[] = $derived(
     noticesOf(
       this.connected,
@@ -80,6 +82,11 @@ export class Instrument {
   zero = $derived(this.status?.zero ?? null);
   /** The run being recorded. */
   run = $derived(this.status?.run ?? null);
+  /** Why a run broke off, until somebody has seen it or another one begins. */
+  broken: SourceEvent | null = $derived.by(() => {
+    const event = brokenOff(this.events);
+    return event?.t_utc === this.seenBroken ? null : event;
+  });
   image_px: [number, number] = $derived([
     this.status?.image_width_px ?? 640,
     this.status?.image_height_px ?? 480,
@@ -176,6 +183,10 @@ export class Instrument {
 
   takeZeroBack(): Promise<void> {
     return this.ask(takeZeroBack);
+  }
+
+  seeBroken(): void {
+    this.seenBroken = this.broken?.t_utc;
   }
 
   startRun(run: NewRun): Promise<void> {

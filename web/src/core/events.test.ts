@@ -1,5 +1,5 @@
 import { describe, expect, it } from 'vitest';
-import { eventWord, withEvent } from './events';
+import { brokenOff, eventWord, withEvent } from './events';
 import type { SourceEvent } from './protocol';
 
 function at(second: number, text = `at ${second}`): SourceEvent {
@@ -26,6 +26,14 @@ describe('events', () => {
 
   it('let the oldest go', () => {
     expect(all([at(1), at(2), at(3), at(4), at(5)]).map((event) => event.t_s)).toEqual([5, 4, 3, 2]);
+  });
+
+  it('tell of a run that broke off until another one begins', () => {
+    const failed = { ...at(2), event: 'log_failed' };
+    const begun = { ...at(1), event: 'run_started' };
+    expect(brokenOff([begun])).toBeNull();
+    expect(brokenOff([at(3), failed, begun])).toBe(failed);
+    expect(brokenOff([{ ...at(4), event: 'run_started' }, failed, begun])).toBeNull();
   });
 
   it('have words for people, also unknown ones', () => {

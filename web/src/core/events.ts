@@ -30,3 +30,10 @@ export function withEvent(
   const repeated = before[0]?.event === event.event && before[0].text === event.text;
   return [...later, event, ...before.slice(repeated ? 1 : 0)].slice(0, most);
 }
+
+/** The event that says a run could not be written any more, while no other has begun since. */
+export function brokenOff(events: readonly SourceEvent[]): SourceEvent | null {
+  const begun = events.findIndex((event) => event.event === 'run_started');
+  const since = begun < 0 ? events : events.slice(0, begun);
+  return since.find((event) => event.event === 'log_failed') ?? null;
+}
