@@ -37,7 +37,6 @@ export const ACTIONS: Record<string, Action> = {
   '-': 'wider',
   End: 'now',
   '0': 'whole',
-  Home: 'whole',
   s: 'settings',
   '?': 'help',
 };
@@ -59,6 +58,9 @@ export const KEYS: { keys: string[]; does: string }[] = [
   { keys: ['S'], does: 'settings' },
   { keys: ['?'], does: 'this list' },
 ];
+
+/** What would happen unseen anywhere but in Watch. */
+export const ONLY_IN_WATCH: ReadonlySet<Action> = new Set(['zero', 'unzero', 'hold']);
 
 export interface Press {
   key: string;

@@ -22,6 +22,12 @@ export class Log {
 
   whole: Part = $derived({ from_s: 0, to_s: Math.max(this.run?.duration_s ?? 0, 1e-3) });
   shown: Part = $derived(this.part ?? this.whole);
+  /** The whole run is here, and there is no angle in it. */
+  blank = $derived(
+    this.part === null &&
+      this.series !== null &&
+      this.series.x_min_arcsec.every((value) => value === null),
+  );
   /** A few readings: there is nothing to see in less. */
   shortest_s = $derived(Math.max(0.5, 5 * (this.run?.every_s ?? 0)));
 
