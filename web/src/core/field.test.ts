@@ -9,7 +9,7 @@ describe('the trail', () => {
     for (let n = 0; n < 6000; n++) columns.append(readings([n], 0.01), 1);
     const ink = inkOf(columns, fieldPlace('arcsec', null), 0, 60, 1);
     expect(ink.t_s.at(-1)).toBeCloseTo(59.99, 9);
-    expect(ink.t_s.length).toBeLessThanOrEqual(602);
+    expect(ink.t_s.length).toBeLessThanOrEqual(1802);
     expect(ink.t_s.length).toBeGreaterThan(300);
   });
 

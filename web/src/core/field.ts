@@ -45,7 +45,7 @@ export interface Ink {
   y: (number | null)[];
 }
 
-const MOST_POINTS = 600;
+const MOST_POINTS = 1800;
 
 /**
  * The way between two times as the display shows it: each point is the mean over the `window_s`
