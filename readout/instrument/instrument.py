@@ -103,6 +103,7 @@ class Instrument:
         self._average: tuple[float, Average] | None = None
         self._zero: Zero | None = None
         self._newest: tuple[Observation, Reading] | None = None
+        self._came_ns = 0
         self._acquisition: Acquisition | None = None
         self._source: str | None = None
         self._target = Target.CROSSHAIR
@@ -134,7 +135,7 @@ class Instrument:
             self._source, self._target = source, target
             self._state, self._detail = State.OPENING, ""
             self._missed += before.missed if before else 0
-            self._size_px = self._calibration = None
+            self._size_px = self._calibration = self._newest = None
             self._size_known = False
             self._forget_readings()
             self._acquisition = Acquisition(
@@ -162,8 +163,15 @@ class Instrument:
 
     @property
     def newest(self) -> tuple[Observation, Reading] | None:
+        """Of the source in use; None before its first frame and once it is lost or has failed."""
         with self._lock:
             return self._newest
+
+    @property
+    def age_s(self) -> float | None:
+        """Time since the newest reading came; None while there is none."""
+        with self._lock:
+            return None if self._newest is None else (self._clock_ns() - self._came_ns) * 1e-9
 
     @property
     def source(self) -> str | None:
@@ -210,13 +218,13 @@ class Instrument:
             )
 
     def average(self) -> Average | None:
-        """The average over the trailing window; None before the first reading.
+        """The average over the trailing window; None before the first reading and while none comes.
 
         It is taken anew after a hundredth of the window, so that a long one costs no more than a
         short one.
         """
         with self._lock:
-            if self._newest is None:
+            if self._newest is None or self._state is State.STALLED:
                 return None
             t_s, window_s = self._newest[1].t_s, self._window.window_s
             if self._average is None or abs(t_s - self._average[0]) >= window_s / 100:
@@ -290,6 +298,7 @@ class Instrument:
             reading = reading_of(observation, self._calibration, t_s)
             self._window.add(reading)
             self._newest = observation, reading
+            self._came_ns = self._clock_ns()
             self._frames += 1
             self._unusable += not observation.sighting.found
         for listener in self.on_reading:
@@ -331,6 +340,8 @@ class Instrument:
             before, self._state, self._detail = self._state, state, detail
             if state is State.LOST:
                 self._size_known = False
+            if state in (State.LOST, State.FAILED):
+                self._newest = None
                 self._forget_readings()
         if state is State.MEASURING:
             happened = "recovered" if before is State.STALLED else "opened"

@@ -14,7 +14,7 @@ from readout import __version__
 from readout.angle import Calibration
 from readout.capture.mjpeg import without_password
 from readout.capture.open import SourceDescription
-from readout.instrument import Average, Event, Status, Zero
+from readout.instrument import Average, Event, State, Status, Zero
 from readout.instrument.recorder import Recording
 from readout.model import Arm, Observation, Quality, Reading
 from readout.rows import rounded
@@ -37,7 +37,9 @@ class AverageMessage(TypedDict):
 
 
 class ReadingMessage(TypedDict):
-    """One reading. ``x_rel_arcsec``: absolute minus zero, null while no zero is set."""
+    """One reading. ``x_rel_arcsec``: absolute minus zero, null while no zero is set. ``state``: of
+    the source, now; ``age_s``: time since the reading came. ``average`` is null while none comes.
+    """
 
     seq: int
     t_utc: str
@@ -56,6 +58,8 @@ class ReadingMessage(TypedDict):
     y_sd_px: Number
     quality: list[str]
     calibration_id: str | None
+    state: str
+    age_s: Number
     average: AverageMessage | None
 
 
@@ -199,7 +203,9 @@ def average_message(average: Average | None) -> AverageMessage | None:
     }
 
 
-def reading_message(reading: Reading, zero: Zero | None, average: Average | None) -> ReadingMessage:
+def reading_message(
+    reading: Reading, zero: Zero | None, average: Average | None, *, state: State, age_s: float
+) -> ReadingMessage:
     """The newest reading, against the zero if there is one."""
     return {
         "seq": reading.seq,
@@ -219,6 +225,8 @@ def reading_message(reading: Reading, zero: Zero | None, average: Average | None
         "y_sd_px": rounded(reading.y_sd_px),
         "quality": reading.quality.words(),
         "calibration_id": reading.calibration_id,
+        "state": state.value,
+        "age_s": rounded(age_s),
         "average": average_message(average),
     }
 

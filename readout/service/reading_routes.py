@@ -37,17 +37,23 @@ def reading_routes(
     @routes.get("/reading")
     def get_reading() -> ReadingMessage:
         """The newest reading, and the average over the trailing window."""
-        newest = instrument.newest
-        if newest is None:
-            raise Problem(404, f"there is no reading yet: {_why(instrument)}")
-        return reading_message(newest[1], instrument.zero, instrument.average())
+        newest, age_s = instrument.newest, instrument.age_s
+        if newest is None or age_s is None:
+            raise Problem(404, f"there is no reading: {_why(instrument)}")
+        return reading_message(
+            newest[1],
+            instrument.zero,
+            instrument.average(),
+            state=instrument.status().state,
+            age_s=age_s,
+        )
 
     @routes.get("/sighting")
     def get_sighting() -> SightingMessage:
         """Where the return image lies in the newest picture, and its arms."""
         newest = instrument.newest
         if newest is None:
-            raise Problem(404, f"there is no picture yet: {_why(instrument)}")
+            raise Problem(404, f"there is no picture: {_why(instrument)}")
         return sighting_message(newest[0])
 
     @routes.get("/recent", response_model=ReadingsMessage)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import math
+from typing import Any
 
 import cv2
 import numpy as np
@@ -13,6 +14,7 @@ from hypothesis import strategies as st
 from starlette.testclient import TestClient
 
 from readout.errors import SourceLost
+from readout.instrument import State
 from readout.model import Arm, Quality, Reading, Sighting, no_sighting
 from readout.service.feed import Feed
 from readout.service.messages import (
@@ -49,7 +51,7 @@ def test_no_number_that_is_none_ever_reaches_the_wire(values: list[float], flags
     arm = Arm(*values[:4])
     seen = Sighting(values[0], values[1], (1.0, 0.0, 1.0), Quality(flags), arm, None, values[2])
     messages = [
-        encode(reading_message(reading, None, None)),
+        encode(reading_message(reading, None, None, state=State.MEASURING, age_s=values[0])),
         encode(readings_message([reading], dropped=0, average=None)),
         encode(recent_message(feed.rows(), None)),
         encode(sighting_message(observation(0, clock, seen=seen))),
@@ -99,6 +101,51 @@ def test_reading_and_zero(rig: Rig, client: TestClient) -> None:
     assert client.get("/api/status").json()["zero"]["n"] == 10
     assert client.delete("/api/zero").status_code == 204
     assert client.get("/api/reading").json()["x_rel_arcsec"] is None
+
+
+def test_readings_of_another_source_are_not_shown(rig: Rig, client: TestClient) -> None:
+    rig.measure()
+    assert client.get("/api/reading").json()["state"] == "ended"
+    assert client.get("/api/sighting").status_code == 200
+    rig.measure([SourceLost("camera 77 is not connected")])
+    for path in ("/api/reading", "/api/sighting"):
+        answer = client.get(path)
+        assert answer.status_code == 404
+        assert "camera 77 is not connected" in answer.json()["detail"]
+
+
+def test_a_lost_source_has_no_reading_until_it_is_back(rig: Rig, client: TestClient) -> None:
+    seen: dict[State, int] = {}
+
+    def look(state: State, _: str) -> None:
+        seen[state] = client.get("/api/reading").status_code
+        if state is State.LOST:
+            rig.instrument.stop()
+
+    rig.instrument.on_state.append(look)
+    rig.measure([None, None, SourceLost("gone")])
+    assert seen[State.MEASURING] == 200
+    assert seen[State.LOST] == 404
+
+
+def test_a_reading_says_how_old_it_is_and_a_stalled_source_has_no_average(
+    rig: Rig, client: TestClient
+) -> None:
+    seen: dict[State, dict[str, Any]] = {}
+
+    def look(state: State, _: str) -> None:
+        if state is not State.OPENING:
+            seen[state] = client.get("/api/reading").json()
+
+    rig.instrument.on_state.append(look)
+    rig.measure([*[None] * 5, 0.9])
+    assert seen[State.MEASURING]["state"] == "measuring"
+    assert seen[State.MEASURING]["age_s"] == pytest.approx(0.0)
+    stalled = seen[State.STALLED]
+    assert (stalled["seq"], stalled["state"], stalled["average"]) == (4, "stalled", None)
+    assert 0.5 < stalled["age_s"] <= 0.9
+    rig.clock.advance(3600.0)
+    assert client.get("/api/reading").json()["age_s"] > 3600
 
 
 def test_zero_is_refused_while_flagged(rig: Rig, client: TestClient) -> None:
