@@ -5,6 +5,8 @@ Every message is one line that says what is wrong and what to do; the commands p
 
 from __future__ import annotations
 
+import errno
+
 
 class ReadoutError(Exception):
     """The work could not be done; the message is meant for the person at the keyboard."""
@@ -36,3 +38,15 @@ class NotNow(ReadoutError):
 
 class NotRecorded(ReadoutError):
     """Readings could not be written to the log: nothing after this is kept until a new run."""
+
+
+class NoRoom(ReadoutError):
+    """The disk is full: make room, then do it again."""
+
+
+def cannot_write(place: object, error: OSError) -> ReadoutError:
+    """What to raise where ``error`` kept ``place``, a file or folder, from being written."""
+    reason = error.strerror or error
+    if error.errno in (errno.ENOSPC, errno.EDQUOT):
+        return NoRoom(f"cannot write {place} ({reason}): make room on the disk")
+    return BadInput(f"cannot write {place} ({reason}): choose another place")

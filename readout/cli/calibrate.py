@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 import typer
 
 from readout.cli.options import JsonOption
+from readout.cli.results import OverwriteOption, refuse_loss
 from readout.cli.say import note, print_json, print_line, progress
 from readout.units import decimals_for, signed
 
@@ -32,6 +33,7 @@ def calibrate(
     report: Annotated[
         Path | None, typer.Option(metavar="FILE.html", help="Write a page with figure and table.")
     ] = None,
+    overwrite: OverwriteOption = False,
 ) -> None:
     """Calibrate from frames taken at known mirror tilts.
 
@@ -43,6 +45,9 @@ def calibrate(
     from readout.instrument.calibrating import calibrate_set
     from readout.utc import utc_text
 
+    for result in (out, report):
+        if result is not None:
+            refuse_loss(result, overwrite=overwrite, inputs=[folder], makes_folder=True)
     given = read_calibration_set(folder)
     with progress("frames", len(given.tilts)) as show:
         made = calibrate_set(given, created_utc=utc_text(time.time_ns()), on_frame=show)

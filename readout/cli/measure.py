@@ -19,7 +19,8 @@ from readout.cli.options import (
     JsonOption,
     SettingsOption,
 )
-from readout.cli.say import note, opened, print_json, print_line, progress, warn
+from readout.cli.results import OverwriteOption, ReadingsFile, refuse_loss
+from readout.cli.say import note, print_json, print_line, progress, warn
 from readout.errors import BadInput
 from readout.files.readings_file import ReadingsWriter
 from readout.model import Reading, Target
@@ -31,6 +32,7 @@ EXAMPLE = "Example: `readout measure frames --calibration frames/calibration.jso
 if TYPE_CHECKING:
     from readout.instrument import Optics
 
+STDOUT = Path("-")
 Write = Callable[[Reading], None]
 
 
@@ -41,6 +43,7 @@ def measure(
     csv: Annotated[
         Path | None, typer.Option(metavar="FILE", help="Write rows to this file; - for here.")
     ] = None,
+    overwrite: OverwriteOption = False,
     json: JsonOption = False,
     frames: Annotated[
         int | None, typer.Option(min=1, metavar="N", help="End after N frames.")
@@ -54,11 +57,17 @@ def measure(
 
     A scale is needed: a calibration file, or focal length and pixel pitch in the settings (the
     simulator brings its own). An endless source is measured until Ctrl-C; every row is written
-    when it is measured.
+    when it is measured. A CSV file that is there already is replaced only with --overwrite, and
+    not before the first row.
     """
     from readout.instrument import Instrument
     from readout.instrument.measuring import Measuring
 
+    if json and csv == STDOUT:
+        raise typer.BadParameter("--json and --csv - would both write here: give --csv a file")
+    if csv is not None and csv != STDOUT:
+        inputs = [Path(source), *([calibration] if calibration else [])]
+        refuse_loss(csv, overwrite=overwrite, inputs=inputs)
     scale = _scale(source, calibration, settings)
     if target is None:
         target = scale.target if isinstance(scale, Calibration) else Target.CROSSHAIR
@@ -112,9 +121,8 @@ def _writing(csv: Path | None, *, json: bool) -> Iterator[Write]:
         if json:
             writes.append(lambda reading: print_json(reading_row(reading)))
         if csv is not None:
-            to_stdout = str(csv) == "-"
-            file = sys.stdout if to_stdout else stack.enter_context(opened(csv))
-            writes.append(stack.enter_context(ReadingsWriter(file)).write)
+            file = ReadingsWriter(sys.stdout) if csv == STDOUT else ReadingsFile(csv)
+            writes.append(stack.enter_context(file).write)
         if not writes:
             writes.append(lambda reading: print_line(_words(reading)))
 

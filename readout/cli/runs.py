@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING, Annotated
 import typer
 
 from readout.cli.options import DataOption, JsonOption, data_folder
+from readout.cli.results import OverwriteOption, refuse_loss
 from readout.cli.say import opened, print_json, print_line, progress
 
 if TYPE_CHECKING:
@@ -81,6 +82,7 @@ def export(
         Path | None,
         typer.Option(metavar="FILE", help="Copy the run, whole, into a new database instead."),
     ] = None,
+    overwrite: OverwriteOption = False,
     data: DataOption = None,
 ) -> None:
     """Write all rows of one run, or hand the whole of it over as a file of its own."""
@@ -89,13 +91,22 @@ def export(
     if sqlite is not None:
         with _log(data) as reader:
             path = reader.path
-        copy_run(path, run, sqlite)
+            reader.run(run)
+        refuse_loss(sqlite, overwrite=overwrite, inputs=[path])
+        if not sqlite.exists():
+            copy_run(path, run, sqlite)
+            return
+        fresh = sqlite.with_name(f".{sqlite.name}.new")  # the old one stays until this is whole
+        fresh.unlink(missing_ok=True)
+        copy_run(path, run, fresh)
+        fresh.replace(sqlite)
         return
     with _log(data) as reader:
         pieces = csv_of(reader, run) if form is Form.CSV else ndjson_of(reader, run)
         if out is None:
             sys.stdout.writelines(pieces)
             return
+        refuse_loss(out, overwrite=overwrite, inputs=[reader.path])
         with opened(out) as file, progress("rows", reader.run(run).readings) as tell:
             rows = 0
             for piece in pieces:

@@ -12,7 +12,7 @@ from typing import Any, NoReturn, TextIO
 
 import typer
 
-from readout.errors import BadInput
+from readout.errors import cannot_write
 
 QUIET_S = 1.0
 """Work shorter than this shows no progress."""
@@ -51,7 +51,7 @@ def opened(path: Path) -> TextIO:
     try:
         return path.open("w", encoding="utf-8", newline="")
     except OSError as error:
-        raise BadInput(f"cannot write {path} ({error.strerror}): choose another place") from error
+        raise cannot_write(path, error) from error
 
 
 @contextmanager

@@ -6,13 +6,14 @@ import os
 import tempfile
 from pathlib import Path
 
-from readout.errors import BadInput
+from readout.errors import cannot_write
 
 
 def write_text_whole(path: Path, text: str) -> None:
     """Write ``text`` as UTF-8 to ``path`` through a new file in the same folder.
 
-    The folder is made if it is missing. Raises BadInput where it cannot be written to.
+    The folder is made if it is missing. Raises BadInput where it cannot be written to, NoRoom
+    on a full disk.
     """
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
@@ -27,6 +28,4 @@ def write_text_whole(path: Path, text: str) -> None:
         finally:
             fresh.unlink(missing_ok=True)
     except OSError as error:
-        raise BadInput(
-            f"cannot write {path} ({error.strerror or error}): choose another place"
-        ) from error
+        raise cannot_write(path, error) from error

@@ -11,7 +11,7 @@ from collections.abc import Callable, Iterable
 from pathlib import Path
 
 from readout.angle import Calibration
-from readout.errors import BadInput
+from readout.errors import BadInput, cannot_write
 from readout.files.calibration_file import save_calibration
 from readout.files.pictures import write_picture
 from readout.model import Pixels
@@ -51,9 +51,7 @@ def write_frameset(
                 if on_frame is not None:
                     on_frame(n)
     except OSError as error:
-        raise BadInput(
-            f"cannot write to {folder} ({error.strerror or error}): choose another place"
-        ) from error
+        raise cannot_write(folder, error) from error
     return n
 
 

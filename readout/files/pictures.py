@@ -17,7 +17,7 @@ from pathlib import Path
 import cv2
 import numpy as np
 
-from readout.errors import BadInput
+from readout.errors import BadInput, cannot_write
 from readout.files import png
 from readout.model import Pixels
 
@@ -146,7 +146,7 @@ def write_picture(path: Path, pixels: Pixels, *, full_scale: int | None = None) 
     try:
         path.write_bytes(png.with_significant_bits(data, bits) if keeps_bits else data)
     except OSError as error:
-        raise BadInput(f"cannot write {path} ({error.strerror}): choose another place") from error
+        raise cannot_write(path, error) from error
 
 
 def encode_jpeg(pixels: Pixels, *, full_scale: int | None = None, quality: int = 90) -> bytes:

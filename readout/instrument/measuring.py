@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 
-from readout.errors import BadInput
+from readout.errors import BadInput, ReadoutError
 from readout.instrument.acquisition import Acquisition, State
 from readout.instrument.instrument import Instrument
 from readout.model import Reading, Target
@@ -33,7 +33,7 @@ class Measuring:
         self._seconds = seconds
         self._acquisition: Acquisition | None = None
         self._failure: str | None = None
-        self._broken: OSError | None = None
+        self._broken: OSError | ReadoutError | None = None
         self.n = 0
         self.good = 0
         instrument.on_reading.append(self._take)
@@ -42,7 +42,7 @@ class Measuring:
     def run(self, source: str, *, target: Target) -> None:
         """Measure ``source``.
 
-        Raises BadInput if it cannot be used, and the OSError of ``write``; what was written before
+        Raises BadInput if it cannot be used, and the error of ``write``; what was written before
         stays.
         """
         self._acquisition = self._instrument.use(source, target=target)
@@ -64,7 +64,7 @@ class Measuring:
             return
         try:
             self._write(reading)
-        except OSError as error:  # a full disk, a reader who has left
+        except (OSError, ReadoutError) as error:  # a full disk, a reader who has left
             self._broken = error
             self.stop()
             return

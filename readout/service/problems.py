@@ -10,7 +10,7 @@ from fastapi.exceptions import RequestValidationError
 from fastapi.responses import JSONResponse
 from starlette.exceptions import HTTPException
 
-from readout.errors import BadInput, NotNow, ReadoutError
+from readout.errors import BadInput, NoRoom, NotNow, ReadoutError
 
 log = logging.getLogger(__name__)
 
@@ -53,6 +53,8 @@ def answer_with_problems(app: FastAPI) -> None:
                 return problem_response(422, str(error))
             case NotNow():
                 return problem_response(409, str(error))
+            case NoRoom():
+                return problem_response(507, str(error))
             case ReadoutError():
                 return problem_response(503, str(error))
             case _:
