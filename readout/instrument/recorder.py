@@ -20,7 +20,7 @@ from readout.files.calibration_file import calibration_document
 from readout.instrument.instrument import Event, Instrument
 from readout.instrument.joining import Intervals, Joined
 from readout.logbook import Logbook, NewRun, Spread
-from readout.logbook.writer import STOPPED
+from readout.logbook.statements import STOPPED
 from readout.model import Reading
 
 ENDED_WITH_READOUT = "readout was ended"

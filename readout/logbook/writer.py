@@ -8,8 +8,7 @@ next ``append``; a queue that is full refuses. Nothing is lost in silence.
 from __future__ import annotations
 
 import contextlib
-import json
-import math
+import logging
 import queue
 import sqlite3
 import threading
@@ -17,67 +16,43 @@ import time
 from collections.abc import Callable
 from concurrent.futures import Future
 from contextlib import ExitStack
-from dataclasses import dataclass, field
 from pathlib import Path
 from types import TracebackType
-from typing import Any, NamedTuple, Self, TypeVar
-
-import numpy as np
+from typing import Any, NamedTuple, Self
 
 from readout.errors import NotNow, NotRecorded
 from readout.logbook.connection import held, open_writing
-from readout.logbook.schema import LEVELS_S, key_of
-from readout.logbook.summary import UPSERT, AxisColumns, summarise
-from readout.model import Quality, Reading
+from readout.logbook.schema import key_of
+from readout.logbook.statements import (
+    CRASHED,
+    STOPPED,
+    UNWRITABLE,
+    NewRun,
+    Note,
+    Row,
+    Spread,
+    end_open_runs,
+    end_run,
+    in_transaction,
+    insert_run,
+    note_of_calibration,
+    note_of_event,
+    write,
+)
+from readout.model import Reading
+
+log = logging.getLogger(__name__)
 
 CAPACITY = 20_000
 """Rows the queue holds: longer than another program may keep the file locked."""
 
-CRASHED = "ended by a crash"
-STOPPED = "stopped"
-UNWRITABLE = "the log could not be written"
-
-_INSERT_READING = "INSERT INTO reading_row VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)"
-_INSERT_SPREAD = "INSERT INTO spread VALUES (?, ?, ?, ?)"
-
-
-@dataclass(frozen=True, slots=True)
-class NewRun:
-    """What is known of a run when it begins. ``every_s`` 0: every reading, else means."""
-
-    title: str
-    started_utc_ns: int
-    note: str = ""
-    source: str = ""
-    every_s: float = 0.0
-    settings: dict[str, Any] = field(default_factory=dict)
-    version: str = ""
-
-
-class Spread(NamedTuple):
-    """What a row that is a mean has besides: count, and scatter of what went into it."""
-
-    n: int
-    x_scatter_arcsec: float
-    y_scatter_arcsec: float
-
-
-class _Row(NamedTuple):
-    run_id: int
-    key: int
-    t_us: int
-    reading: Reading
-    spread: Spread | None
-
-
-class _Note(NamedTuple):
-    statement: str
-    values: tuple[object, ...]
-
 
 class _Job(NamedTuple):
+    """Work for the writing thread. ``begins``: with it a run begins, unburdened by what failed."""
+
     work: Callable[[sqlite3.Connection], Any]
     done: Future[Any]
+    begins: bool = False
 
 
 class Logbook:
@@ -99,7 +74,7 @@ class Logbook:
         self.path = path
         self._commit_every_s = commit_every_s
         self._on_failure = on_failure
-        self._inbox: queue.Queue[_Row | _Note | _Job | None] = queue.Queue(capacity)
+        self._inbox: queue.Queue[Row | Note | _Job | None] = queue.Queue(capacity)
         self._lock = threading.Lock()
         self._run_id: int | None = None
         self._failure: NotRecorded | None = None  # what callers are told
@@ -109,7 +84,7 @@ class Logbook:
             stack.enter_context(held(path))
             self._connection = open_writing(path)
             stack.callback(self._connection.close)
-            _end_open_runs(self._connection, CRASHED)
+            end_open_runs(self._connection, CRASHED)
             self._open = stack.pop_all()
         self._thread = threading.Thread(target=self._write_all, name="logbook", daemon=True)
         self._thread.start()
@@ -137,8 +112,8 @@ class Logbook:
         with self._lock:
             if self._run_id is not None and self._failure is None:
                 raise NotNow(f"run {self._run_id} is being recorded: stop it first")
-            run_id = int(self._do(lambda connection: self._begin(connection, run)))
-            self._failure, self._committed_seq, self._run_id = None, None, run_id
+            run_id = int(self._do(lambda connection: insert_run(connection, run), begins=True))
+            self._run_id = run_id
             return run_id
 
     def append(self, reading: Reading, *, t_s: float, spread: Spread | None = None) -> None:
@@ -150,19 +125,15 @@ class Logbook:
         if run_id is None:
             raise NotNow("no run is being recorded: start one first")
         key = key_of(run_id, reading.seq)
-        self._queue(_Row(run_id, key, round(t_s * 1e6), reading, spread))
+        self._queue(Row(run_id, key, round(t_s * 1e6), reading, spread))
 
     def note_calibration(self, from_seq: int, calibration_id: str, document: str) -> None:
         """Queue the calibration, whole, that the open run's readings have from ``from_seq`` on."""
-        values = self._run_id, from_seq, calibration_id, document
-        self._queue(_Note("INSERT OR REPLACE INTO calibration VALUES (?, ?, ?, ?)", values))
+        self._queue(note_of_calibration(self._run_id, from_seq, calibration_id, document))
 
     def note_event(self, t_utc_ns: int, event: str, text: str) -> None:
         """Queue something that happened, of the open run if there is one."""
-        values = self._run_id, t_utc_ns, event, text
-        self._queue(
-            _Note("INSERT INTO event (run_id, t_utc_ns, event, text) VALUES (?, ?, ?, ?)", values)
-        )
+        self._queue(note_of_event(self._run_id, t_utc_ns, event, text))
 
     def end(self, ended_utc_ns: int, ending: str = STOPPED) -> None:
         """End the open run; everything appended is written on return. Raises NotRecorded."""
@@ -171,7 +142,7 @@ class Logbook:
             if run_id is None:
                 return
             self._do(
-                lambda connection: _end_run(
+                lambda connection: end_run(
                     connection, run_id, ended_utc_ns, UNWRITABLE if self._failure else ending
                 )
             )
@@ -195,7 +166,7 @@ class Logbook:
         self._thread.join()
         self._open.close()
 
-    def _queue(self, item: _Row | _Note) -> None:
+    def _queue(self, item: Row | Note) -> None:
         if self._failure is not None:
             raise self._failure
         try:
@@ -207,10 +178,10 @@ class Logbook:
             )
             raise self._failure from None
 
-    def _do(self, work: Callable[[sqlite3.Connection], Any]) -> Any:
+    def _do(self, work: Callable[[sqlite3.Connection], Any], *, begins: bool = False) -> Any:
         """Have the writer do ``work`` after all that is queued, in a transaction of its own."""
         done: Future[Any] = Future()
-        job = _Job(work, done)
+        job = _Job(work, done, begins)
         while self._thread.is_alive():
             try:
                 self._inbox.put(job, timeout=0.1)
@@ -239,15 +210,11 @@ class Logbook:
         finally:  # also where a fault of ours ends the thread: nobody may go on in good faith
             self._failure = self._failure or self._closed()
 
-    def _begin(self, connection: sqlite3.Connection, run: NewRun) -> int:
-        run_id = _insert_run(connection, run)
-        self._broken = False
-        return run_id
-
-    def _commit(self, rows: list[_Row], notes: list[_Note]) -> None:
+    def _commit(self, rows: list[Row], notes: list[Note]) -> None:
         try:
-            _in_transaction(self._connection, lambda: _write(self._connection, rows, notes))
-        except sqlite3.Error as error:
+            in_transaction(self._connection, lambda: write(self._connection, rows, notes))
+        except Exception as error:
+            log.debug("a commit failed", exc_info=True)
             self._broken = True
             self._failure = self._not_recorded(error)
             self._on_failure(str(self._failure))
@@ -255,10 +222,10 @@ class Logbook:
             if rows:
                 self._committed_seq = rows[-1].reading.seq
 
-    def _gather(self) -> tuple[list[_Row], list[_Note], _Job | None, bool]:
+    def _gather(self) -> tuple[list[Row], list[Note], _Job | None, bool]:
         """What comes within one interval, up to a job or the end."""
-        rows: list[_Row] = []
-        notes: list[_Note] = []
+        rows: list[Row] = []
+        notes: list[Note] = []
         due_s: float | None = None
         while True:
             try:
@@ -267,9 +234,9 @@ class Logbook:
             except queue.Empty:
                 return rows, notes, None, True
             match item:
-                case _Row():
+                case Row():
                     rows.append(item)
-                case _Note():
+                case Note():
                     notes.append(item)
                 case _Job():
                     return rows, notes, item, True
@@ -280,144 +247,25 @@ class Logbook:
 
     def _answer(self, job: _Job) -> None:
         try:
-            result = _in_transaction(self._connection, lambda: job.work(self._connection))
-        except sqlite3.Error as error:
+            result = in_transaction(self._connection, lambda: job.work(self._connection))
+        except Exception as error:
+            log.debug("a job failed", exc_info=True)
             job.done.set_exception(self._not_recorded(error))
         except BaseException as error:
             job.done.set_exception(error)
             raise
         else:
+            if job.begins:  # here, so that no commit can fail between the beginning and its telling
+                self._broken, self._failure, self._committed_seq = False, None, None
             job.done.set_result(result)
 
-    def _not_recorded(self, error: sqlite3.Error) -> NotRecorded:
+    def _not_recorded(self, error: Exception) -> NotRecorded:
+        """What to tell; of a fault of our own, too: it must not pass for a run that goes on."""
+        remedy = (
+            "make room on the disk or look at the permissions"
+            if isinstance(error, sqlite3.Error)
+            else "please report it"
+        )
         return NotRecorded(
-            f"the log {self.path} cannot be written ({error}): make room on the disk or look at "
-            "the permissions, then start a new run"
+            f"the log {self.path} cannot be written ({error}): {remedy}, then start a new run"
         )
-
-
-_T = TypeVar("_T")
-
-
-def _in_transaction(connection: sqlite3.Connection, work: Callable[[], _T]) -> _T:
-    connection.execute("BEGIN IMMEDIATE")
-    try:
-        result = work()
-        connection.execute("COMMIT")
-    except BaseException:
-        if connection.in_transaction:  # a full disk may have rolled it back already
-            connection.execute("ROLLBACK")
-        raise
-    return result
-
-
-def _insert_run(connection: sqlite3.Connection, run: NewRun) -> int:
-    _end_open_runs(connection, UNWRITABLE)
-    cursor = connection.execute(
-        "INSERT INTO run (title, note, source, started_utc_ns, every_s, settings, version) "
-        "VALUES (?, ?, ?, ?, ?, ?, ?)",
-        (
-            run.title,
-            run.note,
-            run.source,
-            run.started_utc_ns,
-            run.every_s,
-            json.dumps(run.settings, allow_nan=False, ensure_ascii=False),
-            run.version,
-        ),
-    )
-    return cursor.lastrowid or 0
-
-
-def _end_run(connection: sqlite3.Connection, run_id: int, ended_utc_ns: int, ending: str) -> None:
-    connection.execute(
-        "UPDATE run SET ended_utc_ns = ?, ending = ? WHERE id = ?", (ended_utc_ns, ending, run_id)
-    )
-
-
-def _end_open_runs(connection: sqlite3.Connection, ending: str) -> None:
-    """End what nobody ended, at its last reading."""
-    connection.execute(
-        "UPDATE run SET ending = ?, ended_utc_ns = started_utc_ns + 1000 * coalesce(last_t_us, 0) "
-        "WHERE ended_utc_ns IS NULL",
-        (ending,),
-    )
-
-
-def _write(connection: sqlite3.Connection, rows: list[_Row], notes: list[_Note]) -> None:
-    for note in notes:
-        connection.execute(note.statement, note.values)
-    if not rows:
-        return
-    connection.executemany(_INSERT_READING, map(_values, rows))
-    connection.executemany(
-        _INSERT_SPREAD,
-        (
-            (
-                r.key,
-                r.spread.n,
-                _finite(r.spread.x_scatter_arcsec),
-                _finite(r.spread.y_scatter_arcsec),
-            )
-            for r in rows
-            if r.spread is not None
-        ),
-    )
-    _write_summaries(connection, rows)
-    last = rows[-1]
-    connection.execute(
-        "UPDATE run SET readings = readings + ?, last_seq = ?, "
-        "last_t_us = max(coalesce(last_t_us, 0), ?) WHERE id = ?",
-        (len(rows), last.reading.seq, max(r.t_us for r in rows), last.run_id),
-    )
-
-
-def _values(row: _Row) -> tuple[int | float | None, ...]:
-    r = row.reading
-    return (
-        row.key,
-        row.t_us,
-        _finite(r.x_px),
-        _finite(r.y_px),
-        _finite(r.x_arcsec),
-        _finite(r.y_arcsec),
-        _finite(r.x_sd_arcsec),
-        _finite(r.y_sd_arcsec),
-        _finite(r.x_u_arcsec),
-        _finite(r.y_u_arcsec),
-        r.quality.value,
-    )
-
-
-def _finite(value: float) -> float | None:
-    """What could not be measured is missing (NULL), never a number."""
-    return value if math.isfinite(value) else None
-
-
-def _write_summaries(connection: sqlite3.Connection, rows: list[_Row]) -> None:
-    t_us = np.array([r.t_us for r in rows], dtype=np.int64)
-    x_arcsec = np.array([_finite(r.reading.x_arcsec) for r in rows], dtype=np.float64)
-    y_arcsec = np.array([_finite(r.reading.y_arcsec) for r in rows], dtype=np.float64)
-    unflagged = np.array([r.reading.quality is Quality.OK for r in rows])
-    good = unflagged & np.isfinite(x_arcsec) & np.isfinite(y_arcsec)
-    for level_s in LEVELS_S:
-        s = summarise(t_us, x_arcsec, y_arcsec, good, level_s * 1_000_000)
-        first_seq = [rows[i].reading.seq for i in s.first.tolist()]
-        connection.executemany(
-            UPSERT,
-            zip(
-                [rows[0].run_id] * len(first_seq),
-                [level_s] * len(first_seq),
-                s.number.tolist(),
-                first_seq,
-                s.n.tolist(),
-                s.n_good.tolist(),
-                *_columns(s.x),
-                *_columns(s.y),
-                strict=True,
-            ),
-        )
-
-
-def _columns(axis: AxisColumns) -> list[list[float]]:
-    return [column.tolist() for column in axis]

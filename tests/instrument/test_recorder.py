@@ -17,7 +17,7 @@ from readout.files.calibration_file import calibration_document
 from readout.instrument import Event, Instrument
 from readout.instrument.recorder import ENDED_WITH_READOUT, Recorder
 from readout.logbook import FILE_NAME, Logbook, LogReader
-from readout.logbook.writer import UNWRITABLE
+from readout.logbook.statements import UNWRITABLE
 from readout.model import Quality, Reading
 from tests.instrument.fakes import HEIGHT_PX, WIDTH_PX, FakeClock, ScriptedObserver, reading
 

@@ -17,7 +17,7 @@ import pytest
 from readout.logbook import FILE_NAME, Logbook, LogReader
 from readout.logbook.connection import open_reading
 from readout.logbook.schema import LEVELS_S
-from readout.logbook.writer import CRASHED
+from readout.logbook.statements import CRASHED
 from tests.logbook.made import reading
 
 ROOT = Path(__file__).parents[2]

@@ -17,7 +17,8 @@ from hypothesis import strategies as st
 from readout.errors import Busy, NotNow, NotRecorded
 from readout.logbook import FILE_NAME, Logbook, LogReader, Spread
 from readout.logbook.connection import open_reading
-from readout.logbook.writer import CRASHED, UNWRITABLE, _Job
+from readout.logbook.statements import CRASHED, UNWRITABLE
+from readout.logbook.writer import _Job
 from readout.model import Quality, Reading
 from tests.logbook.made import STARTED_UTC_NS, log_of, new_run, reading, unmeasured
 
@@ -296,13 +297,68 @@ def test_a_closed_log_is_one_file(tmp_path: Path) -> None:
 
 
 @pytest.mark.filterwarnings("ignore::pytest.PytestUnhandledThreadExceptionWarning")
-def test_a_fault_of_the_writing_thread_leaves_nobody_waiting(tmp_path: Path) -> None:
+def test_an_end_of_the_writing_thread_leaves_nobody_waiting(tmp_path: Path) -> None:
+    def leave(_connection: sqlite3.Connection) -> None:
+        raise SystemExit
+
     with Logbook(tmp_path / FILE_NAME) as log:
         log.start(new_run())
-        with pytest.raises(ZeroDivisionError):
-            log._do(lambda _connection: 1 / 0)
+        with pytest.raises(SystemExit):
+            log._do(leave)
         log._thread.join()
         with pytest.raises(NotRecorded, match="is closed"):
             log.append(reading(0), t_s=0.0)
         with pytest.raises(NotRecorded, match="is closed"):
             log.end(0)
+
+
+def test_a_fault_of_ours_is_told_of_and_the_next_run_is_kept(tmp_path: Path) -> None:
+    told: list[str] = []
+    with Logbook(tmp_path / FILE_NAME, on_failure=told.append) as log:
+        log.start(new_run())
+        with pytest.raises(NotRecorded, match="division by zero"):
+            log._do(lambda _connection: 1 / 0)
+        log.note_event(1 << 63, "odd", "a time SQLite cannot hold")
+        with pytest.raises(NotRecorded, match="please report it"):
+            log.flush()
+        assert len(told) == 1
+        run_id = log.start(new_run())
+        log.append(reading(0), t_s=0.0)
+        log.end(0)
+    with LogReader(tmp_path / FILE_NAME) as reader:
+        assert reader.run(run_id).readings == 1
+
+
+def test_names_that_are_not_utf_8_are_kept_spelt_out(tmp_path: Path) -> None:
+    path = tmp_path / FILE_NAME
+    odd = b"fr\xff".decode("utf-8", "surrogateescape")  # as the system hands over such a name
+    with Logbook(path) as log:
+        run_id = log.start(new_run(title=odd, note=odd, source=odd, settings={"source": odd}))
+        log.note_event(1, "opened", f"folder {odd}")
+        log.note_calibration(0, odd, json.dumps({"id": odd}, ensure_ascii=False))
+        log.append(reading(0), t_s=0.0)
+        log.end(0)
+    with LogReader(path) as reader:
+        run = reader.run(run_id)
+        assert (run.title, run.note, run.source) == ("fr\\udcff",) * 3
+        assert run.settings == {"source": odd}
+        assert [event.text for event in reader.events(run_id)] == ["folder fr\\udcff"]
+        assert run.readings == 1
+
+
+def test_a_failure_while_a_run_begins_is_not_forgotten(tmp_path: Path) -> None:
+    """What fails right after the beginning of a run, before `start` returns, belongs to the run."""
+    with Logbook(tmp_path / FILE_NAME, commit_every_s=0.0) as log:
+        do, told = log._do, threading.Event()
+        log._on_failure = lambda _line: told.set()
+
+        def begin_and_fail(*arguments: object, **options: object) -> object:
+            run_id = do(*arguments, **options)
+            log.note_event(1 << 63, "odd", "a time SQLite cannot hold")
+            assert told.wait(10)
+            return run_id
+
+        log._do = begin_and_fail  # type: ignore[method-assign] (a place between two threads)
+        log.start(new_run())
+        with pytest.raises(NotRecorded, match="cannot be written"):
+            log.append(reading(0), t_s=0.0)
