@@ -54,10 +54,9 @@ class Quality(Flag):
 
 
 class Target(StrEnum):
-    """What the instrument images on the sensor."""
+    """What the instrument images on the sensor: those there is a method for."""
 
     CROSSHAIR = "crosshair"
-    SPOT = "spot"
 
 
 @dataclass(frozen=True, slots=True)

@@ -23,6 +23,7 @@ from collections.abc import Callable
 from dataclasses import dataclass, replace
 
 import numpy as np
+from scipy.special import chdtri, ndtr, stdtrit
 
 from readout.angle.calibration import Calibration, matrix_rows
 from readout.angle.nominal import Mounting, mounting_matrix
@@ -37,7 +38,8 @@ for noise, on one line"""
 WORST_SCALE_SD = 0.2
 """a focal length less certain than this share is no calibration"""
 SUSPICIOUS_SD = 4.0
-DOUBTFUL_BIRGE = 1.5
+DOUBTFUL = 0.05
+"""residuals this unlikely to be so large by chance widen the uncertainty"""
 
 
 @dataclass(frozen=True, slots=True)
@@ -98,8 +100,8 @@ def calibrate_known_tilts(
 
     ``scale_rel_sd``: relative standard uncertainty of the stage's scale, common to all rows and
     therefore not averaged down. The covariance claimed is that of the weights; where the
-    residuals scatter clearly more than claimed (Birge ratio, R. T. Birge, Phys. Rev. 40 (1932)
-    207) it is widened by their ratio, and a warning says so.
+    residuals scatter more than that allows (chi-square test at 5 %) it is widened by the Birge
+    ratio (R. T. Birge, Phys. Rev. 40 (1932) 207), and a warning says so.
 
     Raises
     ------
@@ -113,11 +115,11 @@ def calibrate_known_tilts(
     variance = _variance(tilts, calibration)
     used = np.isfinite(residual)
     freedom = int(used.sum()) - len(parameters)
-    birge = math.sqrt(float(np.sum(residual[used] ** 2 / variance[used])) / max(freedom, 1))
-    warnings = list(_warnings(tilts, model, residual / np.sqrt(variance), birge, freedom))
+    widened = _widening(float(np.sum(residual[used] ** 2 / variance[used])), freedom)
+    warnings = list(_warnings(tilts, model, residual / np.sqrt(variance), widened, freedom))
     full = np.zeros((7, 7))
     full[:4, :4] = by_parameter @ cov[: model.m, : model.m] @ by_parameter.T
-    full[:4, :4] *= birge**2 if freedom and birge > DOUBTFUL_BIRGE else 1.0
+    full[:4, :4] *= widened**2
     full[:4, :4] += scale_rel_sd**2 * np.outer(matrix, matrix)
     calibration = replace(
         calibration,
@@ -299,6 +301,16 @@ def _variance(tilts: TiltSet, calibration: Calibration) -> F64:
     return np.asarray(np.array(noise) + tilts.sd_arcsec[:, None] ** 2)
 
 
+def _widening(chi_square: float, freedom: int) -> float:
+    """Factor on the claimed sd: 1 where the residuals are as large as their uncertainties allow.
+
+    Else the Birge ratio times Student's factor for a scatter known from ``freedom`` values.
+    """
+    if freedom == 0 or chi_square <= chdtri(freedom, DOUBTFUL):
+        return 1.0
+    return math.sqrt(chi_square / freedom) * float(stdtrit(freedom, ndtr(1.0)))
+
+
 def _residual_rows(tilts: TiltSet, residual: F64) -> list[dict[str, object]]:
     return [
         {
@@ -313,20 +325,21 @@ def _residual_rows(tilts: TiltSet, residual: F64) -> list[dict[str, object]]:
 
 
 def _warnings(
-    tilts: TiltSet, model: _Model, normalised: F64, birge: float, freedom: int
+    tilts: TiltSet, model: _Model, normalised: F64, widened: float, freedom: int
 ) -> list[str]:
     found = ["signs unproven: nudge the mirror and compare"]
     if model.m == 2:
         found.append("one axis only: square pixels and the mounting are taken for granted")
     if freedom == 0:
         found.append("as many unknowns as values: nothing checks this calibration")
-    elif birge > DOUBTFUL_BIRGE:
+    elif widened > 1:
         found.append(
-            f"residuals are {birge:.1f} times what the uncertainties allow: claimed ones widened"
+            "residuals are larger than their uncertainties allow: "
+            f"the claimed ones are widened {widened:.1f} times"
         )
     worst = np.nanmax(np.abs(normalised), axis=1)
     found += [
         f"{tilts.names[i]} is {worst[i]:.1f} sd off: look at this frame and its tilt"
-        for i in np.flatnonzero(worst > SUSPICIOUS_SD * max(1.0, birge))
+        for i in np.flatnonzero(worst > SUSPICIOUS_SD * widened)
     ]
     return found

@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from readout.model import F64, Pixels
 from readout.sighting.fold import Line, Strip, cut_strip, fold_strip
+from readout.sighting.scatter import excess_variance
 from readout.sighting.solve import Shape, Solution, solve_fold
 
 CUTS = 6
@@ -24,7 +25,8 @@ class ArmFit:
     """A fitted arm: its line, the covariance of (middle_x, slope), its shape, and how it fits.
 
     ``explained``: share of the folded profile's variance that the model explains. ``pixel_sd``:
-    typical noise of a pixel, levels. ``rows``: rows used.
+    typical noise of a pixel, levels. ``excess``: factor on the covariance for what the pixels'
+    noise does not explain. ``rows``: rows used.
     """
 
     line: Line
@@ -32,6 +34,7 @@ class ArmFit:
     shape: Shape
     explained: float
     pixel_sd: float
+    excess: float
     rows: int
     strip: Strip
 
@@ -61,24 +64,28 @@ def fit_arm(
         strip = None if strip is None else _lit(strip, shape)
         if strip is None:
             return None
-        solution = solve_fold(fold_strip(strip), strip.line.cosine, shape)
+        fold = fold_strip(strip)
+        solution = solve_fold(fold, strip.line.cosine, shape)
         if solution is None or abs(solution.shift) > half_columns:
             return None
-        fit = _improved(strip, solution)
+        settled = abs(solution.shift) + abs(solution.turn) * np.abs(strip.along).max() < SETTLED_PX
+        excess = excess_variance(strip, fold, solution) if settled else 1.0
+        fit = _improved(strip, solution, excess)
         line, shape = fit.line, solution.shape
-        if abs(solution.shift) + abs(solution.turn) * np.abs(strip.along).max() < SETTLED_PX:
+        if settled:
             break
     return fit
 
 
-def _improved(strip: Strip, solution: Solution) -> ArmFit:
+def _improved(strip: Strip, solution: Solution, excess: float) -> ArmFit:
     old = strip.line
     return ArmFit(
         line=Line(old.middle_x + solution.shift, old.slope + solution.turn, old.middle_y),
-        cov=solution.cov,
+        cov=solution.cov * excess,
         shape=solution.shape,
         explained=solution.explained,
         pixel_sd=solution.pixel_sd,
+        excess=excess,
         rows=len(strip.rows),
         strip=strip,
     )

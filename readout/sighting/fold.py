@@ -107,6 +107,7 @@ class Fold:
     rows, sum of their distances along the arm and of its squares, shape (phases, 1).
     ``phase2``, ``phase_along``: sums of (phase - mean)^2 and (phase - mean)*along.
     ``level``, ``level_along``, ``level2``: sums of the levels, times along, squared.
+    ``group``, ``deviation`` (rows,): each row's phase, and by how much it differs from the mean.
     """
 
     u: F64
@@ -118,6 +119,8 @@ class Fold:
     level: F64
     level_along: F64
     level2: F64
+    group: NDArray[np.intp]
+    deviation: F64
 
 
 def fold_strip(strip: Strip) -> Fold:
@@ -140,4 +143,6 @@ def fold_strip(strip: Strip) -> Fold:
         level=member @ strip.levels,
         level_along=member_along @ strip.levels,
         level2=member @ strip.levels**2,
+        group=group,
+        deviation=deviation,
     )

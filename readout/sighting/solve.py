@@ -65,7 +65,8 @@ class Solution:
 
     ``shift`` (px, along x) and ``turn`` (slope) improve the line the strip was cut along;
     ``cov`` (2, 2) is their covariance. ``explained``: share of the folded profile's variance that
-    the model explains. ``pixel_sd``: typical noise of a pixel, levels.
+    the model explains. ``pixel_sd``: typical noise of a pixel, levels. ``model``, ``flank``,
+    ``weight`` (phases, columns): expected level, its derivative by shift, 1 / variance.
     """
 
     shape: Shape
@@ -74,6 +75,9 @@ class Solution:
     cov: F64
     explained: float
     pixel_sd: float
+    model: F64
+    flank: F64
+    weight: F64
 
 
 def solve_fold(fold: Fold, cosine: float, shape: Shape) -> Solution | None:
@@ -133,6 +137,9 @@ def solve_fold(fold: Fold, cosine: float, shape: Shape) -> Solution | None:
         cov,
         1 - left / max(float((fold.n * around**2).sum()), 1e-300),
         math.sqrt(float(np.median(1 / weight))),
+        model,
+        flank,
+        weight,
     )
 
 

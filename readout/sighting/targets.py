@@ -34,12 +34,7 @@ def locate(
         picture: NaN and a word (``no_image``, ``one_axis``) where there is no position, a
         position and a word (``dim``, ``saturated``, ``at_edge``) where there is one to be trusted
         less.
-
-    Raises
-    ------
-    ValueError
-        For a target there is no method for.
     """
-    if target is not Target.CROSSHAIR:
-        raise ValueError(f"no method for the target {target}")
-    return locate_crosshair(pixels, full_scale=full_scale, prior=prior)
+    match target:
+        case Target.CROSSHAIR:
+            return locate_crosshair(pixels, full_scale=full_scale, prior=prior)

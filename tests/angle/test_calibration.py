@@ -114,6 +114,39 @@ def test_both_shares_of_the_uncertainty_agree_with_monte_carlo():
     assert claimed == pytest.approx(spread, abs=6 / np.sqrt(4000) * spread.max())
 
 
+def test_every_parameter_counts_in_the_calibration_share():
+    """Monte Carlo with p0 and k1 uncertain, too, and correlated with the matrix."""
+    at = replace(calibration(rotation_deg=20.0), k1=0.3)
+    spread = np.array([2e-8, 1e-8, 1e-8, 3e-8, 2.0, 3.0, 0.2])
+    correlation = np.eye(7) + 0.3 * (np.eye(7, k=1) + np.eye(7, k=-1))
+    cov = correlation * np.outer(spread, spread)
+    at = replace(at, param_cov=tuple(tuple(row) for row in cov.tolist()))
+    place = (1200.0, 60.0)
+    parameters = np.array([*np.ravel(at.matrix), *at.p0_px, at.k1])
+    rng = np.random.default_rng(5)
+    results = []
+    for trial in rng.multivariate_normal(parameters, cov, 4000):
+        matrix = ((trial[0], trial[1]), (trial[2], trial[3]))
+        other = replace(at, matrix=matrix, p0_px=(trial[4], trial[5]), k1=trial[6])
+        results.append(other.tilt(*place))
+    tried = np.cov(np.array(results).T)
+    claimed = at.calibration_cov(*place)
+    assert claimed == pytest.approx(tried, abs=6 / np.sqrt(4000) * tried.max())
+    for column in range(7):
+        without = cov.copy()
+        without[column, :] = without[:, column] = 0.0
+        less = replace(at, param_cov=tuple(tuple(row) for row in without.tolist()))
+        assert np.abs(less.calibration_cov(*place) - claimed).max() > 0
+
+
+def test_a_camera_not_quite_upright_is_in_the_uncertainty():
+    """1 degree of unknown turn: at X = 300" and Y = 0 it is 5.2" of Y (300" sin 1 deg)."""
+    at = calibration(rotation_sd_deg=1.0, focal_length_rel_sd=0.0)
+    x_px, y_px = at.position(300.0, 0.0)
+    share = np.sqrt(np.diag(at.calibration_cov(float(x_px), float(y_px))))
+    assert share == pytest.approx([0.0, 300 * math.radians(1.0)], abs=0.01)
+
+
 def test_claimed_focal_length_sd_is_the_one_put_in():
     at = calibration(focal_length_rel_sd=0.013)
     assert at.focal_length_px_sd / at.focal_length_px == pytest.approx(0.013)

@@ -57,7 +57,7 @@ def test_every_number_comes_back_bit_for_bit(
         p0_px=p0,
         k1=k1,
         signs="proven",
-        target=Target.SPOT,
+        target=Target.CROSSHAIR,
         pitch_um=None,
         residuals=({"file": "a.png", "x_arcsec": 0.01},),
         residual_rms_arcsec=0.01,

@@ -68,4 +68,6 @@ def test_agrees_with_a_general_solver(rotation_deg):
     found_slope = strip.line.slope + general.x[6]
     assert fit.line.middle_x == pytest.approx(found_x, abs=0.1 * x_sd)
     assert fit.line.slope == pytest.approx(found_slope, abs=0.1 * slope_sd)
-    assert np.sqrt(np.diag(fit.cov)) == pytest.approx([x_sd, slope_sd], rel=0.05)
+    from_pixels = np.sqrt(np.diag(fit.cov) / fit.excess)
+    assert from_pixels == pytest.approx([x_sd, slope_sd], rel=0.05)
+    assert 1.0 <= fit.excess < 1.7  # chi-square of 62 degrees of freedom, 99.9 %
