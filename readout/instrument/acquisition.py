@@ -9,6 +9,7 @@ do something). Every wait is bounded; clock and waiting are arguments, so that t
 from __future__ import annotations
 
 import logging
+import math
 import threading
 import time
 from collections.abc import Callable
@@ -41,7 +42,7 @@ class State(StrEnum):
 
 
 class Refused(ReadoutError):
-    """What came from the source cannot be used with these settings; trying again is no help."""
+    """What came from the source cannot be used with these settings."""
 
 
 class Acquisition:
@@ -52,7 +53,8 @@ class Acquisition:
     change of state or of its detail, one line for people. Both are called from the acquisition's
     own thread.
     ``patient``: wait for a live source that is not there at first; otherwise the first opening
-    must succeed. ``wait(seconds)`` returns early, with True, when the acquisition is stopped.
+    must succeed. A live source that has been measured is always waited for, also where it came back
+    with pictures that cannot be used, until it has been gone for ``give_up_after_s``. ``wait(seconds)`` returns early, with True, when the acquisition is stopped.
     """
 
     def __init__(
@@ -63,6 +65,7 @@ class Acquisition:
         on_state: Callable[[State, str], None],
         first_seq: int = 0,
         patient: bool = False,
+        give_up_after_s: float = math.inf,
         clock_ns: Callable[[], int] = time.monotonic_ns,
         wait: Callable[[float], bool] | None = None,
     ) -> None:
@@ -70,6 +73,9 @@ class Acquisition:
         self._on_observation = on_observation
         self._on_state = on_state
         self._patient = patient
+        self._give_up_after_s = give_up_after_s
+        self._measured = False
+        self._lost_since_ns: int | None = None
         self._clock_ns = clock_ns
         self._stop = threading.Event()
         self._wait = wait or self._stop.wait
@@ -98,6 +104,11 @@ class Acquisition:
     @property
     def stopped(self) -> bool:
         return self._stop.is_set()
+
+    @property
+    def stalled_after_s(self) -> float:
+        """Silence longer than this is a stall: half a second or three frame times."""
+        return max(STALLED_AFTER_S, 3 * (self.pace.interval_s or 0.0))
 
     @property
     def missed(self) -> int:
@@ -136,14 +147,9 @@ class Acquisition:
                 else:
                     self._enter(State.ENDED, str(end))
                 return
-            except Refused as refused:
-                self._enter(State.FAILED, str(refused))
-                return
             except ReadoutError as error:
-                if not (live and self._patient):
-                    self._enter(State.FAILED, str(error))
+                if not self._may_come_back(error, live=live):
                     return
-                self._enter(State.LOST, str(error))
             except Exception as error:
                 log.debug("acquisition failed", exc_info=True)
                 kind = type(error).__name__
@@ -153,7 +159,25 @@ class Acquisition:
                 self._leave()
             pause_s = BACK_OFF_S[min(self._failures, len(BACK_OFF_S) - 1)]
             self._failures += 1
-            self._wait(pause_s)
+            self._wait(max(0.0, min(pause_s, self._give_up_after_s - self._lost_s())))
+
+    def _may_come_back(self, error: ReadoutError, *, live: bool) -> bool:
+        """Whether to wait and open the source anew; the state then says why, or that it is over."""
+        waited_for = self._measured if isinstance(error, Refused) else self._patient
+        if not (live and waited_for):
+            self._enter(State.FAILED, str(error))
+            return False
+        if self._lost_since_ns is None:
+            self._lost_since_ns = self._clock_ns()
+        if self._lost_s() >= self._give_up_after_s:
+            self._enter(State.FAILED, f"{error}; given up after {self._give_up_after_s:g} s")
+            return False
+        self._enter(State.LOST, str(error))
+        return True
+
+    def _lost_s(self) -> float:
+        since_ns = self._lost_since_ns
+        return 0.0 if since_ns is None else (self._clock_ns() - since_ns) * 1e-9
 
     def _follow(self, observer: Observer) -> None:
         last_ns = self._clock_ns()
@@ -184,7 +208,8 @@ class Acquisition:
         except BadInput as error:
             raise Refused(str(error)) from error
         self._failures = 0
-        self._patient = True
+        self._patient = self._measured = True
+        self._lost_since_ns = None
         self._enter(State.MEASURING, "")
 
     def _leave(self) -> None:
@@ -199,7 +224,7 @@ class Acquisition:
             if silent_s > OPENED_WITHIN_S:
                 raise SourceLost(f"no frame within {OPENED_WITHIN_S:.0f} s of opening")
             return
-        limit_s = max(STALLED_AFTER_S, 3 * (self.pace.interval_s or 0.0))
+        limit_s = self.stalled_after_s
         if silent_s > limit_s:
             self._enter(State.STALLED, "no new frame from the source")
         if silent_s > max(LOST_AFTER_S, 10 * limit_s):

@@ -7,14 +7,16 @@ everything else may be asked from any thread.
 from __future__ import annotations
 
 import contextlib
+import math
 import threading
 import time
 from collections.abc import Callable
 from dataclasses import dataclass
 
 from readout.angle import Calibration, Mounting, nominal_calibration, reading_of
+from readout.capture.source_name import encodable, source_name
 from readout.capture.timebase import TimeBase
-from readout.errors import BadInput
+from readout.errors import BadInput, NotNow
 from readout.instrument.acquisition import Acquisition, State
 from readout.instrument.averaging import Average, Statistic, TrailingWindow, average_of
 from readout.instrument.observer import Observer, Picture
@@ -122,17 +124,19 @@ class Instrument:
         *,
         target: Target = Target.CROSSHAIR,
         patient: bool = False,
+        give_up_after_s: float = math.inf,
     ) -> Acquisition:
         """Measure ``source`` instead of what was measured before.
 
-        ``patient``: wait for a live source that is not there yet. It begins with the ``start`` (a
+        ``patient``: wait for a live source that is not there yet. One that vanishes is waited for
+        ``give_up_after_s``. It begins with the ``start`` (a
         thread of its own) or the ``run`` (this thread) of the acquisition returned.
         """
         before = self._acquisition
         if before is not None:
             before.stop()
         with self._lock:
-            self._source, self._target = source, target
+            self._source, self._target = source_name(source), target
             self._state, self._detail = State.OPENING, ""
             self._missed += before.missed if before else 0
             self._size_px = self._calibration = self._newest = None
@@ -144,6 +148,7 @@ class Instrument:
                 on_state=self._change_state,
                 first_seq=before.next_seq if before else 0,
                 patient=patient,
+                give_up_after_s=give_up_after_s,
                 clock_ns=self._clock_ns,
             )
             return self._acquisition
@@ -175,6 +180,7 @@ class Instrument:
 
     @property
     def source(self) -> str | None:
+        """The source in use, by the name that may be shown and kept."""
         return self._source
 
     @property
@@ -264,8 +270,9 @@ class Instrument:
             self.tell("calibration", "the scale was changed")
 
     def set_zero(self) -> Zero:
-        """Zero at the averaged value. Raises NotNow while flagged or moving."""
+        """Zero at the averaged value. Raises NotNow while flagged or moving, or none comes."""
         with self._lock:
+            self._refuse_unless_live()
             zero = zero_from(
                 self._window.rows(),
                 window_s=self._window.window_s,
@@ -274,6 +281,21 @@ class Instrument:
             )
             self._zero = zero
             return zero
+
+    def _refuse_unless_live(self) -> None:
+        """What a source showed long ago is no zero of what stands before the instrument now."""
+        acquisition, age_s = self._acquisition, self.age_s
+        if acquisition is None or age_s is None:
+            raise NotNow("there is no reading yet: wait for the first one, then set the zero")
+        if self._state is not State.MEASURING:
+            raise NotNow(
+                f"no readings come from {self._source} ({self._state.value}): "
+                "wait until it measures again, then set the zero"
+            )
+        if age_s > acquisition.stalled_after_s:
+            raise NotNow(
+                f"the newest reading is {age_s:.1f} s old: wait for the next, then set the zero"
+            )
 
     def clear_zero(self) -> None:
         with self._lock:
@@ -336,6 +358,7 @@ class Instrument:
         return None
 
     def _change_state(self, state: State, detail: str) -> None:
+        detail = encodable(detail)
         with self._lock:
             before, self._state, self._detail = self._state, state, detail
             if state is State.LOST:
@@ -358,7 +381,7 @@ class Instrument:
 
     def tell(self, event: str, text: str) -> None:
         """Tell the listeners of something that happens now."""
-        happened = Event(*self.now(), event, text)
+        happened = Event(*self.now(), event, encodable(text))
         for listener in self.on_event:
             listener(happened)
 

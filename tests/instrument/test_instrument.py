@@ -3,15 +3,16 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable
 from dataclasses import replace
+from types import SimpleNamespace
 
 import pytest
 
 from readout.angle import Calibration, nominal_calibration
 from readout.capture.timebase import TimeBase
 from readout.errors import BadInput, NotNow, SourceLost
-from readout.instrument import Event, Instrument, Optics, State, Statistic
+from readout.instrument import Event, Instrument, Optics, State, Statistic, Zero
 from readout.instrument.instrument import refuse_unfit
 from readout.instrument.measuring import Measuring
 from readout.instrument.observer import Observer
@@ -68,6 +69,16 @@ class Bench:
         acquisition = self.instrument.use(source, target=target)
         acquisition._wait = self.clock.wait
         acquisition.run()
+        return self
+
+    def after(self, n: int, act: Callable[[], object]) -> Bench:
+        """Have ``act`` done with the ``n``-th reading, while the source measures."""
+
+        def listen(reading: Reading) -> None:
+            if len(self.readings) == n:
+                act()
+
+        self.instrument.on_reading.append(listen)
         return self
 
     @property
@@ -131,10 +142,11 @@ def test_a_calibration_of_another_size_is_refused_in_one_line() -> None:
 
 
 def test_a_calibration_of_another_target_is_refused() -> None:
+    """There is one target so far: a stand-in takes the place of a second."""
+    other = replace(calibration(), target=SimpleNamespace(value="spot"))
     with pytest.raises(BadInput, match="spot"):
-        refuse_unfit(calibration(target=Target.SPOT), WIDTH_PX, HEIGHT_PX, Target.CROSSHAIR)
-    bench = Bench([None], scale=calibration()).run(target=Target.SPOT)
-    assert bench.state[0] is State.FAILED
+        refuse_unfit(other, WIDTH_PX, HEIGHT_PX, Target.CROSSHAIR)
+    assert Bench([None], scale=other).run().state[0] is State.FAILED
 
 
 def test_pictures_that_change_their_size_are_refused_and_what_came_before_stands() -> None:
@@ -182,16 +194,60 @@ def test_events_tell_what_happened_once_each_in_one_line() -> None:
 
 
 def test_zero_is_set_taken_back_and_lost_with_the_source() -> None:
-    bench = Bench([None] * 20, [None], scale=calibration()).run()
+    bench = Bench([None] * 30, [None], scale=calibration())
     instrument = bench.instrument
-    zero = instrument.set_zero()
-    assert zero.x_arcsec == pytest.approx(bench.readings[0].x_arcsec)
-    assert instrument.status().zero == zero
-    instrument.clear_zero()
-    assert instrument.zero is None
-    instrument.set_zero()
+    zeros: list[Zero | None] = []
+
+    def set_take_back_set() -> None:
+        instrument.set_zero()
+        zeros.append(instrument.status().zero)
+        instrument.clear_zero()
+        zeros.append(instrument.zero)
+        instrument.set_zero()
+
+    bench.after(20, set_take_back_set).run()
+    set_to, taken_back = zeros
+    assert set_to is not None
+    assert set_to.x_arcsec == pytest.approx(bench.readings[0].x_arcsec)
+    assert taken_back is None
+    assert instrument.zero == set_to
     bench.run()
     assert instrument.zero is None
+
+
+def refusal_of_a_zero(bench: Bench) -> str:
+    with pytest.raises(NotNow) as refused:
+        bench.instrument.set_zero()
+    return str(refused.value)
+
+
+def test_no_zero_from_a_source_that_gives_no_readings() -> None:
+    ended = Bench([None] * 20, scale=calibration()).run()
+    assert "ended" in refusal_of_a_zero(ended)
+    failed = Bench([*[None] * 20, BadInput("the disk is gone")], scale=calibration(), live=False)
+    assert "no reading" in refusal_of_a_zero(failed.run())
+    stalled = Bench([*[None] * 20, 0.9], scale=calibration())
+    lines: list[str] = []
+    stalled.instrument.on_state.append(
+        lambda state, _: (
+            lines.append(refusal_of_a_zero(stalled)) if state is State.STALLED else None
+        )
+    )
+    stalled.run()
+    assert ["stalled" in line for line in lines] == [True]
+
+
+def test_no_zero_from_a_reading_that_is_old() -> None:
+    """As when the thread that reads is stuck and nobody has called the silence a stall yet."""
+    bench = Bench([None] * 20, scale=calibration())
+    lines: list[str] = []
+
+    def long_after() -> None:
+        bench.clock.advance(0.6)
+        lines.append(refusal_of_a_zero(bench))
+
+    bench.after(20, long_after).run()
+    assert "old" in lines[0]
 
 
 def test_no_zero_without_readings() -> None:
@@ -200,13 +256,17 @@ def test_no_zero_without_readings() -> None:
 
 
 def test_a_new_scale_begins_average_and_zero_anew() -> None:
-    bench = Bench([None] * 10, scale=calibration()).run()
-    bench.instrument.set_zero()
-    bench.instrument.set_scale(Optics(150.0, 3.45))
-    assert bench.instrument.zero is None
-    assert [e.event for e in bench.events][-1] == "calibration"
-    with pytest.raises(NotNow):
+    bench = Bench([None] * 10, scale=calibration())
+
+    def change() -> None:
         bench.instrument.set_zero()
+        bench.instrument.set_scale(Optics(150.0, 3.45))
+        assert bench.instrument.zero is None
+        assert [e.event for e in bench.events][-1] == "calibration"
+        assert "no reading" in refusal_of_a_zero(bench)
+
+    bench.after(10, change).run()
+    assert bench.state == (State.ENDED, "the script is at its end")
 
 
 def test_a_long_average_is_taken_anew_after_a_hundredth_of_its_window() -> None:
@@ -256,3 +316,13 @@ def test_measuring_keeps_what_was_written_when_the_disk_is_full() -> None:
     with pytest.raises(OSError, match="No space"):
         Measuring(bench.instrument, write, warn=print).run("scripted", target=Target.CROSSHAIR)
     assert len(written) == 3
+
+
+def test_a_live_source_that_comes_back_smaller_is_measured_again_when_it_is_itself() -> None:
+    small: list[Step] = [(100, 80)]
+    bench = Bench([None, *small], small, [None, None], scale=calibration()).run()
+    assert len(bench.readings) == 3
+    words = [event.event for event in bench.events]
+    assert words == ["opened", "lost", "opened", "ended"]
+    (lost,) = (event for event in bench.events if event.event == "lost")
+    assert "100 × 80" in lost.text

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
 
@@ -66,6 +66,10 @@ class Rig:
         acquisition = self.instrument.use("simulated")
         acquisition._wait = self.clock.wait
         acquisition.run()
+
+    def at_reading(self, seq: int, act: Callable[[], object]) -> None:
+        """Have ``act`` done with the reading of this number, while the source measures."""
+        self.instrument.on_reading.append(lambda reading: act() if reading.seq == seq else None)
 
     def fix_calibration(self, calibration: Calibration | None) -> None:
         """As given on the command line; None leaves the scale to the settings."""

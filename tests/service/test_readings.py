@@ -9,6 +9,7 @@ from typing import Any
 import cv2
 import numpy as np
 import pytest
+from httpx2 import Response
 from hypothesis import given
 from hypothesis import strategies as st
 from starlette.testclient import TestClient
@@ -87,20 +88,29 @@ def test_the_field_is_what_the_corners_of_the_picture_mean(rig: Rig, client: Tes
 
 def test_reading_and_zero(rig: Rig, client: TestClient) -> None:
     assert client.get("/api/reading").status_code == 404
+    answers: list[Response] = []
+    rig.at_reading(9, lambda: answers.append(client.post("/api/zero")))
     rig.measure()
+    (set_to,) = answers
     reading = client.get("/api/reading").json()
     assert reading["seq"] == 9
     assert reading["t_s"] == pytest.approx(1.0)
     assert reading["t_utc"] == "2023-11-14T22:13:21.000Z" or reading["t_utc"].endswith("Z")
-    assert reading["x_rel_arcsec"] is None
+    assert reading["x_rel_arcsec"] == pytest.approx(0.0, abs=1e-6)
     assert reading["average"]["n"] == 10
-    set_to = client.post("/api/zero")
     assert set_to.status_code == 200
     assert set_to.json()["x_arcsec"] == pytest.approx(reading["x_arcsec"])
-    assert client.get("/api/reading").json()["x_rel_arcsec"] == pytest.approx(0.0, abs=1e-6)
     assert client.get("/api/status").json()["zero"]["n"] == 10
     assert client.delete("/api/zero").status_code == 204
     assert client.get("/api/reading").json()["x_rel_arcsec"] is None
+
+
+def test_zero_is_refused_of_a_source_that_has_ended(rig: Rig, client: TestClient) -> None:
+    rig.measure()
+    rig.clock.advance(3600.0)
+    refused = client.post("/api/zero")
+    assert refused.status_code == 409
+    assert "ended" in refused.json()["detail"]
 
 
 def test_readings_of_another_source_are_not_shown(rig: Rig, client: TestClient) -> None:
@@ -149,8 +159,10 @@ def test_a_reading_says_how_old_it_is_and_a_stalled_source_has_no_average(
 
 
 def test_zero_is_refused_while_flagged(rig: Rig, client: TestClient) -> None:
+    answers: list[Response] = []
+    rig.at_reading(2, lambda: answers.append(client.post("/api/zero")))
     rig.measure([None, None, no_sighting(Quality.NO_IMAGE)])
-    refused = client.post("/api/zero")
+    (refused,) = answers
     assert refused.status_code == 409
     assert refused.headers["content-type"] == "application/problem+json"
     assert "no image" in refused.json()["detail"]

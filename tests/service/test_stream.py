@@ -84,11 +84,13 @@ def test_what_a_slow_viewer_lost_is_told_in_its_next_message(
 
 
 def test_changes_of_settings_and_zero_reach_the_viewers(rig: Rig, client: TestClient) -> None:
-    rig.measure()
     with client.websocket_connect(STREAM) as session:
         session.receive_json()
-        client.post("/api/zero")
-        assert messages_until(session, "status")[-1]["zero"]["n"] == 10
+        rig.at_reading(9, lambda: client.post("/api/zero"))
+        rig.measure()
+        while (zero := messages_until(session, "status")[-1]["zero"]) is None:
+            pass
+        assert zero["n"] == 10
         client.put("/api/settings", json={"unit": "urad"})
         messages_until(session, "event", event="settings")
 
