@@ -51,6 +51,12 @@ def measure(
     seconds: Annotated[
         float | None, typer.Option(min=0.0, metavar="S", help="End after S seconds.")
     ] = None,
+    give_up_after: Annotated[
+        float,
+        typer.Option(
+            min=0.0, metavar="S", help="Wait so long for a stream that vanishes; inf: for ever."
+        ),
+    ] = 30.0,
     settings: SettingsOption = None,
 ) -> None:
     """Measure the mirror's angles in every frame of a folder, video or stream.
@@ -81,7 +87,14 @@ def measure(
             write(reading)
             show(measuring.n)
 
-        measuring = Measuring(instrument, write_and_show, warn=warn, most=frames, seconds=seconds)
+        measuring = Measuring(
+            instrument,
+            write_and_show,
+            warn=warn,
+            most=frames,
+            seconds=seconds,
+            give_up_after_s=give_up_after,
+        )
         with _ended_by_signals(measuring.stop):
             measuring.run(source, target=target)
     if csv is not None and sys.stderr.isatty():
@@ -121,8 +134,10 @@ def _writing(csv: Path | None, *, json: bool) -> Iterator[Write]:
         if json:
             writes.append(lambda reading: print_json(reading_row(reading)))
         if csv is not None:
-            file = ReadingsWriter(sys.stdout) if csv == STDOUT else ReadingsFile(csv)
-            writes.append(stack.enter_context(file).write)
+            if csv == STDOUT:
+                writes.append(stack.enter_context(ReadingsWriter(sys.stdout)).write)
+            else:
+                writes.append(stack.enter_context(ReadingsFile(csv)).write)
         if not writes:
             writes.append(lambda reading: print_line(_words(reading)))
 

@@ -54,7 +54,8 @@ class Acquisition:
     own thread.
     ``patient``: wait for a live source that is not there at first; otherwise the first opening
     must succeed. A live source that has been measured is always waited for, also where it came back
-    with pictures that cannot be used, until it has been gone for ``give_up_after_s``. ``wait(seconds)`` returns early, with True, when the acquisition is stopped.
+    with pictures that cannot be used, until it has been gone for ``give_up_after_s``.
+    ``wait(seconds)`` returns early, with True, when the acquisition is stopped.
     """
 
     def __init__(

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 
 from readout.errors import BadInput, ReadoutError
@@ -14,7 +15,8 @@ class Measuring:
     """Hands each reading to ``write``, until the source ends, a limit is reached or ``stop``.
 
     ``most``: frames; ``seconds``: since the first frame. ``warn`` gets a line when the source
-    falters and is waited for. ``n`` counts the readings written, ``good`` those without a doubt.
+    falters and is waited for, ``give_up_after_s`` at most. ``n`` counts the readings written,
+    ``good`` those without a doubt.
     """
 
     def __init__(
@@ -25,12 +27,14 @@ class Measuring:
         warn: Callable[[str], None],
         most: int | None = None,
         seconds: float | None = None,
+        give_up_after_s: float = math.inf,
     ) -> None:
         self._instrument = instrument
         self._write = write
         self._warn = warn
         self._most = most
         self._seconds = seconds
+        self._give_up_after_s = give_up_after_s
         self._acquisition: Acquisition | None = None
         self._failure: str | None = None
         self._broken: OSError | ReadoutError | None = None
@@ -45,7 +49,9 @@ class Measuring:
         Raises BadInput if it cannot be used, and the error of ``write``; what was written before
         stays.
         """
-        self._acquisition = self._instrument.use(source, target=target)
+        self._acquisition = self._instrument.use(
+            source, target=target, give_up_after_s=self._give_up_after_s
+        )
         self._acquisition.run()
         if self._broken is not None:
             raise self._broken
@@ -76,5 +82,11 @@ class Measuring:
     def _see(self, state: State, detail: str) -> None:
         if state is State.FAILED:
             self._failure = detail
-        elif state in (State.LOST, State.STALLED):
+        elif state is State.LOST:
+            self._warn(f"{detail}; trying again {self._how_long()}")
+        elif state is State.STALLED:
             self._warn(detail)
+
+    def _how_long(self) -> str:
+        limit_s = self._give_up_after_s
+        return f"for {limit_s:g} s" if math.isfinite(limit_s) else "until it comes back"

@@ -155,16 +155,45 @@ def test_a_folder_that_breaks_has_failed() -> None:
     assert run.states[-1] == (State.FAILED, "the disk is gone")
 
 
-def test_what_the_listener_refuses_has_failed_and_is_not_tried_again() -> None:
-    recorder = Recorder([None, None, None], patient=True)
+@pytest.mark.parametrize(("live", "refused_seq"), [(True, 0), (False, 0), (False, 1)])
+def test_what_the_listener_refuses_has_failed_and_is_not_tried_again(
+    live: bool, refused_seq: int
+) -> None:
+    recorder = Recorder([None, None, None], live=live, patient=True)
 
     def refuse(observation: Observation, observer: Observer) -> None:
-        if observation.seq == 1:
+        if observation.seq == refused_seq:
             raise BadInput("another size")
 
     recorder.acquisition._on_observation = refuse
     recorder.run()
     assert recorder.states[-1] == (State.FAILED, "another size")
+
+
+def test_a_measured_live_source_that_turns_unfit_is_tried_until_it_fits_again() -> None:
+    recorder = Recorder([None, None], [None], [None], [None])
+
+    def refuse(observation: Observation, observer: Observer) -> None:
+        if 1 <= observation.seq <= 3:
+            raise BadInput("another size")
+        recorder.seqs.append(observation.seq)
+
+    recorder.acquisition._on_observation = refuse
+    recorder.run()
+    assert recorder.words == ["opening", "measuring", "lost", "measuring", "ended"]
+    assert recorder.states[2] == (State.LOST, "another size")
+    assert recorder.seqs == [0, 4]
+    assert recorder.clock.waits == [0.5, 1.0, 2.0]
+
+
+def test_a_source_that_vanishes_is_given_up_in_time() -> None:
+    gone = SourceLost("gone")
+    recorder = Recorder([None, gone], [gone], [None, gone], *[[gone]] * 9)
+    recorder.acquisition._give_up_after_s = 6.0
+    recorder.run()
+    assert recorder.words == ["opening", "measuring", "lost", "measuring", "lost", "failed"]
+    assert recorder.states[-1] == (State.FAILED, "gone; given up after 6 s")
+    assert recorder.clock.waits == [0.5, 1.0, 0.5, 1.0, 2.0, 2.5]  # 6 s from the second loss
 
 
 def test_a_fault_of_our_own_is_shown_in_one_line() -> None:
