@@ -16,12 +16,13 @@ import threading
 import time
 from types import TracebackType
 from typing import Self
-from urllib.parse import SplitResult, unquote, urlsplit
+from urllib.parse import SplitResult, unquote
 
 from readout import __version__
 from readout.capture.damaged import blank
 from readout.capture.multipart import MultipartReader
 from readout.capture.repeats import RepeatWatch
+from readout.capture.source_name import source_name, split_address
 from readout.capture.timebase import Clock, TimeBase
 from readout.errors import BadInput, SourceLost, SourceStalled
 from readout.files.pictures import decode_picture
@@ -49,10 +50,13 @@ class MjpegSource:
         self, url: str, *, connect_timeout_s: float = 5.0, clock: Clock = time.monotonic_ns
     ) -> None:
         """Nothing is opened yet. Raises BadInput if ``url`` names no host."""
-        parts = urlsplit(url)
-        if parts.scheme not in ("http", "https") or not parts.hostname or not _port_fits(parts):
-            raise BadInput(f"{url} is no address of a stream: give http://host:port/path")
-        self._url, self._parts = without_password(url), parts
+        self._url, parts = source_name(url), split_address(url)
+        if parts is None or parts.scheme not in ("http", "https"):
+            raise BadInput(
+                f"{self._url} is no address of a stream: give http://host:port/path (/, ? and # "
+                "in a password as %2F, %3F and %23)"
+            )
+        self._parts = parts
         self._connect_timeout_s = connect_timeout_s
         self._clock = clock
         self._timebase = TimeBase(0, 0)
@@ -191,16 +195,3 @@ def _headers(parts: SplitResult) -> dict[str, str]:
         pair = f"{unquote(parts.username)}:{unquote(parts.password or '')}"
         headers["Authorization"] = "Basic " + base64.b64encode(pair.encode()).decode()
     return headers
-
-
-def without_password(url: str) -> str:
-    """The address as it may be shown and logged."""
-    parts = urlsplit(url)
-    return parts._replace(netloc=parts.netloc.rpartition("@")[2]).geturl()
-
-
-def _port_fits(parts: SplitResult) -> bool:
-    try:
-        return parts.port is None or parts.port > 0
-    except ValueError:  # no number, or one too large
-        return False

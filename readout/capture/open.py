@@ -7,8 +7,8 @@ from dataclasses import dataclass
 from enum import StrEnum
 from pathlib import Path
 
-from readout.capture.mjpeg import without_password
 from readout.capture.source import Source
+from readout.capture.source_name import encodable, source_name
 from readout.errors import BadInput
 
 ALLOWED = (
@@ -46,8 +46,8 @@ _SCHEMES = {
 class SourceDescription:
     """What can be said about a source before it is opened.
 
-    ``where``: the part of the text that says which one. ``title``: a name for people, without a
-    password.
+    ``where``: the part of the text that says which one. ``title``: a name for people, as
+    `readout.capture.source_name` makes it.
     """
 
     kind: SourceKind
@@ -74,15 +74,16 @@ def describe_source(text: str) -> SourceDescription:
     if text == "simulated":
         return SourceDescription(SourceKind.SIMULATED, "", "simulated")
     if text.startswith("usb:") and text != "usb:":
-        return SourceDescription(SourceKind.USB, text[4:], f"camera {text[4:]}")
+        return SourceDescription(SourceKind.USB, text[4:], f"camera {encodable(text[4:])}")
     if scheme and (kind := _SCHEMES.get(scheme.group().lower())):
-        return SourceDescription(kind, text, f"stream {without_password(text)}")
+        return SourceDescription(kind, text, f"stream {source_name(text)}")
     path = Path(text).expanduser()
     if text and path.is_dir():
-        return SourceDescription(SourceKind.FOLDER, str(path), f"folder {path.resolve().name}")
+        title = f"folder {encodable(path.resolve().name)}"
+        return SourceDescription(SourceKind.FOLDER, str(path), title)
     if text and path.is_file():
-        return SourceDescription(SourceKind.VIDEO, str(path), f"video {path.name}")
-    raise BadInput(f"there is no file or source {text!r}; give {ALLOWED}")
+        return SourceDescription(SourceKind.VIDEO, str(path), f"video {encodable(path.name)}")
+    raise BadInput(f"there is no file or source {source_name(text)!r}; give {ALLOWED}")
 
 
 def open_source(

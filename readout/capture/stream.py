@@ -12,6 +12,7 @@ from typing import Self
 
 from readout.capture.opencv import cv2
 from readout.capture.repeats import RepeatWatch
+from readout.capture.source_name import source_name
 from readout.capture.timebase import Clock, TimeBase
 from readout.errors import SourceLost
 from readout.files.pictures import luminance
@@ -36,7 +37,7 @@ class StreamSource:
         clock: Clock = time.monotonic_ns,
     ) -> None:
         """Nothing is opened yet."""
-        self._url, self._clock = url, clock
+        self._url, self._name, self._clock = url, source_name(url), clock
         self._timeouts_ms = round(open_timeout_s * 1e3), round(read_timeout_s * 1e3)
         self._capture: cv2.VideoCapture | None = None
         self._timebase = TimeBase(0, 0)
@@ -49,7 +50,7 @@ class StreamSource:
         capture = cv2.VideoCapture(self._url, cv2.CAP_FFMPEG, bounds)
         if not capture.isOpened():
             capture.release()
-            raise SourceLost(f"{self._url} cannot be opened: check address and camera")
+            raise SourceLost(f"{self._name} cannot be opened: check address and camera")
         self._capture = capture
         self._timebase = TimeBase.now(self._clock)
         self._repeats, self._seq = RepeatWatch(), 0
@@ -68,13 +69,13 @@ class StreamSource:
     def read(self, timeout_s: float) -> Frame:  # noqa: ARG002 (see the class)
         """The next frame; see `readout.capture.source.Source`."""
         if self._capture is None:
-            raise SourceLost(f"{self._url} is not open: open it first")
+            raise SourceLost(f"{self._name} is not open: open it first")
         grabbed = self._capture.grab()
         t_mono_ns = self._clock()
         retrieved, picture = self._capture.retrieve() if grabbed else (False, None)
         if not retrieved or picture is None:
             self.__exit__(None, None, None)
-            raise SourceLost(f"{self._url} gives no more frames: check the camera")
+            raise SourceLost(f"{self._name} gives no more frames: check the camera")
         pixels = luminance(picture)
         frame = Frame(
             pixels,

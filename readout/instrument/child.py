@@ -31,6 +31,7 @@ from typing import Any, Self
 from readout import errors
 from readout.angle import Calibration
 from readout.capture.source import Source
+from readout.capture.source_name import source_name
 from readout.errors import ReadoutError, SourceLost, SourceStalled
 from readout.instrument.observer import DirectObserver, Picture
 from readout.model import Observation, Target
@@ -69,7 +70,7 @@ class ChildObserver:
         self._arguments = source, target, open_source
         self._open_within_s = open_within_s
         self._silent_at_most_s = silent_at_most_s
-        self._source = source
+        self._source = source_name(source)
         self._process: multiprocessing.process.BaseProcess | None = None
         self._pipe: Any = None  # a Connection; on Windows another class with the same methods
         self._ready = False
@@ -224,8 +225,8 @@ def _child(pipe: Connection, source: str, target: Target, open_source: OpenSourc
         return  # the parent has closed the pipe
     except Exception as error:
         log.debug("the child failed", exc_info=True)
-        line = f"{source}: internal error, please report it: {type(error).__name__}: {error}"
-        _send(pipe, ("error", "SourceLost", line))
+        what = f"internal error, please report it: {type(error).__name__}: {error}"
+        _send(pipe, ("error", "SourceLost", f"{source_name(source)}: {what}"))
 
 
 def _asked_to_end(pipe: Connection, observer: DirectObserver) -> bool:

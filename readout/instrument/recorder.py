@@ -14,7 +14,7 @@ from pathlib import Path
 from typing import Any
 
 from readout import __version__
-from readout.capture.mjpeg import without_password
+from readout.capture.source_name import source_name
 from readout.errors import NotNow, NotRecorded
 from readout.files.calibration_file import calibration_document
 from readout.instrument.instrument import Event, Instrument
@@ -91,7 +91,7 @@ class Recorder:
                 title=title,
                 note=note,
                 started_utc_ns=started_utc_ns,
-                source=without_password(self._instrument.source or ""),
+                source=self._instrument.source or "",
                 every_s=every_s,
                 settings=_without_passwords(settings),
                 version=__version__,
@@ -178,4 +178,4 @@ class Recorder:
 
 def _without_passwords(settings: dict[str, Any]) -> dict[str, Any]:
     source = settings.get("source")
-    return settings | {"source": without_password(source)} if isinstance(source, str) else settings
+    return settings | {"source": source_name(source)} if isinstance(source, str) else settings

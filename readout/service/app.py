@@ -12,7 +12,8 @@ from fastapi.responses import HTMLResponse
 from fastapi.staticfiles import StaticFiles
 
 from readout import __version__
-from readout.capture.open import describe_source
+from readout.capture.open import SourceDescription, describe_source
+from readout.errors import BadInput
 from readout.instrument import Instrument
 from readout.instrument.recorder import Recorder
 from readout.service.calibration_routes import FOLDER, calibration_routes
@@ -52,7 +53,7 @@ def make_app(
         now = instrument.status()
         return status_message(
             now,
-            described=describe_source(now.source) if now.source else None,
+            described=_described(now.source),
             recording=recorder.recording,
             dropped=feed.dropped,
             session_start_utc_ns=instrument.start_time.t_utc_ns,
@@ -80,3 +81,11 @@ def make_app(
         app.get("/", include_in_schema=False)(lambda: HTMLResponse(NOT_BUILT))
     app.add_middleware(Guard, port=port)
     return app
+
+
+def _described(source: str | None) -> SourceDescription | None:
+    """None for a folder or file that is gone by now: that is told by the state, not here."""
+    try:
+        return describe_source(source) if source else None
+    except BadInput:
+        return None

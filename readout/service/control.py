@@ -9,6 +9,7 @@ from typing import Any
 
 from readout.angle import Calibration
 from readout.capture.open import describe_source
+from readout.capture.source_name import source_name
 from readout.files.calibration_file import load_calibration
 from readout.instrument import Instrument, Optics, State
 from readout.instrument.instrument import refuse_unfit
@@ -55,7 +56,10 @@ class Control:
         Raises BadInput, and changes nothing, for a value that cannot be used.
         """
         with self._lock:
-            before, after = self._store.current, self._store.merged(changes)
+            before = self._store.current
+            if before.source is not None and changes.get("source") == source_name(before.source):
+                changes = changes | {"source": before.source}  # as it was shown: meant is the same
+            after = self._store.merged(changes)
             if "source" in changes:
                 describe_source(self._source(after))
             from_settings = self._from_settings

@@ -18,7 +18,6 @@ from types import FrameType
 from typing import TYPE_CHECKING, Any
 
 from readout import __version__
-from readout.capture.mjpeg import without_password
 from readout.capture.open import describe_source
 from readout.errors import BadInput, Busy
 from readout.instrument import Instrument, State
@@ -205,7 +204,7 @@ def _make_folder(folder: Path) -> None:
 
 def _welcome(address: str, data: Path, instrument: Instrument) -> list[str]:
     source = instrument.source or ""
-    shown = "SIMULATED, no real mirror" if source == "simulated" else without_password(source)
+    shown = "SIMULATED, no real mirror" if source == "simulated" else source
     return [f"readout {__version__} at {address}", f"data in {data}", f"source: {shown}"]
 
 

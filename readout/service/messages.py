@@ -12,7 +12,6 @@ from typing_extensions import TypedDict
 
 from readout import __version__
 from readout.angle import Calibration
-from readout.capture.mjpeg import without_password
 from readout.capture.open import SourceDescription
 from readout.instrument import Average, Event, State, Status, Zero
 from readout.instrument.recorder import Recording
@@ -372,8 +371,8 @@ def status_message(
 ) -> StatusMessage:
     """``dropped``: readings lost to slow viewers."""
     return {
-        "source": without_password(status.source) if status.source else None,
-        "source_name": described.title if described else "",
+        "source": status.source,
+        "source_name": described.title if described else status.source or "",
         "simulated": described.simulated if described else False,
         "state": status.state.value,
         "state_detail": status.state_detail,

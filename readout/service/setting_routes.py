@@ -18,15 +18,18 @@ def setting_routes(instrument: Instrument, feed: Feed, control: Control) -> APIR
 
     @routes.get("/settings")
     def get_settings() -> dict[str, Any]:
-        """All settings."""
-        return control.settings.document()
+        """All settings, the source without a password."""
+        return control.settings.shown()
 
     @routes.put("/settings")
     def put_settings(changes: dict[str, Any]) -> dict[str, Any]:
-        """Merge the given settings into those kept; answers them all."""
+        """Merge the given settings into those kept; answers them all.
+
+        A source given back as it was shown stays as it was, password and all.
+        """
         settings = control.change(changes)
         feed.announce()
-        return settings.document()
+        return settings.shown()
 
     @routes.post("/zero")
     def post_zero() -> ZeroMessage | None:

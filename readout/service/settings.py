@@ -14,6 +14,7 @@ from platformdirs import user_config_path
 from pydantic import BaseModel, ConfigDict, Field, ValidationError
 
 from readout.angle import Mounting
+from readout.capture.source_name import source_name
 from readout.errors import BadInput
 from readout.files.atomic import write_text_whole
 from readout.instrument import Optics, Statistic
@@ -69,6 +70,10 @@ class Settings(_Model):
     def document(self) -> dict[str, Any]:
         """The settings as JSON holds them."""
         return self.model_dump(mode="json", by_alias=True)
+
+    def shown(self) -> dict[str, Any]:
+        """The settings as people and pages may see them: the source without its password."""
+        return self.document() | {"source": self.source and source_name(self.source)}
 
 
 def default_settings_path() -> Path:

@@ -237,3 +237,11 @@ def test_the_stamp_is_that_of_the_arrival():
         frame = source.read(WAIT_S)
         assert frame.t_mono_ns < next(times)
         assert frame.t_utc_ns - frame.t_mono_ns == source._timebase.utc_ns(0)
+
+
+def test_an_address_that_is_none_is_refused_without_its_password():
+    for url in ("http://user:hu/sh@cam/x", "http://[::1", "http://cam:port/", "http://"):
+        with pytest.raises(BadInput, match="is no address") as raised:
+            MjpegSource(url)
+        assert "sh@" not in str(raised.value)
+        assert "hu/" not in str(raised.value)
