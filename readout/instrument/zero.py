@@ -12,8 +12,12 @@ from readout.errors import NotNow
 from readout.instrument.averaging import Average, Statistic, average_of
 from readout.model import F64, Reading
 
-STILL_WITHIN_ARCSEC = 0.2
-"""Twice what the eye resolves on a drum (common practice): less motion does not hinder a zero."""
+STILL_WITHIN_ARCSEC = 0.4
+"""Motion from part to part of the window that does not hinder a zero: four times what the eye
+resolves on a drum (common practice), and what a sound bench does by itself.
+"""
+SWAY_ARCSEC = 0.5
+"""Scatter (standard deviation) that ordinary sway of a bench may add; more is motion."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -30,27 +34,47 @@ class Zero:
     set_utc_ns: int
 
 
-def travel(t_s: F64, values: F64) -> tuple[float, float]:
-    """How far a straight line through the values moves from first to last, and the scatter
-    (standard deviation) about that line. Shapes (n,), n >= 3, not all times alike.
-    """
-    slope, start = np.polyfit(t_s - t_s[0], values, 1)
-    about_line = values - (start + slope * (t_s - t_s[0]))
-    scatter = math.sqrt(float(about_line @ about_line) / (values.size - 2))
-    return float(slope) * float(t_s[-1] - t_s[0]), scatter
-
-
 def moving(rows: Sequence[Reading]) -> bool:
-    """True if an axis travels by more than three times its scatter, and by more than can pass."""
+    """True if an axis moves by more than its claimed noise explains and more than can pass.
+
+    Three things are looked at, none against the scatter of the readings themselves, so that no
+    motion can hide behind its own size: the scatter; the way a straight line through the values
+    goes; and means of the parts against each other, halves and both ends against the rest, where a
+    step late or early shows.
+    """
     good = [r for r in rows if r.good]
-    if len(good) < 5:
-        return False
     t_s = np.array([r.t_s for r in good])
-    for values in (np.array([r.x_arcsec for r in good]), np.array([r.y_arcsec for r in good])):
-        way, scatter = travel(t_s, values)
-        if abs(way) > max(3 * scatter, STILL_WITHIN_ARCSEC):
+    return any(
+        _moves(t_s, np.array(values), float(np.median(sd)))
+        for values, sd in (
+            ([r.x_arcsec for r in good], [r.x_sd_arcsec for r in good]),
+            ([r.y_arcsec for r in good], [r.y_sd_arcsec for r in good]),
+        )
+        if len(values) > 1
+    )
+
+
+def _moves(t_s: F64, values: F64, sd: float) -> bool:
+    """Limits are three standard deviations of what independent noise ``sd`` would give."""
+    n = values.size
+    if float(values.std(ddof=1)) > max(SWAY_ARCSEC, 3 * sd):
+        return True
+    if n < 5:
+        return False
+    # Slope of a line through evenly spaced values: variance 12 sd^2 / n over the whole way.
+    if abs(travel(t_s, values)) > max(STILL_WITHIN_ARCSEC, 3 * sd * math.sqrt(12 / n)):
+        return True
+    for part in (n // 2, n // 5, n - n // 5):
+        step = float(values[part:].mean() - values[:part].mean())
+        if abs(step) > max(STILL_WITHIN_ARCSEC, 3 * sd * math.sqrt(1 / part + 1 / (n - part))):
             return True
     return False
+
+
+def travel(t_s: F64, values: F64) -> float:
+    """How far a straight line through the values goes from first to last; shapes (n,), n >= 2."""
+    slope, _ = np.polyfit(t_s - t_s[0], values, 1)
+    return float(slope) * float(t_s[-1] - t_s[0])
 
 
 def zero_from(
