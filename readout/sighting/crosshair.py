@@ -8,7 +8,7 @@ import numpy as np
 
 from readout.model import Arm, Pixels, Quality, Sighting, no_sighting
 from readout.sighting.arm import ArmFit, fit_arm
-from readout.sighting.find import RoughArm, find_upright_arms
+from readout.sighting.find import RoughArm, find_crosshairs
 from readout.sighting.fold import Line
 from readout.sighting.solve import Shape
 
@@ -34,28 +34,21 @@ def locate_crosshair(pixels: Pixels, *, full_scale: int, prior: Sighting | None 
     """
     if prior is not None and (near := _from_prior(pixels, prior)) is not None:
         return _sighting(pixels, full_scale, *near)
-    upright, level = find_upright_arms(pixels), find_upright_arms(pixels.T)
-    pair = _same_polarity(upright, level)
-    if pair is not None:
-        first, second = pair
-        fits = _fit_both(pixels, first.line, second.line, _start(first), _start(second))
-        if fits is not None:
-            return _sighting(pixels, full_scale, *fits)
-    lone = [
-        fit
-        for picture, arms in ((pixels, upright), (pixels.T, level))
-        for arm in arms[:1]
-        if (fit := fit_arm(picture, arm.line, _start(arm))) is not None and _credible(fit)
-    ]
+    lone = False
+    for rough in find_crosshairs(pixels):
+        upright, level = rough.upright, rough.level
+        if upright is not None and level is not None:
+            fits = _fit_both(pixels, upright.line, level.line, _start(upright), _start(level))
+            if fits is not None:
+                return _sighting(pixels, full_scale, *fits)
+        lone = lone or _stands_alone(pixels, upright) or _stands_alone(pixels.T, level)
     return no_sighting(Quality.ONE_AXIS if lone else Quality.NO_IMAGE)
 
 
-def _same_polarity(
-    upright: list[RoughArm], level: list[RoughArm]
-) -> tuple[RoughArm, RoughArm] | None:
-    """The strongest pair of arms that are both bright or both dark."""
-    pairs = [(u, v) for u in upright for v in level if u.polarity == v.polarity]
-    return max(pairs, key=lambda p: min(p[0].strength, p[1].strength), default=None)
+def _stands_alone(pixels: Pixels, arm: RoughArm | None) -> bool:
+    """True if a rough arm is a real one, though it has no partner."""
+    fit = None if arm is None else fit_arm(pixels, arm.line, _start(arm))
+    return fit is not None and _credible(fit)
 
 
 def _start(arm: RoughArm) -> Shape:

@@ -1,37 +1,32 @@
 """A crosshair anywhere in a frame, without knowing where: a rough line for each arm.
 
-The picture is averaged into bands across an arm. In each band a *ridge* stands out of both its
-neighbours (a step does not, and nor does a gradient); its strongest ridges of every width vote for
-straight lines, as in the Hough transform (Duda and Hart, Commun. ACM 15 (1972) 11). A line that
-enough bands agree on is an arm. Nothing is assumed of place, brightness, width or polarity; the
-turn is sought within +-12 degrees.
+The strongest ridges of each band vote for straight lines, as in the Hough transform (Duda and
+Hart, Commun. ACM 15 (1972) 11). A line that enough bands agree on is an arm. Nothing is assumed of
+place, brightness, width or polarity; the turn is sought within +-12 degrees.
 """
 
 from __future__ import annotations
 
 import math
+from collections.abc import Iterator
 from dataclasses import dataclass
 
-import cv2
 import numpy as np
 from numpy.typing import NDArray
 
 from readout.model import F64, Pixels
 from readout.sighting.fold import Line
+from readout.sighting.ridges import Ridges, averaged, ridges_of
 
-LARGEST_BAND_PX = 16
-"""most rows averaged into a band: a line turned by 10 degrees crosses it within 3 px"""
-BANDS = 24
-"""at least so many bands, where the picture has the rows"""
-COLUMNS = 320
-"""about as many columns as the averaged picture keeps"""
-WIDTHS = (1, 2, 4, 8)
-"""widths of the ridges looked for, in averaged columns"""
 RIDGES_PER_BAND = 3
 STEEPEST = math.tan(math.radians(12))
-SLOPES = 49
+SLOPES = 31
+CELL_COLUMNS = 3
+"""votes this many columns apart count for one line: half a step of slope moves its ends by 2"""
 SURE = 4.5
 """a ridge this many noise sd high is hardly noise: some 10^4 places are looked at"""
+TOLERANCES = (4.0, 2.5, 1.5)
+"""columns a ridge may be off the line, closer at each refinement"""
 LEAST_BANDS = 5
 LEAST_SHARE = 0.1
 """an arm must be seen in this share of the bands"""
@@ -39,130 +34,127 @@ LEAST_SHARE = 0.1
 
 @dataclass(frozen=True, slots=True)
 class RoughArm:
-    """A line seen in many bands: where, how strong (noise sd), bright or dark, how wide (px)."""
+    """A line seen in many bands: where, bright (1) or dark (-1), about how wide, px."""
 
     line: Line
-    strength: float
     polarity: int
     width_px: float
 
 
-def find_upright_arms(pixels: Pixels) -> list[RoughArm]:
-    """The best bright and the best dark upright arm, strongest first; none, one or two.
+@dataclass(frozen=True, slots=True)
+class RoughCrosshair:
+    """The best upright and the best level arm of one polarity; None where there is none.
 
-    Pass the transposed picture for the level arm.
+    The level arm's line is that of the transposed picture.
     """
-    height, width = pixels.shape
-    bands = height // int(np.clip(height // BANDS, 1, LARGEST_BAND_PX))
-    step = max(1, round(width / COLUMNS))
-    columns = max(1, width // step)
-    if bands < LEAST_BANDS or columns < 16:
-        return []
-    averaged = cv2.resize(pixels.astype(np.float32), (columns, bands), interpolation=cv2.INTER_AREA)
-    floor = 0.3 / math.sqrt(width / columns * height / bands)
-    strengths, scales = _ridges(np.asarray(averaged, dtype=np.float64), floor)
-    row_of_band = (np.arange(bands) + 0.5) * height / bands - 0.5
-    found = []
-    for polarity in (1, -1):
-        arm = _vote(np.maximum(polarity * strengths, 0), scales, row_of_band / (width / columns))
-        if arm is not None:
-            line, strength, scale = arm
-            per_column = width / columns
-            found.append(
-                RoughArm(
-                    Line(
-                        (line.middle_x + 0.5) * per_column - 0.5,
-                        line.slope,
-                        line.middle_y * per_column,
-                    ),
-                    strength,
-                    polarity,
-                    scale * per_column,
-                )
-            )
-    return sorted(found, key=lambda arm: -arm.strength)
+
+    upright: RoughArm | None
+    level: RoughArm | None
 
 
-def _ridges(averaged: F64, floor: float) -> tuple[F64, NDArray[np.intp]]:
-    """Height of the best ridge at each place, in noise sd, and its width in columns.
+@dataclass(frozen=True, slots=True)
+class _Votes:
+    """Ridges as points: column ``x`` and row ``y`` in columns, height in noise sd, width, band."""
 
-    A ridge is a stretch brighter (or darker) than the stretches of the same width on *both* its
-    sides. ``floor``: least noise sd of a column, from quantisation.
-    """
-    bands, columns = averaged.shape
-    best = np.zeros(averaged.shape)
-    widths = np.ones(averaged.shape, dtype=np.intp)
-    for width in WIDTHS:
-        gap = width + max(1, width // 2)
-        pad = gap + width
-        if pad >= columns:
-            break
-        padded = np.pad(averaged, ((0, 0), (pad, pad)), mode="reflect")
-        sums = np.concatenate([np.zeros((bands, 1)), np.cumsum(padded, axis=1)], axis=1)
-        stretch = (sums[:, width:] - sums[:, :-width]) / width
-        start = pad - width // 2
-        middle = stretch[:, start : start + columns]
-        left = middle - stretch[:, start - gap : start - gap + columns]
-        right = middle - stretch[:, start + gap : start + gap + columns]
-        noise = 1.4826 * float(np.median(np.abs(left + right))) / 2
-        ridge = np.where(left * right > 0, np.sign(left) * np.minimum(abs(left), abs(right)), 0.0)
-        ridge /= max(noise, floor / math.sqrt(width))
-        better = np.abs(ridge) > 1.15 * np.abs(best)
-        best = np.where(better, ridge, best)
-        widths = np.where(better, width, widths)
-    return best, widths
+    x: F64
+    y: F64
+    height: F64
+    width: NDArray[np.intp]
+    band: NDArray[np.intp]
+
+    @property
+    def weight(self) -> F64:
+        """The brighter of two lines wins, but no blob with its few bands."""
+        return np.asarray(np.log1p(self.height) * (self.height > SURE / 2))
 
 
-def _vote(
-    heights: F64, widths: NDArray[np.intp], row_of_band: F64
-) -> tuple[Line, float, float] | None:
-    """The line most bands agree on: (line, typical height, typical width), all in columns."""
-    bands, columns = heights.shape
-    left = heights.copy()
-    band = np.arange(bands)
-    at, votes, width = [], [], []
+def find_crosshairs(pixels: Pixels) -> Iterator[RoughCrosshair]:
+    """Rough arms, first those of the polarity that stands out more, then the other."""
+    small, step_px = averaged(pixels)
+    upright, level = ridges_of(small, step_px), ridges_of(small.T, step_px)
+    if upright is None or level is None:
+        return
+    outstanding = {
+        polarity: sum(
+            float(np.median((polarity * ridges.heights).max(axis=1))) for ridges in (upright, level)
+        )
+        for polarity in (1, -1)
+    }
+    for polarity in sorted(outstanding, key=lambda sign: -outstanding[sign]):
+        yield RoughCrosshair(_arm(upright, polarity), _arm(level, polarity))
+
+
+def _arm(ridges: Ridges, polarity: int) -> RoughArm | None:
+    """The line of one polarity that most bands agree on."""
+    votes = _strongest(ridges, polarity)
+    line = _refined(votes, _most_voted(votes, ridges.heights.shape[1]))
+    if line is None:
+        return None
+    found, seen = line
+    if seen.size < max(LEAST_BANDS, LEAST_SHARE * len(ridges.heights)):
+        return None
+    if abs(found.slope) > STEEPEST:
+        return None
+    step = ridges.step_px
+    return RoughArm(
+        Line((found.middle_x + 0.5) * step - 0.5, found.slope, found.middle_y * step),
+        polarity,
+        float(np.median(votes.width[seen])) * step,
+    )
+
+
+def _strongest(ridges: Ridges, polarity: int) -> _Votes:
+    """The few highest ridges of each band, none within reach of a higher one."""
+    left = np.maximum(polarity * ridges.heights, 0.0)
+    band, column = np.arange(len(left)), np.arange(left.shape[1])
+    at, heights, widths = [], [], []
     for _ in range(RIDGES_PER_BAND):
         peak = left.argmax(axis=1)
         at.append(peak)
-        votes.append(left[band, peak])
-        width.append(widths[band, peak])
-        near = (
-            np.abs(np.arange(columns)[None, :] - peak[:, None]) <= 2 * widths[band, peak][:, None]
-        )
-        left[near] = 0.0
-    x = np.concatenate(at).astype(np.float64)
-    height = np.concatenate(votes)
-    scale = np.concatenate(width)
-    y = np.tile(row_of_band, RIDGES_PER_BAND)
-    vote = np.log1p(height) * (height > SURE / 2)  # the brighter of two lines, but no blob, wins
-    middle_y = float(row_of_band.mean())
+        heights.append(left[band, peak])
+        widths.append(ridges.widths[band, peak])
+        left[np.abs(column[None, :] - peak[:, None]) <= 2 * widths[-1][:, None]] = 0.0
+    return _Votes(
+        np.concatenate(at).astype(np.float64),
+        np.tile(ridges.band_middles_px / ridges.step_px, RIDGES_PER_BAND),
+        np.concatenate(heights),
+        np.concatenate(widths),
+        np.tile(band, RIDGES_PER_BAND),
+    )
+
+
+def _most_voted(votes: _Votes, columns: int) -> Line:
+    """The fullest cell of the table of slopes and columns."""
+    middle_y = float(votes.y.mean())
     slopes = np.linspace(-STEEPEST, STEEPEST, SLOPES)
-    crossing = x[None, :] - slopes[:, None] * (y - middle_y)[None, :]
-    bins = 2 * columns
-    cell = np.clip(np.rint(crossing) + columns // 2, 0, bins - 1).astype(np.intp)
-    cell += np.arange(SLOPES)[:, None] * bins
-    counts = np.bincount(cell.ravel(), np.broadcast_to(vote, cell.shape).ravel(), SLOPES * bins)
-    table = counts.reshape(SLOPES, bins)
-    table[:, 1:-1] = table[:, :-2] + table[:, 1:-1] + table[:, 2:]
-    best_slope, best_cell = np.unravel_index(int(table.argmax()), table.shape)
-    slope, middle_x = float(slopes[best_slope]), float(best_cell - columns // 2)
-    in_band = np.tile(band, RIDGES_PER_BAND)
-    sure = np.zeros(0, dtype=np.intp)
-    for tolerance in (4.0, 3.0, 2.0, 2.0, 1.5):
-        near = np.abs(x - middle_x - slope * (y - middle_y)) <= tolerance
-        best = _highest_of_each(in_band, np.where(near & (height > SURE / 2), height, 0.0))
+    crossing = votes.x[None, :] - slopes[:, None] * (votes.y - middle_y)[None, :]
+    cells = 2 * columns
+    cell = np.clip(np.rint(crossing) + columns // 2, 0, cells - 1).astype(np.intp)
+    cell += np.arange(SLOPES)[:, None] * cells
+    weights = np.broadcast_to(votes.weight, cell.shape)
+    table = np.bincount(cell.ravel(), weights.ravel(), SLOPES * cells).reshape(SLOPES, cells)
+    sums = np.cumsum(table, axis=1)
+    together = sums[:, CELL_COLUMNS:] - sums[:, :-CELL_COLUMNS]
+    slope, first = np.unravel_index(int(together.argmax()), together.shape)
+    middle = float(first) + 1 + (CELL_COLUMNS - 1) / 2
+    return Line(middle - columns // 2, float(slopes[slope]), middle_y)
+
+
+def _refined(votes: _Votes, line: Line) -> tuple[Line, NDArray[np.intp]] | None:
+    """A straight line through one ridge a band, and those of them that are hardly noise."""
+    seen = np.zeros(0, dtype=np.intp)
+    for tolerance in TOLERANCES:
+        near = np.abs(votes.x - line.x_at(votes.y)) <= tolerance
+        near &= votes.height > SURE / 2
+        best = _highest_of_each(votes.band, np.where(near, votes.height, 0.0))
         if best.size < LEAST_BANDS:
             return None
-        slope, middle_x = np.polyfit(y[best] - middle_y, x[best], 1, w=np.sqrt(vote[best]))
-        sure = best[height[best] > SURE]
-    seen = sure.size
-    if seen < max(LEAST_BANDS, LEAST_SHARE * bands) or abs(slope) > STEEPEST:
-        return None
-    return (
-        Line(float(middle_x), float(slope), middle_y),
-        float(np.median(height[sure])) * math.sqrt(seen / bands),
-        float(np.median(scale[sure])),
-    )
+        slope, middle_x = np.polyfit(
+            votes.y[best] - line.middle_y, votes.x[best], 1, w=np.sqrt(votes.weight[best])
+        )
+        line = Line(float(middle_x), float(slope), line.middle_y)
+        seen = best[votes.height[best] > SURE]
+    return line, seen
 
 
 def _highest_of_each(band: NDArray[np.intp], height: F64) -> NDArray[np.intp]:
