@@ -14,7 +14,7 @@ from readout.cli.options import (
     TargetOption,
     data_folder,
 )
-from readout.cli.say import print_line
+from readout.cli.say import print_line, warn
 
 EXAMPLE = (
     "Example: `readout live --source usb:0` measures with the first camera. "
@@ -55,7 +55,7 @@ def live(
         settings=settings or default_settings_path(),
     )
     options = Options(source, target, load_calibration(calibration) if calibration else None)
-    run_live(options, place, browser=browser, say=print_line)
+    run_live(options, place, browser=browser, say=print_line, warn=warn)
 
 
 command = live

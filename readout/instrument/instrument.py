@@ -64,6 +64,9 @@ class Status:
     zero: Zero | None
 
 
+SOURCE_CHANGED = "source"
+"""The event that tells of another source; what is recorded of the one before ends with it."""
+
 _EVENT_OF_STATE = {
     State.STALLED: "stalled",
     State.LOST: "lost",
@@ -108,6 +111,7 @@ class Instrument:
         self._came_ns = 0
         self._acquisition: Acquisition | None = None
         self._source: str | None = None
+        self._source_given: str | None = None
         self._target = Target.CROSSHAIR
         self._state = State.OPENING
         self._detail = ""
@@ -129,20 +133,22 @@ class Instrument:
         """Measure ``source`` instead of what was measured before.
 
         ``patient``: wait for a live source that is not there yet. One that vanishes is waited for
-        ``give_up_after_s``. It begins with the ``start`` (a
-        thread of its own) or the ``run`` (this thread) of the acquisition returned.
+        ``give_up_after_s``. It begins with the ``start`` (a thread of its own) or the ``run`` (this
+        thread) of the acquisition returned.
         """
         before = self._acquisition
         if before is not None:
             before.stop()
         with self._lock:
+            changed_from = self._source if source != self._source_given else None
+            self._source_given = source
             self._source, self._target = source_name(source), target
             self._state, self._detail = State.OPENING, ""
             self._missed += before.missed if before else 0
             self._size_px = self._calibration = self._newest = None
             self._size_known = False
-            self._forget_readings()
-            self._acquisition = Acquisition(
+            zero_lost = self._forget_readings()
+            self._acquisition = acquisition = Acquisition(
                 lambda: self._observe(source, target),
                 on_observation=self._take,
                 on_state=self._change_state,
@@ -151,7 +157,10 @@ class Instrument:
                 give_up_after_s=give_up_after_s,
                 clock_ns=self._clock_ns,
             )
-            return self._acquisition
+        if changed_from is not None:
+            self.tell(SOURCE_CHANGED, f"the source is {self._source} now, it was {changed_from}")
+        self._tell_lost(zero_lost, "the source was opened anew")
+        return acquisition
 
     def stop(self) -> None:
         """End the acquisition; returns within a second."""
@@ -263,11 +272,12 @@ class Instrument:
                 return
             self._scale = scale
             self._scale_chosen = False
-            self._forget_readings()
+            zero_lost = self._forget_readings()
             if self._state is State.ENDED:
                 self._read_newest_anew()
         if self._acquisition is not None:
             self.tell("calibration", "the scale was changed")
+        self._tell_lost(zero_lost, "the scale was changed")
 
     def set_zero(self) -> Zero:
         """Zero at the averaged value. Raises NotNow while flagged or moving, or none comes."""
@@ -280,7 +290,8 @@ class Instrument:
                 now_utc_ns=self.start_time.utc_ns(self._clock_ns()),
             )
             self._zero = zero
-            return zero
+        self.tell("zero", f"zero set at X {zero.x_arcsec:+.3f}″, Y {zero.y_arcsec:+.3f}″")
+        return zero
 
     def _refuse_unless_live(self) -> None:
         """What a source showed long ago is no zero of what stands before the instrument now."""
@@ -299,7 +310,9 @@ class Instrument:
 
     def clear_zero(self) -> None:
         with self._lock:
-            self._zero = None
+            before, self._zero = self._zero, None
+        if before is not None:
+            self.tell("zero", "the zero was taken back")
 
     # -- called by the acquisition ------------------------------------------------------------
 
@@ -359,18 +372,20 @@ class Instrument:
 
     def _change_state(self, state: State, detail: str) -> None:
         detail = encodable(detail)
+        zero_lost = False
         with self._lock:
             before, self._state, self._detail = self._state, state, detail
             if state is State.LOST:
                 self._size_known = False
             if state in (State.LOST, State.FAILED):
                 self._newest = None
-                self._forget_readings()
+                zero_lost = self._forget_readings()
         if state is State.MEASURING:
             happened = "recovered" if before is State.STALLED else "opened"
             self.tell(happened, f"{self._source}: measuring")
         elif state in _EVENT_OF_STATE and state is not before:
             self.tell(_EVENT_OF_STATE[state], detail or f"{self._source}: {state.value}")
+        self._tell_lost(zero_lost, "the source was lost")
         for listener in self.on_state:
             listener(state, detail)
 
@@ -385,11 +400,18 @@ class Instrument:
         for listener in self.on_event:
             listener(happened)
 
-    def _forget_readings(self) -> None:
-        """A zero or an average never reaches across a gap in which anything may have moved."""
+    def _forget_readings(self) -> bool:
+        """A zero or an average never reaches across a gap in which anything may have moved.
+
+        True if there was a zero.
+        """
         self._window.clear()
-        self._average = None
-        self._zero = None
+        before, self._average, self._zero = self._zero, None, None
+        return before is not None
+
+    def _tell_lost(self, zero_lost: bool, why: str) -> None:
+        if zero_lost:
+            self.tell("zero", f"the zero is gone: {why}")
 
 
 def _size_changed(

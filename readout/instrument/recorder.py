@@ -17,13 +17,14 @@ from readout import __version__
 from readout.capture.source_name import source_name
 from readout.errors import NotNow, NotRecorded
 from readout.files.calibration_file import calibration_document
-from readout.instrument.instrument import Event, Instrument
+from readout.instrument.instrument import SOURCE_CHANGED, Event, Instrument
 from readout.instrument.joining import Intervals, Joined
 from readout.logbook import Logbook, NewRun, Spread
-from readout.logbook.statements import STOPPED
+from readout.logbook.statements import STOPPED, UNWRITABLE
 from readout.model import Reading
 
 ENDED_WITH_READOUT = "readout was ended"
+ANOTHER_SOURCE = "the source was changed"
 
 
 @dataclass(frozen=True, slots=True)
@@ -58,6 +59,7 @@ class Recorder:
         self._switching = threading.Lock()  # one start or stop at a time; may wait for the disk
         self._lock = threading.Lock()  # of what follows; never held for longer than an instant
         self._open: _Open | None = None
+        self._broken_off_id: int | None = None
         instrument.on_reading.append(self._take)
         instrument.on_event.append(self._hear)
 
@@ -75,6 +77,11 @@ class Recorder:
                 return None
             new = run.new
             return Recording(run.id, new.title, new.started_utc_ns, new.every_s, run.readings)
+
+    @property
+    def broken_off_id(self) -> int | None:
+        """The run that could not be written any more, while the log itself may not know it."""
+        return self._broken_off_id
 
     def start(
         self, *, title: str, note: str = "", every_s: float = 0.0, settings: dict[str, Any]
@@ -97,6 +104,7 @@ class Recorder:
                 version=__version__,
             )
             run_id = self._logbook.start(new)
+            self._broken_off_id = None  # the log has ended it
             intervals = Intervals(every_s, origin_s=begin_s) if every_s > 0 else None
             with self._lock:
                 self._open = _Open(run_id, new, begin_s, intervals)
@@ -116,7 +124,8 @@ class Recorder:
             with self._lock:
                 self._close_interval(run)
                 self._open = None
-            self._instrument.tell("run_stopped", f"run {run_id} ended, {run.readings} rows")
+            why = "" if ending == STOPPED else f": {ending}"
+            self._instrument.tell("run_stopped", f"run {run_id} ended, {run.readings} rows{why}")
             self._logbook.end(self._instrument.now()[1], ending)
 
     def close(self) -> None:
@@ -124,6 +133,9 @@ class Recorder:
         recording = self.recording
         if recording is not None:
             self.stop(recording.id, ENDED_WITH_READOUT)
+        elif self._broken_off_id is not None:
+            with contextlib.suppress(NotRecorded):  # told before; perhaps there is room by now
+                self._logbook.end(self._instrument.now()[1], UNWRITABLE)
 
     # -- called by the acquisition ------------------------------------------------------------
 
@@ -138,6 +150,7 @@ class Recorder:
             with self._lock:
                 self._open = None
             if run is not None:
+                self._broken_off_id = run.id
                 self._instrument.tell("run_stopped", f"run {run.id} was broken off: {error}")
 
     def _record(self, run: _Open, reading: Reading) -> None:
@@ -174,6 +187,11 @@ class Recorder:
         # A log that cannot be written cannot hold the event that says so; viewers have it.
         with contextlib.suppress(NotRecorded):
             self._logbook.note_event(event.t_utc_ns, event.event, event.text)
+        recording = self.recording
+        if event.event == SOURCE_CHANGED and recording is not None:
+            # Told of by the log itself if it fails; the new source is measured all the same.
+            with contextlib.suppress(NotNow, NotRecorded):
+                self.stop(recording.id, ANOTHER_SOURCE)
 
 
 def _without_passwords(settings: dict[str, Any]) -> dict[str, Any]:

@@ -12,7 +12,6 @@ import webbrowser
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
-from functools import partial
 from pathlib import Path
 from types import FrameType
 from typing import TYPE_CHECKING, Any
@@ -70,11 +69,17 @@ class _Beginning:
 
 
 def run_live(
-    options: Options, place: Place, *, browser: bool | None, say: Callable[[str], None]
+    options: Options,
+    place: Place,
+    *,
+    browser: bool | None,
+    say: Callable[[str], None],
+    warn: Callable[[str], None],
 ) -> None:
     """Measure and serve until SIGINT or SIGTERM.
 
-    ``browser``: open one; None: only from a terminal with a display. ``say`` prints a line.
+    ``browser``: open one; None: only from a terminal with a display. ``say`` prints a
+    line, ``warn`` one that tells of a failure while it goes on.
     Raises BadInput or Busy, with one line, where it cannot begin.
     """
     if options.source is not None:
@@ -82,11 +87,14 @@ def run_live(
     store = SettingsStore(place.settings)
     _make_folder(place.data)
     instrument = Instrument(observe=lambda s, t: open_observer(s, t, paced=True))
+
+    def log_failed(line: str) -> None:
+        instrument.tell("log_failed", line)
+        warn(line)
+
     with (
         _listening(place.port) as listener,
-        Logbook(
-            place.data / FILE_NAME, on_failure=partial(instrument.tell, "log_failed")
-        ) as logbook,
+        Logbook(place.data / FILE_NAME, on_failure=log_failed) as logbook,
     ):
         port = int(listener.getsockname()[1])
         feed = Feed()

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 from pathlib import Path
 from typing import Annotated, Literal
 
@@ -15,6 +16,7 @@ from readout.errors import BadInput
 from readout.instrument.recorder import Recorder
 from readout.logbook import LogReader, Run
 from readout.logbook.export import csv_of, ndjson_of
+from readout.logbook.statements import UNWRITABLE
 from readout.service.control import Control
 from readout.service.feed import Feed
 from readout.service.messages import encode
@@ -54,6 +56,13 @@ def run_routes(recorder: Recorder, feed: Feed, control: Control) -> APIRouter:
     routes = APIRouter(prefix="/api/runs", tags=["runs"])
     path = recorder.path
 
+    def ended_if_broken_off(run: Run) -> Run:
+        """A log that cannot be written does not know that its run has ended."""
+        if run.id != recorder.broken_off_id or run.ending is not None:
+            return run
+        ended_utc_ns = run.started_utc_ns + round(run.duration_s * 1e9)
+        return replace(run, ended_utc_ns=ended_utc_ns, ending=UNWRITABLE)
+
     @routes.post("", status_code=201)
     def post_run(body: NewRunBody, response: Response) -> RunId:
         """Begin a run; 409 while another one is recorded."""
@@ -81,13 +90,13 @@ def run_routes(recorder: Recorder, feed: Feed, control: Control) -> APIRouter:
     def get_runs() -> list[RunMessage]:
         """All runs, the newest first."""
         with LogReader(path) as reader:
-            return [run_message(run) for run in reader.runs()]
+            return [run_message(ended_if_broken_off(run)) for run in reader.runs()]
 
     @routes.get("/{run_id}")
     def get_run(run_id: int) -> WholeRunMessage:
         """A run with its settings, calibrations and events."""
         with LogReader(path) as reader:
-            return whole_run_message(reader, _known(reader, run_id))
+            return whole_run_message(reader, ended_if_broken_off(_known(reader, run_id)))
 
     @routes.get("/{run_id}/series", response_model=SeriesMessage)
     def get_series(

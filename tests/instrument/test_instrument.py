@@ -261,7 +261,7 @@ def test_a_new_scale_begins_average_and_zero_anew() -> None:
         bench.instrument.set_zero()
         bench.instrument.set_scale(Optics(150.0, 3.45))
         assert bench.instrument.zero is None
-        assert [e.event for e in bench.events][-1] == "calibration"
+        assert [e.event for e in bench.events][-2:] == ["calibration", "zero"]
         assert "no reading" in refusal_of_a_zero(bench)
 
     bench.after(10, change).run()
@@ -325,3 +325,29 @@ def test_a_live_source_that_comes_back_smaller_is_measured_again_when_it_is_itse
     assert words == ["opened", "lost", "opened", "ended"]
     (lost,) = (event for event in bench.events if event.event == "lost")
     assert "100 × 80" in lost.text
+
+
+def test_what_becomes_of_a_zero_is_told() -> None:
+    bench = Bench([None] * 30, scale=calibration())
+    zeros: list[str] = []
+
+    def listen(event: Event) -> None:
+        if event.event == "zero":
+            zeros.append(event.text)
+
+    bench.instrument.on_event.append(listen)
+
+    def set_and_clear() -> None:
+        bench.instrument.set_zero()
+        bench.instrument.clear_zero()
+        bench.instrument.clear_zero()  # there is none any more: nothing to tell
+        bench.instrument.set_zero()
+
+    bench.after(20, set_and_clear).run()
+    assert [text.split(" at ")[0] for text in zeros] == [
+        "zero set",
+        "the zero was taken back",
+        "zero set",
+    ]
+    bench.instrument.set_scale(Optics(200.0, 3.45))
+    assert zeros[3:] == ["the zero is gone: the scale was changed"]

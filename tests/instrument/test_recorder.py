@@ -15,7 +15,7 @@ from readout.capture.timebase import TimeBase
 from readout.errors import NotNow, NotRecorded
 from readout.files.calibration_file import calibration_document
 from readout.instrument import Event, Instrument
-from readout.instrument.recorder import ENDED_WITH_READOUT, Recorder
+from readout.instrument.recorder import ANOTHER_SOURCE, ENDED_WITH_READOUT, Recorder
 from readout.logbook import FILE_NAME, Logbook, LogReader
 from readout.logbook.statements import UNWRITABLE
 from readout.model import Quality, Reading
@@ -227,3 +227,37 @@ def test_events_without_a_run_are_logged_too(rig: Rig) -> None:
         found = reader._connection.execute("SELECT event FROM event WHERE run_id IS NULL")
         assert found.fetchall() == [("opened",), ("ended",)]
     assert of_run == ["run_started", "run_stopped"]
+
+
+def test_a_run_ends_with_its_source_and_says_why(rig: Rig) -> None:
+    rig.measure()
+    run_id = rig.start()
+    rig.give(reading(0, t_s=1e6))
+    rig.instrument.use("simulated")  # opened anew it is the same mirror
+    assert rig.recorder.recording is not None
+    rig.instrument.use("folder/of/frames")
+    assert rig.recorder.recording is None
+    with LogReader(rig.recorder.path) as reader:
+        run = reader.run(run_id)
+        assert (run.source, run.ending, run.readings) == ("simulated", ANOTHER_SOURCE, 1)
+        (changed,) = (e for e in reader.events(run_id) if e.event == "source")
+    assert changed.text == "the source is folder/of/frames now, it was simulated"
+
+
+def test_a_run_that_was_broken_off_is_ended_when_there_is_room_again(rig: Rig) -> None:
+    run_id = rig.start()
+    rig.give(reading(0))
+    rig.logbook.flush()
+    rig.logbook._connection.execute("PRAGMA query_only = 1")
+    rig.give(reading(1))
+    with pytest.raises(NotRecorded):
+        rig.logbook.flush()
+    rig.give(reading(2))
+    assert rig.recorder.broken_off_id == run_id
+    rig.recorder.close()  # no room yet: no harm
+    rig.logbook._connection.execute("PRAGMA query_only = 0")
+    again = rig.start()
+    assert rig.recorder.broken_off_id is None
+    rig.recorder.stop(again)
+    with LogReader(rig.recorder.path) as reader:
+        assert reader.run(run_id).ending == UNWRITABLE

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import csv
 import io
 import json
@@ -15,6 +16,7 @@ from typing import Any
 import pytest
 from starlette.testclient import TestClient
 
+from readout.errors import NotRecorded
 from readout.logbook import FILE_NAME, LogReader
 from readout.model import Quality, no_sighting
 from tests.service.conftest import STREAM, Rig
@@ -210,3 +212,19 @@ def test_the_end_of_the_service_is_the_end_of_the_run(tmp_path: Path) -> None:
     assert [row.seq for row in rows] == list(range(rows[0].seq, rows[0].seq + len(rows)))
     assert run.ended_utc_ns is not None
     assert run.ended_utc_ns >= run.started_utc_ns + 1000 * rows[-1].t_us
+
+
+def test_a_run_on_a_full_disk_has_ended_whatever_the_log_says(rig: Rig, client: TestClient) -> None:
+    run_id = begun(client)
+    rig.measure()
+    rig.logbook.flush()
+    rig.logbook._connection.execute("PRAGMA query_only = 1")  # as good as a full disk
+    rig.measure()
+    with contextlib.suppress(NotRecorded):
+        rig.logbook.flush()
+    rig.measure()
+    assert client.get("/api/status").json()["run"] is None
+    (listed,) = client.get("/api/runs").json()
+    assert listed["ending"] == "the log could not be written"
+    assert listed["ended_utc"] > listed["started_utc"]
+    assert client.get(f"/api/runs/{run_id}").json()["ending"] == listed["ending"]
