@@ -45,7 +45,7 @@ class Ridges:
     @property
     def band_middles_px(self) -> F64:
         """Row of the picture in the middle of each band."""
-        return (np.arange(len(self.heights)) + 0.5) * self.band_px - 0.5
+        return np.asarray((np.arange(len(self.heights)) + 0.5) * self.band_px - 0.5)
 
 
 def averaged(pixels: Pixels) -> tuple[F64, int]:
