@@ -5,6 +5,7 @@ from __future__ import annotations
 import csv
 import math
 from dataclasses import dataclass
+from itertools import pairwise
 from pathlib import Path
 from types import TracebackType
 from typing import Self
@@ -17,6 +18,7 @@ from readout.files.pictures import PICTURE_SUFFIXES, read_picture
 from readout.model import Frame, Quality
 
 TIME_TABLES = ("times.csv", "truth.csv")
+_LONGEST_S = 1e9  # thirty years
 
 
 @dataclass(frozen=True, slots=True)
@@ -133,7 +135,14 @@ def _times_from_table(folder: Path, names: list[str]) -> list[int] | None:
                 known = {row["file"]: row["t_s"] or "" for row in rows}
         except (OSError, UnicodeDecodeError, csv.Error) as error:
             raise BadInput(f"{table} cannot be read as CSV ({error}): correct it") from error
-        return [_t_ns(known, name, table) - _t_ns(known, names[0], table) for name in names]
+        t_ns = [_t_ns(known, name, table) for name in names]
+        for before, after in pairwise(range(len(names))):
+            if t_ns[after] < t_ns[before]:
+                raise BadInput(
+                    f"{table}: {names[after]} comes after {names[before]} by name, but before it "
+                    "by t_s: name the pictures in the order of time"
+                )
+        return [t - t_ns[0] for t in t_ns]
     return None
 
 
@@ -144,6 +153,6 @@ def _t_ns(known: dict[str, str], name: str, table: Path) -> int:
         raise BadInput(f"{table} has no row for {name}: add it or remove the table") from None
     except ValueError:
         t_s = math.nan
-    if not math.isfinite(t_s):
-        raise BadInput(f"{table}: t_s of {name} is no number: correct it")
+    if not abs(t_s) < _LONGEST_S:  # NaN is not, either
+        raise BadInput(f"{table}: t_s of {name} is no number of seconds: correct it")
     return round(t_s * 1e9)

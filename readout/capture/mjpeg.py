@@ -25,7 +25,7 @@ from readout.capture.repeats import RepeatWatch
 from readout.capture.source_name import source_name, split_address
 from readout.capture.timebase import Clock, TimeBase
 from readout.errors import BadInput, SourceLost, SourceStalled
-from readout.files.pictures import decode_picture
+from readout.files.pictures import decode_jpeg
 from readout.model import Frame, Pixels, Quality
 
 _QUEUE_FRAMES = 8
@@ -98,7 +98,7 @@ class MjpegSource:
     def _decoded(self, data: bytes) -> tuple[Pixels, int, Quality] | None:
         """Pixels, full scale and flags; None for a damaged picture of unknown size."""
         try:
-            pixels, full_scale = decode_picture(data)
+            pixels, full_scale = decode_jpeg(data)
         except BadInput:
             if self._like is None:
                 return None

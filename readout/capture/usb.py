@@ -28,7 +28,7 @@ from readout.capture.repeats import RepeatWatch
 from readout.capture.timebase import Clock, TimeBase
 from readout.capture.v4l2 import SYSTEM
 from readout.errors import BadInput, Busy, SourceLost, SourceStalled
-from readout.files.pictures import decode_picture, luminance
+from readout.files.pictures import decode_jpeg, luminance
 from readout.model import Frame, Pixels, Quality
 
 PREFERRED = ("Y12", "Y10", "GREY", "YUYV", "UYVY", "NV12", "Y16", "MJPG")
@@ -230,7 +230,7 @@ def luminance_of(picture: np.ndarray, fourcc: str, shape: tuple[int, int]) -> tu
     """
     height, width = shape
     if fourcc == "MJPG":
-        return decode_picture(picture.tobytes())
+        return decode_jpeg(picture.tobytes())
     if fourcc not in PREFERRED:
         return luminance(picture), 255
     kind = np.uint16 if fourcc in _FULL_SCALE else np.uint8

@@ -11,7 +11,7 @@ import numpy as np
 from readout.capture.damaged import blank
 from readout.capture.opencv import cv2, fourcc_text
 from readout.errors import BadInput, SourceEnded, SourceLost
-from readout.files.pictures import decode_picture, luminance
+from readout.files.pictures import decode_jpeg, luminance
 from readout.model import Frame, Pixels, Quality
 
 _MOTION_JPEG = "MJPG"
@@ -99,7 +99,7 @@ class VideoSource:
     def _pixels(self, picture: np.ndarray | None) -> tuple[Pixels, int, Quality]:
         if picture is not None and self._packets:
             try:
-                return *decode_picture(picture.tobytes()), Quality.OK
+                return *decode_jpeg(picture.tobytes()), Quality.OK
             except BadInput:
                 picture = None
         if picture is None:

@@ -11,14 +11,22 @@ import math
 from pathlib import Path
 from typing import Annotated, Any, Literal
 
+import numpy as np
 from pydantic import BaseModel, ConfigDict, Field, ValidationError
 
 from readout.angle.calibration import PARAMETERS, Calibration
 from readout.errors import BadInput
 from readout.files.atomic import write_text_whole
+from readout.files.json_text import read_json
 from readout.model import Target
 
 SCHEMA = "readout.calibration/1"
+
+SHORTEST_FOCAL_LENGTH_PX = 1.0
+LONGEST_FOCAL_LENGTH_PX = 1e9
+LARGEST_PARAMETER = 1e6
+ROUNDING = 1e-9
+"""A covariance may be off by so much of its variances, and no more."""
 
 _Row7 = Annotated[tuple[float, ...], Field(min_length=7, max_length=7)]
 
@@ -43,12 +51,12 @@ class _File(_Model):
     created_utc: str
     method: str
     target: Target
-    image_width_px: Annotated[int, Field(gt=0)]
-    image_height_px: Annotated[int, Field(gt=0)]
+    image_width_px: Annotated[int, Field(gt=0, le=1_000_000)]
+    image_height_px: Annotated[int, Field(gt=0, le=1_000_000)]
     signs: Literal["proven", "unproven"]
     parameters: _Parameters
     parameter_cov: Annotated[tuple[_Row7, ...], Field(min_length=7, max_length=7)]
-    pitch_um: Annotated[float, Field(gt=0)] | None
+    pitch_um: Annotated[float, Field(gt=0, le=1e6)] | None
     residuals: tuple[dict[str, Any], ...]
     residual_rms_arcsec: float | None
     n: Annotated[int, Field(ge=0)]
@@ -67,7 +75,7 @@ def load_calibration(path: Path) -> Calibration:
     """The calibration in the file at ``path``.
 
     Raises BadInput, with one line for the user, for a file that is missing, no JSON, of an
-    unknown schema, incomplete, or whose matrix cannot be turned round.
+    unknown schema, incomplete, or with numbers no instrument can have.
     """
     try:
         content = path.read_bytes()
@@ -84,9 +92,9 @@ def parse_calibration(text: bytes, *, name: str) -> Calibration:
     Raises BadInput as ``load_calibration`` does.
     """
     try:
-        document = json.loads(text.decode("utf-8"))
-    except ValueError as error:  # broken JSON and broken UTF-8
-        raise BadInput(f"{name} is no calibration file, it holds no JSON ({error})") from error
+        document = read_json(text)
+    except ValueError as error:
+        raise BadInput(f"{name} is no calibration file ({error})") from error
     schema = document.get("schema") if isinstance(document, dict) else None
     if schema != SCHEMA:
         found = "none" if schema is None else repr(schema)
@@ -103,12 +111,9 @@ def parse_calibration(text: bytes, *, name: str) -> Calibration:
             f"calibration file {name} cannot be used: {where}: {first['msg'].lower()}"
         ) from error
     p = content.parameters
-    scale = max(abs(p.a_xx_per_px), abs(p.a_xy_per_px), abs(p.a_yx_per_px), abs(p.a_yy_per_px))
-    determinant = p.a_xx_per_px * p.a_yy_per_px - p.a_xy_per_px * p.a_yx_per_px
-    if not abs(determinant) > 1e-9 * scale**2:
-        raise BadInput(
-            f"calibration file {name} cannot be used: its matrix does not tell the two axes apart"
-        )
+    fault = _fault(p) or _fault_of_cov(content.parameter_cov)
+    if fault is not None:
+        raise BadInput(f"calibration file {name} cannot be used: {fault}")
     return Calibration(
         id=content.id,
         created_utc=content.created_utc,
@@ -128,6 +133,37 @@ def parse_calibration(text: bytes, *, name: str) -> Calibration:
         warnings=content.warnings,
         made_from=content.made_from,
     )
+
+
+def _fault(p: _Parameters) -> str | None:
+    """What no optics can have."""
+    scale = max(abs(p.a_xx_per_px), abs(p.a_xy_per_px), abs(p.a_yx_per_px), abs(p.a_yy_per_px))
+    if not 1 / LONGEST_FOCAL_LENGTH_PX < scale < 1 / SHORTEST_FOCAL_LENGTH_PX:
+        return "its matrix is that of no focal length there is"
+    determinant = p.a_xx_per_px * p.a_yy_per_px - p.a_xy_per_px * p.a_yx_per_px
+    if not abs(determinant) > 1e-9 * scale**2:
+        return "its matrix does not tell the two axes apart"
+    if max(abs(p.p0_x_px), abs(p.p0_y_px), abs(p.k1)) > LARGEST_PARAMETER:
+        return "its axis or its distortion is far beyond any picture"
+    return None
+
+
+def _fault_of_cov(rows: tuple[tuple[float, ...], ...]) -> str | None:
+    """What no covariance is: its variances judge the rest, so that units do not matter."""
+    cov = np.array(rows)
+    variance = np.diag(cov)
+    if variance.min() < 0 or np.abs(cov).max() > LARGEST_PARAMETER**2:
+        return "parameter_cov: a variance is negative or beyond all measure"
+    sd = np.sqrt(variance)
+    unit = np.outer(sd, sd)
+    if (np.abs(cov) > unit * (1 + ROUNDING)).any():
+        return "parameter_cov: a covariance is larger than its variances allow"
+    correlation = np.divide(cov, unit, out=np.zeros_like(cov), where=unit > 0)
+    if not np.allclose(correlation, correlation.T, rtol=0, atol=ROUNDING):
+        return "parameter_cov: it is not symmetric"
+    if np.linalg.eigvalsh(correlation).min() < -ROUNDING:
+        return "parameter_cov: some of its combinations have a negative variance"
+    return None
 
 
 def calibration_document(calibration: Calibration) -> dict[str, Any]:

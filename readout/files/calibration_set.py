@@ -125,6 +125,8 @@ def _read_toml(path: Path) -> _Set:
         return _Set()
     except (OSError, ValueError) as error:
         raise BadInput(f"cannot read {path} ({error}): mend it or take it away") from error
+    except RecursionError:
+        raise BadInput(f"cannot read {path} (nested without end): mend it") from None
     if "graduation" in document:
         raise BadInput(f"{path} is of a graduated reticle: give known tilts in a tilts.csv instead")
     document.pop("fixed", None)  # a frame with the mirror covered: nothing here needs it yet

@@ -12,6 +12,7 @@ saturation shows only as a plateau.
 
 from __future__ import annotations
 
+import re
 from pathlib import Path
 
 import cv2
@@ -77,7 +78,7 @@ def decode_picture(data: bytes, *, name: str = "the picture") -> tuple[Pixels, i
             bits = png.check(data)
         except ValueError as error:
             raise BadInput(f"{name} is damaged ({error}): save it again") from None
-    decoded = _decoded(data)
+    decoded = _decoded(data, name)
     if decoded is None:
         raise BadInput(f"{name} is damaged or cut short: save it again")
     if decoded.dtype not in (np.uint8, np.uint16):
@@ -87,18 +88,34 @@ def decode_picture(data: bytes, *, name: str = "the picture") -> tuple[Pixels, i
     if bits is not None and 0 < bits < depth:
         return np.right_shift(pixels, depth - bits), 2**bits - 1
     if data.startswith((b"P2", b"P5")) and (pixels.dtype == np.uint16 or data[:2] == b"P5"):
-        return pixels, _pgm_maxval(data)  # 8-bit text alone is stretched to 255 by the decoder
+        return pixels, _pgm_maxval(
+            data, name
+        )  # 8-bit text alone is stretched to 255 by the decoder
     return pixels, 2**depth - 1
 
 
-def _decoded(data: bytes) -> np.ndarray | None:
-    """What OpenCV makes of the data, None if it makes nothing of it."""
+def decode_jpeg(data: bytes) -> tuple[Pixels, int]:
+    """As `decode_picture`, of what can only be a JPEG: a picture of a motion JPEG stream."""
+    if not data.startswith(_JPEG_START):
+        raise BadInput("the picture is no JPEG: choose a stream of motion JPEG")
+    return decode_picture(data)
+
+
+def _decoded(data: bytes, name: str) -> np.ndarray | None:
+    """What OpenCV makes of the data, None if it makes nothing of it.
+
+    Raises BadInput for a picture beyond the limit set in `readout`.
+    """
     how = cv2.IMREAD_UNCHANGED
     if data.startswith(_JPEG_START):  # grey asks the JPEG for its Y: no colour round trip
         how = cv2.IMREAD_GRAYSCALE | cv2.IMREAD_IGNORE_ORIENTATION
     try:
         return cv2.imdecode(np.frombuffer(data, np.uint8), how)
-    except cv2.error:
+    except cv2.error as error:
+        if "MAX_IMAGE_PIXELS" in str(error):
+            raise BadInput(
+                f"{name} has more pixels than any camera: give a picture as the camera takes it"
+            ) from error
         return None
 
 
@@ -114,14 +131,15 @@ def luminance(picture: np.ndarray) -> Pixels:
     return np.ascontiguousarray(grey)
 
 
-def _pgm_maxval(data: bytes) -> int:
+_PGM_HEAD = re.compile(rb"P[25]" + 3 * rb"(?:\s|#[^\r\n]*[\r\n])+(\d{1,9})")
+
+
+def _pgm_maxval(data: bytes, name: str) -> int:
     """The fourth word of a PGM header, comments left out."""
-    words: list[bytes] = []
-    for line in data[:4096].split(b"\n"):
-        words += line.split(b"#")[0].split()
-        if len(words) >= 4:
-            break
-    return int(words[3])
+    head = _PGM_HEAD.match(data)
+    if head is None:
+        raise BadInput(f"{name} has a damaged header: save it again")
+    return int(head[3])
 
 
 def write_picture(path: Path, pixels: Pixels, *, full_scale: int | None = None) -> None:

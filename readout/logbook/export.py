@@ -19,7 +19,7 @@ from readout.logbook.connection import open_writing
 from readout.logbook.reader import LoggedReading, LogReader, Run
 from readout.logbook.schema import keys_of
 from readout.model import Quality
-from readout.rows import SPREAD_COLUMNS, VALUE_COLUMNS, Cell, rounded
+from readout.rows import POSITION_COLUMNS, SPREAD_COLUMNS, VALUE_COLUMNS, Cell, rounded
 from readout.utc import utc_text
 
 
@@ -54,7 +54,7 @@ def _ndjson(reader: LogReader, run: Run) -> Iterator[str]:
 
 def _columns(run: Run) -> tuple[str, ...]:
     spread = SPREAD_COLUMNS if run.every_s > 0 else ()
-    return ("t_utc", *VALUE_COLUMNS, "quality", *spread)
+    return ("t_utc", *VALUE_COLUMNS, "quality", *POSITION_COLUMNS, *spread)
 
 
 def _cells(run: Run, words_of: Callable[[Quality], Cell]) -> Callable[[LoggedReading], list[Cell]]:
@@ -70,6 +70,8 @@ def _cells(run: Run, words_of: Callable[[Quality], Cell]) -> Callable[[LoggedRea
             row.t_us / 1e6,
             *map(_number, row[2:8]),
             words[row.quality],
+            _number(row.x_px),
+            _number(row.y_px),
         ]
         if averaged:
             found += [row.n, _number(row.x_scatter_arcsec), _number(row.y_scatter_arcsec)]

@@ -6,6 +6,7 @@ import json
 import math
 import sqlite3
 from collections.abc import Iterator
+from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
 from types import TracebackType
@@ -15,11 +16,12 @@ import numpy as np
 
 from readout.errors import BadInput
 from readout.logbook.connection import open_reading
-from readout.logbook.schema import key_of, keys_of
+from readout.logbook.schema import RUNS_AT_MOST, key_of, keys_of
 from readout.logbook.series import Cells, Series, choose_level_s, series_of
 from readout.model import F64
 
 CHUNK = 10_000
+LONGEST_S = 1e9  # thirty years
 
 
 @dataclass(frozen=True, slots=True)
@@ -72,6 +74,8 @@ class LoggedReading(NamedTuple):
     x_u_arcsec: float | None
     y_u_arcsec: float | None
     quality: int
+    x_px: float | None
+    y_px: float | None
     n: int | None
     x_scatter_arcsec: float | None
     y_scatter_arcsec: float | None
@@ -97,38 +101,49 @@ class LogReader:
 
     def runs(self) -> list[Run]:
         """All runs, the newest first."""
-        return [_run(row) for row in self._named(f"{_RUNS} ORDER BY id DESC")]
+        with self._told():
+            return [_run(row) for row in self._named(f"{_RUNS} ORDER BY id DESC")]
 
     def run(self, run_id: int) -> Run:
         """Raises BadInput for an id that is none."""
-        row = self._named(f"{_RUNS} WHERE id = ?", run_id).fetchone()
-        if row is None:
-            raise BadInput(f"there is no run {run_id} in {self.path}: list the runs to see the ids")
-        return _run(row)
+        with self._told():
+            known = 0 < run_id < RUNS_AT_MOST
+            row = self._named(f"{_RUNS} WHERE id = ?", run_id).fetchone() if known else None
+            if row is None:
+                raise BadInput(
+                    f"there is no run {run_id} in {self.path}: list the runs to see the ids"
+                )
+            return _run(row)
 
     def calibrations(self, run_id: int) -> list[RunCalibration]:
         """The calibrations of a run, whole, in the order in which they came into use."""
-        rows = self._connection.execute(
-            "SELECT from_seq, document FROM calibration WHERE run_id = ? ORDER BY from_seq",
-            (run_id,),
-        )
-        return [RunCalibration(from_seq, json.loads(document)) for from_seq, document in rows]
+        with self._told():
+            rows = self._connection.execute(
+                "SELECT from_seq, document FROM calibration WHERE run_id = ? ORDER BY from_seq",
+                (run_id,),
+            )
+            return [RunCalibration(from_seq, json.loads(document)) for from_seq, document in rows]
 
     def events(self, run_id: int) -> list[LoggedEvent]:
         """What happened during a run, in order of time."""
-        rows = self._connection.execute(
-            "SELECT run_id, t_utc_ns, event, text FROM event WHERE run_id = ? "
-            "ORDER BY t_utc_ns, id",
-            (run_id,),
-        )
-        return [LoggedEvent(*row) for row in rows]
+        with self._told():
+            rows = self._connection.execute(
+                "SELECT run_id, t_utc_ns, event, text FROM event WHERE run_id = ? "
+                "ORDER BY t_utc_ns, id",
+                (run_id,),
+            )
+            return [LoggedEvent(*row) for row in rows]
 
     def readings(self, run_id: int) -> Iterator[list[LoggedReading]]:
         """All rows of a run in order of seq, a few thousand at a time, as they stand now."""
+        with self._told():
+            yield from self._chunks(run_id)
+
+    def _chunks(self, run_id: int) -> Iterator[list[LoggedReading]]:
         cursor = self._connection.execute(
             "SELECT r.key - ?1, r.t_us, r.x_arcsec, r.y_arcsec, "
             "r.x_sd_arcsec, r.y_sd_arcsec, r.x_u_arcsec, r.y_u_arcsec, r.quality, "
-            "s.n, s.x_scatter_arcsec, s.y_scatter_arcsec "
+            "r.x_px, r.y_px, s.n, s.x_scatter_arcsec, s.y_scatter_arcsec "
             "FROM reading_row AS r LEFT JOIN spread AS s USING (key) "
             "WHERE r.key BETWEEN ?1 AND ?2 ORDER BY r.key",
             keys_of(run_id),
@@ -145,15 +160,29 @@ class LogReader:
         part that ends before it begins.
         """
         run = self.run(run_id)
+        if max(abs(from_s), abs(to_s or 0.0)) > LONGEST_S:
+            raise BadInput(f"no run is {LONGEST_S:g} s long: give another part of it")
         if to_s is None:
             to_s = max(run.duration_s, from_s) + 1e-6
         if not from_s < to_s:
             raise BadInput(f"the part from {from_s:g} s to {to_s:g} s is empty: give another")
         level_s = choose_level_s(to_s - from_s, points)
-        cells = self._summaries(run_id, level_s, from_s, to_s) if level_s else None
-        if cells is None or cells.n.sum() <= points:
-            cells = self._rows(run_id, from_s, to_s)
+        with self._told():
+            cells = self._summaries(run_id, level_s, from_s, to_s) if level_s else None
+            if cells is None or cells.n.sum() <= points:
+                cells = self._rows(run_id, from_s, to_s)
         return series_of(cells, from_s=from_s, to_s=to_s, points=points)
+
+    @contextmanager
+    def _told(self) -> Iterator[None]:
+        """What SQLite cannot read, a damaged page or a broken document, is told in one line."""
+        try:
+            yield
+        except (sqlite3.Error, json.JSONDecodeError) as error:
+            raise BadInput(
+                f"{self.path} cannot be read any further ({error}): it is damaged or locked; "
+                "export what can be read from a copy of it"
+            ) from error
 
     def _named(self, statement: str, *values: object) -> sqlite3.Cursor:
         """A cursor whose rows know the names of their columns."""

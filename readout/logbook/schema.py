@@ -17,6 +17,8 @@ from collections.abc import Sequence
 SEQ_BITS = 36
 """At 500 readings a second a program would have to run for four years to exceed this."""
 
+RUNS_AT_MOST = 1 << (63 - SEQ_BITS)
+
 APPLICATION_ID = 0x52646F74  # marks the file as a logbook, for tools that look at bytes 68 to 71
 PAGE_BYTES = 8192
 

@@ -16,6 +16,7 @@ from readout.capture.open import SourceDescription, describe_source
 from readout.errors import BadInput
 from readout.instrument import Instrument
 from readout.instrument.recorder import Recorder
+from readout.service.body_limit import BodyLimit
 from readout.service.calibration_routes import FOLDER, calibration_routes
 from readout.service.control import Control
 from readout.service.feed import Feed
@@ -79,6 +80,7 @@ def make_app(
         app.mount("/", StaticFiles(directory=static, html=True))
     else:
         app.get("/", include_in_schema=False)(lambda: HTMLResponse(NOT_BUILT))
+    app.add_middleware(BodyLimit)
     app.add_middleware(Guard, port=port)
     return app
 

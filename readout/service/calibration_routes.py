@@ -15,10 +15,8 @@ from readout.angle import Calibration
 from readout.files.calibration_shelf import keep_calibration, kept_calibrations
 from readout.instrument import Instrument
 from readout.rows import rounded
-from readout.service.problems import Problem
 
 FOLDER = "calibrations"
-LARGEST_BYTES = 5_000_000
 _A_FILE = {"requestBody": {"required": True, "content": {"application/json": {"schema": {}}}}}
 
 
@@ -60,12 +58,7 @@ def calibration_routes(instrument: Instrument, folder: Path) -> APIRouter:
 
 async def _body(request: Request) -> bytes:
     """The body as it came: the file is kept to the letter."""
-    text = bytearray()
-    async for part in request.stream():
-        text += part
-        if len(text) > LARGEST_BYTES:
-            raise Problem(413, "the file is larger than any calibration: choose another")
-    return bytes(text)
+    return await request.body()
 
 
 def _message(path: Path, kept: Calibration, in_use: Calibration | None) -> KeptCalibrationMessage:

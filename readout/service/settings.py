@@ -17,11 +17,13 @@ from readout.angle import Mounting
 from readout.capture.source_name import source_name
 from readout.errors import BadInput
 from readout.files.atomic import write_text_whole
+from readout.files.json_text import read_json, refuse_odd
 from readout.instrument import Optics, Statistic
 from readout.model import Target
 from readout.units import Unit
 
 SCHEMA = "readout.settings/1"
+LARGEST_CHARACTERS = 100_000
 
 Positive = Annotated[float, Field(gt=0)]
 
@@ -102,10 +104,13 @@ class SettingsStore:
         Raises BadInput for a value that cannot be.
         """
         try:
-            json.dumps(changes, allow_nan=False)
+            refuse_odd(changes)
         except ValueError as error:
-            raise BadInput("a number is infinite or none at all: correct it") from error
-        return _checked(_merge(self._current.document(), changes), "")
+            raise BadInput(f"{error}: correct it") from error
+        merged = _merge(self._current.document(), changes)
+        if len(json.dumps(merged)) > LARGEST_CHARACTERS:
+            raise BadInput("these would be more settings than can be kept: give fewer or shorter")
+        return _checked(merged, "")
 
     def keep(self, settings: Settings) -> None:
         """Make ``settings`` the current ones and write them. Raises BadInput if that fails."""
@@ -117,7 +122,7 @@ class SettingsStore:
 
 def _load(path: Path) -> Settings:
     try:
-        document = json.loads(path.read_text(encoding="utf-8"))
+        document = read_json(path.read_bytes())
     except FileNotFoundError:
         return Settings()
     except OSError as error:

@@ -69,6 +69,8 @@ def test_a_table_of_other_things_is_left_alone(folder: Path):
     [
         ("a1.png,0\n", "no row for a10.png"),
         ("a1.png,soon\n", "t_s of a1.png is no number"),
+        ("a1.png,1e300\n", "t_s of a1.png is no number of seconds"),
+        ("a1.png,5\na10.png,4\na2.png,4\nb.tif,4\n", "a10.png comes after a1.png by name"),
         ("a1.png\n", "t_s of a1.png is no number"),
         ("a1.png,0\xff\n", "cannot be read as CSV"),
     ],

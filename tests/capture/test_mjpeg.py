@@ -6,6 +6,7 @@ import base64
 import threading
 import time
 
+import cv2
 import numpy as np
 import pytest
 
@@ -13,7 +14,7 @@ from readout.capture.mjpeg import MjpegSource
 from readout.errors import BadInput, SourceLost, SourceStalled
 from readout.files.pictures import decode_picture
 from readout.model import Quality
-from tests.capture.streams import SHAPE, Client, jpeg, part, serving
+from tests.capture.streams import SHAPE, Client, jpeg, part, scene, serving
 from tests.contracts import PROMPT_S, one_line, read_to_end
 
 WAIT_S = 5.0
@@ -245,3 +246,17 @@ def test_an_address_that_is_none_is_refused_without_its_password():
             MjpegSource(url)
         assert "sh@" not in str(raised.value)
         assert "hu/" not in str(raised.value)
+
+
+def test_a_part_that_is_no_jpeg_is_damaged():
+    """Whatever else could be decoded: a stream of motion JPEG holds JPEG alone."""
+    odd = cv2.imencode(".png", scene(1))[1].tobytes()
+
+    def script(client: Client) -> None:
+        client.begin()
+        for data in (jpeg(0), odd, jpeg(2)):
+            client.send(part(data))
+
+    with serving(script) as url, MjpegSource(url) as source:
+        flags = [source.read(WAIT_S).quality for _ in range(3)]
+    assert flags == [Quality.OK, Quality.DAMAGED, Quality.OK]

@@ -6,6 +6,7 @@ import json
 from dataclasses import replace
 from pathlib import Path
 
+import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
@@ -14,6 +15,7 @@ from readout.angle import Calibration, Mounting, nominal_calibration
 from readout.errors import BadInput
 from readout.files.calibration_file import load_calibration, save_calibration
 from readout.model import Target
+from tests.contracts import one_line
 
 
 def some_calibration(**changes: object) -> Calibration:
@@ -53,7 +55,7 @@ def test_every_number_comes_back_bit_for_bit(
     k1: float,
 ) -> None:
     calibration = some_calibration(
-        matrix=((1.0 + a * a, b), (-b, 1.0 + c * c)),
+        matrix=((1e-6 + a * a * 1e-7, b * 1e-7), (-b * 1e-7, 1e-6 + c * c * 1e-7)),
         p0_px=p0,
         k1=k1,
         signs="proven",
@@ -136,7 +138,7 @@ def test_an_infinite_number_is_refused(tmp_path: Path) -> None:
     path = tmp_path / "c.json"
     edited(path)
     path.write_text(path.read_text("utf-8").replace('"k1": 0.0', '"k1": Infinity'), "utf-8")
-    with pytest.raises(BadInput, match="k1"):
+    with pytest.raises(BadInput, match="a number is infinite or none at all"):
         load_calibration(path)
 
 
@@ -144,3 +146,88 @@ def test_saving_where_nothing_can_be_written(tmp_path: Path) -> None:
     (tmp_path / "file").write_text("in the way", "utf-8")
     with pytest.raises(BadInput, match="cannot write"):
         save_calibration(tmp_path / "file" / "c.json", some_calibration())
+
+
+NESTED = "[" * 100_000
+
+
+def covariance(**changes: float) -> list[list[float]]:
+    """Seven independent parameters of variance 1; ``cov_ij`` puts another number in its place."""
+    cov = np.eye(7)
+    for name, value in changes.items():
+        i, j = (int(digit) for digit in name.removeprefix("cov_"))
+        cov[i, j] = value
+    return cov.tolist()
+
+
+@pytest.mark.parametrize(
+    ("changes", "words"),
+    [
+        ({"parameter_cov": covariance(cov_00=-1e-12)}, "a variance is negative"),
+        ({"parameter_cov": covariance(cov_66=1e300)}, "beyond all measure"),
+        ({"parameter_cov": covariance(cov_01=1.5, cov_10=1.5)}, "larger than its variances allow"),
+        ({"parameter_cov": covariance(cov_00=0.0, cov_01=0.5, cov_10=0.5)}, "larger than its"),
+        ({"parameter_cov": covariance(cov_01=0.5)}, "not symmetric"),
+        (  # correlations of -0.9 between each two of three: no three numbers can have them
+            {
+                "parameter_cov": covariance(
+                    cov_01=-0.9, cov_10=-0.9, cov_02=-0.9, cov_20=-0.9, cov_12=-0.9, cov_21=-0.9
+                )
+            },
+            "have a negative variance",
+        ),
+        ({"made_from": {"x": 10**30}}, "too large"),
+        ({"warnings": ["\ud800"]}, "half a character"),
+        ({"image_width_px": 10**9}, "image_width_px"),
+    ],
+)
+def test_what_would_fail_later_is_refused_at_once(
+    tmp_path: Path, changes: dict[str, object], words: str
+) -> None:
+    path = tmp_path / "c.json"
+    edited(path, **changes)
+    with pytest.raises(BadInput, match=words) as raised:
+        load_calibration(path)
+    one_line(raised.value)
+
+
+@pytest.mark.parametrize(
+    ("parameters", "words"),
+    [
+        ({"a_xx_per_px": 1e308, "a_yy_per_px": 1e308}, "no focal length"),
+        ({"a_xx_per_px": 1e-200, "a_yy_per_px": 1e-200}, "no focal length"),
+        ({"p0_x_px": 1e300}, "beyond any picture"),
+        ({"k1": -1e300}, "beyond any picture"),
+    ],
+)
+def test_parameters_no_instrument_has(
+    tmp_path: Path, parameters: dict[str, float], words: str
+) -> None:
+    path = tmp_path / "c.json"
+    save_calibration(path, some_calibration())
+    document = json.loads(path.read_text("utf-8"))
+    document["parameters"] |= parameters
+    if "a_xx_per_px" in parameters:
+        document["parameters"] |= {"a_xy_per_px": 0.0, "a_yx_per_px": 0.0}
+    path.write_text(json.dumps(document), "utf-8")
+    with pytest.raises(BadInput, match=words) as raised:
+        load_calibration(path)
+    one_line(raised.value)
+
+
+def test_correlated_parameters_are_welcome(tmp_path: Path) -> None:
+    """Wholly correlated ones, and some without any variance: each covariance there can be."""
+    rng = np.random.default_rng(3)
+    factor = rng.normal(size=(7, 2)) * np.array([1e-9, 1e-9, 1e-9, 1e-9, 10.0, 0.0, 0.1])[:, None]
+    path = tmp_path / "c.json"
+    edited(path, parameter_cov=(factor @ factor.T).tolist())
+    assert np.isfinite(load_calibration(path).focal_length_px_sd)
+
+
+@pytest.mark.parametrize("text", [NESTED, '{"schema": ' + NESTED])
+def test_nesting_without_end_is_refused(tmp_path: Path, text: str) -> None:
+    path = tmp_path / "c.json"
+    path.write_text(text, "utf-8")
+    with pytest.raises(BadInput, match="nested") as raised:
+        load_calibration(path)
+    one_line(raised.value)

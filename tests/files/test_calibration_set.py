@@ -111,3 +111,8 @@ def test_missing_things(tmp_path):
         read_calibration_set(tmp_path / "nowhere")
     with pytest.raises(BadInput, match=r"tilts\.csv does not exist"):
         read_calibration_set(tmp_path)
+
+
+def test_a_set_toml_nested_without_end(tmp_path):
+    with pytest.raises(BadInput, match="nested without end"):
+        read_calibration_set(write(tmp_path, about="note = " + "[" * 100_000))

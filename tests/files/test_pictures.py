@@ -13,7 +13,13 @@ import tifffile
 from PIL import Image
 
 from readout.errors import BadInput
-from readout.files.pictures import decode_picture, encode_jpeg, read_picture, write_picture
+from readout.files.pictures import (
+    decode_jpeg,
+    decode_picture,
+    encode_jpeg,
+    read_picture,
+    write_picture,
+)
 
 SHAPE = (48, 64)
 
@@ -196,3 +202,40 @@ def test_a_jpeg_to_look_at_uses_the_full_scale():
     assert np.all(np.abs(shown.astype(int) - 128) <= 1)  # 255 * 2048 / 4095 = 127.5
     shown, _ = decode_picture(encode_jpeg(np.full(SHAPE, 77, np.uint8)))
     assert np.all(np.abs(shown.astype(int) - 77) <= 1)
+
+
+def test_a_long_comment_in_a_pgm_is_no_harm():
+    pixels = noise(np.uint16, top=1000)
+    head = b"P5 #" + b"x" * 5000 + b"\n64 # and\n#more\n48 1000\n"
+    back, full_scale = decode_picture(head + pixels.astype(">u2").tobytes())
+    np.testing.assert_array_equal(back, pixels)
+    assert full_scale == 1000
+
+
+def png_chunk(kind: bytes, body: bytes) -> bytes:
+    return struct.pack(">I", len(body)) + kind + body + struct.pack(">I", zlib.crc32(kind + body))
+
+
+def claims(width: int, height: int) -> dict[str, bytes]:
+    """Small files whose headers claim to be that large (formats: PNG, PGM and BMP themselves)."""
+    ihdr = struct.pack(">IIBBBBB", width, height, 8, 0, 0, 0, 0)
+    png = b"\x89PNG\r\n\x1a\n" + png_chunk(b"IHDR", ihdr)
+    png += png_chunk(b"IDAT", zlib.compress(b"\0" * 100_000)) + png_chunk(b"IEND", b"")
+    info = struct.pack("<IiiHHIIiiII", 40, width, height, 1, 24, 0, 0, 0, 0, 0, 0)
+    bmp = struct.pack("<2sIHHI", b"BM", 1000, 0, 0, 54) + info + b"\0" * 946
+    return {"png": png, "pgm": b"P5 %d %d 255\n" % (width, height) + b"\0" * 1000, "bmp": bmp}
+
+
+@pytest.mark.parametrize("kind", ["png", "pgm", "bmp"])
+def test_a_small_file_that_claims_to_be_huge_is_refused_by_its_header(kind: str):
+    with pytest.raises(BadInput, match="more pixels than any camera"):
+        decode_picture(claims(30_000, 30_000)[kind])
+    with pytest.raises(BadInput, match="damaged or cut short"):  # as large as a camera can be
+        decode_picture(claims(14_000, 10_000)["bmp"])
+
+
+def test_only_a_jpeg_passes_for_one():
+    pixels = noise(np.uint8)
+    assert decode_jpeg(encode_jpeg(pixels))[0].shape == SHAPE
+    with pytest.raises(BadInput, match="no JPEG"):
+        decode_jpeg(pgm(pixels, 255))

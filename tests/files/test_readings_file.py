@@ -20,6 +20,7 @@ COLUMNS = [
     "t_s",
     *("x_arcsec", "y_arcsec", "x_sd_arcsec", "y_sd_arcsec", "x_u_arcsec", "y_u_arcsec"),
     "quality",
+    *("x_px", "y_px"),
 ]
 
 
@@ -39,6 +40,14 @@ def test_a_row_is_json_without_nan_and_keeps_the_number(value: float) -> None:
         assert row["x_arcsec"] == pytest.approx(value, abs=5.1e-7, rel=1e-15)
     else:
         assert row["x_arcsec"] is None
+
+
+@given(st.floats(-1e-6, 1e-6))
+def test_no_number_is_a_negative_zero(value: float) -> None:
+    for each in (value, -0.0, -1e-320):
+        near = rounded(each)
+        assert near is not None
+        assert near != 0 or math.copysign(1.0, near) == 1.0  # IEEE 754: the sign of a zero
 
 
 @given(st.floats(1e-12, 1e-3))

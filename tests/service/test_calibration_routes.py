@@ -109,3 +109,15 @@ def test_one_for_other_pictures_is_kept_but_not_put_to_use(rig: Rig, client: Tes
     assert refused.status_code == 422
     assert "1280" in refused.json()["detail"]
     assert client.get("/api/settings").json()["calibration"] is None
+
+
+def test_a_file_nested_without_end_is_refused_and_harms_no_list(
+    rig: Rig, client: TestClient, tmp_path: Path
+) -> None:
+    nested = "[" * 100_000
+    answer = client.post("/api/calibrations", content=nested)
+    assert answer.status_code == 422
+    assert "nested" in answer.json()["detail"]
+    (tmp_path / "calibrations").mkdir(exist_ok=True)
+    (tmp_path / "calibrations" / "odd.json").write_text(nested)
+    assert client.get("/api/calibrations").json() == []

@@ -228,3 +228,13 @@ def test_a_run_on_a_full_disk_has_ended_whatever_the_log_says(rig: Rig, client: 
     assert listed["ending"] == "the log could not be written"
     assert listed["ended_utc"] > listed["started_utc"]
     assert client.get(f"/api/runs/{run_id}").json()["ending"] == listed["ending"]
+
+
+def test_numbers_beyond_all_measure_are_refused(rig: Rig, client: TestClient) -> None:
+    run_id = begun(client)
+    for odd in (0, -1, 2**27, 2**63, 10**30):
+        assert "there is no run" in problem(client.get(f"/api/runs/{odd}"), 404)
+    for part in ("from_s=-1e300", "to_s=1e300", "from_s=-1e300&to_s=1e300"):
+        assert "give another part" in problem(client.get(f"/api/runs/{run_id}/series?{part}"), 422)
+    assert client.get(f"/api/runs/{run_id}/series?from_s=-5&to_s=1e9").status_code == 200
+    assert client.get(f"/api/recent?from_seq={10**30}").status_code == 200

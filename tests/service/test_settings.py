@@ -278,3 +278,38 @@ def test_a_folder_that_has_gone_is_still_told_of(rig: Rig) -> None:
         status = client.get("/api/status")
     assert status.status_code == 200
     assert status.json()["source_name"] == "a folder that has gone"
+
+
+def nested(levels: int) -> dict[str, object]:
+    value: dict[str, object] = {}
+    for _ in range(levels):
+        value = {"x": value}
+    return value
+
+
+@pytest.mark.parametrize(
+    ("body", "status", "words"),
+    [
+        (json.dumps(nested(300)), 422, "nested"),
+        ("[" * 100_000, 400, "body"),
+        ('{"note": "\\ud800"}', 422, "half a character"),
+        ('{"average_s": 1e999}', 422, "infinite"),
+        (json.dumps({"note": "x" * 200_000}), 422, "more settings than"),
+        (json.dumps({"note": "x" * 6_000_000}), 413, "larger than anything"),
+    ],
+)
+def test_settings_no_page_would_send_change_nothing(
+    rig: Rig, client: TestClient, body: str, status: int, words: str
+) -> None:
+    before = rig.store.current
+    answer = client.put("/api/settings", content=body, headers={"Content-Type": "application/json"})
+    assert (answer.status_code, answer.json()["status"]) == (status, status)
+    assert words in answer.json()["detail"]
+    assert rig.store.current == before
+
+
+def test_a_settings_file_nested_without_end(tmp_path: Path) -> None:
+    path = tmp_path / "settings.json"
+    path.write_text("[" * 100_000)
+    with pytest.raises(BadInput, match="nested"):
+        SettingsStore(path)
