@@ -23,6 +23,8 @@ VALUE_COLUMNS = (
     "x_u_arcsec",
     "y_u_arcsec",
 )
+POSITION_COLUMNS = ("x_px", "y_px")
+"""Where the return image lies: all there is while no scale is known."""
 SPREAD_COLUMNS = ("n", "x_scatter_arcsec", "y_scatter_arcsec")
 """What a row that is a mean has besides."""
 
@@ -31,16 +33,18 @@ def rounded(value: float) -> float | None:
     """``value`` to six decimals or four digits, whichever is finer; None unless it is finite."""
     if not math.isfinite(value):
         return None
-    return round(value, 6) if abs(value) >= 1e-3 else float(f"{value:.4g}")
+    near = round(value, 6) if abs(value) >= 1e-3 else float(f"{value:.4g}")
+    return near + 0.0  # of a negative zero a plain one
 
 
 def reading_row(reading: Reading) -> dict[str, Cell]:
-    """The row of one reading: ``file`` or ``t_utc`` first, then values, then the quality words."""
+    """The row of one reading: ``file`` or ``t_utc`` first, values, quality words, positions."""
     row: dict[str, Cell] = (
         {"file": reading.name} if reading.name else {"t_utc": utc_text(reading.t_utc_ns)}
     )
     row.update({column: rounded(getattr(reading, column)) for column in VALUE_COLUMNS})
     row["quality"] = reading.quality.words()
+    row.update({column: rounded(getattr(reading, column)) for column in POSITION_COLUMNS})
     return row
 
 

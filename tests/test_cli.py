@@ -174,12 +174,13 @@ def test_measure_a_folder_against_its_truth(readout: Command, frames: Path, tmp_
         rows = list(csv.DictReader(file))
     assert list(rows[0]) == [
         *("file", "t_s", "x_arcsec", "y_arcsec", "x_sd_arcsec", "y_sd_arcsec"),
-        *("x_u_arcsec", "y_u_arcsec", "quality"),
+        *("x_u_arcsec", "y_u_arcsec", "quality", "x_px", "y_px"),
     ]
     for row, true in zip(rows, truth(frames), strict=True):
         assert row["file"] == true["file"]
         assert float(row["t_s"]) == pytest.approx(float(true["t_s"]), abs=1e-6)
         for axis in ("x", "y"):
+            assert abs(float(row[f"{axis}_px"]) - float(true[f"{axis}_px"])) < 0.1
             error = float(row[f"{axis}_arcsec"]) - float(true[f"{axis}_arcsec"])
             assert abs(error) < 6 * float(row[f"{axis}_sd_arcsec"])
 

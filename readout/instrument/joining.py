@@ -16,8 +16,9 @@ from readout.model import Quality, Reading
 
 @dataclass(frozen=True, slots=True)
 class Joined:
-    """``reading``: the mean at the mean time; ``n`` good readings went into it; ``*_scatter``:
-    their standard deviation, NaN for fewer than two.
+    """``reading``: the mean at the mean time; ``n`` good readings went into it, or, while no
+    scale is known, unflagged positions; ``*_scatter``: standard deviation of their angles, NaN for
+    fewer than two.
     """
 
     reading: Reading
@@ -33,7 +34,7 @@ def join(readings: Sequence[Reading]) -> Joined:
     noise of a mean of independent values is sqrt(sum sd^2) / n; what is common to all of them
     (combined uncertainty without the noise) stays as it is.
     """
-    good = [r for r in readings if r.good]
+    good = [r for r in readings if r.good] or [r for r in readings if _seen(r)]
     used = good if good and 2 * len(good) >= len(readings) else []
     rows = used or readings
     x, y = (_joined([axis(r) for r in used]) for axis in (_x, _y))
@@ -82,6 +83,11 @@ class Intervals:
         """The row of what is held, which is then forgotten; None if nothing is."""
         held, self._held = self._held, []
         return join(held) if held else None
+
+
+def _seen(reading: Reading) -> bool:
+    """True for a position nobody has a doubt about; it has no angle while no scale is known."""
+    return reading.quality is Quality.OK and math.isfinite(reading.x_px)
 
 
 _Row = tuple[float, float, float]

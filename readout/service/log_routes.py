@@ -16,7 +16,15 @@ from fastapi.responses import StreamingResponse
 
 from readout.instrument.joining import Intervals, Joined
 from readout.model import Reading
-from readout.rows import SPREAD_COLUMNS, VALUE_COLUMNS, Cell, csv_cell, reading_row, rounded
+from readout.rows import (
+    POSITION_COLUMNS,
+    SPREAD_COLUMNS,
+    VALUE_COLUMNS,
+    Cell,
+    csv_cell,
+    reading_row,
+    rounded,
+)
 from readout.service.feed import Feed, Subscription
 from readout.service.messages import encode
 from readout.utc import utc_text
@@ -33,11 +41,15 @@ def log_routes(feed: Feed) -> APIRouter:
     async def get_log(
         every_s: Annotated[float, Query(ge=0, le=86_400)] = 1.0,
         form: Annotated[Literal["ndjson", "csv"], Query(alias="format")] = "ndjson",
+        header: bool = True,
     ) -> StreamingResponse:
-        """Means over ``every_s`` seconds with count and scatter; 0: every reading."""
-        lines = _csv_lines if form == "csv" else _json_lines
-        media_type = "text/csv" if form == "csv" else "application/x-ndjson"
-        return StreamingResponse(lines(feed, every_s), media_type=media_type)
+        """Means over ``every_s`` seconds with count and scatter; 0: every reading.
+
+        ``header=false``: CSV without its first line, to go on with a file that has one.
+        """
+        if form == "csv":
+            return StreamingResponse(_csv_lines(feed, every_s, header), media_type="text/csv")
+        return StreamingResponse(_json_lines(feed, every_s), media_type="application/x-ndjson")
 
     return routes
 
@@ -47,10 +59,11 @@ async def _json_lines(feed: Feed, every_s: float) -> AsyncIterator[str]:
         yield "".join(encode(row) + "\n" for row in rows)
 
 
-async def _csv_lines(feed: Feed, every_s: float) -> AsyncIterator[str]:
+async def _csv_lines(feed: Feed, every_s: float, header: bool = True) -> AsyncIterator[str]:
     averaged = SPREAD_COLUMNS if every_s > 0 else ()
-    columns = ["t_utc", *VALUE_COLUMNS, "quality", *averaged, "dropped"]
-    yield ",".join(columns) + "\n"
+    columns = ["t_utc", *VALUE_COLUMNS, "quality", *POSITION_COLUMNS, *averaged, "dropped"]
+    if header:
+        yield ",".join(columns) + "\n"
     async for rows in _rows(feed, every_s):
         text = io.StringIO()
         writer = csv.writer(text, lineterminator="\n")

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import asyncio
 import csv
+import dataclasses
 import io
 import json
 import math
@@ -105,3 +106,24 @@ def test_a_gap_brings_no_rows() -> None:
     rows = Interval(1.0).rows([reading(0), reading(1, t_s=60.0), reading(2, t_s=61.0)])
     assert [row["t_s"] for row in rows] == [0.0, 60.0]
     assert not any(isinstance(v, float) and math.isnan(v) for row in rows for v in row.values())
+
+
+def test_without_a_scale_the_positions_are_kept_and_counted() -> None:
+    """A night without a scale is not lost: one that is found later makes angles of the pixels."""
+    unscaled = [
+        dataclasses.replace(reading(k, math.nan, math.nan, sd=math.nan), x_px=300.0 + k, y_px=7.5)
+        for k in range(11)
+    ]
+    row, _ = (json.loads(line) for line in logged(log_routes._json_lines, 1.0, unscaled).split())
+    assert (row["x_arcsec"], row["x_scatter_arcsec"], row["quality"]) == (None, None, [])
+    assert (row["n"], row["x_px"], row["y_px"]) == (10, 304.5, 7.5)
+    table = logged(log_routes._csv_lines, 0.0, unscaled)
+    assert [r["x_px"] for r in csv.DictReader(io.StringIO(table))][:2] == ["300.0", "301.0"]
+
+
+def test_a_file_that_has_its_header_is_gone_on_with() -> None:
+    def lines(feed: Feed, every_s: float) -> AsyncIterator[str]:
+        return log_routes._csv_lines(feed, every_s, header=False)
+
+    whole = logged(log_routes._csv_lines, 0.0, [reading(0)])
+    assert whole.splitlines()[1:] == logged(lines, 0.0, [reading(0)]).splitlines()
