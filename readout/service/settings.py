@@ -25,7 +25,10 @@ from readout.units import Unit
 SCHEMA = "readout.settings/1"
 LARGEST_CHARACTERS = 100_000
 
-Positive = Annotated[float, Field(gt=0)]
+HALF_TURN_ARCSEC = 648_000.0
+
+# A number is a number: true and "1" are none.
+Angle = Annotated[float, Field(strict=True, ge=-HALF_TURN_ARCSEC, le=HALF_TURN_ARCSEC)]
 
 
 class _Model(BaseModel):
@@ -35,15 +38,15 @@ class _Model(BaseModel):
 class Goal(_Model):
     """The angle a technician wants."""
 
-    x_arcsec: float | None = None
-    y_arcsec: float | None = None
+    x_arcsec: Angle | None = None
+    y_arcsec: Angle | None = None
 
 
 class OpticsSettings(_Model):
     """Data of the parts, for a nominal calibration."""
 
-    focal_length_mm: Positive | None = None
-    pitch_um: Positive | None = None
+    focal_length_mm: Annotated[float, Field(strict=True, ge=1, le=100_000)] | None = None
+    pitch_um: Annotated[float, Field(strict=True, ge=0.1, le=1000)] | None = None
     mounting: Mounting = Mounting.STRAIGHT
 
     @property
@@ -63,10 +66,10 @@ class Settings(_Model):
     target: Target = Target.CROSSHAIR
     source: Annotated[str, Field(min_length=1)] | None = None
     calibration: Annotated[str, Field(min_length=1)] | None = None
-    average_s: Annotated[float, Field(gt=0, le=60)] = 1.0
+    average_s: Annotated[float, Field(strict=True, gt=0, le=60)] = 1.0
     statistic: Statistic = Statistic.MEAN
     goal: Goal = Goal()
-    tolerance_arcsec: Positive | None = None
+    tolerance_arcsec: Annotated[Angle, Field(gt=0)] | None = None
     optics: OpticsSettings = OpticsSettings()
 
     def document(self) -> dict[str, Any]:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import errno
 import json
 from dataclasses import replace
 from pathlib import Path
@@ -67,6 +68,14 @@ def test_unknown_keys_are_kept_at_every_level(rig: Rig, client: TestClient, tmp_
         ({"goal": 3}, "goal"),
         ({"optics": {"mounting": "askew"}}, "optics.mounting"),
         ({"optics": {"focal_length_mm": 0}}, "optics.focal_length_mm"),
+        ({"optics": {"focal_length_mm": 1e300, "pitch_um": 1e-300}}, "optics.focal_length_mm"),
+        ({"optics": {"focal_length_mm": 300, "pitch_um": 1e-300}}, "optics.pitch_um"),
+        ({"optics": {"focal_length_mm": 300, "pitch_um": 1001}}, "optics.pitch_um"),
+        ({"goal": {"x_arcsec": 1e308}}, "goal.x_arcsec"),
+        ({"tolerance_arcsec": 1e300}, "tolerance_arcsec"),
+        ({"average_s": True}, "average_s"),
+        ({"average_s": "2"}, "average_s"),
+        ({"goal": {"y_arcsec": False}}, "goal.y_arcsec"),
         ({"source": "nowhere at all"}, "nowhere at all"),
         ({"calibration": "/none.json"}, "none.json"),
         ({"schema": "other/1"}, "schema"),
@@ -120,6 +129,20 @@ def test_settings_that_cannot_be_written_are_refused(rig: Rig, client: TestClien
     answer = client.put("/api/settings", json={"unit": "urad"})
     assert answer.status_code == 422
     assert "cannot write" in answer.json()["detail"]
+    assert client.get("/api/settings").json()["unit"] == "arcsec"
+
+
+def test_a_full_disk_is_507_and_says_what_to_do(
+    client: TestClient, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def full(_handle: int) -> None:
+        raise OSError(errno.ENOSPC, "No space left on device")
+
+    monkeypatch.setattr("readout.files.atomic.os.fsync", full)
+    answer = client.put("/api/settings", json={"unit": "urad"})
+    # RFC 4918, 11.5: 507 Insufficient Storage
+    assert (answer.status_code, answer.json()["status"]) == (507, 507)
+    assert "make room" in answer.json()["detail"]
     assert client.get("/api/settings").json()["unit"] == "arcsec"
 
 
