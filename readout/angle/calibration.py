@@ -130,18 +130,42 @@ class Calibration:
         j = self.tilt_per_px(x_px, y_px)
         return j @ np.array([[xx, xy], [xy, yy]]) @ j.T
 
-    def calibration_cov(self, x_px: float, y_px: float) -> F64:
-        """Covariance of the tilt from the parameters' covariance, arcsec^2: common to all rows."""
+    def calibration_cov(self, x_px: F64 | float, y_px: F64 | float) -> F64:
+        """Covariance of the tilt from the parameters' covariance, arcsec^2, shape (..., 2, 2).
+
+        It is common to all rows. Places of any shape; NaN stays NaN.
+        """
+        return self._parameters_share(self._tilt_per_parameter(x_px, y_px))
+
+    def difference_cov(
+        self, x_px: F64 | float, y_px: F64 | float, from_x_px: float, from_y_px: float
+    ) -> F64:
+        """Covariance, from the parameters' covariance, of the tilt at a place minus the tilt at
+        another, arcsec^2, shape (..., 2, 2).
+
+        The parameters are the same at both places, so their errors are subtracted before they are
+        squared (JCGM 100:2008, 5.2): an uncertain scale counts with the difference of the tilts,
+        an uncertain axis hardly at all. Places of any shape; NaN stays NaN.
+        """
+        there = self._tilt_per_parameter(x_px, y_px)
+        return self._parameters_share(there - self._tilt_per_parameter(from_x_px, from_y_px))
+
+    def _parameters_share(self, per_parameter: F64) -> F64:
+        cov = np.array(self.param_cov)
+        return np.asarray(per_parameter @ cov @ np.swapaxes(per_parameter, -1, -2))
+
+    def _tilt_per_parameter(self, x_px: F64 | float, y_px: F64 | float) -> F64:
+        """Derivatives of the tilt, in arc-seconds, with the ``PARAMETERS``, shape (..., 2, 7)."""
         matrix = np.array(self.matrix)
-        d = np.array([x_px, y_px]) - self.p0_px
-        q = matrix @ d
-        r2 = float(q @ q)
-        stretch = (1 + self.k1 * r2) * np.eye(2) + 2 * self.k1 * np.outer(q, q)
-        dq = np.zeros((2, 7))
-        dq[0, 0:2] = d
-        dq[1, 2:4] = d
-        dq[:, 4:6] = -matrix
+        d = np.stack(np.broadcast_arrays(x_px, y_px), axis=-1) - self.p0_px
+        q = d @ matrix.T
+        r2 = np.sum(q**2, axis=-1)[..., None]
+        stretch = (1 + self.k1 * r2[..., None]) * np.eye(2)
+        stretch = stretch + 2 * self.k1 * q[..., :, None] * q[..., None, :]
+        dq = np.zeros((*d.shape, 7))
+        dq[..., 0, 0:2] = d
+        dq[..., 1, 2:4] = d
+        dq[..., :, 4:6] = -matrix
         dw = stretch @ dq
-        dw[:, 6] = q * r2
-        j = tilt_jacobian(*self.slopes(x_px, y_px)) @ dw
-        return j @ np.array(self.param_cov) @ j.T
+        dw[..., :, 6] = q * r2
+        return np.asarray(tilt_jacobian(*self.slopes(x_px, y_px)) @ dw)

@@ -3,6 +3,16 @@
 from readout.instrument.acquisition import State
 from readout.instrument.averaging import Average, Statistic
 from readout.instrument.instrument import Event, Instrument, Optics, Status
-from readout.instrument.zero import Zero
+from readout.instrument.zero import Reference, Zero
 
-__all__ = ["Average", "Event", "Instrument", "Optics", "State", "Statistic", "Status", "Zero"]
+__all__ = [
+    "Average",
+    "Event",
+    "Instrument",
+    "Optics",
+    "Reference",
+    "State",
+    "Statistic",
+    "Status",
+    "Zero",
+]

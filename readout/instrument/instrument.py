@@ -21,7 +21,7 @@ from readout.instrument.acquisition import Acquisition, State
 from readout.instrument.averaging import Average, Statistic, TrailingWindow, average_of
 from readout.instrument.observer import Observer, Picture
 from readout.instrument.opening import open_observer
-from readout.instrument.zero import Zero, zero_from
+from readout.instrument.zero import Reference, Zero, zero_from
 from readout.model import Observation, Reading, Target
 from readout.utc import utc_text
 
@@ -106,7 +106,8 @@ class Instrument:
         self._statistic = statistic
         self._window = TrailingWindow(window_s)
         self._average: tuple[float, Average] | None = None
-        self._zero: Zero | None = None
+        self._reference: Reference | None = None
+        self._first_seq: int | None = None
         self._newest: tuple[Observation, Reading] | None = None
         self._came_ns = 0
         self._acquisition: Acquisition | None = None
@@ -209,8 +210,14 @@ class Instrument:
 
     @property
     def zero(self) -> Zero | None:
+        reference = self.reference
+        return reference.zero if reference is not None else None
+
+    @property
+    def reference(self) -> Reference | None:
+        """The zero with what readings relative to it need."""
         with self._lock:
-            return self._zero
+            return self._reference
 
     def status(self) -> Status:
         acquisition = self._acquisition
@@ -229,7 +236,7 @@ class Instrument:
                 image_width_px=width_px,
                 image_height_px=height_px,
                 calibration=self._calibration,
-                zero=self._zero,
+                zero=self.zero,
             )
 
     def average(self) -> Average | None:
@@ -289,7 +296,9 @@ class Instrument:
                 statistic=self._statistic,
                 now_utc_ns=self.start_time.utc_ns(self._clock_ns()),
             )
-            self._zero = zero
+            if self._calibration is None or self._first_seq is None:
+                raise NotNow("there is no scale yet: give one, then set the zero")
+            self._reference = Reference(zero, self._calibration, self._first_seq)
         self.tell("zero", f"zero set at X {zero.x_arcsec:+.3f}″, Y {zero.y_arcsec:+.3f}″")
         return zero
 
@@ -310,7 +319,7 @@ class Instrument:
 
     def clear_zero(self) -> None:
         with self._lock:
-            before, self._zero = self._zero, None
+            before, self._reference = self._reference, None
         if before is not None:
             self.tell("zero", "the zero was taken back")
 
@@ -332,6 +341,8 @@ class Instrument:
             t_s = (observation.t_mono_ns - self._t_zero_ns) * 1e-9
             reading = reading_of(observation, self._calibration, t_s)
             self._window.add(reading)
+            if self._first_seq is None:
+                self._first_seq = reading.seq
             self._newest = observation, reading
             self._came_ns = self._clock_ns()
             self._frames += 1
@@ -406,7 +417,8 @@ class Instrument:
         True if there was a zero.
         """
         self._window.clear()
-        before, self._average, self._zero = self._zero, None, None
+        before, self._average, self._reference = self._reference, None, None
+        self._first_seq = None
         return before is not None
 
     def _tell_lost(self, zero_lost: bool, why: str) -> None:

@@ -7,10 +7,14 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
+from readout.angle import Calibration
 from readout.errors import NotNow
 from readout.instrument.averaging import Average, Statistic, average_of
 from readout.model import F64, Reading
+
+I64 = NDArray[np.int64]
 
 STILL_WITHIN_ARCSEC = 0.4
 """Motion from part to part of the window that does not hinder a zero: four times what the eye
@@ -32,6 +36,40 @@ class Zero:
     window_s: float
     statistic: Statistic
     set_utc_ns: int
+
+
+@dataclass(frozen=True, slots=True)
+class Reference:
+    """A zero with what readings relative to it need.
+
+    ``calibration``: the one both are made with. ``from_seq``: the first reading that is measured
+    with it from the source of the zero.
+    """
+
+    zero: Zero
+    calibration: Calibration
+    from_seq: int
+
+    def relative_u(
+        self, seq: I64, x_px: F64, y_px: F64, x_sd_arcsec: F64, y_sd_arcsec: F64
+    ) -> tuple[F64, F64]:
+        """Combined standard uncertainty of the tilt minus the zero, for readings (n,), in arcsec.
+
+        It joins the calibration's share of the difference, the noise of the row and the standard
+        error of the zero, uncorrelated with each other (JCGM 100:2008, 5.1.2). NaN for readings
+        without a position and for those before ``from_seq``.
+        """
+        zero = self.zero
+        zero_x_px, zero_y_px = self.calibration.position(zero.x_arcsec, zero.y_arcsec)
+        known = np.where(seq >= self.from_seq, 1.0, np.nan)
+        with np.errstate(over="ignore", invalid="ignore"):  # far beyond any picture: no number
+            share = self.calibration.difference_cov(
+                x_px * known, y_px * known, float(zero_x_px), float(zero_y_px)
+            )
+            return (
+                np.sqrt(share[..., 0, 0] + x_sd_arcsec**2 + zero.x_sd_arcsec**2),
+                np.sqrt(share[..., 1, 1] + y_sd_arcsec**2 + zero.y_sd_arcsec**2),
+            )
 
 
 def moving(rows: Sequence[Reading]) -> bool:

@@ -13,7 +13,7 @@ from typing_extensions import TypedDict
 from readout import __version__
 from readout.angle import Calibration
 from readout.capture.open import SourceDescription
-from readout.instrument import Average, Event, State, Status, Zero
+from readout.instrument import Average, Event, Reference, State, Status, Zero
 from readout.instrument.recorder import Recording
 from readout.model import Arm, Observation, Quality, Reading
 from readout.rows import rounded
@@ -36,8 +36,9 @@ class AverageMessage(TypedDict):
 
 
 class ReadingMessage(TypedDict):
-    """One reading. ``x_rel_arcsec``: absolute minus zero, null while no zero is set. ``state``: of
-    the source, now; ``age_s``: time since the reading came. ``average`` is null while none comes.
+    """One reading. ``x_rel_arcsec``: absolute minus zero, ``x_rel_u_arcsec`` its combined standard
+    uncertainty, both null while no zero is set. ``state``: of the source, now; ``age_s``: time
+    since the reading came. ``average`` is null while none comes.
     """
 
     seq: int
@@ -51,6 +52,8 @@ class ReadingMessage(TypedDict):
     y_sd_arcsec: Number
     x_u_arcsec: Number
     y_u_arcsec: Number
+    x_rel_u_arcsec: Number
+    y_rel_u_arcsec: Number
     x_px: Number
     y_px: Number
     x_sd_px: Number
@@ -63,7 +66,10 @@ class ReadingMessage(TypedDict):
 
 
 class ReadingsMessage(TypedDict):
-    """Columns of equal length; ``dropped``: what this viewer lost so far."""
+    """Columns of equal length; ``dropped``: what this viewer lost so far. ``x_rel_u_arcsec``:
+    combined standard uncertainty of the tilt minus the zero, null while none is set and for
+    readings that it does not belong to.
+    """
 
     kind: Literal["readings"]
     seq: list[int]
@@ -74,6 +80,8 @@ class ReadingsMessage(TypedDict):
     y_sd_arcsec: list[Number]
     x_u_arcsec: list[Number]
     y_u_arcsec: list[Number]
+    x_rel_u_arcsec: list[Number]
+    y_rel_u_arcsec: list[Number]
     x_px: list[Number]
     y_px: list[Number]
     quality: list[list[str]]
@@ -203,9 +211,16 @@ def average_message(average: Average | None) -> AverageMessage | None:
 
 
 def reading_message(
-    reading: Reading, zero: Zero | None, average: Average | None, *, state: State, age_s: float
+    reading: Reading,
+    reference: Reference | None,
+    average: Average | None,
+    *,
+    state: State,
+    age_s: float,
 ) -> ReadingMessage:
     """The newest reading, against the zero if there is one."""
+    zero = reference.zero if reference is not None else None
+    x_rel_u, y_rel_u = _relative_u(reference, _columns_of([reading]))
     return {
         "seq": reading.seq,
         "t_utc": utc_text(reading.t_utc_ns),
@@ -218,6 +233,8 @@ def reading_message(
         "y_sd_arcsec": rounded(reading.y_sd_arcsec),
         "x_u_arcsec": rounded(reading.x_u_arcsec),
         "y_u_arcsec": rounded(reading.y_u_arcsec),
+        "x_rel_u_arcsec": x_rel_u[0],
+        "y_rel_u_arcsec": y_rel_u[0],
         "x_px": rounded(reading.x_px),
         "y_px": rounded(reading.y_px),
         "x_sd_px": rounded(reading.x_sd_px),
@@ -231,36 +248,47 @@ def reading_message(
 
 
 def readings_message(
-    readings: Sequence[Reading], *, dropped: int, average: Average | None
+    readings: Sequence[Reading],
+    *,
+    dropped: int,
+    average: Average | None,
+    reference: Reference | None = None,
 ) -> ReadingsMessage:
     """The message for readings as they come."""
-    floats = {name: [rounded(getattr(r, name)) for r in readings] for name in FLOATS}
-    return _columns_message(
-        [r.seq for r in readings],
-        floats,
-        [r.quality.words() for r in readings],
-        dropped,
-        average,
-    )
+    return _columns_message(_columns_of(readings), dropped, average, reference)
 
 
-def recent_message(columns: Columns, average: Average | None) -> ReadingsMessage:
+def recent_message(
+    columns: Columns, average: Average | None, reference: Reference | None = None
+) -> ReadingsMessage:
     """The message for rows out of the feed's memory."""
-    floats = {name: _numbers(columns[name]) for name in FLOATS}
-    words = [Quality(int(value)).words() for value in columns["quality"]]
-    return _columns_message(columns["seq"].tolist(), floats, words, 0, average)
+    return _columns_message(columns, 0, average, reference)
+
+
+def _columns_of(readings: Sequence[Reading]) -> Columns:
+    columns: Columns = {name: np.array([getattr(r, name) for r in readings]) for name in FLOATS}
+    columns["seq"] = np.array([r.seq for r in readings])
+    columns["quality"] = np.array([r.quality.value for r in readings])
+    return columns
+
+
+def _relative_u(reference: Reference | None, columns: Columns) -> tuple[list[Number], list[Number]]:
+    seq = columns["seq"].astype(np.int64)
+    if reference is None:
+        return [None] * seq.size, [None] * seq.size
+    places = columns["x_px"], columns["y_px"], columns["x_sd_arcsec"], columns["y_sd_arcsec"]
+    x_u, y_u = reference.relative_u(seq, *(column.astype(np.float64) for column in places))
+    return _numbers(x_u), _numbers(y_u)
 
 
 def _columns_message(
-    seq: list[int],
-    floats: dict[str, list[Number]],
-    quality: list[list[str]],
-    dropped: int,
-    average: Average | None,
+    columns: Columns, dropped: int, average: Average | None, reference: Reference | None
 ) -> ReadingsMessage:
+    x_rel_u, y_rel_u = _relative_u(reference, columns)
+    floats = {name: _numbers(columns[name]) for name in FLOATS}
     return {
         "kind": "readings",
-        "seq": seq,
+        "seq": columns["seq"].tolist(),
         "t_s": floats["t_s"],
         "x_arcsec": floats["x_arcsec"],
         "y_arcsec": floats["y_arcsec"],
@@ -268,9 +296,11 @@ def _columns_message(
         "y_sd_arcsec": floats["y_sd_arcsec"],
         "x_u_arcsec": floats["x_u_arcsec"],
         "y_u_arcsec": floats["y_u_arcsec"],
+        "x_rel_u_arcsec": x_rel_u,
+        "y_rel_u_arcsec": y_rel_u,
         "x_px": floats["x_px"],
         "y_px": floats["y_px"],
-        "quality": quality,
+        "quality": [Quality(int(value)).words() for value in columns["quality"]],
         "dropped": dropped,
         "average": average_message(average),
     }

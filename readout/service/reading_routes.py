@@ -42,7 +42,7 @@ def reading_routes(
             raise Problem(404, f"there is no reading: {_why(instrument)}")
         return reading_message(
             newest[1],
-            instrument.zero,
+            instrument.reference,
             instrument.average(),
             state=instrument.status().state,
             age_s=age_s,
@@ -62,7 +62,7 @@ def reading_routes(
     ) -> Response:
         """The readings still held (ten minutes), thinned to about ``points`` real rows."""
         rows = thinned(feed.rows(from_seq), points)
-        text = encode(recent_message(rows, instrument.average()))
+        text = encode(recent_message(rows, instrument.average(), instrument.reference))
         return Response(text, media_type="application/json")
 
     @routes.get("/frame.jpg", responses={200: {"content": {"image/jpeg": {}}}})

@@ -92,7 +92,10 @@ def _messages(batch: Batch, subscription: Subscription, instrument: Instrument) 
     messages = [encode(event_message(event)) for event in batch.events]
     if batch.readings:
         columns = readings_message(
-            batch.readings, dropped=subscription.dropped, average=instrument.average()
+            batch.readings,
+            dropped=subscription.dropped,
+            average=instrument.average(),
+            reference=instrument.reference,
         )
         messages.insert(0, encode(columns))
     return messages

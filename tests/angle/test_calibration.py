@@ -139,6 +139,49 @@ def test_every_parameter_counts_in_the_calibration_share():
         assert np.abs(less.calibration_cov(*place) - claimed).max() > 0
 
 
+def test_the_share_of_a_difference_agrees_with_monte_carlo():
+    """Propagation of distributions (JCGM 101), the same parameters at both places."""
+    at = replace(calibration(rotation_deg=20.0), k1=0.3)
+    spread = np.array([2e-8, 1e-8, 1e-8, 3e-8, 2.0, 3.0, 0.2])
+    correlation = np.eye(7) + 0.3 * (np.eye(7, k=1) + np.eye(7, k=-1))
+    cov = correlation * np.outer(spread, spread)
+    at = replace(at, param_cov=tuple(tuple(row) for row in cov.tolist()))
+    place, zero = (1200.0, 60.0), (900.0, 200.0)
+    parameters = np.array([*np.ravel(at.matrix), *at.p0_px, at.k1])
+    rng = np.random.default_rng(6)
+    results = []
+    # Drawn in units of their spread: the smallest variance is 1e-17 of the largest.
+    for drawn in rng.multivariate_normal(np.zeros(7), correlation, 4000):
+        trial = parameters + spread * drawn
+        matrix = ((trial[0], trial[1]), (trial[2], trial[3]))
+        other = replace(at, matrix=matrix, p0_px=(trial[4], trial[5]), k1=trial[6])
+        results.append(np.subtract(other.tilt(*place), other.tilt(*zero)))
+    tried = np.cov(np.array(results).T)
+    claimed = at.difference_cov(*place, *zero)
+    assert claimed == pytest.approx(tried, abs=6 / np.sqrt(4000) * tried.max())
+
+
+def test_a_scale_known_to_one_percent_leaves_one_percent_of_the_difference():
+    """A zero at 300" and a mirror 0.3" beside it: 0.003", not the 3" of the absolute tilt."""
+    at = calibration(focal_length_rel_sd=0.01)
+    zero, place = at.position(300.0, 0.0), at.position(300.3, 0.0)
+    claimed = at.difference_cov(float(place[0]), float(place[1]), float(zero[0]), float(zero[1]))
+    assert math.sqrt(claimed[0, 0]) == pytest.approx(0.003, rel=0.01)
+    assert math.sqrt(at.calibration_cov(*map(float, place))[0, 0]) == pytest.approx(3.0, rel=0.01)
+
+
+def test_shares_take_places_of_any_shape():
+    at = replace(calibration(rotation_deg=20.0, focal_length_rel_sd=0.01), k1=0.3)
+    x_px, y_px = np.array([[900.0, np.nan], [100.0, 3.0]]), np.array([[200.0, 1.0], [7.0, 4.0]])
+    shares = at.calibration_cov(x_px, y_px)
+    differences = at.difference_cov(x_px, y_px, 30.0, 40.0)
+    assert shares.shape == differences.shape == (2, 2, 2, 2)
+    assert np.isnan(shares[0, 1]).all()
+    assert shares[1, 0] == pytest.approx(at.calibration_cov(100.0, 7.0))
+    assert differences[1, 1] == pytest.approx(at.difference_cov(3.0, 4.0, 30.0, 40.0))
+    assert at.difference_cov(30.0, 40.0, 30.0, 40.0) == pytest.approx(np.zeros((2, 2)), abs=1e-15)
+
+
 def test_a_camera_not_quite_upright_is_in_the_uncertainty():
     """1 degree of unknown turn: at X = 300" and Y = 0 it is 5.2" of Y (300" sin 1 deg)."""
     at = calibration(rotation_sd_deg=1.0, focal_length_rel_sd=0.0)

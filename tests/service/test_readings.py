@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import math
+from dataclasses import replace
 from typing import Any
 
 import cv2
@@ -15,7 +16,7 @@ from hypothesis import strategies as st
 from starlette.testclient import TestClient
 
 from readout.errors import SourceLost
-from readout.instrument import State
+from readout.instrument import Reference, State, Statistic, Zero
 from readout.model import Arm, Quality, Reading, Sighting, no_sighting
 from readout.service.feed import Feed
 from readout.service.messages import (
@@ -26,7 +27,7 @@ from readout.service.messages import (
     sighting_message,
 )
 from tests.instrument.fakes import FakeClock, observation
-from tests.service.conftest import Rig
+from tests.service.conftest import STREAM, Rig, small_calibration
 
 FORBIDDEN = ("NaN", "Infinity")
 
@@ -43,6 +44,16 @@ def strict(text: str) -> object:
 number = st.floats(allow_nan=True, allow_infinity=True)
 
 
+def scale_cov(rel_sd: float) -> tuple[tuple[float, ...], ...]:
+    """Covariance of the parameters where only the scale is uncertain."""
+    gradient = np.array([*np.ravel(small_calibration().matrix), 0.0, 0.0, 0.0]) * rel_sd
+    return tuple(tuple(row) for row in np.outer(gradient, gradient).tolist())
+
+
+def some_zero() -> Zero:
+    return Zero(1.0, 2.0, 0.1, 0.1, 30, 1.0, Statistic.MEAN, 0)
+
+
 @given(values=st.lists(number, min_size=11, max_size=11), flags=st.integers(0, 2**13 - 1))
 def test_no_number_that_is_none_ever_reaches_the_wire(values: list[float], flags: int) -> None:
     reading = Reading(7, values[0], 10**18, *values[1:], quality=Quality(flags))
@@ -54,6 +65,7 @@ def test_no_number_that_is_none_ever_reaches_the_wire(values: list[float], flags
     messages = [
         encode(reading_message(reading, None, None, state=State.MEASURING, age_s=values[0])),
         encode(readings_message([reading], dropped=0, average=None)),
+        encode(recent_message(feed.rows(), None, Reference(some_zero(), small_calibration(), 0))),
         encode(recent_message(feed.rows(), None)),
         encode(sighting_message(observation(0, clock, seen=seen))),
     ]
@@ -103,6 +115,43 @@ def test_reading_and_zero(rig: Rig, client: TestClient) -> None:
     assert client.get("/api/status").json()["zero"]["n"] == 10
     assert client.delete("/api/zero").status_code == 204
     assert client.get("/api/reading").json()["x_rel_arcsec"] is None
+
+
+def test_the_uncertainty_of_a_relative_reading_is_that_of_the_difference(
+    rig: Rig, client: TestClient
+) -> None:
+    """A scale known to 1 %: of 9.5" and 0.12" beside it, 0.0012", not 0.095"."""
+    rig.fix_calibration(replace(small_calibration(), param_cov=scale_cov(0.01)))
+    still, beside = (40.0, 24.0), (40.1, 24.0)
+    seen = [Sighting(*place, (1e-8, 0.0, 1e-8), Quality.OK) for place in [still] * 10 + [beside]]
+    rig.at_reading(9, lambda: client.post("/api/zero"))
+    rig.measure(seen)
+    reading = client.get("/api/reading").json()
+    scale = 206264.806 * 3.45e-3 / (2 * 300.0)
+    assert reading["x_rel_arcsec"] == pytest.approx(0.1 * scale, rel=1e-3)
+    assert reading["x_u_arcsec"] == pytest.approx(0.01 * 8.6 * scale, rel=0.01)
+    assert reading["x_rel_u_arcsec"] == pytest.approx(0.01 * 0.1 * scale, rel=0.01)
+    recent = client.get("/api/recent").json()
+    assert recent["x_rel_u_arcsec"][10] == reading["x_rel_u_arcsec"]
+    assert recent["y_rel_u_arcsec"][0] < reading["y_u_arcsec"]
+    with client.websocket_connect(STREAM) as session:
+        session.receive_json()
+        rig.feed.append(rig.instrument.newest[1])
+        while (message := session.receive_json())["kind"] != "readings":
+            pass
+    assert message["x_rel_u_arcsec"] == [reading["x_rel_u_arcsec"]]
+    client.delete("/api/zero")
+    assert client.get("/api/reading").json()["x_rel_u_arcsec"] is None
+
+
+def test_rows_of_another_source_have_no_uncertainty_against_the_zero(
+    rig: Rig, client: TestClient
+) -> None:
+    rig.measure([None] * 4)
+    rig.at_reading(12, lambda: client.post("/api/zero"))
+    rig.measure([None] * 10)
+    recent = client.get("/api/recent").json()
+    assert [u is None for u in recent["x_rel_u_arcsec"]] == [True] * 4 + [False] * 10
 
 
 def test_zero_is_refused_of_a_source_that_has_ended(rig: Rig, client: TestClient) -> None:

@@ -343,6 +343,8 @@ function newestOf(readings: Readings, i: number): Newest {
     y_sd_arcsec: readings.y_sd_arcsec[i] ?? null,
     x_u_arcsec: readings.x_u_arcsec[i] ?? null,
     y_u_arcsec: readings.y_u_arcsec[i] ?? null,
+    x_rel_u_arcsec: readings.x_rel_u_arcsec[i] ?? null,
+    y_rel_u_arcsec: readings.y_rel_u_arcsec[i] ?? null,
     x_px: readings.x_px[i] ?? null,
     y_px: readings.y_px[i] ?? null,
     quality: readings.quality[i] ?? [],

@@ -22,6 +22,9 @@ export interface Newest {
   y_sd_arcsec: number | null;
   x_u_arcsec: number | null;
   y_u_arcsec: number | null;
+  /** Combined standard uncertainty of the tilt minus the zero; null while none is set. */
+  x_rel_u_arcsec: number | null;
+  y_rel_u_arcsec: number | null;
   x_px: number | null;
   y_px: number | null;
   quality: readonly string[];
@@ -38,6 +41,8 @@ export interface Readings {
   y_sd_arcsec: (number | null)[];
   x_u_arcsec: (number | null)[];
   y_u_arcsec: (number | null)[];
+  x_rel_u_arcsec: (number | null)[];
+  y_rel_u_arcsec: (number | null)[];
   x_px: (number | null)[];
   y_px: (number | null)[];
   quality: string[][];
@@ -134,6 +139,8 @@ export function readingsOf(value: unknown): Readings {
     y_sd_arcsec: fields.numbersOrNull('y_sd_arcsec'),
     x_u_arcsec: fields.numbersOrNull('x_u_arcsec'),
     y_u_arcsec: fields.numbersOrNull('y_u_arcsec'),
+    x_rel_u_arcsec: fields.numbersOrNull('x_rel_u_arcsec'),
+    y_rel_u_arcsec: fields.numbersOrNull('y_rel_u_arcsec'),
     x_px: fields.numbersOrNull('x_px'),
     y_px: fields.numbersOrNull('y_px'),
     quality: fields.list('quality').map((words) => wordsOf(words, 'readings: quality')),
@@ -161,6 +168,8 @@ export function readingOf(value: unknown): { newest: Newest; average: Average | 
       y_sd_arcsec: fields.numberOrNull('y_sd_arcsec'),
       x_u_arcsec: fields.numberOrNull('x_u_arcsec'),
       y_u_arcsec: fields.numberOrNull('y_u_arcsec'),
+      x_rel_u_arcsec: fields.numberOrNull('x_rel_u_arcsec'),
+      y_rel_u_arcsec: fields.numberOrNull('y_rel_u_arcsec'),
       x_px: fields.numberOrNull('x_px'),
       y_px: fields.numberOrNull('y_px'),
       quality: fields.words('quality'),

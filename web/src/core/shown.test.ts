@@ -9,6 +9,8 @@ const newest: Newest = {
   y_sd_arcsec: 0.3,
   x_u_arcsec: 0.5,
   y_u_arcsec: 0.5,
+  x_rel_u_arcsec: null,
+  y_rel_u_arcsec: null,
   x_px: 320,
   y_px: 240,
   quality: [],
@@ -63,10 +65,13 @@ describe('the number shown', () => {
   });
 
   it('counts from the zero, with its uncertainty', () => {
-    const shown = shownAngle(average, newest, zero, 'arcsec');
+    // Of the difference: common share and zero 0.07, noise of the row 0.3.
+    const row = { ...newest, x_rel_u_arcsec: Math.hypot(0.07, 0.3) };
+    const shown = shownAngle(average, row, zero, 'arcsec');
     expect(shown.x.value).toBe(6);
     expect(shown.y_arcsec).toBeCloseTo(-2.2, 12);
-    expect(shown.x.u).toBeCloseTo(Math.hypot(0.4, 0.05, 0.03), 12);
+    expect(shown.x.u).toBeCloseTo(Math.hypot(0.07, 0.05), 12);
+    expect(shown.y.u).toBeNull(); // not known of this row: better none than another's
   });
 
   it('subtracts the zero as an angle before the tangent is taken', () => {
@@ -77,14 +82,14 @@ describe('the number shown', () => {
 });
 
 describe('the position shown', () => {
-  it('has the standard error of its mean', () => {
+  it('claims no more than the scatter, as neighbouring readings are not independent', () => {
     const shown = shownPosition(
       { n: 25, mean: 320.5, sd: 0.1 },
       { n: 25, mean: 240, sd: 0.1 },
       newest,
       1,
     );
-    expect(shown.x).toEqual({ value: 320.5, noise: 0.1 / 5, u: 0.1 / 5 });
+    expect(shown.x).toEqual({ value: 320.5, noise: 0.1, u: 0.1 });
     expect(shown.unit).toBe('px');
   });
 

@@ -4,7 +4,7 @@ import { spreadFromArcsec, fromArcsec, type AngleUnit, type Unit } from './units
 
 export interface AxisShown {
   value: number | null;
-  /** Standard error of the value from noise alone. */
+  /** Standard error of the value from noise alone; of a position the scatter of one. */
   noise: number | null;
   /** Combined standard uncertainty. */
   u: number | null;
@@ -50,7 +50,7 @@ export function shownAngle(
     if (value === null) return NOTHING;
     const sd = newest[`${name}_sd_arcsec`];
     const noise = averaged ? average[`${name}_se_arcsec`] : sd;
-    const u = combined(newest[`${name}_u_arcsec`], sd, noise, zero?.[`${name}_sd_arcsec`] ?? 0);
+    const u = combined(newest[`${name}_${zero ? 'rel_u' : 'u'}_arcsec`], sd, noise);
     return {
       value: fromArcsec(value, unit),
       noise: noise === null ? null : spreadFromArcsec(noise, value, unit),
@@ -81,8 +81,8 @@ export function shownPosition(
   const there = newest.x_px !== null && newest.y_px !== null;
   const axis = (spread: Spread | null): AxisShown => {
     if (!there || spread === null) return NOTHING;
-    const noise = spread.sd / Math.sqrt(spread.n);
-    return { value: spread.mean, noise, u: noise };
+    // Of one reading: neighbouring ones are not independent, so that sd / sqrt(n) claims too much.
+    return { value: spread.mean, noise: spread.sd, u: spread.sd };
   };
   return {
     unit: 'px',
@@ -103,17 +103,11 @@ export function averageWords(average: { statistic: string; window_s: number }): 
 }
 
 /**
- * The row's combined uncertainty without its own noise, joined with that of the average and of
- * the zero (JCGM 100:2008, 5.1.2). The common share is not reduced by subtracting a zero: what
- * cancels there is not known here, and too large is the safe side.
+ * The row's combined uncertainty, of the tilt or of its difference from the zero, with its own
+ * noise replaced by that of the average (JCGM 100:2008, 5.1.2).
  */
-function combined(
-  u: number | null,
-  sd: number | null,
-  noise: number | null,
-  zero_sd: number,
-): number | null {
+function combined(u: number | null, sd: number | null, noise: number | null): number | null {
   if (u === null) return null;
   const common2 = Math.max(0, u * u - (sd ?? 0) ** 2);
-  return Math.sqrt(common2 + (noise ?? sd ?? 0) ** 2 + zero_sd * zero_sd);
+  return Math.sqrt(common2 + (noise ?? sd ?? 0) ** 2);
 }
