@@ -146,6 +146,9 @@ def test_a_picture_without_an_image_is_no_error(readout: Command, tmp_path: Path
     assert run.status == 0
     assert run.rows[0]["x_px"] is None
     assert run.rows[0]["quality"]
+    words = readout("locate", tmp_path / "dark.png").out
+    assert "no image" in words
+    assert "turn the camera" in words
 
 
 def test_files_that_are_no_pictures_are_named_and_the_others_done(

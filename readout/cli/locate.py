@@ -9,7 +9,7 @@ from typing import Annotated
 import typer
 
 from readout.cli.options import JsonOption
-from readout.cli.say import print_json, print_line, warn
+from readout.cli.say import print_json, print_line, quality_words, warn
 from readout.errors import BadInput
 from readout.model import Sighting, Target
 from readout.rows import Cell, rounded
@@ -68,7 +68,7 @@ def _row(path: Path, sighting: Sighting) -> dict[str, Cell]:
 
 
 def _words(sighting: Sighting) -> str:
-    quality = ", ".join(sighting.quality.words()).replace("_", " ") or "good"
+    quality = quality_words(sighting.quality)
     if not sighting.found:
         return quality
     places = (

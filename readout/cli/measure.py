@@ -20,7 +20,7 @@ from readout.cli.options import (
     SettingsOption,
 )
 from readout.cli.results import OverwriteOption, ReadingsFile, refuse_loss
-from readout.cli.say import note, print_json, print_line, progress, warn
+from readout.cli.say import note, print_json, print_line, progress, quality_words, warn
 from readout.errors import BadInput
 from readout.files.readings_file import ReadingsWriter
 from readout.model import Reading, Target
@@ -165,7 +165,7 @@ def _ended_by_signals(stop: Callable[[], None]) -> Iterator[None]:
 def _words(reading: Reading) -> str:
     """A reading as a person reads it, with the digits its noise allows."""
     name = reading.name or f"{reading.t_s:9.3f} s"
-    quality = ", ".join(reading.quality.words()).replace("_", " ") or "good"
+    quality = quality_words(reading.quality)
     if not math.isfinite(reading.x_arcsec):
         return f"{name}  {quality}"
     angles = (

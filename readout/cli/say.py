@@ -13,6 +13,7 @@ from typing import Any, NoReturn, TextIO
 import typer
 
 from readout.errors import cannot_write
+from readout.model import Quality
 
 QUIET_S = 1.0
 """Work shorter than this shows no progress."""
@@ -52,6 +53,14 @@ def opened(path: Path) -> TextIO:
         return path.open("w", encoding="utf-8", newline="")
     except OSError as error:
         raise cannot_write(path, error) from error
+
+
+def quality_words(quality: Quality) -> str:
+    """The flags as a person reads them; no image with what may be done about it."""
+    words = ", ".join(quality.words()).replace("_", " ") or "good"
+    if Quality.NO_IMAGE in quality:
+        words += " (no crosshair upright within 10°: if there is one, turn the camera)"
+    return words
 
 
 @contextmanager

@@ -19,7 +19,8 @@ export function lean(axis: Axis, value: number | null): string {
 }
 
 const QUALITY: Record<string, string> = {
-  no_image: 'no image: nothing like a crosshair in the picture',
+  no_image:
+    'no image: no crosshair that stands upright within 10°; if you see one, turn the camera',
   dim: 'dim: the image is faint, give more light or exposure',
   saturated: 'saturated: the arms are cut off at full white, give less light',
   blurred: 'blurred: the image is out of focus',
