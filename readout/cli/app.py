@@ -11,7 +11,7 @@ import typer
 
 from readout import __version__
 from readout.cli import calibrate, cameras, live, locate, measure, runs, simulate
-from readout.cli.say import fail
+from readout.cli.say import fail, speak_utf8
 from readout.errors import BadInput, ReadoutError
 
 OPENCV = (
@@ -37,6 +37,7 @@ app.add_typer(runs.app, name="runs", epilog=runs.EXAMPLE, help="What has been re
 
 def main() -> None:
     """Run the command line; a failure is one line on standard error and exit status 1."""
+    speak_utf8()
     try:
         refuse_two_opencvs()
         app()

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import io
 import json
 import sys
 import time
@@ -17,6 +18,17 @@ from readout.model import Quality
 
 QUIET_S = 1.0
 """Work shorter than this shows no progress."""
+
+
+def speak_utf8() -> None:
+    """Write UTF-8 whatever the system's old code page, and into files and pipes the same lines.
+
+    What UTF-8 cannot carry (bytes of a file's name that are no text) is spelt out.
+    """
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):
+            lines = None if stream.isatty() else "\n"
+            stream.reconfigure(encoding="utf-8", errors="backslashreplace", newline=lines)
 
 
 def fail(line: str) -> NoReturn:
@@ -50,7 +62,7 @@ def print_line(line: str) -> None:
 def opened(path: Path) -> TextIO:
     """The file at ``path``, to be written anew. Raises BadInput where it cannot be."""
     try:
-        return path.open("w", encoding="utf-8", newline="")
+        return path.open("w", encoding="utf-8", errors="backslashreplace", newline="")
     except OSError as error:
         raise cannot_write(path, error) from error
 
