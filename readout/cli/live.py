@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+from threading import Event
 from typing import Annotated
 
 import typer
 
+from readout.cli.ending import ended_by_signals
 from readout.cli.options import (
     SOURCES,
     CalibrationOption,
@@ -44,18 +46,20 @@ def live(
 
     Ctrl-C ends it.
     """
-    from readout.files.calibration_file import load_calibration
-    from readout.service.control import Options
-    from readout.service.live import Place, run_live
-    from readout.service.settings import default_settings_path
+    ending = Event()
+    with ended_by_signals(ending.set):  # before the imports: they take a second
+        from readout.files.calibration_file import load_calibration
+        from readout.service.control import Options
+        from readout.service.live import Place, run_live
+        from readout.service.settings import default_settings_path
 
-    place = Place(
-        port=port,
-        data=data_folder(data),
-        settings=settings or default_settings_path(),
-    )
-    options = Options(source, target, load_calibration(calibration) if calibration else None)
-    run_live(options, place, browser=browser, say=print_line, warn=warn)
+        place = Place(
+            port=port,
+            data=data_folder(data),
+            settings=settings or default_settings_path(),
+        )
+        options = Options(source, target, load_calibration(calibration) if calibration else None)
+        run_live(options, place, ending, browser=browser, say=print_line, warn=warn)
 
 
 command = live

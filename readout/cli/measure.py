@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import math
-import signal
 import sys
 from collections.abc import Callable, Iterator
 from contextlib import ExitStack, contextmanager
@@ -13,6 +12,7 @@ from typing import TYPE_CHECKING, Annotated
 import typer
 
 from readout.angle import Calibration
+from readout.cli.ending import ended_by_signals
 from readout.cli.options import (
     SOURCES,
     CalibrationOption,
@@ -95,7 +95,7 @@ def measure(
             seconds=seconds,
             give_up_after_s=give_up_after,
         )
-        with _ended_by_signals(measuring.stop):
+        with ended_by_signals(measuring.stop):
             measuring.run(source, target=target)
     if csv is not None and sys.stderr.isatty():
         note(f"{measuring.n} frames measured, {measuring.good} without a doubt: {csv}")
@@ -146,20 +146,6 @@ def _writing(csv: Path | None, *, json: bool) -> Iterator[Write]:
                 each(reading)
 
         yield write
-
-
-@contextmanager
-def _ended_by_signals(stop: Callable[[], None]) -> Iterator[None]:
-    """SIGINT and SIGTERM end the measurement; what was measured is written."""
-    before = {
-        number: signal.signal(number, lambda *_: stop())
-        for number in (signal.SIGINT, signal.SIGTERM)
-    }
-    try:
-        yield
-    finally:
-        for number, handler in before.items():
-            signal.signal(number, handler)
 
 
 def _words(reading: Reading) -> str:

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import asyncio
 import os
-import signal
 import socket
 import sys
 import threading
@@ -13,7 +12,6 @@ from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
-from types import FrameType
 from typing import TYPE_CHECKING, Any
 
 from readout import __version__
@@ -71,12 +69,13 @@ class _Beginning:
 def run_live(
     options: Options,
     place: Place,
+    ending: threading.Event,
     *,
     browser: bool | None,
     say: Callable[[str], None],
     warn: Callable[[str], None],
 ) -> None:
-    """Measure and serve until SIGINT or SIGTERM.
+    """Measure and serve until ``ending`` is set.
 
     ``browser``: open one; None: only from a terminal with a display. ``say`` prints a
     line, ``warn`` one that tells of a failure while it goes on.
@@ -120,7 +119,7 @@ def run_live(
             from readout.service.app import make_app
 
             app = make_app(instrument, feed, control, recorder, port=port)
-            _serve(uvicorn.Config(app, **_SERVER), listener, feed, beginning, welcome)
+            _serve(uvicorn.Config(app, **_SERVER), listener, feed, beginning, ending, welcome)
         finally:
             instrument.stop()
             recorder.close()
@@ -143,23 +142,25 @@ def _serve(
     listener: socket.socket,
     feed: Feed,
     beginning: _Beginning,
+    ending: threading.Event,
     welcome: Callable[[], None],
 ) -> None:
     import uvicorn
 
     class Server(uvicorn.Server):
-        """Tells when it is ready, and ends on our signals instead of its own handling of them."""
+        """Tells when it is ready, and leaves signals to the command."""
 
         async def startup(self, sockets: list[socket.socket] | None = None) -> None:
             await super().startup(sockets)
             await beginning.known(BEGINS_WITHIN_S)
-            if beginning.failure is not None:
+            if beginning.failure is not None or ending.is_set():
                 self.should_exit = True
-            elif not self.should_exit:
+            else:
                 welcome()
 
         async def on_tick(self, counter: int) -> bool:
-            return beginning.failure is not None or await super().on_tick(counter)
+            over = ending.is_set() or beginning.failure is not None
+            return over or await super().on_tick(counter)
 
         async def shutdown(self, sockets: list[socket.socket] | None = None) -> None:
             feed.detach()  # lets the streams end by themselves
@@ -169,17 +170,7 @@ def _serve(
         def capture_signals(self) -> Iterator[None]:
             yield
 
-    server = Server(config)
-
-    def end(_signal: int, _frame: FrameType | None) -> None:
-        server.should_exit = True
-
-    before = {number: signal.signal(number, end) for number in (signal.SIGINT, signal.SIGTERM)}
-    try:
-        server.run(sockets=[listener])
-    finally:
-        for number, handler in before.items():
-            signal.signal(number, handler)
+    Server(config).run(sockets=[listener])
 
 
 @contextmanager
