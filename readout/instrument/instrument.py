@@ -11,7 +11,7 @@ import math
 import threading
 import time
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from readout.angle import Calibration, Mounting, nominal_calibration, reading_of
 from readout.capture.source_name import encodable, source_name
@@ -78,8 +78,9 @@ _EVENT_OF_STATE = {
 class Instrument:
     """See the module. ``scale``: a calibration from a file, or the optics for a nominal one, or
     None; without a file, a source's own calibration (the simulator's) is used. ``t_s`` counts from
-    ``start``, or, with ``from_first_frame``, from the first frame. ``observe`` opens the observer
-    for a source and a target.
+    ``start``, or, with ``from_first_frame``, from the first frame. UTC is counted on from ``start``
+    however often the wall clock is set, but for recorded frames that are not replayed live.
+    ``observe`` opens the observer for a source and a target.
     """
 
     def __init__(
@@ -118,6 +119,7 @@ class Instrument:
         self._detail = ""
         self._size_px: tuple[int, int] | None = None
         self._size_known = self._scale_chosen = False
+        self._from_first_frame = from_first_frame
         self._t_zero_ns = None if from_first_frame else self.start_time.t_mono_ns
         self._frames = self._unusable = self._missed = 0
 
@@ -339,6 +341,9 @@ class Instrument:
             if self._t_zero_ns is None:
                 self._t_zero_ns = observation.t_mono_ns
             t_s = (observation.t_mono_ns - self._t_zero_ns) * 1e-9
+            if observer.live or not self._from_first_frame:  # on the session's clock
+                t_utc_ns = self.start_time.utc_ns(observation.t_mono_ns)
+                observation = replace(observation, t_utc_ns=t_utc_ns)
             reading = reading_of(observation, self._calibration, t_s)
             self._window.add(reading)
             if self._first_seq is None:

@@ -175,6 +175,18 @@ def test_time_counts_from_the_start_of_the_program_or_from_the_first_frame() -> 
     assert [r.t_s for r in frames.readings] == pytest.approx([0.0, 0.1])
 
 
+def test_utc_is_counted_on_from_the_start_whatever_a_source_took_for_it() -> None:
+    """A source takes UTC at each opening; a wall clock set by 5 s between must not show."""
+    bench = Bench([None, SourceLost("gone")], [None, None], scale=calibration()).run()
+    stamped = [r.t_utc_ns for r in bench.readings]
+    start_ns = bench.instrument.start_time.t_utc_ns
+    assert [(ns - start_ns) * 1e-9 for ns in stamped] == pytest.approx(
+        [r.t_s for r in bench.readings]
+    )
+    recorded = Bench([None], scale=calibration(), live=False, from_first_frame=True).run()
+    assert recorded.readings[0].t_utc_ns == recorded.clock.now_ns  # as the frame had it
+
+
 def test_seq_and_counts_go_on_over_a_change_of_source() -> None:
     bench = Bench([None, None], [None], scale=calibration()).run().run("another")
     assert [r.seq for r in bench.readings] == [0, 1, 2]
