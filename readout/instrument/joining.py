@@ -79,6 +79,14 @@ class Intervals:
         self._held.append(reading)
         return complete
 
+    @property
+    def left_s(self) -> float:
+        """Time from the newest reading to the end of its interval; 0 while nothing is held."""
+        if not self._held:
+            return 0.0
+        end_s = self._origin_s + (self._number + 1) * self._every_s
+        return max(0.0, end_s - self._held[-1].t_s)
+
     def close(self) -> Joined | None:
         """The row of what is held, which is then forgotten; None if nothing is."""
         held, self._held = self._held, []

@@ -6,6 +6,7 @@ that says how many readings it lost.
 
 from __future__ import annotations
 
+import asyncio
 import csv
 import io
 from collections.abc import AsyncIterator
@@ -25,11 +26,13 @@ from readout.rows import (
     reading_row,
     rounded,
 )
-from readout.service.feed import Feed, Subscription
+from readout.service.feed import Feed
 from readout.service.messages import encode
 from readout.utc import utc_text
 
 QUEUE = 20_000
+PATIENCE_S = 1.0
+"""what a reading may come late before its interval is taken for over"""
 Row = dict[str, Cell]
 
 
@@ -74,25 +77,26 @@ async def _csv_lines(feed: Feed, every_s: float, header: bool = True) -> AsyncIt
 async def _rows(feed: Feed, every_s: float) -> AsyncIterator[list[Row]]:
     subscription = feed.subscribe(QUEUE)
     interval = Interval(every_s)
+    clock = asyncio.get_running_loop().time
+    came_s = clock()
     told_dropped = 0
     try:
         while not subscription.closed:
-            readings = await _next(subscription, every_s)
-            rows = list(interval.rows(readings))
+            silent_s = clock() - came_s
+            readings = (await subscription.next(max(0.0, interval.ends_in_s - silent_s))).readings
+            over = not readings and clock() - came_s >= interval.ends_in_s
+            if readings or over:
+                came_s = clock()
+            rows = interval.close() if over else interval.rows(readings)
             if subscription.dropped > told_dropped:
                 rows.append({"dropped": subscription.dropped - told_dropped})
                 told_dropped = subscription.dropped
             if rows:
                 yield rows
-        if rows := interval.rows([]):  # the service ends: what is held is not lost
+        if rows := interval.close():  # the service ends: what is held is not lost
             yield rows
     finally:
         feed.unsubscribe(subscription)
-
-
-async def _next(subscription: Subscription, every_s: float) -> list[Reading]:
-    batch = await subscription.next(max(1.0, 2 * every_s))
-    return batch.readings
 
 
 class Interval:
@@ -101,12 +105,23 @@ class Interval:
     def __init__(self, every_s: float) -> None:
         self._intervals = Intervals(every_s) if every_s > 0 else None
 
+    @property
+    def ends_in_s(self) -> float:
+        """Silence after the newest reading that means its interval is over, with some patience."""
+        left_s = self._intervals.left_s if self._intervals is not None else 0.0
+        return left_s + PATIENCE_S
+
     def rows(self, readings: list[Reading]) -> list[Row]:
-        """Rows that are complete with ``readings``; none for ever so long means the held ones."""
+        """Rows that are complete with ``readings``."""
         if self._intervals is None:
             return [_unnamed(r) for r in readings]
-        joined = [self._intervals.add(r) for r in readings] or [self._intervals.close()]
+        joined = [self._intervals.add(r) for r in readings]
         return [_joined_row(row) for row in joined if row is not None]
+
+    def close(self) -> list[Row]:
+        """The row of what is held, if anything is."""
+        joined = self._intervals.close() if self._intervals is not None else None
+        return [] if joined is None else [_joined_row(joined)]
 
 
 def _joined_row(joined: Joined) -> Row:

@@ -13,6 +13,7 @@ from collections.abc import AsyncIterator, Callable
 import numpy as np
 import pytest
 
+from readout.instrument import Event
 from readout.model import Reading
 from readout.service import log_routes
 from readout.service.feed import Feed
@@ -97,9 +98,63 @@ def test_an_interval_ends_with_the_first_reading_of_the_next_or_with_silence() -
     assert interval.rows([reading(k) for k in range(5)]) == []  # 0.0 to 0.4 s
     (row,) = interval.rows([reading(5)])
     assert (row["n"], row["t_s"]) == (5, pytest.approx(0.2))
-    (row,) = interval.rows([])
+    assert interval.ends_in_s == pytest.approx(0.5 + log_routes.PATIENCE_S)
+    (row,) = interval.close()
     assert row["n"] == 1
-    assert interval.rows([]) == []
+    assert interval.close() == []
+
+
+def test_what_is_no_reading_does_not_end_an_interval() -> None:
+    """A status that changes every few readings; intervals of 1 s, ten readings a second."""
+
+    async def run() -> str:
+        feed = Feed(capacity=1000)
+        feed.attach(asyncio.get_running_loop())
+        rows = log_routes._json_lines(feed, 1.0)
+        text: list[str] = []
+
+        async def client() -> None:
+            async for line in rows:
+                text.append(line)  # noqa: PERF401 (what was read stays when the client is ended)
+
+        reading_client = asyncio.create_task(client())
+        for k in range(25):
+            await asyncio.sleep(0)
+            feed.append(reading(k))
+            if k % 3 == 0:
+                for _ in range(3):
+                    await asyncio.sleep(0)
+                feed.announce()
+                feed.announce(Event(0.0, 0, "settings", "the settings were changed"))
+                for _ in range(3):
+                    await asyncio.sleep(0)
+        feed.detach()
+        await asyncio.wait_for(reading_client, 5.0)
+        return "".join(text)
+
+    counts = [json.loads(line)["n"] for line in asyncio.run(run()).splitlines()]
+    assert counts == [10, 10, 5]
+
+
+def test_silence_ends_an_interval_though_the_status_changes(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    monkeypatch.setattr(log_routes, "PATIENCE_S", 0.02)
+
+    async def run() -> dict[str, object]:
+        feed = Feed(capacity=10)
+        feed.attach(asyncio.get_running_loop())
+        rows = log_routes._rows(feed, 0.01)
+        first = asyncio.ensure_future(anext(rows))
+        await asyncio.sleep(0)
+        feed.append(reading(0))
+        while not first.done():
+            feed.announce()
+            await asyncio.sleep(0.005)
+        await rows.aclose()
+        return first.result()[0]
+
+    assert asyncio.run(asyncio.wait_for(run(), 5.0))["n"] == 1
 
 
 def test_a_gap_brings_no_rows() -> None:
