@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import json
+import os
 import socket
 from collections.abc import Callable
 from importlib import metadata
@@ -16,6 +17,7 @@ import pytest
 from readout.cli import app as command_line
 from readout.cli.app import main
 from readout.files.pictures import write_picture
+from readout.model import Pixels
 
 REQUIRED = ["live", "cameras", "locate", "measure", "simulate"]
 
@@ -151,6 +153,14 @@ def test_a_picture_without_an_image_is_no_error(readout: Command, tmp_path: Path
     assert "turn the camera" in words
 
 
+@pytest.mark.skipif(not hasattr(os, "mkfifo"), reason="the system has no such pipes")
+def test_a_pipe_or_device_is_refused_and_not_waited_for(readout: Command, tmp_path: Path) -> None:
+    pipe = tmp_path / "pipe.png"
+    os.mkfifo(pipe)
+    for path in (pipe, Path(os.devnull)):
+        fails_in_one_line(readout("locate", path), str(path), "no regular file")
+
+
 def test_files_that_are_no_pictures_are_named_and_the_others_done(
     readout: Command, frames: Path, tmp_path: Path
 ) -> None:
@@ -234,7 +244,7 @@ def test_measure_refuses_what_it_cannot_use_in_one_line(
     broken.write_text("{", "utf-8")
     table: list[tuple[object, object, str]] = [
         (tmp_path / "none", calibration, "none"),
-        (text, calibration, "notes.png"),
+        (text, calibration, f"{text} holds no frame"),
         (tmp_path / "empty", calibration, "no picture"),
         ("nonsense:3", calibration, "nonsense:3"),
         ("usb:93", calibration, "not connected"),
@@ -284,6 +294,16 @@ def test_live_refuses_to_begin_in_one_line(readout: Command, tmp_path: Path) -> 
         fails_in_one_line(readout("live", *kept, "--port", port), str(port), "--port")
 
 
+def test_live_says_who_named_a_calibration_that_is_missing(
+    readout: Command, tmp_path: Path
+) -> None:
+    settings = tmp_path / "settings.json"
+    gone = {"schema": "readout.settings/1", "calibration": str(tmp_path / "gone.json")}
+    settings.write_text(json.dumps(gone), "utf-8")
+    run = readout("live", "--settings", settings, "--data", tmp_path / "data", "--port", 0)
+    fails_in_one_line(run, "gone.json", str(settings), "--calibration")
+
+
 # -- simulate and cameras -------------------------------------------------------------------------
 
 
@@ -295,6 +315,24 @@ def test_simulate_writes_frames_with_their_truth(readout: Command, tmp_path: Pat
     assert json.loads((folder / "calibration.json").read_text("utf-8"))["image_width_px"] == 320
     fails_in_one_line(readout("simulate", folder), str(folder))
     fails_in_one_line(readout("simulate", tmp_path / "b", "--bits", 99), "bits")
+
+
+def test_a_simulation_that_is_interrupted_says_what_it_keeps(
+    readout: Command, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    from readout.files import frameset
+
+    def interrupted(path: Path, pixels: Pixels, *, full_scale: int) -> None:
+        if path.name == "frame_000003.png":
+            raise KeyboardInterrupt
+        write_picture(path, pixels, full_scale=full_scale)
+
+    monkeypatch.setattr(frameset, "write_picture", interrupted)
+    folder = tmp_path / "practice"
+    run = readout("simulate", folder, "--frames", 9, "--width-px", 320)
+    assert (run.status, run.out) == (130, "")
+    assert run.err == f"readout: ended early: {folder} keeps 3 of 9 pictures with their truth\n"
+    assert len(list(folder.glob("*.png"))) == len(truth(folder)) == 3
 
 
 def test_cameras_lists_what_is_there(readout: Command, monkeypatch: pytest.MonkeyPatch) -> None:

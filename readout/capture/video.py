@@ -70,6 +70,11 @@ class VideoSource:
         if self._capture is None:
             raise SourceLost(f"{self._path} is not open: open it first")
         if not self._capture.grab():
+            if self._seq == 0:
+                raise BadInput(
+                    f"{self._path} holds no frame that can be read: give a video (AVI, MKV or MP4) "
+                    "or a folder of pictures"
+                )
             raise SourceEnded(f"{self._path}: all {self._seq} frames have been read")
         t_ns = self._time_ns()
         found, picture = self._capture.retrieve()

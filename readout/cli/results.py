@@ -15,6 +15,7 @@ from typing import Annotated, Self, TextIO
 
 import typer
 
+from readout.cli.say import opened
 from readout.errors import BadInput, cannot_write
 from readout.files.readings_file import ReadingsWriter
 from readout.model import Reading
@@ -72,7 +73,7 @@ class ReadingsFile:
     def write(self, reading: Reading) -> None:
         try:
             if self._writer is None:
-                self._file = self._path.open("w", encoding="utf-8", newline="")
+                self._file = opened(self._path)
                 self._writer = ReadingsWriter(self._file)
             self._writer.write(reading)
         except OSError as error:

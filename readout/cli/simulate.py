@@ -2,13 +2,16 @@
 
 from __future__ import annotations
 
+import sys
 from pathlib import Path
 from typing import Annotated
 
 import typer
 
 from readout.angle import Mounting
-from readout.cli.say import print_line, progress
+from readout.cli.say import print_line, progress, warn
+
+INTERRUPTED = 130  # as shells say that SIGINT (2) has ended a program: 128 + 2
 
 EXAMPLE = "Example: `readout simulate practice --frames 100 --seed 7`"
 
@@ -69,10 +72,25 @@ def simulate(
         x_arcsec=x_arcsec,
         y_arcsec=y_arcsec,
     )
+    n = 0
     with progress("pictures", frames) as show:
-        n = write_frameset(
-            folder, made, calibration=made.calibration, full_scale=made.full_scale, on_frame=show
-        )
+
+        def count_and_show(written: int) -> None:
+            nonlocal n
+            n = written
+            show(n)
+
+        try:
+            write_frameset(
+                folder,
+                made,
+                calibration=made.calibration,
+                full_scale=made.full_scale,
+                on_frame=count_and_show,
+            )
+        except KeyboardInterrupt:
+            warn(f"ended early: {folder} keeps {n} of {frames} pictures with their truth")
+            sys.exit(INTERRUPTED)
     print_line(f"{n} pictures, truth.csv and calibration.json in {folder}")
 
 

@@ -48,6 +48,8 @@ def read_picture(path: Path) -> tuple[Pixels, int]:
     Raises BadInput, naming the file, if it is missing, a folder, empty, damaged or no picture.
     """
     path = Path(path)
+    if path.exists() and not (path.is_file() or path.is_dir()):  # a pipe or device may never end
+        raise BadInput(f"{path} is no regular file: give a picture file")
     try:
         data = path.read_bytes()
     except FileNotFoundError:

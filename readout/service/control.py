@@ -10,6 +10,7 @@ from typing import Any
 from readout.angle import Calibration
 from readout.capture.open import describe_source
 from readout.capture.source_name import source_name
+from readout.errors import BadInput
 from readout.files.calibration_file import load_calibration
 from readout.instrument import Instrument, Optics, State
 from readout.instrument.instrument import refuse_unfit
@@ -45,7 +46,7 @@ class Control:
     def start(self) -> None:
         """Begin to measure, in the acquisition's thread. Raises BadInput as `readout live` says."""
         settings = self._store.current
-        self._from_settings = _calibration_named(settings)
+        self._from_settings = self._calibration_to_begin_with(settings)
         self._instrument.set_averaging(settings.average_s, settings.statistic)
         self._instrument.set_scale(self._scale(settings, self._from_settings))
         self._use(settings, patient=self._options.source is None)
@@ -79,6 +80,17 @@ class Control:
                 self._use(after, patient=True)
         self._instrument.tell("settings", "the settings were changed")
         return after
+
+    def _calibration_to_begin_with(self, settings: Settings) -> Calibration | None:
+        try:
+            return _calibration_named(settings)
+        except BadInput as error:
+            if self._options.calibration is not None:  # which is used instead
+                return None
+            raise BadInput(
+                f"{error}; it is named by the settings {self._store.path}: "
+                "change them, or give --calibration"
+            ) from error
 
     def _has_to_open_anew(
         self,
