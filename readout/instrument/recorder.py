@@ -59,6 +59,7 @@ class Recorder:
         self._switching = threading.Lock()  # one start or stop at a time; may wait for the disk
         self._lock = threading.Lock()  # of what follows; never held for longer than an instant
         self._open: _Open | None = None
+        self._beginning: list[Reading] | None = None  # what comes while the log begins a run
         self._broken_off_id: int | None = None
         instrument.on_reading.append(self._take)
         instrument.on_event.append(self._hear)
@@ -93,7 +94,9 @@ class Recorder:
         with self._switching:
             if self._open is not None:
                 raise NotNow(f"run {self._open.id} is being recorded: stop it first")
-            begin_s, started_utc_ns = self._instrument.now()
+            with self._lock:
+                self._beginning = []
+                begin_s, started_utc_ns = self._instrument.now()
             new = NewRun(
                 title=title,
                 note=note,
@@ -103,11 +106,21 @@ class Recorder:
                 settings=_without_passwords(settings),
                 version=__version__,
             )
-            run_id = self._logbook.start(new)
+            try:
+                run_id = self._logbook.start(new)  # may wait for the disk, or for who has it locked
+            except BaseException:
+                with self._lock:
+                    self._beginning = None
+                raise
             self._broken_off_id = None  # the log has ended it
             intervals = Intervals(every_s, origin_s=begin_s) if every_s > 0 else None
             with self._lock:
-                self._open = _Open(run_id, new, begin_s, intervals)
+                run = _Open(run_id, new, begin_s, intervals)
+                beginning, self._open, self._beginning = self._beginning, run, None
+                failure = self._record_all(run, beginning or [])
+            if failure is not None:
+                self._break_off(run, failure)
+                raise failure
         self._instrument.tell("run_started", f"run {run_id} has begun")
         return run_id
 
@@ -140,18 +153,28 @@ class Recorder:
     # -- called by the acquisition ------------------------------------------------------------
 
     def _take(self, reading: Reading) -> None:
-        run: _Open | None = None
+        with self._lock:
+            if self._beginning is not None:
+                self._beginning.append(reading)
+            run = self._open
+            failure = self._record_all(run, [reading]) if run is not None else None
+        if run is not None and failure is not None:
+            self._break_off(run, failure)
+
+    def _record_all(self, run: _Open, readings: list[Reading]) -> NotRecorded | None:
+        """Record those taken since the run began; with a failure the run is no longer open."""
         try:
-            with self._lock:
-                run = self._open
-                if run is not None and reading.t_s >= run.begin_s:
+            for reading in readings:
+                if reading.t_s >= run.begin_s:
                     self._record(run, reading)
         except NotRecorded as error:
-            with self._lock:
-                self._open = None
-            if run is not None:
-                self._broken_off_id = run.id
-                self._instrument.tell("run_stopped", f"run {run.id} was broken off: {error}")
+            self._open = None
+            return error
+        return None
+
+    def _break_off(self, run: _Open, failure: NotRecorded) -> None:
+        self._broken_off_id = run.id
+        self._instrument.tell("run_stopped", f"run {run.id} was broken off: {failure}")
 
     def _record(self, run: _Open, reading: Reading) -> None:
         if reading.calibration_id != run.calibration_id:

@@ -16,7 +16,7 @@ from readout.errors import NotNow, NotRecorded
 from readout.files.calibration_file import calibration_document
 from readout.instrument import Event, Instrument
 from readout.instrument.recorder import ANOTHER_SOURCE, ENDED_WITH_READOUT, Recorder
-from readout.logbook import FILE_NAME, Logbook, LogReader
+from readout.logbook import FILE_NAME, Logbook, LogReader, NewRun
 from readout.logbook.statements import UNWRITABLE
 from readout.model import Quality, Reading
 from tests.instrument.fakes import HEIGHT_PX, WIDTH_PX, FakeClock, ScriptedObserver, reading
@@ -85,6 +85,44 @@ def test_a_run_holds_what_came_between_start_and_stop(rig: Rig) -> None:
     assert (run.started_utc_ns, run.ended_utc_ns) == (UTC_NS + 10**9, UTC_NS + 2 * 10**9)
     assert [e.event for e in events] == ["run_started", "run_stopped"]
     assert [e.event for e in rig.events] == ["run_started", "run_stopped"]
+
+
+def test_what_comes_while_the_log_is_slow_to_begin_belongs_to_the_run(
+    rig: Rig, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """As when the file is locked for two seconds: the run has begun when it was asked for."""
+    begin = rig.logbook.start
+
+    def begin_late(run: NewRun) -> int:
+        rig.give(*(reading(k) for k in range(20)))
+        run_id = begin(run)
+        rig.give(*(reading(k) for k in range(20, 25)))
+        return run_id
+
+    rig.clock.advance(0.5)
+    monkeypatch.setattr(rig.logbook, "start", begin_late)
+    run_id = rig.start()
+    rig.give(*(reading(k) for k in range(25, 30)))
+    assert rig.recorder.recording is not None
+    assert rig.recorder.recording.readings == 25
+    rig.recorder.stop(run_id)
+    assert [row.seq for row in rig.rows(run_id)] == list(range(5, 30))
+
+
+def test_nothing_is_held_for_a_run_that_could_not_begin(
+    rig: Rig, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def refuse(_: NewRun) -> int:
+        rig.give(reading(0))
+        raise NotRecorded("no room")
+
+    with monkeypatch.context() as patched, pytest.raises(NotRecorded):
+        patched.setattr(rig.logbook, "start", refuse)
+        rig.start()
+    run_id = rig.start()
+    rig.give(reading(1))
+    rig.recorder.stop(run_id)
+    assert [row.seq for row in rig.rows(run_id)] == [1]
 
 
 def test_means_are_over_intervals_from_the_start_of_the_run(rig: Rig) -> None:
