@@ -12,8 +12,10 @@ import contextlib
 import http.client
 import queue
 import socket
+import ssl
 import threading
 import time
+from collections.abc import Iterator
 from types import TracebackType
 from typing import Self
 from urllib.parse import SplitResult, unquote
@@ -29,7 +31,7 @@ from readout.files.pictures import decode_jpeg
 from readout.model import Frame, Pixels, Quality
 
 _QUEUE_FRAMES = 8
-_SILENCE_S = 30.0  # after this the connection counts as dead
+SILENCE_S = 30.0
 _BLOCK_BYTES = 65536
 
 _Arrival = tuple[int, int, bytes]
@@ -47,9 +49,17 @@ class MjpegSource:
     live = True
 
     def __init__(
-        self, url: str, *, connect_timeout_s: float = 5.0, clock: Clock = time.monotonic_ns
+        self,
+        url: str,
+        *,
+        connect_timeout_s: float = 5.0,
+        silence_s: float = SILENCE_S,
+        clock: Clock = time.monotonic_ns,
     ) -> None:
-        """Nothing is opened yet. Raises BadInput if ``url`` names no host."""
+        """Nothing is opened yet. A stream silent for ``silence_s`` counts as lost.
+
+        Raises BadInput if ``url`` names no host.
+        """
         self._url, parts = source_name(url), split_address(url)
         if parts is None or parts.scheme not in ("http", "https"):
             raise BadInput(
@@ -57,7 +67,7 @@ class MjpegSource:
                 "in a password as %2F, %3F and %23)"
             )
         self._parts = parts
-        self._connect_timeout_s = connect_timeout_s
+        self._connect_timeout_s, self._silence_s = connect_timeout_s, silence_s
         self._clock = clock
         self._timebase = TimeBase(0, 0)
         self._link: _Link | None = None
@@ -67,7 +77,9 @@ class MjpegSource:
     def __enter__(self) -> Self:
         self._timebase = TimeBase.now(self._clock)
         self._repeats, self._like = RepeatWatch(), None
-        self._link = _Link(self._url, self._parts, self._connect_timeout_s, self._clock)
+        link, response = _connect(self._url, self._parts, self._connect_timeout_s)
+        link.settimeout(self._silence_s)
+        self._link = _Link(self._url, link, response, self._clock)
         return self
 
     def __exit__(
@@ -110,11 +122,13 @@ class MjpegSource:
 class _Link:
     """The connection and the thread that empties it."""
 
-    def __init__(self, url: str, parts: SplitResult, timeout_s: float, clock: Clock) -> None:
+    def __init__(
+        self, url: str, link: socket.socket, response: http.client.HTTPResponse, clock: Clock
+    ) -> None:
         self._url, self._clock = url, clock
         self._end = "ended by the server"
         self._items: queue.Queue[_Arrival | None] = queue.Queue(_QUEUE_FRAMES + 1)
-        self._socket, self._response = _connect(url, parts, timeout_s)
+        self._socket, self._response = link, response
         kind = self._response.headers.get_content_type()
         boundary = self._response.headers.get_param("boundary")
         if not kind.startswith("multipart/") or not isinstance(boundary, str):
@@ -152,7 +166,7 @@ class _Link:
                     self._offer((seq, t_mono_ns, part))
                     seq += 1
         except TimeoutError:
-            self._end = f"silent for {_SILENCE_S:g} s"
+            self._end = f"silent for {self._socket.gettimeout():g} s"
         except (OSError, ValueError, http.client.HTTPException) as error:
             self._end = f"broken off ({error})"
         self._offer(None)
@@ -167,26 +181,64 @@ class _Link:
 def _connect(
     url: str, parts: SplitResult, timeout_s: float
 ) -> tuple[socket.socket, http.client.HTTPResponse]:
-    """The socket and the answer, of which only the head has been read."""
+    """The socket and the answer, of which only the head has been read, within ``timeout_s``."""
     kind = http.client.HTTPSConnection if parts.scheme == "https" else http.client.HTTPConnection
     connection = kind(parts.hostname or "", parts.port, timeout=timeout_s)
     target = (parts.path or "/") + (f"?{parts.query}" if parts.query else "")
+    late = threading.Event()
     try:
-        connection.connect()
-        link = connection.sock  # the connection gives it up once the answer has begun
-        connection.request("GET", target, headers=_headers(parts))
-        response = connection.getresponse()
+        link = socket.create_connection((connection.host, connection.port), timeout_s)
+        with _shut_after(link, timeout_s, late):
+            if parts.scheme == "https":
+                context = ssl.create_default_context()
+                link = context.wrap_socket(link, server_hostname=connection.host)
+            connection.sock = link  # which the connection gives up once the answer has begun
+            connection.request("GET", target, headers=_headers(parts))
+            response = connection.getresponse()
+    except (http.client.InvalidURL, UnicodeError) as error:
+        connection.close()
+        raise BadInput(
+            f"{url} holds characters no address can: write them as % and two digits"
+        ) from error
     except (OSError, http.client.HTTPException) as error:
         connection.close()
-        reason = "no answer" if isinstance(error, TimeoutError) else error
+        reason = "no answer" if late.is_set() or isinstance(error, TimeoutError) else error
         raise SourceLost(f"{url} cannot be reached ({reason}): check address and camera") from error
+    if late.is_set():
+        response.close()
+        link.close()
+        raise SourceLost(f"{url} cannot be reached (no answer): check address and camera")
     if response.status != http.client.OK:
         response.close()
         link.close()
         message = f"{url} answers {response.status} {response.reason}: check the address"
         raise (SourceLost if response.status >= 500 else BadInput)(message)
-    link.settimeout(_SILENCE_S)
     return link, response
+
+
+@contextlib.contextmanager
+def _shut_after(link: socket.socket, seconds: float, late: threading.Event) -> Iterator[None]:
+    """Shut ``link`` down after so long, and set ``late``.
+
+    A time limit of the socket bounds each wait, and a server that sends a byte now and then would
+    never exceed it. A copy is shut, for TLS takes the socket over.
+    """
+    copy = link.dup()
+
+    def shut() -> None:
+        late.set()
+        with contextlib.suppress(OSError):  # the other side may have closed it
+            copy.shutdown(socket.SHUT_RDWR)
+
+    timer = threading.Timer(seconds, shut)
+    timer.daemon = True
+    timer.start()
+    try:
+        yield
+    finally:
+        timer.cancel()
+        timer.join()
+        copy.close()
 
 
 def _headers(parts: SplitResult) -> dict[str, str]:

@@ -10,6 +10,7 @@ from __future__ import annotations
 
 JPEG_END = b"\xff\xd9"
 _PART_MAX = 64 * 2**20
+_HEAD_MAX = 64 * 2**10
 
 
 class MultipartReader:
@@ -47,6 +48,8 @@ class MultipartReader:
             (at, len(e)) for e in (b"\r\n\r\n", b"\n\n") if (at := self._buffer.find(e, start)) >= 0
         ]
         if not ends:
+            if len(self._buffer) - start > _HEAD_MAX:
+                raise ValueError("no end of a part's head within 64 KiB")
             return None
         end, gap = min(ends)
         self._length = _content_length(bytes(self._buffer[start:end]))

@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import base64
+import contextlib
+import socket
 import threading
 import time
 
@@ -260,3 +262,49 @@ def test_a_part_that_is_no_jpeg_is_damaged():
     with serving(script) as url, MjpegSource(url) as source:
         flags = [source.read(WAIT_S).quality for _ in range(3)]
     assert flags == [Quality.OK, Quality.DAMAGED, Quality.OK]
+
+
+@pytest.mark.parametrize("begin", [b"HTTP/1.1 200 OK\r\nX: ", b"HTTP/1.1 200 OK\r\nA: b\r\n", b""])
+def test_a_head_that_drips_is_given_up_in_time(begin: bytes):
+    """A byte each twentieth of a second never exceeds a time limit of single waits."""
+    done = threading.Event()
+    with socket.create_server(("127.0.0.1", 0)) as server:
+
+        def drip() -> None:
+            link, _ = server.accept()
+            with link, contextlib.suppress(OSError):
+                link.recv(4096)
+                link.sendall(begin)
+                while not done.wait(0.05):
+                    link.sendall(b"h")
+
+        thread = threading.Thread(target=drip, daemon=True)
+        thread.start()
+        url = f"http://127.0.0.1:{server.getsockname()[1]}/"
+        begin_s = time.monotonic()
+        with pytest.raises(SourceLost, match="no answer") as raised:
+            MjpegSource(url, connect_timeout_s=0.3).__enter__()
+        assert 0.25 < time.monotonic() - begin_s < 0.3 + PROMPT_S
+        one_line(raised.value)
+        done.set()
+        thread.join(10.0)
+
+
+def test_a_stream_that_falls_silent_is_lost():
+    def script(client: Client) -> None:
+        client.begin()
+        client.send(part(jpeg(0)))
+        client.hang()
+
+    with serving(script) as url, MjpegSource(url, silence_s=0.2) as source:
+        source.read(WAIT_S)
+        with pytest.raises(SourceLost, match=r"silent for 0\.2 s"):
+            source.read(WAIT_S)
+
+
+@pytest.mark.parametrize("path", ["ä.cgi", "a b", "x?pwd=hu sh"])
+def test_characters_no_address_can_hold(path: str):
+    with serving(Client.begin) as url:
+        with pytest.raises(BadInput, match="write them as %") as raised:
+            MjpegSource(f"{url}{path}").__enter__()
+        assert "hu" not in str(raised.value)

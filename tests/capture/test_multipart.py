@@ -81,3 +81,12 @@ def test_an_endless_part_is_an_error():
     assert reader.feed(bytes(2**25)) == []
     with pytest.raises(ValueError, match="no end of a part"):
         reader.feed(bytes(2**25 + 1))
+
+
+def test_a_head_without_an_end_is_given_up():
+    """Or each piece of it would be searched from its beginning, 64 MiB long in the end."""
+    reader = MultipartReader("picture")
+    reader.feed(b"--picture\r\n")
+    with pytest.raises(ValueError, match="head within 64 KiB"):
+        for _ in range(70):
+            reader.feed(b"X: " + b"x" * 1019 + b"\r\n")
