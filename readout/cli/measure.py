@@ -66,6 +66,7 @@ def measure(
     when it is measured. A CSV file that is there already is replaced only with --overwrite, and
     not before the first row.
     """
+    from readout.capture.compression import LOSSY, is_lossy
     from readout.instrument import Instrument
     from readout.instrument.measuring import Measuring
 
@@ -77,6 +78,7 @@ def measure(
     scale = _scale(source, calibration, settings)
     if target is None:
         target = scale.target if isinstance(scale, Calibration) else Target.CROSSHAIR
+    lossy = is_lossy(source)
     instrument = Instrument(scale=scale, from_first_frame=True)
     with (
         _writing(csv, json=json) as write,
@@ -84,6 +86,8 @@ def measure(
     ):
 
         def write_and_show(reading: Reading) -> None:
+            if lossy and measuring.n == 0:  # said of a source that can be read, and only then
+                warn(LOSSY)
             write(reading)
             show(measuring.n)
 

@@ -43,6 +43,11 @@ class Control:
     def settings(self) -> Settings:
         return self._store.current
 
+    @property
+    def source(self) -> str:
+        """What is measured, as it was given."""
+        return self._source(self._store.current)
+
     def start(self) -> None:
         """Begin to measure, in the acquisition's thread. Raises BadInput as `readout live` says."""
         settings = self._store.current

@@ -15,6 +15,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from readout import __version__
+from readout.capture.compression import LOSSY, is_lossy
 from readout.capture.open import describe_source
 from readout.errors import BadInput, Busy
 from readout.instrument import Instrument, State
@@ -109,6 +110,8 @@ def run_live(
             address = f"http://{HOST}:{port}/"
             for line in _welcome(address, place.data, instrument):
                 say(line)
+            if is_lossy(control.source):
+                warn(LOSSY)
             if browser if browser is not None else _at_a_screen():
                 webbrowser.open(address)
 

@@ -19,11 +19,14 @@ import numpy as np
 import pytest
 
 from readout.angle import Calibration
+from readout.capture.compression import LOSSY
 from readout.files.calibration_file import save_calibration
 from readout.model import Pixels
 from readout.simulation import SimulatedFrames, simulate_frames
 from tests.capture.streams import Client, part, serving
 from tests.service.test_live import ENVIRONMENT, running
+
+TOLD_LOSSY = f"readout: {LOSSY}\n"
 
 FRAMES = 20
 JPEG_QUALITY = 95
@@ -80,7 +83,7 @@ def test_a_video_file_is_measured_frame_by_frame(
         env=ENVIRONMENT,
         timeout=60.0,
     )
-    assert (done.returncode, done.stdout, done.stderr) == (0, "", "")
+    assert (done.returncode, done.stdout, done.stderr) == (0, "", TOLD_LOSSY)
     with out.open(encoding="utf-8") as file:
         rows = list(csv.DictReader(file))
     assert len(rows) == FRAMES
@@ -122,14 +125,14 @@ def test_a_stream_over_http_is_measured_and_served_live(
             env=ENVIRONMENT,
             timeout=60.0,
         )
-        assert (done.returncode, done.stderr) == (0, "")
+        assert (done.returncode, done.stderr) == (0, TOLD_LOSSY)
         measured = [json.loads(line) for line in done.stdout.splitlines()]
         assert len(measured) == 8
         with running(tmp_path, "--source", url, "--calibration", calibration) as live:
             measured.append(live.reading())
             assert live.get("api/status")["source_name"].endswith("/camera")
             returncode, _, err = live.end()
-            assert (returncode, err) == (0, "")
+            assert (returncode, err) == (0, TOLD_LOSSY)
     assert len(asked) == 2
     for row in measured:
         error = truths - np.array([row["x_arcsec"], row["y_arcsec"]])
