@@ -25,9 +25,9 @@ class SimulatedSource:
     """A simulated autocollimator before a simulated mirror, paced like a camera.
 
     Frame k shows the mirror at k / ``frames_per_s`` seconds and is the same for the same seed,
-    however late it is fetched. A reader that falls behind misses frames, as with a camera
-    (``missed`` counts them); ``seq`` counts those delivered. ``truth`` belongs to the newest
-    frame. Clocks and sleep are injected for tests.
+    however late it is fetched; k is its ``seq``. A reader that falls behind misses frames, as with
+    a camera, and sees gaps in ``seq``. ``truth`` belongs to the newest frame. Clocks and sleep are
+    injected for tests.
     """
 
     live = True
@@ -48,14 +48,13 @@ class SimulatedSource:
         self.frames_per_s = frames_per_s
         self.autocollimator = autocollimator or Autocollimator()
         self.motion = motion or Motion(seed=seed)
-        self.missed = 0
         self.truth: Truth | None = None
         self._seed = seed
         self._clock, self._utc, self._sleep = clock, utc, sleep
         self._calibration = self.autocollimator.calibration()
         self._renderer: LiveRenderer | None = None
         self._timebase = TimeBase(0, 0)
-        self._next = self._seq = 0
+        self._next = 0
 
     @property
     def calibration(self) -> Calibration:
@@ -65,8 +64,7 @@ class SimulatedSource:
     def __enter__(self) -> Self:
         self._renderer = LiveRenderer(self.autocollimator, self._rng(_BANK))
         self._timebase = TimeBase.now(self._clock, self._utc)
-        self._next = self._seq = 0
-        self.missed = 0
+        self._next = 0
         return self
 
     def __exit__(
@@ -82,10 +80,7 @@ class SimulatedSource:
         if self._renderer is None:
             raise SourceLost("the simulated source is closed: open it again")
         elapsed_ns = self._clock() - self._timebase.t_mono_ns
-        newest_due = math.floor(elapsed_ns * self.frames_per_s / NS_PER_S)
-        if newest_due > self._next:
-            self.missed += newest_due - self._next
-            self._next = newest_due
+        self._next = max(self._next, math.floor(elapsed_ns * self.frames_per_s / NS_PER_S))
         wait_s = self._next / self.frames_per_s - elapsed_ns / NS_PER_S
         if wait_s > timeout_s:
             self._sleep(max(0.0, timeout_s))
@@ -101,13 +96,12 @@ class SimulatedSource:
         t_mono_ns = self._clock()
         frame = Frame(
             pixels=pixels,
-            seq=self._seq,
+            seq=self._next,
             t_mono_ns=t_mono_ns,
             t_utc_ns=self._timebase.utc_ns(t_mono_ns),
             full_scale=self.autocollimator.sensor.full_scale,
         )
         self._next += 1
-        self._seq += 1
         return frame
 
     def _rng(self, number: int) -> np.random.Generator:

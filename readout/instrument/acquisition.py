@@ -51,7 +51,7 @@ class Acquisition:
     ``on_observation`` gets each observation, its seq counted on from ``first_seq`` through all
     re-openings (what the source itself counted as missing stays a gap). ``on_state`` gets each
     change of state or of its detail, one line for people. Both are called from the acquisition's
-    own thread.
+    own thread. ``missed`` counts the gaps, all openings together.
     ``patient``: wait for a live source that is not there at first; otherwise the first opening
     must succeed. A live source that has been measured is always waited for, also where it came back
     with pictures that cannot be used, until it has been gone for ``give_up_after_s``.
@@ -88,7 +88,7 @@ class Acquisition:
         self._state: State | None = None
         self._detail = ""
         self.next_seq = first_seq
-        self._missed = 0
+        self.missed = 0
         self.pace = Pace()
 
     def start(self) -> None:
@@ -110,12 +110,6 @@ class Acquisition:
     def stalled_after_s(self) -> float:
         """Silence longer than this is a stall: half a second or three frame times."""
         return max(STALLED_AFTER_S, 3 * (self.pace.interval_s or 0.0))
-
-    @property
-    def missed(self) -> int:
-        """Frames that sources knew of and did not hand out, all openings together."""
-        observer = self._observer
-        return self._missed + (observer.missed if observer is not None else 0)
 
     def picture(self, timeout_s: float) -> Picture | None:
         """The newest picture with its seq as counted here; None while there is none.
@@ -202,7 +196,7 @@ class Acquisition:
         if self._stop.is_set():  # it came too late: somebody else may be measuring by now
             return
         seq = observation.seq + self._seq_offset
-        self._missed += seq - self.next_seq
+        self.missed += seq - self.next_seq
         self.next_seq = seq + 1
         try:
             self._on_observation(replace(observation, seq=seq), observer)
@@ -216,7 +210,7 @@ class Acquisition:
     def _leave(self) -> None:
         """Keep what outlasts an observer; it is closed."""
         self._last_picture = self.picture(0.0)
-        self._missed, self._observer = self.missed, None
+        self._observer = None
 
     def _judge_silence(self, observer: Observer, silent_s: float, nothing_yet: bool) -> None:
         if not observer.live:  # a folder on a slow disk, a replay before its next frame

@@ -56,7 +56,6 @@ class ChildObserver:
 
     live = True
     calibration: Calibration | None = None
-    missed = 0
 
     def __init__(
         self,

@@ -48,11 +48,6 @@ class Observer(Protocol):
         """The calibration that belongs to the source itself, as a simulated one has."""
         ...
 
-    @property
-    def missed(self) -> int:
-        """Frames the source knows it did not hand out since it was opened."""
-        ...
-
     def __enter__(self) -> Self: ...
 
     def __exit__(
@@ -92,10 +87,6 @@ class DirectObserver:
     def calibration(self) -> Calibration | None:
         own = getattr(self._source, "calibration", None)
         return own if isinstance(own, Calibration) else None
-
-    @property
-    def missed(self) -> int:
-        return int(getattr(self._source, "missed", getattr(self._source, "dropped", 0)))
 
     def __enter__(self) -> Self:
         self._source.__enter__()

@@ -70,7 +70,6 @@ class ScriptedObserver:
         self.clock, self.script, self.live = clock, list(script), live
         self.calibration = calibration
         self.interval_s = interval_s
-        self.missed = 0
         self.entered = self.left = 0
         self.size = WIDTH_PX, HEIGHT_PX
         self.skip = 0
