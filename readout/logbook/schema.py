@@ -91,11 +91,9 @@ _FIRST: Migration = (
         x_min_arcsec REAL,
         x_max_arcsec REAL,
         x_sum_arcsec REAL NOT NULL,
-        x_sum_sq_arcsec2 REAL NOT NULL,
         y_min_arcsec REAL,
         y_max_arcsec REAL,
         y_sum_arcsec REAL NOT NULL,
-        y_sum_sq_arcsec2 REAL NOT NULL,
         PRIMARY KEY (run_id, level_s, number)
     ) STRICT, WITHOUT ROWID""",
     """CREATE TABLE event (

@@ -1,8 +1,8 @@
 """Summaries of rows over fixed intervals of the run: what a plot of a whole day is drawn from.
 
 ``n`` counts rows, ``n_good`` those without a doubt. Extremes are those of everything measured, so
-that nothing is hidden; sums and sums of squares are those of the good ones, so that a mean is not
-spoiled by what is known to be wrong.
+that nothing is hidden; sums are those of the good ones, so that a mean is not spoiled by what is
+known to be wrong.
 """
 
 from __future__ import annotations
@@ -16,7 +16,7 @@ from readout.model import F64
 
 I64 = NDArray[np.int64]
 
-UPSERT = """INSERT INTO summary VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)
+UPSERT = """INSERT INTO summary VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)
 ON CONFLICT DO UPDATE SET
     n = n + excluded.n,
     n_good = n_good + excluded.n_good,
@@ -25,13 +25,11 @@ ON CONFLICT DO UPDATE SET
     x_max_arcsec = max(coalesce(x_max_arcsec, excluded.x_max_arcsec),
                        coalesce(excluded.x_max_arcsec, x_max_arcsec)),
     x_sum_arcsec = x_sum_arcsec + excluded.x_sum_arcsec,
-    x_sum_sq_arcsec2 = x_sum_sq_arcsec2 + excluded.x_sum_sq_arcsec2,
     y_min_arcsec = min(coalesce(y_min_arcsec, excluded.y_min_arcsec),
                        coalesce(excluded.y_min_arcsec, y_min_arcsec)),
     y_max_arcsec = max(coalesce(y_max_arcsec, excluded.y_max_arcsec),
                        coalesce(excluded.y_max_arcsec, y_max_arcsec)),
-    y_sum_arcsec = y_sum_arcsec + excluded.y_sum_arcsec,
-    y_sum_sq_arcsec2 = y_sum_sq_arcsec2 + excluded.y_sum_sq_arcsec2"""
+    y_sum_arcsec = y_sum_arcsec + excluded.y_sum_arcsec"""
 
 
 class AxisColumns(NamedTuple):
@@ -40,7 +38,6 @@ class AxisColumns(NamedTuple):
     minimum: F64
     maximum: F64
     total: F64
-    total_sq: F64
 
 
 class Summary(NamedTuple):
@@ -71,10 +68,6 @@ def summarise(
 
 
 def _axis(values: F64, good: NDArray[np.bool_], first: I64) -> AxisColumns:
-    used = np.where(good, values, 0.0)
     with np.errstate(over="ignore"):  # a number without sense is kept like any other
-        squares = np.add.reduceat(used * used, first)
-        total = np.add.reduceat(used, first)
-    return AxisColumns(
-        np.fmin.reduceat(values, first), np.fmax.reduceat(values, first), total, squares
-    )
+        total = np.add.reduceat(np.where(good, values, 0.0), first)
+    return AxisColumns(np.fmin.reduceat(values, first), np.fmax.reduceat(values, first), total)
