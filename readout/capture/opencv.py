@@ -2,6 +2,9 @@
 
 The library reads them from the environment, once; this module is imported before any camera,
 stream or video is opened. A setting the user made stands.
+
+On macOS the library asks for the permission to use the camera itself, which it can in the main
+thread alone: a camera is opened in that of its own process (written from documents, untested).
 """
 
 from __future__ import annotations
@@ -13,8 +16,6 @@ _SETTINGS = {
     "OPENCV_VIDEOIO_V4L_SELECT_TIMEOUT": "3",
     # Opening a camera by MSMF takes up to 20 s with these transforms.
     "OPENCV_VIDEOIO_MSMF_ENABLE_HW_TRANSFORMS": "0",
-    # Camera permission on macOS is asked for by the main thread, never by a reading one.
-    "OPENCV_AVFOUNDATION_SKIP_AUTH": "1",
     # The library beneath says nothing of its own: a person gets one line, ours.
     "OPENCV_FFMPEG_LOGLEVEL": "-8",
     # Streams over TCP: a lost datagram would be a torn frame.
