@@ -10,6 +10,9 @@ from readout.errors import BadInput
 from readout.files.atomic import write_text_whole
 from readout.files.calibration_file import load_calibration, parse_calibration
 
+# Windows keeps these names for devices, whatever follows behind a dot ("Naming Files, Paths, and
+# Namespaces", Microsoft Learn).
+_DEVICE = re.compile(r"(con|prn|aux|nul|com[0-9]|lpt[0-9])(\..*)?", re.IGNORECASE)
 _PLAIN = re.compile(r"[A-Za-z0-9][A-Za-z0-9_-]{0,99}(\.[A-Za-z0-9_-]+)*")
 
 
@@ -31,11 +34,18 @@ def keep_calibration(folder: Path, text: bytes) -> tuple[Path, Calibration]:
     readings name their calibration by its id, so one id means one calibration.
     """
     calibration = parse_calibration(text, name="the file")
-    if not _PLAIN.fullmatch(calibration.id):
+    if not _PLAIN.fullmatch(calibration.id) or _DEVICE.fullmatch(calibration.id):
         raise BadInput(
-            f"the id {calibration.id!r} cannot name a file: use letters, digits, - and _ in it"
+            f"the id {calibration.id!r} cannot name a file on every system: use letters, digits, "
+            "- and _ in it, and no name of a device (con, nul, com1 and the like)"
         )
     path = folder / f"{calibration.id}.json"
+    for kept in folder.glob("*.json"):
+        if kept.name != path.name and kept.name.casefold() == path.name.casefold():
+            raise BadInput(
+                f"a calibration {kept.stem} is kept already, and on some systems {calibration.id} "
+                "would be the same file: give this one an id of its own"
+            )
     if not path.exists():
         write_text_whole(path, text.decode("utf-8"))
     elif load_calibration(path) != calibration:

@@ -111,6 +111,27 @@ def test_one_for_other_pictures_is_kept_but_not_put_to_use(rig: Rig, client: Tes
     assert client.get("/api/settings").json()["calibration"] is None
 
 
+@pytest.mark.parametrize("name", ["con", "NUL", "Com1", "lpt9.bench", "aux.a.b"])
+def test_an_id_that_names_a_device_somewhere_is_refused(
+    client: TestClient, tmp_path: Path, name: str
+) -> None:
+    answer = client.post("/api/calibrations", content=text_of(named(name)))
+    assert answer.status_code == 422
+    assert "device" in answer.json()["detail"]
+    assert not list((tmp_path / "calibrations").glob("*"))
+
+
+def test_two_ids_that_are_one_file_somewhere_are_refused(
+    client: TestClient, tmp_path: Path
+) -> None:
+    assert client.post("/api/calibrations", content=text_of(named("console"))).status_code == 201
+    answer = client.post("/api/calibrations", content=text_of(named("Console")))
+    assert answer.status_code == 422
+    assert "an id of its own" in answer.json()["detail"]
+    assert client.post("/api/calibrations", content=text_of(named("console"))).status_code == 201
+    assert [path.name for path in (tmp_path / "calibrations").iterdir()] == ["console.json"]
+
+
 def test_a_file_nested_without_end_is_refused_and_harms_no_list(
     rig: Rig, client: TestClient, tmp_path: Path
 ) -> None:
