@@ -96,8 +96,8 @@ def read_calibration_set(folder: Path) -> CalibrationSet:
     columns, rows = _read_table(folder / "tilts.csv")
     scale_rel_sd = about.stage.scale_rel_sd
     if columns == LEVER_COLUMNS:
-        tilts, longest_mm = _lever_tilts(rows, horizontal=about.lever_is == "horizontal")
-        scale_rel_sd = math.hypot(scale_rel_sd, about.stage.lever_sd_mm / longest_mm)
+        tilts, shortest_mm = _lever_tilts(rows, horizontal=about.lever_is == "horizontal")
+        scale_rel_sd = math.hypot(scale_rel_sd, about.stage.lever_sd_mm / shortest_mm)
     else:
         tilts = [_tilt(row, where) for where, row in rows]
     missing = [tilt.file for tilt in tilts if not (folder / tilt.file).is_file()]
@@ -209,7 +209,10 @@ def _tilt(row: dict[str, str], where: str) -> KnownTilt:
 def _lever_tilts(
     rows: list[tuple[str, dict[str, str]]], *, horizontal: bool
 ) -> tuple[list[KnownTilt], float]:
-    """Tilts of a lever raised by known heights, and the length of the lever, mm."""
+    """Tilts of a lever raised by known heights, and its shortest length, mm.
+
+    That one has the largest relative uncertainty, which then stands for all.
+    """
     lengths = [_required(row, "lever_mm", where, least=1e-3) for where, row in rows]
     return list(_raised(rows, lengths, horizontal=horizontal)), min(lengths)
 

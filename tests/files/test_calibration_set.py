@@ -116,3 +116,26 @@ def test_missing_things(tmp_path):
 def test_a_set_toml_nested_without_end(tmp_path):
     with pytest.raises(BadInput, match="nested without end"):
         read_calibration_set(write(tmp_path, about="note = " + "[" * 100_000))
+
+
+@pytest.mark.parametrize("about", ["", 'lever_is = "horizontal"\n'])
+def test_the_uncertainty_of_a_steep_lever_by_differences(tmp_path, about):
+    """What a height off by its standard uncertainty does to the angle, by the set's own angles.
+
+    At 6 of 10 the slope is 1 / sqrt(1 - 0.36) = 1.25 for the sine and 1 / 1.36 for the tangent.
+    """
+    sd_mm = 1e-4
+    rows = "".join(
+        f"{name}.png,10,{6 + step * sd_mm:.4f},{sd_mm},x\n" for name, step in (("a", -1), ("b", 1))
+    )
+    low, high = read_calibration_set(write(tmp_path, LEVER + rows, about)).tilts
+    slope = 1 / 1.36 if about else 1.25
+    difference_arcsec = (high.x_arcsec - low.x_arcsec) / 2
+    assert high.sd_arcsec == pytest.approx(difference_arcsec, rel=1e-4)
+    assert high.sd_arcsec == pytest.approx(slope * sd_mm / 10 * 206264.806, rel=1e-4)
+
+
+def test_of_levers_of_several_lengths_the_shortest_is_the_least_certain(tmp_path):
+    rows = LEVER + "a.png,500,1,0.001,x\nb.png,250,1,0.001,x\n"
+    found = read_calibration_set(write(tmp_path, rows, "[stage]\nlever_sd_mm = 0.5\n"))
+    assert found.scale_rel_sd == pytest.approx(0.5 / 250)
