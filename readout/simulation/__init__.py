@@ -6,7 +6,7 @@ from readout.simulation.crosshair import Crosshair, crosshair_image
 from readout.simulation.frames import SimulatedFrames, Truth, simulate_frames, truth_at
 from readout.simulation.live import LiveRenderer
 from readout.simulation.motion import Motion
-from readout.simulation.sensor import NoiseBank, Sensor, expose, expose_from_bank
+from readout.simulation.sensor import NoiseBank, Sensor, expose
 
 __all__ = [
     "Autocollimator",
@@ -21,7 +21,6 @@ __all__ = [
     "crosshair_image",
     "crossing_bound_cov",
     "expose",
-    "expose_from_bank",
     "simulate_frames",
     "truth_at",
 ]

@@ -112,14 +112,3 @@ class NoiseBank:
         row = int(rng.integers(full_height - height + 1))
         column = int(rng.integers(full_width - width + 1))
         return self.stack[which, row : row + height, column : column + width]
-
-
-def expose_from_bank(
-    electrons: F64, sensor: Sensor, bank: NoiseBank, rng: np.random.Generator
-) -> Pixels:
-    """One picture with the bank's normal noise, scaled by the root of the local variance.
-
-    Good where a pixel holds some tens of electrons or more, so that Poisson is close to normal.
-    """
-    sd = np.sqrt(sensor.noise_var_levels2(electrons))
-    return sensor.quantise(sensor.mean_levels(electrons) + sd * bank.take(rng))
