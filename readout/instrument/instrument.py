@@ -245,28 +245,31 @@ class Instrument:
         """The average over the trailing window; None before the first reading and while none comes.
 
         It is taken anew after a hundredth of the window, so that a long one costs no more than a
-        short one.
+        short one, and without holding up who measures.
         """
         with self._lock:
             if self._newest is None or self._state is State.STALLED:
                 return None
-            t_s, window_s = self._newest[1].t_s, self._window.window_s
-            if self._average is None or abs(t_s - self._average[0]) >= window_s / 100:
-                average = average_of(
-                    self._window.rows(), window_s=window_s, statistic=self._statistic
-                )
+            t_s, window, statistic = self._newest[1].t_s, self._window, self._statistic
+            if self._average is not None:
+                taken_s, average = self._average
+                if abs(t_s - taken_s) < window.window_s / 100:
+                    return average
+            rows, history = window.rows(), window.history()
+        average = average_of(rows, window_s=window.window_s, statistic=statistic, history=history)
+        with self._lock:
+            if window is self._window and statistic is self._statistic:  # else it is another's
                 self._average = t_s, average
-            return self._average[1]
+        return average
 
     # -- what can be set ----------------------------------------------------------------------
 
     def set_averaging(self, window_s: float, statistic: Statistic) -> None:
         """Another window or statistic; what the old window holds is kept where it still counts."""
         with self._lock:
-            rows = self._window.rows()
-            self._window, self._statistic = TrailingWindow(window_s), statistic
-            for reading in rows:
-                self._window.add(reading)
+            before, self._window = self._window, TrailingWindow(window_s)
+            self._window.take_over(before)
+            self._statistic = statistic
             self._average = None
 
     def set_scale(self, scale: Calibration | Optics | None) -> None:
@@ -291,11 +294,17 @@ class Instrument:
     def set_zero(self) -> Zero:
         """Zero at the averaged value. Raises NotNow while flagged or moving, or none comes."""
         with self._lock:
-            self._refuse_unless_live()
-            zero = zero_from(
-                self._window.rows(),
+            newest, rows = self._live_newest(), self._window.rows()
+            average = average_of(
+                rows,
                 window_s=self._window.window_s,
                 statistic=self._statistic,
+                history=self._window.history(),
+            )
+            zero = zero_from(
+                newest,
+                rows,
+                average,
                 now_utc_ns=self.start_time.utc_ns(self._clock_ns()),
             )
             if self._calibration is None or self._first_seq is None:
@@ -304,10 +313,13 @@ class Instrument:
         self.tell("zero", f"zero set at X {zero.x_arcsec:+.3f}″, Y {zero.y_arcsec:+.3f}″")
         return zero
 
-    def _refuse_unless_live(self) -> None:
-        """What a source showed long ago is no zero of what stands before the instrument now."""
+    def _live_newest(self) -> Reading:
+        """The newest reading. Raises NotNow if it is not of now: what a source showed long ago is
+        no zero of what stands before the instrument.
+        """
         acquisition, age_s = self._acquisition, self.age_s
-        if acquisition is None or age_s is None:
+        newest, since = self._newest, self._first_seq
+        if acquisition is None or newest is None or age_s is None or since is None:
             raise NotNow("there is no reading yet: wait for the first one, then set the zero")
         if self._state is not State.MEASURING:
             raise NotNow(
@@ -318,6 +330,7 @@ class Instrument:
             raise NotNow(
                 f"the newest reading is {age_s:.1f} s old: wait for the next, then set the zero"
             )
+        return newest[1]
 
     def clear_zero(self) -> None:
         with self._lock:
@@ -421,7 +434,7 @@ class Instrument:
 
         True if there was a zero.
         """
-        self._window.clear()
+        self._window = TrailingWindow(self._window.window_s)
         before, self._average, self._reference = self._reference, None, None
         self._first_seq = None
         return before is not None

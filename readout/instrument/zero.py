@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -11,7 +10,7 @@ from numpy.typing import NDArray
 
 from readout.angle import Calibration
 from readout.errors import NotNow
-from readout.instrument.averaging import Average, Statistic, average_of
+from readout.instrument.averaging import Average, Rows, Statistic
 from readout.model import F64, Reading
 
 I64 = NDArray[np.int64]
@@ -72,7 +71,7 @@ class Reference:
             )
 
 
-def moving(rows: Sequence[Reading]) -> bool:
+def moving(rows: Rows) -> bool:
     """True if an axis moves by more than its claimed noise explains and more than can pass.
 
     Three things are looked at, none against the scatter of the readings themselves, so that no
@@ -80,15 +79,14 @@ def moving(rows: Sequence[Reading]) -> bool:
     goes; and means of the parts against each other, halves and both ends against the rest, where a
     step late or early shows.
     """
-    good = [r for r in rows if r.good]
-    t_s = np.array([r.t_s for r in good])
+    good = rows.unflagged()
     return any(
-        _moves(t_s, np.array(values), float(np.median(sd)))
+        _moves(good.t_s, values, float(np.median(sd)))
         for values, sd in (
-            ([r.x_arcsec for r in good], [r.x_sd_arcsec for r in good]),
-            ([r.y_arcsec for r in good], [r.y_sd_arcsec for r in good]),
+            (good.x_arcsec, good.x_sd_arcsec),
+            (good.y_arcsec, good.y_sd_arcsec),
         )
-        if len(values) > 1
+        if good.n > 1
     )
 
 
@@ -115,20 +113,15 @@ def travel(t_s: F64, values: F64) -> float:
     return float(slope) * float(t_s[-1] - t_s[0])
 
 
-def zero_from(
-    rows: Sequence[Reading], *, window_s: float, statistic: Statistic, now_utc_ns: int
-) -> Zero:
-    """The zero at the average of ``rows``, the readings of the window in order of time.
+def zero_from(newest: Reading, rows: Rows, average: Average, *, now_utc_ns: int) -> Zero:
+    """The zero at ``average``, that of ``rows``, the readings of the window, which end with
+    ``newest``.
 
     Raises NotNow while the newest reading is flagged, the average is void or the mirror moves.
     """
-    if not rows:
-        raise NotNow("there is no reading yet: wait for the first one, then set the zero")
-    newest = rows[-1]
     if not newest.good:
         why = ", ".join(newest.quality.words()).replace("_", " ") or "no scale"
         raise NotNow(f"the newest reading cannot be trusted ({why}): mend that, then set the zero")
-    average: Average = average_of(rows, window_s=window_s, statistic=statistic)
     if not average.valid:
         raise NotNow("fewer than half of the readings averaged are good: wait, then set the zero")
     if moving(rows):
@@ -139,7 +132,7 @@ def zero_from(
         x_sd_arcsec=average.x_se_arcsec,
         y_sd_arcsec=average.y_se_arcsec,
         n=average.n,
-        window_s=window_s,
-        statistic=statistic,
+        window_s=average.window_s,
+        statistic=average.statistic,
         set_utc_ns=now_utc_ns,
     )
