@@ -147,6 +147,17 @@ def test_a_full_disk_is_named_and_what_was_written_stays(
     assert len(table.read_text("utf-8").splitlines()) == 1 + 2
 
 
+def test_a_full_disk_under_standard_output_is_told_as_one(
+    readout: Command, frames: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def full(_row: object) -> None:
+        raise OSError(errno.ENOSPC, "No space left on device")
+
+    monkeypatch.setattr("readout.cli.measure.print_json", full)
+    calibration = frames / "calibration.json"
+    refused(readout("measure", frames, "--calibration", calibration, "--json"), "make room")
+
+
 def test_a_calibration_is_replaced_only_if_asked(readout: Command, tmp_path: Path) -> None:
     out, page = tmp_path / "bench.json", tmp_path / "bench.html"
     out.write_text("{}", "utf-8")

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import errno
 import os
 import sys
 from importlib import metadata
@@ -12,7 +13,7 @@ import typer
 from readout import __version__
 from readout.cli import calibrate, cameras, live, locate, measure, runs, simulate
 from readout.cli.say import fail, speak_utf8
-from readout.errors import BadInput, ReadoutError
+from readout.errors import BadInput, ReadoutError, cannot_write
 
 OPENCV = (
     "opencv-python",
@@ -47,6 +48,8 @@ def main() -> None:
         os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         sys.exit(1)
     except OSError as error:
+        if error.errno == errno.ENOSPC:
+            fail(str(cannot_write(error.filename or "the output", error)))
         fail(f"{error}: check the name and the permissions")
 
 
