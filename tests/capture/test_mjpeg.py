@@ -243,7 +243,7 @@ def test_the_stamp_is_that_of_the_arrival():
 
 
 def test_an_address_that_is_none_is_refused_without_its_password():
-    for url in ("http://user:hu/sh@cam/x", "http://[::1", "http://cam:port/", "http://"):
+    for url in ("http://user:hu/sh@cam/x", "http://cam:port/", "http://"):
         with pytest.raises(BadInput, match="is no address") as raised:
             MjpegSource(url)
         assert "sh@" not in str(raised.value)
