@@ -36,8 +36,8 @@ def ndjson_of(reader: LogReader, run_id: int) -> Iterator[str]:
 
 
 def _csv(reader: LogReader, run: Run) -> Iterator[str]:
-    yield ",".join(_columns(run)) + "\n"
-    cells = _cells(run, lambda quality: " ".join(quality.words()))
+    yield ",".join(columns_of(run)) + "\n"
+    cells = cells_of(run, lambda quality: " ".join(quality.words()))
     for chunk in reader.readings(run.id):
         text = io.StringIO()
         csv.writer(text, lineterminator="\n").writerows(map(cells, chunk))  # None: an empty cell
@@ -45,19 +45,22 @@ def _csv(reader: LogReader, run: Run) -> Iterator[str]:
 
 
 def _ndjson(reader: LogReader, run: Run) -> Iterator[str]:
-    columns = _columns(run)
-    cells = _cells(run, Quality.words)
+    columns = columns_of(run)
+    cells = cells_of(run, Quality.words)
     encode = json.JSONEncoder(allow_nan=False, separators=(",", ":")).encode
     for chunk in reader.readings(run.id):
         yield "".join(encode(dict(zip(columns, cells(row), strict=True))) + "\n" for row in chunk)
 
 
-def _columns(run: Run) -> tuple[str, ...]:
+def columns_of(run: Run) -> tuple[str, ...]:
+    """The columns of an export of ``run``."""
     spread = SPREAD_COLUMNS if run.every_s > 0 else ()
     return ("t_utc", *VALUE_COLUMNS, "quality", *POSITION_COLUMNS, *spread)
 
 
-def _cells(run: Run, words_of: Callable[[Quality], Cell]) -> Callable[[LoggedReading], list[Cell]]:
+def cells_of(
+    run: Run, words_of: Callable[[Quality], Cell]
+) -> Callable[[LoggedReading], list[Cell]]:
     """What turns a row of ``run`` into cells."""
     averaged = run.every_s > 0
     words: dict[int, Cell] = {}  # few combinations of flags come in a run, each very often

@@ -16,6 +16,7 @@ from readout.errors import BadInput
 from readout.instrument.recorder import Recorder
 from readout.logbook import LogReader, Run
 from readout.logbook.export import csv_of, ndjson_of
+from readout.logbook.parquet import NEEDED, parquet_is_there, parquet_of
 from readout.logbook.statements import UNWRITABLE
 from readout.service.control import Control
 from readout.service.feed import Feed
@@ -31,8 +32,12 @@ from readout.service.run_messages import (
 )
 
 Seconds = Annotated[float, Query(allow_inf_nan=False)]
-MEDIA_TYPES = {"csv": "text/csv", "ndjson": "application/x-ndjson"}
-NO_PARQUET = "parquet needs an extra that this version does not have: choose csv or ndjson"
+Form = Literal["csv", "ndjson", "parquet"]
+MEDIA_TYPES: dict[Form, str] = {
+    "csv": "text/csv",
+    "ndjson": "application/x-ndjson",
+    "parquet": "application/vnd.apache.parquet",
+}
 
 
 class NewRunBody(BaseModel):
@@ -114,11 +119,11 @@ def run_routes(recorder: Recorder, feed: Feed, control: Control) -> APIRouter:
     @routes.get("/{run_id}/export")
     def get_export(
         run_id: int,
-        form: Annotated[Literal["csv", "ndjson", "parquet"], Query(alias="format")] = "csv",
+        form: Annotated[Form, Query(alias="format")] = "csv",
     ) -> StreamingResponse:
         """All rows of a run, as a file."""
-        if form == "parquet":
-            raise Problem(501, NO_PARQUET)
+        if form == "parquet" and not parquet_is_there():
+            raise Problem(501, f"{NEEDED}, or choose csv or ndjson")
         with LogReader(path) as reader:
             _known(reader, run_id)
         return StreamingResponse(
@@ -137,6 +142,12 @@ def _known(reader: LogReader, run_id: int) -> Run:
         raise Problem(404, str(error)) from error
 
 
-def _export(path: Path, run_id: int, form: Literal["csv", "ndjson"]) -> Iterator[str]:
+def _export(path: Path, run_id: int, form: Form) -> Iterator[str | bytes]:
     with LogReader(path) as reader:
-        yield from csv_of(reader, run_id) if form == "csv" else ndjson_of(reader, run_id)
+        match form:
+            case "csv":
+                yield from csv_of(reader, run_id)
+            case "ndjson":
+                yield from ndjson_of(reader, run_id)
+            case "parquet":
+                yield from parquet_of(reader, run_id)

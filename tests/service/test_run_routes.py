@@ -14,6 +14,7 @@ from pathlib import Path
 from typing import Any
 
 import pytest
+from pyarrow import parquet
 from starlette.testclient import TestClient
 
 from readout.errors import NotRecorded
@@ -162,7 +163,6 @@ def test_a_run_that_cannot_be(client: TestClient, body: dict[str, object], word:
         ("series?from_s=nan", 422, "from_s"),
         ("series?from_s=5&to_s=4", 422, "is empty"),
         ("export?format=xlsx", 422, "format"),
-        ("export?format=parquet", 501, "choose csv or ndjson"),
     ],
 )
 def test_what_cannot_be_given(client: TestClient, query: str, status: int, word: str) -> None:
@@ -238,3 +238,26 @@ def test_numbers_beyond_all_measure_are_refused(rig: Rig, client: TestClient) ->
         assert "give another part" in problem(client.get(f"/api/runs/{run_id}/series?{part}"), 422)
     assert client.get(f"/api/runs/{run_id}/series?from_s=-5&to_s=1e9").status_code == 200
     assert client.get(f"/api/recent?from_seq={10**30}").status_code == 200
+
+
+def test_parquet_without_its_package_names_what_to_install(
+    client: TestClient, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    run_id = begun(client)
+    monkeypatch.setitem(sys.modules, "pyarrow", None)  # as if it were not installed
+    detail = problem(client.get(f"/api/runs/{run_id}/export?format=parquet"), 501)
+    assert "pip install pyarrow" in detail
+    assert "choose csv or ndjson" in detail
+
+
+def test_a_run_as_parquet(rig: Rig, client: TestClient) -> None:
+    run_id = begun(client)
+    rig.measure()
+    client.post(f"/api/runs/{run_id}/stop")
+    answer = client.get(f"/api/runs/{run_id}/export?format=parquet")
+    assert answer.headers["content-type"] == "application/vnd.apache.parquet"
+    assert f"run-{run_id}.parquet" in answer.headers["content-disposition"]
+    rows = parquet.read_table(io.BytesIO(answer.content)).to_pylist()
+    lines = client.get(f"/api/runs/{run_id}/export?format=ndjson").text.splitlines()
+    assert len(rows) == 10
+    assert [row["x_arcsec"] for row in rows] == [json.loads(line)["x_arcsec"] for line in lines]
