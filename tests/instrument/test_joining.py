@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import tracemalloc
 
 import numpy as np
 import pytest
@@ -67,3 +68,25 @@ def test_intervals_are_counted_from_their_origin(origin_s: float) -> None:
     }[origin_s]
     assert [row.n for row in (*rows, last)] == [len(m) for m in members]
     assert [row.reading.x_arcsec for row in (*rows, last)] == [float(np.mean(m)) for m in members]
+
+
+def test_a_long_interval_takes_no_more_memory_than_a_short_one() -> None:
+    intervals = Intervals(86_400.0)
+    for k in range(100):
+        intervals.add(reading(k, float(k)))
+    tracemalloc.start()
+    for k in range(100, 20_000):
+        intervals.add(reading(k, float(k)))
+    grown, _ = tracemalloc.get_traced_memory()
+    tracemalloc.stop()
+    assert grown < 50_000  # 20 000 readings held would be some 5 MB
+    row = intervals.close()
+    assert row is not None
+    assert (row.n, row.reading.x_arcsec) == (20_000, pytest.approx(9999.5))
+
+
+def test_a_small_scatter_far_from_zero_loses_no_digits() -> None:
+    # 1e9 + {4, 7, 13, 16}: variance by hand (36 + 9 + 9 + 36) / 3 = 30
+    joined = join([reading(k, 1e9 + x) for k, x in enumerate((4.0, 7.0, 13.0, 16.0))])
+    assert joined.x_scatter_arcsec == math.sqrt(30)
+    assert joined.reading.x_arcsec == 1e9 + 10
