@@ -6,10 +6,21 @@ The libraries read the setting once, when numpy is imported; one the user made s
 """
 
 import os
+import signal
+import sys
 
 for _name in ("OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS", "VECLIB_MAXIMUM_THREADS"):
     os.environ.setdefault(_name, "1")
 
-from readout.cli.app import main  # noqa: E402 (the setting comes first: see above)
+
+def main() -> None:
+    """The command line: see `readout.cli.app`, which takes a while to be imported."""
+    if sys.argv[1:2] == ["live"]:  # what a signal ends is done, also before it has begun
+        for number in (signal.SIGINT, signal.SIGTERM):
+            signal.signal(number, lambda *_: sys.exit(0))
+    from readout.cli import app
+
+    app.main()
+
 
 __all__ = ["main"]

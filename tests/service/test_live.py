@@ -111,27 +111,30 @@ def test_the_simulator_live_from_the_first_line_to_a_clean_end(tmp_path: Path, n
 
 
 SIGNALLED_EARLY = """
-import os, signal, sys
+import os, sys
 from readout.cli import main
-from readout.service import settings
 
-number = int(sys.argv.pop())
+module, number = sys.argv.pop(), int(sys.argv.pop())
 
-def interrupted(path, load=settings._load):
-    os.kill(os.getpid(), number)
-    return load(path)
+class Signals:
+    def find_spec(self, name, path=None, target=None):
+        if name == module:
+            os.kill(os.getpid(), number)
 
-settings._load = interrupted  # the first thing done after the imports
+sys.meta_path.insert(0, Signals())  # asked first for each module that is imported
 main()
 """
 
 
 @pytest.mark.skipif(sys.platform == "win32", reason="ends by signals")
 @pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
-def test_a_signal_during_the_beginning_ends_it_cleanly(tmp_path: Path, number: int) -> None:
+@pytest.mark.parametrize("module", ["numpy", "readout.service.live", "uvicorn"])
+def test_a_signal_during_the_beginning_ends_it_cleanly(
+    tmp_path: Path, number: int, module: str
+) -> None:
     arguments = command(tmp_path, "--port", 0)[3:]
     done = subprocess.run(
-        [sys.executable, "-c", SIGNALLED_EARLY, *arguments, str(int(number))],
+        [sys.executable, "-c", SIGNALLED_EARLY, *arguments, str(int(number)), module],
         capture_output=True,
         text=True,
         env=ENVIRONMENT,
@@ -168,7 +171,9 @@ def test_a_viewer_that_never_reads_disturbs_nobody_and_does_not_hold_up_the_end(
                 return seqs
 
         seqs = asyncio.run(healthy())
-        assert seqs == list(range(seqs[0], seqs[0] + len(seqs)))
+        assert seqs == sorted(set(seqs))
+        skipped = seqs[-1] - seqs[0] + 1 - len(seqs)  # by the simulator, on a busy machine
+        assert skipped <= live.get("api/status")["missed"]
         returncode, took_s, _ = live.end()
         deaf.close()
     assert returncode == 0
