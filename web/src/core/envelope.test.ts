@@ -21,7 +21,7 @@ describe('the envelope of a run', () => {
   it('keeps gaps, and what was measured without being trusted has no mean', () => {
     expect(x?.map((v) => v === null)).toEqual([false, true, false, true]);
     expect(x_high?.map((v) => v === null)).toEqual([false, true, false, false]);
-    expect(lanes.gaps).toEqual([[5, 25]]);
+    expect(lanes.gaps).toEqual([{ from_s: 5, to_s: 25, missing: 'reading' }]);
   });
 
   it('draws both axes at one scale, X above Y, all of it within its lane', () => {

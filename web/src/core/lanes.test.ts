@@ -32,8 +32,48 @@ describe('lanes', () => {
     columns.append(readings([40, 41]), 0.5);
     const { gaps } = new LaneMaker().make(columns, place, 0, 9.1, 0.01, 9.1);
     expect(gaps).toEqual([
-      [0.2, 4],
-      [4.1000000000000005, 9.1],
+      { from_s: 0.2, to_s: 4, missing: 'reading' },
+      { from_s: 4.1000000000000005, to_s: 9.1, missing: 'reading' },
+    ]);
+  });
+
+  it('have no scale beside nothing', () => {
+    const columns = new Columns(100);
+    const row = { x_arcsec: null, y_arcsec: null, x_px: null, y_px: null, good: false };
+    for (const seq of [0, 1, 2]) columns.push({ ...row, seq, t_s: seq }, 5);
+    const pixels = fieldPlace('px', null);
+    expect(new LaneMaker().make(columns, pixels, 0, 2, 0, 2).marks).toEqual([]);
+    columns.push({ ...row, seq: 3, t_s: 3, x_px: 300, y_px: 200 }, 5);
+    expect(new LaneMaker().make(columns, pixels, 0, 3, 0, 3).marks).not.toEqual([]);
+  });
+
+  it('tells a missing scale from a missing reading', () => {
+    const columns = new Columns(100);
+    const row = { x_arcsec: null, y_arcsec: null, good: false };
+    for (const seq of [0, 1, 2]) columns.push({ ...row, seq, t_s: seq, x_px: 3, y_px: 4 }, 5);
+    for (const seq of [3, 4]) columns.push({ ...row, seq, t_s: seq, x_px: null, y_px: null }, 5);
+    columns.append(readings([50, 51]), 5);
+    const { gaps } = new LaneMaker().make(columns, place, 0, 5.1, 0.01, 5.1);
+    expect(gaps).toEqual([
+      { from_s: 0, to_s: 2, missing: 'scale' },
+      { from_s: 2, to_s: 5, missing: 'reading' },
+    ]);
+  });
+
+  it('does not call the time after the last row one without a scale', () => {
+    const columns = new Columns(100);
+    columns.push(
+      { seq: 1, t_s: 1, x_arcsec: null, y_arcsec: null, x_px: 3, y_px: 4, good: false },
+      5,
+    );
+    columns.push(
+      { seq: 2, t_s: 2, x_arcsec: null, y_arcsec: null, x_px: 3, y_px: 4, good: false },
+      5,
+    );
+    const { gaps } = new LaneMaker().make(columns, place, 0, 9, 0.01, 9);
+    expect(gaps).toEqual([
+      { from_s: 1, to_s: 2, missing: 'scale' },
+      { from_s: 2, to_s: 9, missing: 'reading' },
     ]);
   });
 

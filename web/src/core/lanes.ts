@@ -1,7 +1,7 @@
 import type { Columns } from './columns';
 import type { Place } from './field';
 import { decimalsOfStep, graduation, ticks } from './scale';
-import { signed } from './numbers';
+import { plain, signed } from './numbers';
 import { extentOf, Windows, type Frame } from './windows';
 
 /** Two lanes, X above Y, at one scale: a lane is 1 high, with a strip of ground between them. */
@@ -14,8 +14,14 @@ export interface Lanes {
   marks: { at: number; label: string; zero: boolean }[];
   span: number;
   low: [x: number, y: number];
-  /** Stretches without a reading, as times of their two ends. */
-  gaps: [from_s: number, to_s: number][];
+  gaps: Gap[];
+}
+
+/** A stretch without a number, and what was missing in it. */
+export interface Gap {
+  from_s: number;
+  to_s: number;
+  missing: 'reading' | 'scale';
 }
 
 export class LaneMaker {
@@ -35,18 +41,17 @@ export class LaneMaker {
     const t_s = columns.t_s.slice(first, last);
     const xs = valuesOf(columns.of(place.xSeries), first, last, place.x);
     const ys = valuesOf(columns.of(place.ySeries), first, last, place.y);
-    const frame = this.windows.next(
-      [extentOf(xs), extentOf(ys)],
-      Math.max(10 * grain, place.least),
-      now_s,
-    );
+    const extents = [extentOf(xs), extentOf(ys)];
+    const frame = this.windows.next(extents, Math.max(10 * grain, place.least), now_s);
     const lanes = lanesAt(frame, place, most);
+    const empty = extents.every((extent) => extent === null);
     return {
       data: [t_s, xs.map(lanes.ofX), ys.map(lanes.ofY)],
-      marks: lanes.marks,
+      // A scale beside nothing would be a number nobody measured.
+      marks: empty ? [] : lanes.marks,
       span: frame.span,
       low: lanes.low,
-      gaps: gapsOf(t_s, xs, to_s),
+      gaps: gapsOf(t_s, xs, to_s, columns.of('x_px').slice(first, last)),
     };
   }
 }
@@ -95,31 +100,37 @@ function marksOf(
   const decimals = decimalsOfStep(step);
   return ticks(low, low + span, step).map((value) => ({
     at: base + (value - low) / span,
-    label: value === 0 ? '0' : place.signed ? signed(value, decimals) : value.toFixed(decimals),
+    label: value === 0 ? '0' : place.signed ? signed(value, decimals) : plain(value, decimals),
     zero: value === 0,
   }));
 }
 
-/** Stretches of nulls, up to the values beside them; `to_s`: where the time shown ends. */
+/**
+ * Stretches of nulls, up to the values beside them. `to_s`: where the time shown ends; where there
+ * is a position among `positions`, it was the scale that was missing.
+ */
 export function gapsOf(
   t_s: readonly number[],
   values: readonly (number | null)[],
   to_s = t_s.at(-1) ?? 0,
-): [number, number][] {
-  const gaps: [number, number][] = [];
-  let from: number | null = null;
-  values.forEach((value, i) => {
-    if (value === null) from ??= t_s[Math.max(0, i - 1)] ?? null;
-    else if (from !== null) {
-      gaps.push([from, t_s[i] ?? from]);
-      from = null;
-    }
+  positions: readonly (number | null)[] = [],
+): Gap[] {
+  const gaps: Gap[] = [];
+  let missing = null as Gap['missing'] | null;
+  let from_s = 0;
+  const turn = (next: typeof missing, at_s: number): void => {
+    if (missing !== null) gaps.push({ from_s, to_s: at_s, missing });
+    [missing, from_s] = [next, at_s];
+  };
+  t_s.forEach((at_s, i) => {
+    const there = (positions[i] ?? null) !== null;
+    const next = (values[i] ?? null) !== null ? null : there ? 'scale' : 'reading';
+    if (next !== missing) turn(next, next === null ? at_s : (t_s[i - 1] ?? at_s));
   });
-  const end = t_s.at(-1);
-  if (end !== undefined) {
-    from ??= to_s - end > END_GAP_S ? end : null;
-    if (from !== null) gaps.push([from, Math.max(end, to_s)]);
-  }
+  const end_s = t_s.at(-1);
+  if (end_s === undefined) return gaps;
+  if (to_s - end_s > END_GAP_S && missing !== 'reading') turn('reading', end_s);
+  turn(null, Math.max(end_s, to_s));
   return gaps;
 }
 

@@ -1,5 +1,5 @@
 import { describe, expect, it } from 'vitest';
-import { extentOf, Windows } from './windows';
+import { extentOf, frameOf, Windows } from './windows';
 
 describe('windows', () => {
   it('hold what they are given, at one scale', () => {
@@ -36,5 +36,14 @@ describe('windows', () => {
   it('never show less than asked for', () => {
     expect(new Windows([1]).next([[1, 1]], 0.5, 0).span).toBeGreaterThanOrEqual(0.5);
     expect(extentOf([null, null])).toBeNull();
+  });
+
+  it('of a whole hold it in the middle, without room to spare on the longer side', () => {
+    const wide = [
+      [-400, 400],
+      [-300, 300],
+    ] as const;
+    expect(frameOf(wide, [4 / 3, 1])).toEqual({ span: 600, low: [-400, -300] });
+    expect(frameOf(wide, [1, 1])).toEqual({ span: 800, low: [-400, -400] });
   });
 });

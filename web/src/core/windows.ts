@@ -67,6 +67,13 @@ export class Windows {
   }
 }
 
+/** The smallest windows that hold the extents, each in the middle of its own. */
+export function frameOf(extents: readonly Extent[], shares: readonly number[]): Frame {
+  const share = (i: number): number => shares[i] ?? 1;
+  const span = Math.max(...extents.map(([low, high], i) => (high - low) / share(i)));
+  return { span, low: extents.map(([low, high], i) => (low + high - span * share(i)) / 2) };
+}
+
 /** Lowest and highest of the numbers that are there, null for none. */
 export function extentOf(values: Iterable<number | null>): Extent | null {
   let low = Infinity;

@@ -210,12 +210,12 @@ export class LanePlot {
     ctx.stroke();
     ctx.textAlign = 'center';
     ctx.fillStyle = this.palette.soft;
-    for (const [from_s, to_s] of scene.lanes.gaps) {
+    for (const { from_s, to_s, missing } of scene.lanes.gaps) {
       const a = Math.max(left, at(from_s));
       const b = Math.min(left + width, at(to_s));
       const length = lengthWords(to_s - from_s);
       const fits = (text: string): boolean => b - a > ctx.measureText(text).width + 8 * ratio;
-      const text = [`no reading ${length}`, length].find(fits);
+      const text = [`no ${missing} ${length}`, length].find(fits);
       if (text !== undefined) ctx.fillText(text, (a + b) / 2, top + height / 2);
     }
     this.drawFlags(ctx, scene, at, { left, top, right: left + width, base }, ratio);
