@@ -8,11 +8,15 @@ digits, so that no uncertainty is rounded away.
 from __future__ import annotations
 
 import math
+from typing import Any
+
+from numpy.typing import NDArray
 
 from readout.model import Reading
 from readout.utc import utc_text
 
 Cell = str | float | int | list[str] | None
+Number = float | None
 
 VALUE_COLUMNS = (
     "t_s",
@@ -35,6 +39,11 @@ def rounded(value: float) -> float | None:
         return None
     near = round(value, 6) if abs(value) >= 1e-3 else float(f"{value:.4g}")
     return near + 0.0  # of a negative zero a plain one
+
+
+def rounded_column(column: NDArray[Any]) -> list[Number]:
+    """Each value of ``column`` rounded."""
+    return [rounded(value) for value in column.tolist()]
 
 
 def reading_row(reading: Reading) -> dict[str, Cell]:

@@ -103,10 +103,6 @@ class Acquisition:
             self._thread.join(timeout_s)
 
     @property
-    def stopped(self) -> bool:
-        return self._stop.is_set()
-
-    @property
     def stalled_after_s(self) -> float:
         """Silence longer than this is a stall: half a second or three frame times."""
         return max(STALLED_AFTER_S, 3 * (self.pace.interval_s or 0.0))

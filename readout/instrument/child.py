@@ -3,7 +3,6 @@
 Only observations, errors and requested pictures cross the pipe. The parent asks with a word, the
 child answers with a tuple whose first element says what it is:
 
-    ("ready",)                        the source is open; locating has been imported
     ("seen", observation)             the next observation
     ("waiting",)                      no frame yet, but alive
     ("picture", picture or None)      on request
@@ -111,10 +110,6 @@ class ChildObserver:
         with self._answered:
             self._answered.notify_all()
 
-    @property
-    def process_id(self) -> int | None:
-        return self._process.pid if self._process else None
-
     def observe(self, timeout_s: float) -> Observation:
         """The next observation; see `readout.instrument.observer.Observer`."""
         deadline_s = time.monotonic() + timeout_s
@@ -212,7 +207,6 @@ def _child(pipe: Connection, source: str, target: Target, open_source: OpenSourc
 
             open_source = capture_open.open_source
         with DirectObserver(open_source(source), target=target, locate=locate) as observer:
-            pipe.send(("ready",))
             while not _asked_to_end(pipe, observer):
                 try:
                     pipe.send(("seen", observer.observe(CHILD_TIMEOUT_S)))

@@ -2,9 +2,9 @@
 
 The last events are kept as well, and are the first that a new viewer gets.
 
-The producer never waits for a viewer. A queue that is full drops its oldest reading and counts
-it. ``append`` and ``announce`` are called from the acquisition's thread; queues belong to the
-event loop, and one call into the loop serves all of them.
+The producer never waits for a viewer. A queue that is full drops its oldest reading, or event, and
+counts it. ``append`` and ``announce`` are called from the acquisition's thread; queues belong to
+the event loop, and one call into the loop serves all of them.
 """
 
 from __future__ import annotations
@@ -57,7 +57,7 @@ class Subscription:
         self._ready = asyncio.Event()
         if self._events:
             self._ready.set()
-        self.dropped = 0
+        self.dropped = self.dropped_events = 0
         self.closed = False
 
     def offer(self, item: Reading | Event | None) -> None:
@@ -67,6 +67,7 @@ class Subscription:
                 self.dropped += len(self._readings) == self._readings.maxlen
                 self._readings.append(item)
             case Event():
+                self.dropped_events += len(self._events) == self._events.maxlen
                 self._events.append(item)
             case None:
                 self._status_changed = True
@@ -156,13 +157,15 @@ class Feed:
     def unsubscribe(self, subscription: Subscription) -> None:
         with self._lock:
             self._subscriptions = self._subscriptions - {subscription}
-            self._dropped_before += subscription.dropped
+            self._dropped_before += subscription.dropped + subscription.dropped_events
 
     @property
     def dropped(self) -> int:
-        """Readings lost to viewers that were slow, all viewers so far."""
+        """Readings and events lost to viewers that were slow, all viewers so far."""
         with self._lock:
-            return self._dropped_before + sum(s.dropped for s in self._subscriptions)
+            return self._dropped_before + sum(
+                s.dropped + s.dropped_events for s in self._subscriptions
+            )
 
     # -- from any thread ----------------------------------------------------------------------
 

@@ -7,7 +7,6 @@ from collections.abc import Sequence
 from typing import Any, Literal
 
 import numpy as np
-from numpy.typing import NDArray
 from typing_extensions import TypedDict
 
 from readout import __version__
@@ -16,11 +15,9 @@ from readout.capture.open import SourceDescription
 from readout.instrument import Average, Event, Reference, State, Status, Zero
 from readout.instrument.recorder import Recording
 from readout.model import Arm, Observation, Quality, Reading
-from readout.rows import rounded
+from readout.rows import Number, rounded, rounded_column
 from readout.service.feed import FLOATS, Columns
 from readout.utc import utc_text
-
-Number = float | None
 
 
 class AverageMessage(TypedDict):
@@ -66,9 +63,9 @@ class ReadingMessage(TypedDict):
 
 
 class ReadingsMessage(TypedDict):
-    """Columns of equal length; ``dropped``: what this viewer lost so far. ``x_rel_u_arcsec``:
-    combined standard uncertainty of the tilt minus the zero, null while none is set and for
-    readings that it does not belong to.
+    """Columns of equal length; ``dropped``: readings and events this viewer lost so far.
+    ``x_rel_u_arcsec``: combined standard uncertainty of the tilt minus the zero, null while none is
+    set and for readings that it does not belong to.
     """
 
     kind: Literal["readings"]
@@ -278,14 +275,14 @@ def _relative_u(reference: Reference | None, columns: Columns) -> tuple[list[Num
         return [None] * seq.size, [None] * seq.size
     places = columns["x_px"], columns["y_px"], columns["x_sd_arcsec"], columns["y_sd_arcsec"]
     x_u, y_u = reference.relative_u(seq, *(column.astype(np.float64) for column in places))
-    return _numbers(x_u), _numbers(y_u)
+    return rounded_column(x_u), rounded_column(y_u)
 
 
 def _columns_message(
     columns: Columns, dropped: int, average: Average | None, reference: Reference | None
 ) -> ReadingsMessage:
     x_rel_u, y_rel_u = _relative_u(reference, columns)
-    floats = {name: _numbers(columns[name]) for name in FLOATS}
+    floats = {name: rounded_column(columns[name]) for name in FLOATS}
     return {
         "kind": "readings",
         "seq": columns["seq"].tolist(),
@@ -304,10 +301,6 @@ def _columns_message(
         "dropped": dropped,
         "average": average_message(average),
     }
-
-
-def _numbers(column: NDArray[Any]) -> list[Number]:
-    return [rounded(value) for value in column.tolist()]
 
 
 def _arm_message(arm: Arm | None) -> ArmMessage | None:
@@ -358,7 +351,7 @@ def calibration_message(calibration: Calibration | None) -> CalibrationMessage |
         "mirrored": calibration.mirrored,
         "created_utc": calibration.created_utc,
         "warnings": list(calibration.warnings),
-        "field_arcsec": list(zip(_numbers(x_arcsec), _numbers(y_arcsec), strict=True)),
+        "field_arcsec": list(zip(rounded_column(x_arcsec), rounded_column(y_arcsec), strict=True)),
     }
 
 
@@ -399,7 +392,7 @@ def status_message(
     dropped: int,
     session_start_utc_ns: int,
 ) -> StatusMessage:
-    """``dropped``: readings lost to slow viewers."""
+    """``dropped``: readings and events lost to slow viewers."""
     return {
         "source": status.source,
         "source_name": described.title if described else status.source or "",

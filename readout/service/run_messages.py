@@ -4,14 +4,11 @@ from __future__ import annotations
 
 from typing import Any
 
-from numpy.typing import NDArray
 from typing_extensions import TypedDict
 
 from readout.logbook import LogReader, Run, Series
-from readout.rows import rounded
+from readout.rows import Number, rounded, rounded_column
 from readout.utc import utc_text
-
-Number = float | None
 
 
 class RunMessage(TypedDict):
@@ -118,17 +115,13 @@ def series_message(run_id: int, series: Series) -> SeriesMessage:
     return {
         "run_id": run_id,
         "bin_s": series.bin_s,
-        "t_s": _numbers(series.t_s),
+        "t_s": rounded_column(series.t_s),
         "n": series.n.tolist(),
         "n_good": series.n_good.tolist(),
-        "x_min_arcsec": _numbers(series.x_min_arcsec),
-        "x_max_arcsec": _numbers(series.x_max_arcsec),
-        "x_mean_arcsec": _numbers(series.x_mean_arcsec),
-        "y_min_arcsec": _numbers(series.y_min_arcsec),
-        "y_max_arcsec": _numbers(series.y_max_arcsec),
-        "y_mean_arcsec": _numbers(series.y_mean_arcsec),
+        "x_min_arcsec": rounded_column(series.x_min_arcsec),
+        "x_max_arcsec": rounded_column(series.x_max_arcsec),
+        "x_mean_arcsec": rounded_column(series.x_mean_arcsec),
+        "y_min_arcsec": rounded_column(series.y_min_arcsec),
+        "y_max_arcsec": rounded_column(series.y_max_arcsec),
+        "y_mean_arcsec": rounded_column(series.y_mean_arcsec),
     }
-
-
-def _numbers(column: NDArray[Any]) -> list[Number]:
-    return [rounded(value) for value in column.tolist()]

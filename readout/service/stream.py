@@ -93,7 +93,7 @@ def _messages(batch: Batch, subscription: Subscription, instrument: Instrument) 
     if batch.readings:
         columns = readings_message(
             batch.readings,
-            dropped=subscription.dropped,
+            dropped=subscription.dropped + subscription.dropped_events,
             average=instrument.average(),
             reference=instrument.reference,
         )

@@ -120,6 +120,22 @@ def test_seq_goes_on_over_reopenings_and_gaps_of_the_source_are_counted() -> Non
     assert recorder.acquisition.missed == 2
 
 
+def test_gaps_of_all_openings_are_summed() -> None:
+    recorder = Recorder([None, None, SourceLost("gone")], [None, None])
+    opened = recorder._open
+
+    def open_with_gap() -> Observer:
+        observer = opened()
+        assert isinstance(observer, ScriptedObserver)
+        observer.skip = len(recorder.observers)  # 1, then 2, after its first frame
+        return observer
+
+    recorder.acquisition._open_observer = open_with_gap
+    recorder.run()
+    assert recorder.seqs == [0, 2, 3, 6]
+    assert recorder.acquisition.missed == 3
+
+
 def test_back_off_grows_to_ten_seconds_and_begins_anew_after_a_frame() -> None:
     gone = SourceLost("gone")
     run = Recorder([None, gone], *[[gone]] * 6, [None, gone], [None]).run()

@@ -38,6 +38,12 @@ def next_of(observer: ChildObserver, within_s: float = 20.0) -> Observation:
     pytest.fail("no observation from the child")
 
 
+def pid_of(observer: ChildObserver) -> int:
+    assert observer._process is not None
+    assert observer._process.pid is not None
+    return observer._process.pid
+
+
 def gone(pid: int) -> bool:
     try:
         os.kill(pid, 0)
@@ -76,8 +82,7 @@ def test_opening_never_blocks_the_caller() -> None:
 )
 def test_a_hanging_driver_is_given_up_and_killed(manner: str, bounds: dict[str, float]) -> None:
     with child(manner, **bounds) as observer:
-        pid = observer.process_id
-        assert pid is not None
+        pid = pid_of(observer)
         with pytest.raises(SourceLost, match="has not answered"):
             while True:
                 next_of(observer)
@@ -95,8 +100,7 @@ def test_a_crash_is_a_loss() -> None:
 @pytest.mark.skipif(sys.platform == "win32", reason="sends SIGINT")
 def test_ctrl_c_in_the_terminal_does_not_reach_it(capfd: pytest.CaptureFixture[str]) -> None:
     with child("slow") as observer:
-        pid = observer.process_id
-        assert pid is not None
+        pid = pid_of(observer)
         os.kill(pid, signal.SIGINT)  # while it starts
         next_of(observer)
         os.kill(pid, signal.SIGINT)
@@ -163,7 +167,7 @@ if __name__ == "__main__":
                 break
             except SourceStalled:
                 continue
-        print(observer.process_id, flush=True)
+        print(observer._process.pid, flush=True)
         time.sleep(60)
 """
 

@@ -62,6 +62,24 @@ def test_a_slow_viewer_loses_the_oldest_counts_them_and_stops_nobody() -> None:
     assert seen_by_quick == list(range(100))
 
 
+def test_events_that_a_slow_viewer_loses_are_counted_too() -> None:
+    async def run() -> tuple[int, int, list[Event]]:
+        feed = Feed(capacity=10)
+        feed.attach(asyncio.get_running_loop())
+        slow = feed.subscribe(5)
+        for k in range(103):
+            slow.offer(Event(float(k), 0, "settings", "the settings were changed"))
+        batch = await slow.next(1.0)
+        before = feed.dropped
+        feed.unsubscribe(slow)
+        assert feed.dropped == before
+        return slow.dropped_events, before, batch.events
+
+    dropped, total, events = asyncio.run(run())
+    assert dropped == total == 3
+    assert [e.t_s for e in events] == list(range(3, 103))
+
+
 def test_events_and_status_changes_reach_every_viewer() -> None:
     async def run() -> list[Batch]:
         feed = Feed(capacity=10)
