@@ -13,6 +13,7 @@ import { Columns } from './core/columns';
 import { brokenOff, withEvent } from './core/events';
 import { Feed } from './core/feed';
 import { ProtocolError } from './core/fields';
+import { SettingsKeeper } from './core/keeper';
 import { nextFrame, Pace, unhurried } from './core/pace';
 import {
   decode,
@@ -121,6 +122,13 @@ export class Instrument {
     },
   );
 
+  private readonly keeper = new SettingsKeeper(
+    readSettings,
+    writeSettings,
+    () => this.settings,
+    (settings) => (this.settings = settings),
+  );
+
   /** Opens the stream; the answer ends it. */
   start(): () => void {
     const connection = new Connection(
@@ -129,7 +137,7 @@ export class Instrument {
         onOpen: () => {
           this.connected = true;
           this.feed.opened();
-          void this.loadSettings();
+          void this.readSettings();
         },
         onText: (text) => this.take(text),
         onDown: () => (this.connected = false),
@@ -166,15 +174,8 @@ export class Instrument {
     this.held = this.held || !this.onDisplay ? null : { ...this.onDisplay, at: new Date() };
   }
 
-  async change(part: Partial<Settings>): Promise<void> {
-    const before = this.settings;
-    this.settings = { ...before, ...part };
-    await this.ask(
-      async () => {
-        this.settings = await writeSettings(part);
-      },
-      () => (this.settings = before),
-    );
+  change(part: Partial<Settings>): Promise<void> {
+    return this.ask(() => this.keeper.change(part));
   }
 
   setZero(): Promise<void> {
@@ -197,19 +198,16 @@ export class Instrument {
     return this.ask(() => stopRun(id));
   }
 
-  private async loadSettings(): Promise<void> {
-    await this.ask(async () => {
-      this.settings = await readSettings();
-    });
+  private readSettings(): Promise<void> {
+    return this.ask(() => this.keeper.refresh());
   }
 
-  private async ask(what: () => Promise<void>, undo: () => void = () => {}): Promise<void> {
+  private async ask(what: () => Promise<void>): Promise<void> {
     try {
       await what();
       this.refusal = '';
     } catch (error) {
       if (!(error instanceof Refused || error instanceof ProtocolError)) throw error;
-      undo();
       this.refuse(error.message);
     }
   }
@@ -247,6 +245,7 @@ export class Instrument {
         break;
       case 'event':
         this.events = withEvent(this.events, message, KEPT_EVENTS);
+        if (message.event === 'settings') void this.readSettings();
         this.paint.ask();
         break;
       default: {
