@@ -81,7 +81,7 @@ def test_zero_is_set_and_taken_back(serve: Any, look: Callable[..., Any]) -> Non
         held = number(page, "x").get_attribute("aria-label")
         page.wait_for_timeout(500)
         assert number(page, "x").get_attribute("aria-label") == held
-        page.get_by_role("button", name="Follow again").click()
+        page.get_by_role("button", name="Follow").click()
         expect(number(page, "x")).not_to_have_attribute("aria-label", held or "")
 
 

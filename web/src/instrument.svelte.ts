@@ -13,6 +13,7 @@ import { Columns } from './core/columns';
 import { brokenOff, withEvent } from './core/events';
 import { Feed } from './core/feed';
 import { ProtocolError } from './core/fields';
+import { changedSince, isOfSession, sceneOf, type Held, type Scene } from './core/held';
 import { SettingsKeeper } from './core/keeper';
 import { nextFrame, Pace, unhurried } from './core/pace';
 import {
@@ -38,27 +39,30 @@ const REFUSAL_MS = 10_000;
 const STATISTICS_S = 30;
 const KEPT_EVENTS = 100;
 
-/** What a number on display was made of. */
-interface Row {
-  newest: Newest;
-  average: Average | null;
-  t_s: number;
-}
-
-export interface Held extends Row {
-  at: Date;
-}
-
 /** Everything the page knows of the instrument, and the few things it can ask of it. */
 export class Instrument {
   connected = $state(true);
   status = $state.raw<Status | null>(null);
-  shown = $state.raw<Shown | null>(null);
-  /** Seconds since the last reading arrived in this page; null when it was read before. */
+  /** What the newest reading says. */
+  live = $state.raw<Scene | null>(null);
+  /** Seconds since the last reading; null while that is not known. */
   age_s = $state<number | null>(null);
   events = $state.raw<readonly SourceEvent[]>([]);
   settings = $state.raw<Settings>(FIRST_SETTINGS);
   held = $state.raw<Held | null>(null);
+  /** The numbers on the page, and what they were made of. */
+  scene: Scene | null = $derived(this.held ?? this.live);
+  shown: Shown | null = $derived(this.scene?.shown ?? null);
+  /** The hold, while what is drawn can stand still with it: its times are those of this session. */
+  private still: Held | null = $derived(
+    this.held && isOfSession(this.held, this.status) ? this.held : null,
+  );
+  /** What is drawn beside the numbers. */
+  drawn: Scene | null = $derived(this.still ?? this.live);
+  /** What has changed under the hold. */
+  heldChanges: string[] = $derived(
+    this.held && this.status ? changedSince(this.held, this.status) : [],
+  );
   /** What the service refused last, in its own words. */
   refusal = $state('');
   spread = $state.raw<{ x: Spread | null; y: Spread | null }>({ x: null, y: null });
@@ -79,7 +83,8 @@ export class Instrument {
     ),
   );
   calibration = $derived(this.status?.calibration ?? null);
-  provenSigns = $derived(this.calibration?.signs === 'proven');
+  /** Of the numbers on the page. */
+  provenSigns = $derived((this.scene ?? this.status)?.calibration?.signs === 'proven');
   zero = $derived(this.status?.zero ?? null);
   /** The run being recorded. */
   run = $derived(this.status?.run ?? null);
@@ -95,14 +100,12 @@ export class Instrument {
   /** The numbers are those of now. */
   alive: boolean = $derived(this.connected && this.status?.state === 'measuring');
   /** What is drawn follows the mirror. */
-  current: boolean = $derived(this.alive && this.held === null);
+  current: boolean = $derived(this.alive && this.still === null);
   unit: Unit = $derived(
-    this.status !== null && this.status.calibration === null ? 'px' : this.settings.unit,
+    this.still?.shown.unit ?? (this.status?.calibration === null ? 'px' : this.settings.unit),
   );
   gap_s = $derived(Math.max(0.5, 3 / Math.max(this.status?.frames_per_s ?? 30, 0.1)));
 
-  private onDisplay: Row | null = null;
-  private manner = '';
   private newest: Newest | null = null;
   private average: Average | null = null;
   private arrived_ms = 0;
@@ -157,7 +160,7 @@ export class Instrument {
    * when readings stay out it goes on, so that the strip grows white. What has ended stands.
    */
   get now_s(): number {
-    if (this.held) return this.held.t_s;
+    if (this.still) return this.still.t_s;
     const newest_s = this.columns.t_s.at(-1) ?? 0;
     const over =
       this.connected && (this.status?.state === 'ended' || this.status?.state === 'failed');
@@ -166,12 +169,13 @@ export class Instrument {
 
   /** What the right end of the strip is called. */
   get endWord(): string {
-    if (this.held) return 'held';
-    return this.connected && this.status?.state === 'ended' ? 'end' : 'now';
+    if (this.still) return 'held';
+    if (this.connected && this.status?.state === 'ended') return 'end';
+    return this.alive || this.age_s !== null ? 'now' : 'last';
   }
 
   hold(): void {
-    this.held = this.held || !this.onDisplay ? null : { ...this.onDisplay, at: new Date() };
+    this.held = this.held || !this.live ? null : { ...this.live, at: new Date() };
   }
 
   change(part: Partial<Settings>): Promise<void> {
@@ -219,7 +223,7 @@ export class Instrument {
 
   /** Another program answers now: its readings have nothing to do with those before. */
   private forget(): void {
-    this.newest = this.average = this.onDisplay = this.shown = this.held = null;
+    this.newest = this.average = this.live = null;
     this.age_s = null;
     this.arrived_ms = 0;
     this.events = [];
@@ -292,26 +296,17 @@ export class Instrument {
     this.ticks += 1;
     if (this.arrived_ms > 0) this.age_s = (now_ms - this.arrived_ms) / 1000;
     if (this.refusal !== '' && now_ms - this.refused_ms > REFUSAL_MS) this.refusal = '';
-    if (this.held === null) this.onDisplay = this.newestRow();
-    const row = this.held ?? this.onDisplay;
-    if (row === null || this.status === null) return;
-    // What is held changes its unit or its zero when asked to, and nothing else.
-    const manner = [this.unit, this.zero?.set_utc, this.calibration?.id].join();
-    if (this.held && manner === this.manner) return;
-    this.manner = manner;
-    this.shown =
+    if (this.newest === null || this.status === null) return;
+    const t_s = this.columns.t_s.at(-1) ?? 0;
+    const shown =
       this.status.calibration === null
-        ? this.positionShown(row)
-        : shownAngle(row.average, row.newest, this.status.zero, this.settings.unit);
-    if (this.ticks % 5 === 0 && !this.held) this.spread = this.spreadNow();
+        ? this.positionShown(this.newest, t_s)
+        : shownAngle(this.average, this.newest, this.status.zero, this.settings.unit);
+    this.live = sceneOf(shown, t_s, this.status);
+    if (this.ticks % 5 === 0 && !this.still) this.spread = this.spreadNow();
   }
 
-  private newestRow(): Row | null {
-    const { newest, average } = this;
-    return newest && { newest, average, t_s: this.columns.t_s.at(-1) ?? 0 };
-  }
-
-  private positionShown({ newest, t_s: to_s }: Row): Shown {
+  private positionShown(newest: Newest, to_s: number): Shown {
     const [from, to] = [
       this.columns.indexAt(to_s - this.settings.average_s),
       this.columns.indexAt(to_s + 1e-6),
