@@ -108,7 +108,7 @@ export class Instrument {
 
   private newest: Newest | null = null;
   private average: Average | null = null;
-  private arrived_ms = 0;
+  private arrived_ms: number | null = null;
   private refused_ms = 0;
   private ticks = 0;
   private readonly lessMotion = matchMedia('(prefers-reduced-motion: reduce)');
@@ -165,6 +165,11 @@ export class Instrument {
     const over =
       this.connected && (this.status?.state === 'ended' || this.status?.state === 'failed');
     return this.alive || over ? newest_s : newest_s + (this.age_s ?? 0);
+  }
+
+  /** When the numbers on the page were read, by the clock. */
+  get readAt(): Date {
+    return new Date(Date.parse(this.scene?.session ?? '') + 1000 * (this.scene?.t_s ?? 0));
   }
 
   /** What the right end of the strip is called. */
@@ -225,7 +230,7 @@ export class Instrument {
   private forget(): void {
     this.newest = this.average = this.live = null;
     this.age_s = null;
-    this.arrived_ms = 0;
+    this.arrived_ms = null;
     this.events = [];
   }
 
@@ -278,8 +283,20 @@ export class Instrument {
     if (this.newest === null && readings.seq.length > 0) {
       this.newest = newestOf(readings, readings.seq.length - 1);
       this.average = readings.average;
+      void this.learnAge();
     }
     return readings;
+  }
+
+  /** A reading from before this page was opened: the service knows how old it is. */
+  private async learnAge(): Promise<void> {
+    try {
+      const { age_s } = await newestReading();
+      if (age_s !== null) this.arrived_ms ??= performance.now() - 1000 * age_s;
+    } catch (error) {
+      // Of a source that is gone there is no newest reading: the page then names the time alone.
+      if (!(error instanceof Refused)) throw error;
+    }
   }
 
   private takeReadings(readings: Readings): void {
@@ -294,7 +311,7 @@ export class Instrument {
 
   private tick(now_ms: number): void {
     this.ticks += 1;
-    if (this.arrived_ms > 0) this.age_s = (now_ms - this.arrived_ms) / 1000;
+    if (this.arrived_ms !== null) this.age_s = (now_ms - this.arrived_ms) / 1000;
     if (this.refusal !== '' && now_ms - this.refused_ms > REFUSAL_MS) this.refusal = '';
     if (this.newest === null || this.status === null) return;
     const t_s = this.columns.t_s.at(-1) ?? 0;

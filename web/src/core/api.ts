@@ -1,7 +1,7 @@
 import { keptOf, type KeptCalibration } from './calibrations';
 import { Fields, ProtocolError } from './fields';
 import type { Part } from './part';
-import { fitOf, readingOf, readingsOf, type Average, type Fit, type Newest, type Readings } from './protocol';
+import { fitOf, readingOf, readingsOf, type Fit, type Readings } from './protocol';
 import {
   runsOf,
   seriesOf,
@@ -75,7 +75,7 @@ export async function picture(): Promise<{ seq: number; blob: Blob }> {
 }
 
 /** The newest reading, with the scale in use now. */
-export async function newestReading(): Promise<{ newest: Newest; average: Average | null }> {
+export async function newestReading(): Promise<ReturnType<typeof readingOf>> {
   return readingOf(await (await ask('api/reading')).json());
 }
 

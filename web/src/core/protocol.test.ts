@@ -1,6 +1,6 @@
 import { describe, expect, it } from 'vitest';
 import { ProtocolError } from './fields';
-import { decode, fitOf, statusOf } from './protocol';
+import { decode, fitOf, readingOf, statusOf } from './protocol';
 import { readings, status } from './samples';
 
 describe('a message of the stream', () => {
@@ -76,3 +76,16 @@ it('reads the fit of a picture without an image', () => {
   expect(fit.x_px).toBeNull();
   expect(fit.quality).toEqual(['no_image']);
 });
+
+describe('one reading', () => {
+  it('says how old it is, and nothing of it where the service does not', () => {
+    const reading = { ...Object.fromEntries(NUMBERS.map((name) => [name, 1])), quality: [] };
+    expect(readingOf({ ...reading, average: null, age_s: 12.5 }).age_s).toBe(12.5);
+    expect(readingOf({ ...reading, average: null, age_s: null }).age_s).toBeNull();
+    expect(() => readingOf({ ...reading, quality: 3, average: null })).toThrow('the reading');
+  });
+});
+
+const NUMBERS = ['x', 'y'].flatMap((axis) =>
+  ['arcsec', 'sd_arcsec', 'u_arcsec', 'px'].map((name) => `${axis}_${name}`),
+);

@@ -158,7 +158,11 @@ export function readingsOf(value: unknown): Readings {
 }
 
 /** One reading, as it is answered when asked for. */
-export function readingOf(value: unknown): { newest: Newest; average: Average | null } {
+export function readingOf(value: unknown): {
+  newest: Newest;
+  average: Average | null;
+  age_s: number | null;
+} {
   const fields = Fields.of(value, 'the reading');
   return {
     newest: {
@@ -175,6 +179,7 @@ export function readingOf(value: unknown): { newest: Newest; average: Average | 
       quality: fields.words('quality'),
     },
     average: averageOf(fields.objectOrNull('average')),
+    age_s: fields.numberOrNull('age_s'),
   };
 }
 
