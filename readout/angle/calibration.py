@@ -67,7 +67,7 @@ class Calibration:
         inverse = np.linalg.inv(np.array(self.matrix))
         gradient = -0.5 * self.focal_length_px * inverse.T.ravel()
         cov = np.array(self.param_cov)[:4, :4]
-        return math.sqrt(float(gradient @ cov @ gradient))
+        return math.sqrt(max(0.0, float(gradient @ cov @ gradient)))  # rounding may make it -0
 
     @property
     def focal_length_mm(self) -> float | None:

@@ -22,7 +22,9 @@ def reading_of(observation: Observation, calibration: Calibration | None, t_s: f
         noise = calibration.noise_cov(*where, sighting.cov_px2)
         common = calibration.calibration_cov(*where)
         x_sd, y_sd = math.sqrt(noise[0, 0]), math.sqrt(noise[1, 1])
-        x_u, y_u = math.sqrt(noise[0, 0] + common[0, 0]), math.sqrt(noise[1, 1] + common[1, 1])
+        # A covariance without a share along an axis may be negative there in its last digits.
+        x_u = math.sqrt(noise[0, 0] + max(0.0, common[0, 0]))
+        y_u = math.sqrt(noise[1, 1] + max(0.0, common[1, 1]))
     return Reading(
         seq=observation.seq,
         t_s=t_s,

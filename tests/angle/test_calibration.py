@@ -226,3 +226,15 @@ class TestReading:
         assert math.isnan(bare.y_arcsec)
         assert bare.x_px == 10.0
         assert not bare.good
+
+
+def test_an_uncertain_rotation_alone_makes_no_uncertain_focal_length():
+    """The determinant does not change with a rotation; in its last digits g C g may be negative."""
+    rng = np.random.default_rng(0)
+    for _ in range(100):
+        turned = calibration(rotation_deg=rng.uniform(-180, 180))
+        by_angle = np.zeros(7)
+        by_angle[:4] = 0.01 * (np.array([[0, -1], [1, 0]]) @ np.array(turned.matrix)).ravel()
+        cov = tuple(map(tuple, np.outer(by_angle, by_angle).tolist()))
+        sd_px = replace(turned, param_cov=cov).focal_length_px_sd
+        assert 0 <= sd_px < 1e-7 * turned.focal_length_px
