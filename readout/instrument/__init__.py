@@ -2,7 +2,9 @@
 
 from readout.instrument.acquisition import State
 from readout.instrument.averaging import Average, Statistic
-from readout.instrument.instrument import Event, Instrument, Optics, Status
+from readout.instrument.instrument import Instrument
+from readout.instrument.scale import Optics
+from readout.instrument.values import Event, Status
 from readout.instrument.zero import Reference, Zero
 
 __all__ = [

@@ -11,9 +11,9 @@ import math
 import threading
 import time
 from collections.abc import Callable
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
-from readout.angle import Calibration, Mounting, nominal_calibration, reading_of
+from readout.angle import Calibration, reading_of
 from readout.capture.source_name import encodable, source_name
 from readout.capture.timebase import TimeBase
 from readout.errors import BadInput, NotNow
@@ -21,48 +21,12 @@ from readout.instrument.acquisition import Acquisition, State
 from readout.instrument.averaging import Average, Statistic, TrailingWindow, average_of
 from readout.instrument.observer import Observer, Picture
 from readout.instrument.opening import open_observer
+from readout.instrument.scale import Optics, calibration_for
+from readout.instrument.values import Event, Status
 from readout.instrument.zero import Reference, Zero, zero_from
 from readout.model import Observation, Reading, Target
+from readout.units import signed
 from readout.utc import utc_text
-
-
-@dataclass(frozen=True, slots=True)
-class Optics:
-    """What a nominal calibration is made from."""
-
-    focal_length_mm: float
-    pitch_um: float
-    mounting: Mounting = Mounting.STRAIGHT
-
-
-@dataclass(frozen=True, slots=True)
-class Event:
-    """Something that happened beside the readings, with one line for people."""
-
-    t_s: float
-    t_utc_ns: int
-    event: str
-    text: str
-
-
-@dataclass(frozen=True, slots=True)
-class Status:
-    """The instrument at one instant. ``frames`` counts all measured, ``missed`` those a source
-    knows it did not deliver.
-    """
-
-    source: str | None
-    state: State
-    state_detail: str
-    frames_per_s: float
-    frames: int
-    frames_unusable: int
-    missed: int
-    image_width_px: int | None
-    image_height_px: int | None
-    calibration: Calibration | None
-    zero: Zero | None
-
 
 SOURCE_CHANGED = "source"
 """The event that tells of another source; what is recorded of the one before ends with it."""
@@ -310,7 +274,9 @@ class Instrument:
             if self._calibration is None or self._first_seq is None:
                 raise NotNow("there is no scale yet: give one, then set the zero")
             self._reference = Reference(zero, self._calibration, self._first_seq)
-        self.tell("zero", f"zero set at X {zero.x_arcsec:+.3f}″, Y {zero.y_arcsec:+.3f}″")
+        self.tell(
+            "zero", f"zero set at X {signed(zero.x_arcsec, 3)}″, Y {signed(zero.y_arcsec, 3)}″"
+        )
         return zero
 
     def _live_newest(self) -> Reading:
@@ -349,7 +315,7 @@ class Instrument:
                 raise _size_changed(self._size_px, size_px, observation.name)
             if not self._scale_chosen:
                 self._own_calibration = observer.calibration
-                self._calibration = self._calibration_for(size_px, self._own_calibration)
+                self._calibration = self._calibration_for(size_px)
                 self._scale_chosen = True
             if self._t_zero_ns is None:
                 self._t_zero_ns = observation.t_mono_ns
@@ -375,29 +341,17 @@ class Instrument:
         size_px = observation.width_px, observation.height_px
         self._calibration = None
         with contextlib.suppress(BadInput):  # one that does not fit these pictures is none
-            self._calibration = self._calibration_for(size_px, self._own_calibration)
+            self._calibration = self._calibration_for(size_px)
         self._newest = observation, reading_of(observation, self._calibration, before.t_s)
 
-    def _calibration_for(
-        self, size_px: tuple[int, int], own: Calibration | None
-    ) -> Calibration | None:
-        match self._scale:
-            case Calibration() as calibration:
-                refuse_unfit(calibration, *size_px, self._target)
-                return calibration
-            case _ if own is not None:
-                return own
-            case Optics() as optics:
-                return nominal_calibration(
-                    focal_length_mm=optics.focal_length_mm,
-                    pitch_um=optics.pitch_um,
-                    mounting=optics.mounting,
-                    image_width_px=size_px[0],
-                    image_height_px=size_px[1],
-                    target=self._target,
-                    created_utc=utc_text(self.start_time.utc_ns(self._clock_ns())),
-                )
-        return None
+    def _calibration_for(self, size_px: tuple[int, int]) -> Calibration | None:
+        return calibration_for(
+            self._scale,
+            self._own_calibration,
+            size_px=size_px,
+            target=self._target,
+            created_utc=utc_text(self.start_time.utc_ns(self._clock_ns())),
+        )
 
     def _change_state(self, state: State, detail: str) -> None:
         detail = encodable(detail)
@@ -452,18 +406,3 @@ def _size_changed(
         f"{name or 'the picture'} is {now[0]} × {now[1]} px, those before it were {was} px: "
         "give pictures of one size"
     )
-
-
-def refuse_unfit(calibration: Calibration, width_px: int, height_px: int, target: Target) -> None:
-    """Raise BadInput if ``calibration`` was made for another picture size or target."""
-    made_for = calibration.image_width_px, calibration.image_height_px
-    if made_for != (width_px, height_px):
-        raise BadInput(
-            f"calibration {calibration.id} is for pictures of {made_for[0]} × {made_for[1]} px, "
-            f"these are {width_px} × {height_px} px: calibrate this size or choose the other file"
-        )
-    if calibration.target is not target:
-        raise BadInput(
-            f"calibration {calibration.id} is for the target {calibration.target.value}, "
-            f"not {target.value}: choose the target or the calibration that fits"
-        )

@@ -17,8 +17,9 @@ from readout import __version__
 from readout.capture.source_name import source_name
 from readout.errors import NotNow, NotRecorded
 from readout.files.calibration_file import calibration_document
-from readout.instrument.instrument import SOURCE_CHANGED, Event, Instrument
+from readout.instrument.instrument import SOURCE_CHANGED, Instrument
 from readout.instrument.joining import Intervals, Joined
+from readout.instrument.values import Event
 from readout.logbook import Logbook, NewRun, Spread
 from readout.logbook.statements import STOPPED, UNWRITABLE
 from readout.model import Reading

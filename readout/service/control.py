@@ -13,7 +13,7 @@ from readout.capture.source_name import source_name
 from readout.errors import BadInput
 from readout.files.calibration_file import load_calibration
 from readout.instrument import Instrument, Optics, State
-from readout.instrument.instrument import refuse_unfit
+from readout.instrument.scale import refuse_unfit
 from readout.model import Target
 from readout.service.settings import Settings, SettingsStore
 

@@ -13,9 +13,9 @@ from readout.angle import Calibration, nominal_calibration
 from readout.capture.timebase import TimeBase
 from readout.errors import BadInput, NotNow, SourceLost
 from readout.instrument import Event, Instrument, Optics, State, Statistic, Zero
-from readout.instrument.instrument import refuse_unfit
 from readout.instrument.measuring import Measuring
 from readout.instrument.observer import Observer
+from readout.instrument.scale import refuse_unfit
 from readout.model import Quality, Reading, Target, no_sighting
 from tests.instrument.fakes import (
     HEIGHT_PX,
