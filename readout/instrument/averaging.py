@@ -32,6 +32,12 @@ HISTORY_S = 10.0, 180.0
 """Shortest and longest history that correlation is taken from."""
 MOST_VALUES = 500
 """A longer window is judged by means of neighbours: enough to see how it hangs together."""
+LONG = 5
+"""A steady history this many times as long as the window is believed rather than the window."""
+
+LOUDER = 3.0
+"""A window with this many times the variance of its history is believed rather than it."""
+
 STEP_SD = 6.0
 """A value this many standard deviations off was somewhere else: beyond chance for thousands."""
 
@@ -67,22 +73,29 @@ def standard_error(values: F64, history: F64 | None = None) -> float:
     """Standard error of the mean of an evenly spaced, possibly correlated series, shape (n,).
 
     ``history``: a longer series that ends with ``values``. Never below s / sqrt(n), that of
-    independent values, nor below what ``values`` show alone. NaN for fewer than two.
+    independent values. A history that goes on steadily for long tells the correlation better than
+    ``values`` can; a short one, or one much quieter than they are, only adds. NaN for fewer than
+    two values.
     """
     n = values.size
     if n < 2:
         return math.nan
-    alone = float(values.std(ddof=1)) / math.sqrt(n)
+    independent = float(values.std(ddof=1)) / math.sqrt(n)
     every = math.ceil(n / MOST_VALUES)
     values, n = _means_of(values, every), n // every
-    if n >= 8 and alone > 0.0:  # of fewer no correlation can be seen
+    alone = independent
+    if n >= 8 and independent > 0.0:  # of fewer no correlation can be seen
         alone = max(alone, math.sqrt(_variance_of_mean(values - values.mean(), n)))
     if history is None:
         return alone
     steady = _since_last_step(_means_of(history, every), n)
     if steady.size < max(2 * n, 16):
         return alone
-    return max(alone, math.sqrt(_variance_of_mean(_about_line(steady), n)))
+    about_line = _about_line(steady)
+    by_history = math.sqrt(_variance_of_mean(about_line, n))
+    if steady.size >= LONG * n and values.var() <= LOUDER * about_line.var():
+        return max(independent, by_history)
+    return max(alone, by_history)
 
 
 def _means_of(values: F64, every: int) -> F64:
