@@ -18,6 +18,9 @@ from numpy.typing import NDArray
 F64 = NDArray[np.float64]
 Pixels = NDArray[np.uint8] | NDArray[np.uint16]
 
+QUANTISATION_VAR = 1 / 12
+"""Variance of rounding to whole levels, in levels^2 (B. Widrow, IRE Trans. CT-3 (1956) 266)."""
+
 
 class Quality(Flag):
     """Why a frame, a sighting or a reading deserves less trust; no flag means none known.

@@ -7,9 +7,9 @@ from the frame before without a word. An MJPEG stream has a reader of its own.
 from __future__ import annotations
 
 import time
-from types import TracebackType
 from typing import Self
 
+from readout.capture.held_capture import HeldCapture
 from readout.capture.opencv import cv2
 from readout.capture.repeats import RepeatWatch
 from readout.capture.source_name import source_name
@@ -19,7 +19,7 @@ from readout.files.pictures import luminance
 from readout.model import Frame
 
 
-class StreamSource:
+class StreamSource(HeldCapture):
     """Frames of a network stream, stamped on arrival.
 
     The video library bounds each wait by the time set at opening; ``timeout_s`` of a read cannot
@@ -39,7 +39,6 @@ class StreamSource:
         """Nothing is opened yet."""
         self._url, self._name, self._clock = url, source_name(url), clock
         self._timeouts_ms = round(open_timeout_s * 1e3), round(read_timeout_s * 1e3)
-        self._capture: cv2.VideoCapture | None = None
         self._timebase = TimeBase(0, 0)
         self._repeats = RepeatWatch()
         self._seq = 0
@@ -56,16 +55,6 @@ class StreamSource:
         self._repeats, self._seq = RepeatWatch(), 0
         return self
 
-    def __exit__(
-        self,
-        exc_type: type[BaseException] | None,
-        exc: BaseException | None,
-        tb: TracebackType | None,
-    ) -> None:
-        if self._capture is not None:
-            self._capture.release()
-        self._capture = None
-
     def read(self, timeout_s: float) -> Frame:  # noqa: ARG002 (see the class)
         """The next frame; see `readout.capture.source.Source`."""
         if self._capture is None:
@@ -74,7 +63,7 @@ class StreamSource:
         t_mono_ns = self._clock()
         retrieved, picture = self._capture.retrieve() if grabbed else (False, None)
         if not retrieved or picture is None:
-            self.__exit__(None, None, None)
+            self._let_go()
             raise SourceLost(f"{self._name} gives no more frames: check the camera")
         pixels = luminance(picture)
         frame = Frame(

@@ -15,7 +15,6 @@ from __future__ import annotations
 import os
 import time
 from pathlib import Path
-from types import TracebackType
 from typing import Self
 
 import numpy as np
@@ -23,6 +22,7 @@ import numpy as np
 from readout.capture import v4l2
 from readout.capture.cameras import Camera, find_camera
 from readout.capture.damaged import blank
+from readout.capture.held_capture import HeldCapture
 from readout.capture.opencv import cv2, fourcc_text
 from readout.capture.repeats import RepeatWatch
 from readout.capture.timebase import Clock, TimeBase
@@ -60,7 +60,7 @@ def choose_mode(modes: list[v4l2.Mode]) -> v4l2.Mode | None:
     return None
 
 
-class UsbCamera:
+class UsbCamera(HeldCapture):
     """Frames of one camera, in grey.
 
     The stamp is the driver's own where it has one on the same clock (V4L2: when the picture began
@@ -85,7 +85,6 @@ class UsbCamera:
         """``which``: index, identity or device path. ``mode`` replaces our own choice."""
         self._which, self._mode, self._clock = str(which), mode, clock
         self._settle_ns = round(settle_s * 1e9)
-        self._capture: cv2.VideoCapture | None = None
         self._camera: Camera | None = None
         self._timebase = TimeBase(0, 0)
         self._repeats = RepeatWatch()
@@ -125,16 +124,6 @@ class UsbCamera:
         self._repeats, self._seq = RepeatWatch(), 0
         self._t_first_ns, self._t_last_ns = None, 0
         return self
-
-    def __exit__(
-        self,
-        exc_type: type[BaseException] | None,
-        exc: BaseException | None,
-        tb: TracebackType | None,
-    ) -> None:
-        if self._capture is not None:
-            self._capture.release()
-        self._capture = None
 
     def read(self, timeout_s: float) -> Frame:
         """The next frame; see `readout.capture.source.Source`."""
@@ -211,7 +200,7 @@ class UsbCamera:
 
     def _lost(self) -> SourceLost:
         """Close what has failed: it would go on giving old frames or none."""
-        self.__exit__(None, None, None)
+        self._let_go()
         return SourceLost(f"camera {self._which} gives no more frames: check plug and cable")
 
     def _pixels(self, picture: np.ndarray) -> tuple[Pixels, int, Quality]:

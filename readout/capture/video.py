@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 from pathlib import Path
-from types import TracebackType
 from typing import Self
 
 import numpy as np
 
 from readout.capture.damaged import blank
+from readout.capture.held_capture import HeldCapture
 from readout.capture.opencv import cv2, fourcc_text
 from readout.errors import BadInput, SourceEnded, SourceLost
 from readout.files.pictures import decode_jpeg, luminance
@@ -19,7 +19,7 @@ _MOTION_JPEG = "MJPG"
 _LUMINANCE_FIRST = ("Y800", "I420", "Y42B", "444P", "NV12", "Y1\0\x10")
 
 
-class VideoSource:
+class VideoSource(HeldCapture):
     """Every frame of a video file once, at the reader's pace; none is skipped.
 
     Luminance is taken as it is stored: from motion JPEG by decoding each picture alone (a damaged
@@ -35,7 +35,6 @@ class VideoSource:
     def __init__(self, path: Path | str) -> None:
         """Nothing is opened yet."""
         self._path = Path(path)
-        self._capture: cv2.VideoCapture | None = None
         self._packets = False
         self._seq = 0
         self._t_first_ns: int | None = None
@@ -54,16 +53,6 @@ class VideoSource:
             self._capture.set(cv2.CAP_PROP_CONVERT_RGB, 0)
         self._seq, self._t_first_ns, self._t_last_ns = 0, None, 0
         return self
-
-    def __exit__(
-        self,
-        exc_type: type[BaseException] | None,
-        exc: BaseException | None,
-        tb: TracebackType | None,
-    ) -> None:
-        if self._capture is not None:
-            self._capture.release()
-        self._capture = None
 
     def read(self, timeout_s: float) -> Frame:  # noqa: ARG002 (a frame is there or is not)
         """The next frame; see `readout.capture.source.Source`."""

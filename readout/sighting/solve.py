@@ -18,11 +18,10 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from readout.least_squares import linear_least_squares
-from readout.model import F64
+from readout.model import F64, QUANTISATION_VAR
 from readout.sighting.fold import Fold
 from readout.sighting.profile import full_width_at_half_maximum, line_profile
 
-QUANTISATION_VAR = 1 / 12
 MOST_STEPS = 4
 SETTLED = 0.02
 """pixels by which width, blur and line may still change in the step before the weighted one"""

@@ -13,9 +13,9 @@ from typing import Final
 
 import numpy as np
 
-from readout.model import F64
+from readout.model import F64, QUANTISATION_VAR
 from readout.simulation.crosshair import Crosshair, arm_shares
-from readout.simulation.sensor import QUANTISATION_VAR, Sensor
+from readout.simulation.sensor import Sensor
 
 LEAST_INFORMATION: Final = 1e-10
 """Below this part of its largest possible value, information is rounding of the differences."""

@@ -20,9 +20,6 @@ from readout.model import F64, Pixels
 
 F32 = NDArray[np.float32]
 
-QUANTISATION_VAR = 1.0 / 12.0
-"""Variance of rounding to whole levels, in levels^2 (B. Widrow, IRE Trans. CT-3 (1956) 266)."""
-
 
 @dataclass(frozen=True, slots=True)
 class Sensor:
