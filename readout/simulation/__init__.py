@@ -1,7 +1,7 @@
 """Mirror motion, optics and sensor: frames whose truth is known."""
 
 from readout.simulation.autocollimator import Autocollimator
-from readout.simulation.bound import cramer_rao_cov, crossing_bound_cov
+from readout.simulation.bound import crossing_bound_cov
 from readout.simulation.crosshair import Crosshair, crosshair_image
 from readout.simulation.frames import SimulatedFrames, Truth, simulate_frames, truth_at
 from readout.simulation.live import LiveRenderer
@@ -17,7 +17,6 @@ __all__ = [
     "Sensor",
     "SimulatedFrames",
     "Truth",
-    "cramer_rao_cov",
     "crosshair_image",
     "crossing_bound_cov",
     "expose",

@@ -1,30 +1,31 @@
 """The image of the reticle on the sensor, before noise.
 
-Two bars of one width cross at right angles; their union (light through two slits, or two opaque
-threads) is blurred by a Gaussian and integrated over each pixel. Blurred by an isotropic
-Gaussian, the union stays exact: bar_u + bar_v - bar_u bar_v, for the Gaussian separates along the
-turned axes u and v. The integral over the pixel is a Gauss-Legendre product rule, independent of
-anything the fit does.
+Two bars cross; their union (light through two slits, or two opaque threads) is blurred by a
+Gaussian and integrated over each pixel. What is rendered is
+
+    background + contrast (upright + level - both),
+
+each share being the pixel's mean of a blurred bar, and ``both`` that of the product of the two
+blurred cross-sections, bar_u(u) bar_v(v), u and v being the distances from the two middle lines;
+where a gap is narrower than the lines, the gap is taken out of either cross-section.
+
+For arms at right angles with one blur this is exactly the blurred union, for the Gaussian
+separates along the turned axes u and v. For arms out of square, or of different blur, it is the
+definition of the picture: the blurred parallelogram itself would be a bivariate normal integral,
+which differs from the product by less than skew / 2 pi of the contrast, in the crossing alone.
+The picture is symmetric about the crossing in all cases, so that its place is not in doubt. Every
+pixel is exact to 1e-6 of the contrast for a blur of 0.3 px and more.
 """
 
 from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import Final
 
 import numpy as np
-from scipy.special import ndtr
 
 from readout.model import F64
-
-TAIL_SIGMAS: Final = 7.0
-"""A blurred edge is complete to 1e-12 this many sigmas away; nothing is computed beyond."""
-
-LEAST_BLUR_PX: Final = 0.3
-"""No lens and pixel is sharper than this; a sharper edge would need a finer rule."""
-
-HALF_DIAGONAL_PX: Final = math.sqrt(0.5)
+from readout.simulation.bar import Bar, bar, pixel_means
 
 
 @dataclass(frozen=True, slots=True)
@@ -34,6 +35,9 @@ class Crosshair:
     ``contrast`` is added to ``background`` where an arm is fully bright, negative for a dark arm.
     ``blur_px``: standard deviation of the Gaussian. ``rotation_deg`` positive clockwise on screen.
     ``half_length_px``: an arm reaches this far either side of the crossing (infinite by default).
+    ``gap_px``: an arm is missing within this distance of the crossing. ``skew_deg``: extra turn of
+    the level arm. The level arm shares ``line_px``, ``blur_px`` and ``contrast`` unless its own are
+    given; where the arms cross, the stronger contrast holds.
     """
 
     line_px: float = 5.0
@@ -42,33 +46,54 @@ class Crosshair:
     background: float = 800.0
     contrast: float = 7000.0
     half_length_px: float = math.inf
+    gap_px: float = 0.0
+    skew_deg: float = 0.0
+    level_line_px: float | None = None
+    level_blur_px: float | None = None
+    level_contrast: float | None = None
 
     def __post_init__(self) -> None:
-        if not (self.line_px > 0 and self.blur_px > 0 and self.half_length_px > 0):
-            raise ValueError(
-                "line width, blur and arm length must be positive, got "
-                f"{self.line_px=} {self.blur_px=} {self.half_length_px=}"
-            )
+        widths = (self.line_px, self.blur_px, self.half_length_px)
+        own = (width for width in (self.level_line_px, self.level_blur_px) if width is not None)
+        if not min(*widths, *own) > 0:
+            raise ValueError(f"line width, blur and arm length must be positive, got {self}")
+        if not 0 <= self.gap_px < self.half_length_px:
+            raise ValueError(f"the gap must be shorter than the arms, got {self}")
 
+    @property
+    def upright(self) -> Bar:
+        """The upright arm."""
+        return Bar(
+            self.line_px / 2,
+            self.blur_px,
+            math.radians(self.rotation_deg),
+            self.half_length_px,
+            self.gap_px,
+        )
 
-def bar(u: F64, half_width_px: float, blur_px: float) -> F64:
-    """Share of full brightness at distance ``u`` from the middle of a blurred bar, any shape."""
-    return np.asarray(ndtr((u + half_width_px) / blur_px) - ndtr((u - half_width_px) / blur_px))
+    @property
+    def level(self) -> Bar:
+        """The level arm."""
+        return Bar(
+            (self.level_line_px or self.line_px) / 2,
+            self.level_blur_px or self.blur_px,
+            math.radians(self.rotation_deg + self.skew_deg + 90),
+            self.half_length_px,
+            self.gap_px,
+        )
 
+    @property
+    def plain(self) -> bool:
+        """True for two like arms at right angles, without ends and gap."""
+        own = (self.level_line_px, self.level_blur_px, self.level_contrast)
+        return self.upright.endless and self.skew_deg == 0 and own == (None, None, None)
 
-def pixel_nodes(order: int) -> list[tuple[float, float, float]]:
-    """Product Gauss-Legendre rule of the unit square about 0: (dx, dy, weight), weights sum 1."""
-    nodes, weights = np.polynomial.legendre.leggauss(order)
-    return [
-        (float(dx) / 2, float(dy) / 2, float(wx * wy) / 4)
-        for dy, wy in zip(nodes, weights, strict=True)
-        for dx, wx in zip(nodes, weights, strict=True)
-    ]
-
-
-def _order_for(blur_px: float) -> int:
-    """Nodes that leave 5e-7: the derivatives of an edge grow as the blur shrinks."""
-    return 4 if blur_px >= 0.6 else 6
+    @property
+    def contrasts(self) -> tuple[float, float, float]:
+        """Of the upright arm, of the level arm, and what is counted twice where they cross."""
+        up = self.contrast
+        level = up if self.level_contrast is None else self.level_contrast
+        return up, level, min(up, level, key=abs)
 
 
 def crosshair_image(
@@ -79,81 +104,46 @@ def crosshair_image(
     *,
     first_row: int = 0,
     first_column: int = 0,
-    order: int | None = None,
 ) -> F64:
     """Expected level of each pixel, shape ``shape`` = (height, width).
 
     ``x_px, y_px``: the crossing, pixel centres at integers. ``first_row, first_column``: the place
-    of the rendered rectangle in the whole picture. ``order``: Gauss-Legendre nodes per pixel side;
-    by itself as many as make every pixel exact to 1e-6 of the contrast, for a blur of 0.3 px and
-    more. Only pixels an arm can reach are computed: a whole picture costs little more than its
-    arms.
+    of the rendered rectangle in the whole picture. Only pixels an arm can reach are computed: a
+    whole picture costs little more than its arms.
     """
-    upright, level, both = arm_shares(
-        shape, x_px, y_px, crosshair, first_row=first_row, first_column=first_column, order=order
+    rows = first_row + np.arange(shape[0], dtype=np.float64) - y_px
+    columns = first_column + np.arange(shape[1], dtype=np.float64) - x_px
+    up, level, both = arm_shares(columns, rows, crosshair.upright, crosshair.level)
+    of_up, of_level, of_both = crosshair.contrasts
+    return crosshair.background + of_up * up + of_level * level - of_both * both
+
+
+def arm_shares(columns: F64, rows: F64, up: Bar, level: Bar) -> tuple[F64, F64, F64]:
+    """Pixel means of the upright arm, of the level arm and of what both cover, (rows, columns).
+
+    ``columns`` and ``rows``: the sides of the grid of pixel centres, seen from the crossing.
+    """
+    images = np.zeros((3, rows.size, columns.size))
+    for image, arm in zip(images, (up, level), strict=False):
+        row, column = arm.near(columns, rows)
+        image[row, column] = arm.means(columns[column], rows[row])
+
+    row, column = up.near(columns, rows)
+    x, y = columns[column], rows[row]
+    crossed = np.abs(level.across(x, y)) < level.reach_px
+
+    def both_at(x: F64, y: F64) -> F64:
+        return _inner(up, up.across(x, y)) * _inner(level, level.across(x, y))
+
+    least_blur_px = min(up.blur_px, level.blur_px)
+    images[2][row[crossed], column[crossed]] = pixel_means(
+        both_at, x[crossed], y[crossed], least_blur_px
     )
-    return crosshair.background + crosshair.contrast * (upright + level - both)
-
-
-def arm_shares(
-    shape: tuple[int, int],
-    x_px: float,
-    y_px: float,
-    crosshair: Crosshair,
-    *,
-    level_rotation_deg: float | None = None,
-    level_line_px: float | None = None,
-    level_blur_px: float | None = None,
-    first_row: int = 0,
-    first_column: int = 0,
-    order: int | None = None,
-) -> tuple[F64, F64, F64]:
-    """Pixel means of the upright arm, the level arm and their product, each of ``shape``.
-
-    The level arm shares the crosshair's turn, width and blur unless its own are given. With arms
-    out of square the blurred product is an approximation, good to first order in the angle.
-    """
-    rows = (first_row + np.arange(shape[0], dtype=np.float64) - y_px)[:, None]
-    columns = (first_column + np.arange(shape[1], dtype=np.float64) - x_px)[None, :]
-    up_turn = math.radians(crosshair.rotation_deg)
-    level_turn = up_turn if level_rotation_deg is None else math.radians(level_rotation_deg)
-    up_blur, reach = crosshair.blur_px, crosshair.half_length_px
-    level_blur = up_blur if level_blur_px is None else level_blur_px
-    up_half = crosshair.line_px / 2
-    level_half = up_half if level_line_px is None else level_line_px / 2
-    nodes = pixel_nodes(order or _order_for(min(up_blur, level_blur)))
-
-    def upright_at(x: F64, y: F64) -> F64:
-        across = math.cos(up_turn) * x + math.sin(up_turn) * y
-        share = bar(across, up_half, up_blur)
-        if math.isfinite(reach):
-            share = share * bar(math.cos(up_turn) * y - math.sin(up_turn) * x, reach, up_blur)
-        return share
-
-    def level_at(x: F64, y: F64) -> F64:
-        across = math.cos(level_turn) * y - math.sin(level_turn) * x
-        share = bar(across, level_half, level_blur)
-        if math.isfinite(reach):
-            along = math.cos(level_turn) * x + math.sin(level_turn) * y
-            share = share * bar(along, reach, level_blur)
-        return share
-
-    up_across = math.cos(up_turn) * columns + math.sin(up_turn) * rows
-    level_across = math.cos(level_turn) * rows - math.sin(level_turn) * columns
-    near_up = np.abs(up_across) < up_half + TAIL_SIGMAS * up_blur + HALF_DIAGONAL_PX
-    near_level = np.abs(level_across) < level_half + TAIL_SIGMAS * level_blur + HALF_DIAGONAL_PX
-    images = []
-    for near, share_at in (
-        (near_up, upright_at),
-        (near_level, level_at),
-        (near_up & near_level, lambda x, y: upright_at(x, y) * level_at(x, y)),
-    ):
-        row, column = np.nonzero(near)
-        x, y = columns[0, column], rows[row, 0]
-        mean = np.zeros(x.size)
-        for dx, dy, weight in nodes:
-            mean += weight * share_at(x + dx, y + dy)
-        image = np.zeros(shape)
-        image[row, column] = mean
-        images.append(image)
     return images[0], images[1], images[2]
+
+
+def _inner(arm: Bar, across: F64) -> F64:
+    """Cross-section of an arm without the other one's gap."""
+    half = min(arm.half_width_px, arm.half_length_px)
+    whole = bar(across, half, arm.blur_px)
+    return whole - bar(across, min(arm.gap_px, half), arm.blur_px) if arm.gap_px > 0 else whole

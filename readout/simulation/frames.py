@@ -11,7 +11,8 @@ from readout.angle import Calibration, Mounting
 from readout.errors import BadInput
 from readout.model import Pixels
 from readout.simulation.autocollimator import NO_DATE_UTC, Autocollimator
-from readout.simulation.crosshair import LEAST_BLUR_PX, Crosshair
+from readout.simulation.bar import LEAST_BLUR_PX
+from readout.simulation.crosshair import Crosshair
 from readout.simulation.motion import Motion
 from readout.simulation.sensor import Sensor, expose
 

@@ -21,7 +21,7 @@ from numpy.typing import NDArray
 
 from readout.model import Pixels
 from readout.simulation.autocollimator import Autocollimator
-from readout.simulation.crosshair import HALF_DIAGONAL_PX, bar, pixel_nodes
+from readout.simulation.bar import HALF_DIAGONAL_PX, bar, pixel_nodes
 from readout.simulation.sensor import F32, NoiseBank
 
 TABLE_STEPS_PER_PX: Final = 64
@@ -32,13 +32,16 @@ STRIP_SIGMAS: Final = 4.5
 class LiveRenderer:
     """Renders frames of one instrument; deterministic for the generators given.
 
-    Raises ValueError for arms of finite length and for a crosshair turned by more than 45°.
+    Raises ValueError for a crosshair that is not plain (unlike arms, a gap, ends, out of square)
+    or turned by more than 45°.
     """
 
     def __init__(self, autocollimator: Autocollimator, rng: np.random.Generator) -> None:
         picture, sensor = autocollimator.picture_of_reticle, autocollimator.sensor
-        if math.isfinite(picture.half_length_px) or abs(picture.rotation_deg) > 45:
-            raise ValueError("live frames have arms across the picture, turned by 45° at most")
+        if not picture.plain or abs(picture.rotation_deg) > 45:
+            raise ValueError(
+                "live frames have plain arms across the picture, turned by 45° at most"
+            )
         self._sensor = sensor
         self._height, self._width = autocollimator.shape
         self._ground = NoiseBank.normal(autocollimator.shape, rng).digitised(

@@ -9,13 +9,8 @@ import numpy as np
 import pytest
 from scipy.special import ndtr
 
-from readout.simulation import (
-    Crosshair,
-    Sensor,
-    cramer_rao_cov,
-    crosshair_image,
-    crossing_bound_cov,
-)
+from readout.sighting.bound import cramer_rao_cov
+from readout.simulation import Crosshair, Sensor, crosshair_image, crossing_bound_cov
 
 NO_ROUNDING = Sensor(16, gain_levels_per_electron=1e3, read_noise_electrons=0.0)
 

@@ -10,7 +10,7 @@ from scipy.integrate import dblquad
 from scipy.ndimage import gaussian_filter
 
 from readout.simulation import Crosshair, crosshair_image
-from readout.simulation.crosshair import LEAST_BLUR_PX
+from readout.simulation.bar import LEAST_BLUR_PX
 
 BARE = {"background": 0.0, "contrast": 1.0}
 
