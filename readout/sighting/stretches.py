@@ -1,0 +1,105 @@
+"""Sums along short straight stretches of every slope, from a picture averaged to a small one.
+
+The approximate discrete Radon transform (M. L. Brady, SIAM J. Comput. 27 (1998) 107), stopped
+after a few doublings: two stretches of half the length, the second one moved sideways, make one of
+the whole length, so that all slopes together cost little more than a few sums of the picture. A
+line turned by anything up to 45 degrees then lies along one of the stretches in each band.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+import cv2
+import numpy as np
+from numpy.typing import NDArray
+
+from readout.model import Pixels
+
+F32 = NDArray[np.float32]
+
+LARGEST_AREA_PX2 = 90_000
+"""the picture is halved until no more pixels than this are left"""
+DOUBLINGS = 3
+"""a stretch is 2^3 averaged rows long, where the picture has the rows"""
+LEAST_BANDS = 6
+
+
+@dataclass(frozen=True, slots=True)
+class Stretches:
+    """``sums``: (slopes, bands, columns), of ``rows`` averaged rows each.
+
+    Slope k stands for ``shifts[k]`` columns from the first to the last row of a band; the middle of
+    the stretch at column c is ``c + shifts[k] % 2 / 2``.
+    """
+
+    sums: F32
+    shifts: NDArray[np.intp]
+    rows: int
+
+    @property
+    def slopes(self) -> NDArray[np.float64]:
+        """Columns a row."""
+        return np.asarray(self.shifts / max(1, self.rows - 1))
+
+
+def averaged(pixels: Pixels) -> tuple[F32, int]:
+    """The picture with each step x step pixels averaged to one, and the step, a power of 2.
+
+    Rows and columns that do not fill a step are filled up with their neighbours.
+    """
+    step = 1
+    while pixels.size > LARGEST_AREA_PX2 * step**2:
+        step *= 2
+    small: F32 = pixels.astype(np.float32)
+    height, width = pixels.shape
+    below, right = -height % step, -width % step
+    if below or right:
+        small = np.asarray(
+            cv2.copyMakeBorder(small, 0, below, 0, right, cv2.BORDER_REPLICATE), dtype=np.float32
+        )
+    for _ in range(step.bit_length() - 1):
+        size = (small.shape[1] // 2, small.shape[0] // 2)
+        small = np.asarray(cv2.resize(small, size, interpolation=cv2.INTER_AREA), dtype=np.float32)
+    return small, step
+
+
+def stretches_of(small: F32) -> Stretches | None:
+    """Sums along the stretches of each band of rows; None where there are too few rows."""
+    doublings = min(DOUBLINGS, int(math.log2(max(1, small.shape[0] // LEAST_BANDS))))
+    if doublings < 1:
+        return None
+    rows = 2**doublings
+    bands, columns = small.shape[0] // rows, small.shape[1]
+    pad = rows // 2
+    wide = columns + 2 * pad
+    sums = np.empty((1, bands * rows, wide), dtype=np.float32)
+    sums[0, :, pad:-pad] = small[: bands * rows]
+    sums[0, :, :pad] = sums[0, :, pad : pad + 1]
+    sums[0, :, -pad:] = sums[0, :, -pad - 1 : -pad]
+    for doubling in range(1, doublings + 1):
+        sums = _doubled(sums, 2**doubling - 1)
+    shifts = np.arange(1 - rows, rows)
+    centred = np.empty((shifts.size, bands, columns), dtype=np.float32)
+    for k, shift in enumerate(shifts):
+        first = pad - shift // 2
+        centred[k] = sums[k, :, first : first + columns]
+    return Stretches(centred, shifts, rows)
+
+
+def _doubled(halves: F32, largest: int) -> F32:
+    """Stretches of twice the rows, shifted by -largest to largest; column: that of the top row."""
+    middle = len(halves) // 2
+    whole = np.zeros((2 * largest + 1, halves.shape[1] // 2, halves.shape[2]), dtype=np.float32)
+    for shift in range(-largest, largest + 1):
+        half = abs(shift) // 2
+        move = abs(shift) - half
+        of_half = halves[middle + half if shift > 0 else middle - half]
+        top, bottom, out = of_half[0::2], of_half[1::2], whole[largest + shift]
+        end = halves.shape[2] - move
+        if shift >= 0:
+            np.add(top[:, :end], bottom[:, move:], out=out[:, :end])
+        else:
+            np.add(top[:, move:], bottom[:, :end], out=out[:, move:])
+    return whole
