@@ -68,7 +68,7 @@ def level_distribution(electrons: float, sensor: Sensor) -> F64:
 
 
 def expose_on(electrons: F64, ground: UniformGround, rng: np.random.Generator) -> Pixels:
-    """As ``expose`` on the ground's sensor, for ``electrons`` that are the ground in most pixels."""
+    """As ``expose`` on the ground's sensor; fast where most of ``electrons`` are the ground."""
     pixels = ground.draw((electrons.shape[0], electrons.shape[1]), rng)
     lit = np.nonzero(electrons != ground.electrons)
     pixels[lit] = expose(electrons[lit], ground.sensor, rng)

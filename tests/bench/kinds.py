@@ -16,7 +16,7 @@ from functools import lru_cache
 import numpy as np
 
 from readout.model import F64, Pixels
-from readout.simulation import Crosshair, Sensor, crosshair_image, crossing_bound_cov, expose
+from readout.simulation import Crosshair, Sensor, crosshair_image, crossing_bound_cov
 from readout.simulation.ground import UniformGround, expose_on
 
 SHAPE = (480, 640)
@@ -70,10 +70,9 @@ class Kind:
         x, y = self.truth(seed, k)
         rng = np.random.default_rng((seed, self._number, k))
         electrons = crosshair_image(SHAPE, x, y, self.crosshair)
-        if self.light is None:
-            pixels = expose_on(electrons, _ground(self.crosshair.background, self.sensor), rng)
-        else:
-            pixels = expose(self.light(electrons, x, y, seed), self.sensor, rng)
+        if self.light is not None:
+            electrons = self.light(electrons, x, y, seed)
+        pixels = expose_on(electrons, _ground(self.crosshair.background, self.sensor), rng)
         if self.finish is not None:
             pixels = self.finish(pixels)
         full_scale = self.sensor.full_scale if pixels.dtype == np.uint16 else 255
@@ -121,4 +120,3 @@ LIMIT: dict[str, Kind] = {
     for kind in [Kind(f"{name}, {sensor.bits} bit", crosshair, sensor, ratio)]
 }
 COARSE_KIND = Kind("8 bit, dark noise 0.2 step", replace(REFERENCE, background=40.0), COARSE)
-KINDS: dict[str, Kind] = {**LIMIT, COARSE_KIND.name: COARSE_KIND}

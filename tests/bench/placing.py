@@ -9,8 +9,10 @@ import numpy as np
 
 from readout.model import F64, Quality
 from readout.sighting import locate
-from tests.bench.kinds import KINDS
+from tests.bench.kinds import COARSE_KIND, LIMIT, Kind
+from tests.bench.real import REAL
 
+KINDS: dict[str, Kind] = {**LIMIT, COARSE_KIND.name: COARSE_KIND, **REAL}
 GROSS_PX = 0.1
 CHUNK = 100
 

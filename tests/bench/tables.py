@@ -3,12 +3,18 @@
 from __future__ import annotations
 
 import math
+from collections import Counter
+from collections.abc import Iterable
+from itertools import chain
 
 import numpy as np
 
 from readout.model import F64
+from tests.bench.gross import Tally, upper_limit
 from tests.bench.kinds import Kind
+from tests.bench.phases import PHASES, QUIET_LIGHT, PhaseErrors
 from tests.bench.placing import Placed
+from tests.bench.rivals import Timed
 
 PLACING_HEAD = (
     "kind", "seed", "frames", "rms/bound x", "rms/bound y", "rms x µpx", "rms y µpx",
@@ -48,7 +54,10 @@ def placing_row(kind: Kind, seed: str, placed: Placed) -> tuple[str, ...]:
         *start,
         *ratio,
         *(f"{1e6 * value:.0f} ±{1e6 * se:.0f}" for value, se in rms),
-        *(f"{1e6 * value:+.0f} ±{1e6 * s:.0f}" for value, s in zip(error.mean(axis=0), se)),
+        *(
+            f"{1e6 * value:+.0f} ±{1e6 * s:.0f}"
+            for value, s in zip(error.mean(axis=0), se, strict=True)
+        ),
         *within(placed),
         *counts,
     )
@@ -69,16 +78,88 @@ def honesty_row(placed: Placed) -> tuple[str, ...]:
     return ("all with a bound", "all", n, *([""] * 6), *within(placed), "", "", "")
 
 
+PHASES_HEAD = (
+    "bias over 32 phases",
+    "light",
+    "frames",
+    "largest x µpx",
+    "largest y µpx",
+    "se",
+    "lost",
+)
+
+
+def phases_row(name: str, frames: int, errors: PhaseErrors, *, quiet: bool) -> tuple[str, ...]:
+    """The largest mean error at any phase of either axis, and the usual error of such a mean."""
+    largest = 1e6 * np.abs(errors.mean_px).max(axis=0)
+    return (
+        name,
+        f"x{QUIET_LIGHT:.0f}" if quiet else "x1",
+        f"{PHASES * frames}",
+        *(f"{value:.0f}" for value in largest),
+        f"±{1e6 * float(np.median(errors.se_px)):.0f}",
+        str(errors.lost),
+    )
+
+
+GROSS_HEAD = ("mixed frames", "frames", "good", "flagged", "no position", "gross unsaid", "at most")
+
+
+def gross_rows(tally: Tally) -> list[tuple[str, ...]]:
+    """A row a sort, and all together with the upper limit of the share of gross errors."""
+    sorts = sorted({sort for sort, _ in tally})
+    rows = [
+        (sort, {outcome: n for (of, outcome), n in tally.items() if of == sort}) for sort in sorts
+    ]
+    whole: Counter[str] = Counter()
+    for _, counts in rows:
+        whole.update(counts)
+    return [
+        (
+            sort,
+            str(sum(counts.values())),
+            *(str(counts.get(outcome, 0)) for outcome in ("good", "flagged", "none", "gross")),
+            f"{100 * upper_limit(counts.get('gross', 0), sum(counts.values())):.3f} %",
+        )
+        for sort, counts in [*rows, ("all", dict(whole))]
+    ]
+
+
+TIME_HEAD = (
+    "1280x720, 8 bit, one core",
+    "turned",
+    "frames",
+    "ms least",
+    "ms median",
+    "rms x µpx",
+    "rms y µpx",
+)
+
+
+def time_row(turn_deg: float, row: Timed) -> tuple[str, ...]:
+    n = len(row.ms)
+    known = row.error_px[np.isfinite(row.error_px).all(axis=1)]
+    rms = ["", ""]
+    if known.size:
+        rms = [f"{1e6 * value:.0f} ±{1e6 * se:.0f}" for value, se in map(rms_of, known.T)]
+    return (row.name, f"{turn_deg:g}°", str(n), f"{row.ms[0]:.2f}", f"{row.ms[n // 2]:.2f}", *rms)
+
+
 def print_table(
-    head: tuple[str, ...] | None, rows: list[tuple[str, ...]], *, markdown: bool = False
+    head: tuple[str, ...], rows: Iterable[tuple[str, ...]], *, markdown: bool = False
 ) -> None:
-    """A table in fixed columns, or as Markdown."""
+    """A table as its rows come, in columns or as Markdown."""
+    widths = [max(len(text), 13) for text in head]
+    widths[0] = 44
     if markdown:
-        for row in (head or (), ["---"] * len(head or ()), *rows):
-            print("| " + " | ".join(row) + " |")
-        return
-    widths = (28, 4, 6, 13, 13, 12, 12, 12, 12, 11, 11, 7, 6, 6)
-    for row in ([head] if head else []) + rows:
-        first, *others = row
-        cells = [text.rjust(width) for text, width in zip(others, widths[1:], strict=True)]
-        print(first.ljust(widths[0]), *cells, flush=True)
+        print("\n| " + " | ".join(head) + " |\n|" + "---|" * len(head))
+    else:
+        print()
+        rows = chain([head], rows)
+    for row in rows:
+        if markdown:
+            print("| " + " | ".join(row) + " |", flush=True)
+        else:
+            first, *others = row
+            cells = [text.rjust(width) for text, width in zip(others, widths[1:], strict=True)]
+            print(first.ljust(widths[0]), *cells, flush=True)
