@@ -89,13 +89,16 @@ class Arm:
     ``angle_deg``: turn of the arm from its nominal direction (upright arm: picture vertical,
     level arm: picture +x), positive clockwise on screen. ``width_px``: full width at half
     maximum across the arm. ``contrast``: peak minus background, in levels, negative for a dark
-    arm on a bright ground. ``background`` in levels.
+    arm on a bright ground. ``background`` in levels. ``line_px``, ``blur_px``: width of the line
+    before the blur, and the blur's standard deviation; of a thin line only both together are known.
     """
 
     angle_deg: float
     width_px: float
     contrast: float
     background: float
+    line_px: float = math.nan
+    blur_px: float = math.nan
 
 
 @dataclass(frozen=True, slots=True)

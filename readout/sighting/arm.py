@@ -1,4 +1,7 @@
-"""One arm: cut a strip along it, solve, cut anew along the better line until it rests."""
+"""One arm: cut a strip along it, solve, cut anew along the better line until it rests.
+
+Then it is looked at piece by piece, and fitted again without what is found wrong with it.
+"""
 
 from __future__ import annotations
 
@@ -6,37 +9,43 @@ import math
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
 from readout.model import F64, Pixels
-from readout.sighting.fold import Line, Strip, cut_strip, fold_strip
-from readout.sighting.scatter import excess_variance
+from readout.sighting.fold import Line, cut_strip, fold_strip
+from readout.sighting.look import Look
+from readout.sighting.profile import half_maximum
 from readout.sighting.solve import Shape, Solution, solve_fold
 
 CUTS = 6
-SETTLED_PX = 0.01
-SMOOTHED_ROWS = 15
-LIT = 0.4
-"""an arm ends where its height falls below this share of its best"""
+RESTS_SHIFT_PX = 0.5
+RESTS_TURN_PX = 0.1
+"""a line that moves less than this, in the middle and at its ends, needs no new strip"""
+ROUNDS = 4
+"""times an uneven or spoilt arm is looked at anew"""
 
 
 @dataclass(frozen=True, slots=True)
 class ArmFit:
     """A fitted arm: its line, the covariance of (middle_x, slope), its shape, and how it fits.
 
+    ``width_px``: full width at half maximum across the arm; ``peak_contrast``: its height, levels.
     ``explained``: share of the folded profile's variance that the model explains. ``pixel_sd``:
     typical noise of a pixel, levels. ``excess``: factor on the covariance for what the pixels'
-    noise does not explain. ``rows``: rows used.
+    noise does not explain. ``rows``: rows in which the arm is there. ``clipped``: share of the
+    strip's pixels at full scale; ``peak``: the brightest.
     """
 
     line: Line
     cov: F64
     shape: Shape
+    width_px: float
+    peak_contrast: float
     explained: float
     pixel_sd: float
     excess: float
-    rows: int
-    strip: Strip
+    rows: float
+    clipped: float
+    peak: float
 
     def x_var_at(self, y: float) -> float:
         """Variance of the line's x at row ``y``, px^2."""
@@ -49,64 +58,62 @@ def fit_arm(
     line: Line,
     shape: Shape,
     *,
+    full_scale: float = math.inf,
     skip_from: float = math.inf,
     skip_to: float = -math.inf,
 ) -> ArmFit | None:
     """Fit an upright arm near ``line``; for a level one pass the transposed picture.
 
-    ``shape`` is a rough start. Rows from ``skip_from`` to ``skip_to`` are left out. Returns None
-    where no arm can be fitted: never raises on a bad picture.
+    ``shape`` is a rough start. Pixels at ``full_scale`` say nothing. Rows from ``skip_from`` to
+    ``skip_to`` are left out. Returns None where no arm can be fitted: never raises on a bad
+    picture.
     """
-    fit = None
+    look = None
     for _ in range(CUTS):
-        half_columns = math.ceil(1.25 * shape.reach_px + 2)
+        half_columns = math.ceil((1.25 * shape.reach_px + 2) / line.cosine)
         strip = cut_strip(pixels, line, half_columns, skip_from=skip_from, skip_to=skip_to)
-        strip = None if strip is None else _lit(strip, shape)
         if strip is None:
             return None
-        fold = fold_strip(strip)
-        solution = solve_fold(fold, strip.line.cosine, shape)
+        fold = fold_strip(strip, strip.levels, np.ones(len(strip.rows)))
+        solution = solve_fold(fold, strip.line.cosine, shape, strip.depth)
         if solution is None or abs(solution.shift) > half_columns:
             return None
-        settled = abs(solution.shift) + abs(solution.turn) * np.abs(strip.along).max() < SETTLED_PX
-        excess = excess_variance(strip, fold, solution) if settled else 1.0
-        fit = _improved(strip, solution, excess)
-        line, shape = fit.line, solution.shape
-        if settled:
+        look = Look.at_first(strip, fold, solution, strip.brightest >= full_scale)
+        line, shape = _moved(strip.line, solution), solution.shape
+        ends = abs(solution.turn) * float(np.abs(strip.along).max())
+        if abs(solution.shift) < RESTS_SHIFT_PX and ends < RESTS_TURN_PX:
             break
-    return fit
+    return None if look is None else _looked_at(look)
 
 
-def _improved(strip: Strip, solution: Solution, excess: float) -> ArmFit:
-    old = strip.line
+def _moved(line: Line, solution: Solution) -> Line:
+    return Line(line.middle_x + solution.shift, line.slope + solution.turn, line.middle_y)
+
+
+def _looked_at(look: Look) -> ArmFit:
+    """The arm's fit, improved as long as something is found to improve."""
+    strip = look.strip
+    clipped = float(np.mean(look.clipped))
+    for rounds_left in range(ROUNDS, -1, -1):
+        residual = look.residual()
+        sections = look.sections(residual)
+        better = look.improved(residual, sections) if sections and rounds_left else None
+        if better is None:
+            break
+        look = better
+    solution, shape = look.solution, look.solution.shape
+    excess = 1.0 if sections is None else sections.excess_variance
+    width_px, height = half_maximum(shape.half_width, shape.blur)
     return ArmFit(
-        line=Line(old.middle_x + solution.shift, old.slope + solution.turn, old.middle_y),
+        line=_moved(look.strip.line, solution),
         cov=solution.cov * excess,
-        shape=solution.shape,
+        shape=shape,
+        width_px=width_px,
+        peak_contrast=shape.contrast * height,
         explained=solution.explained,
-        pixel_sd=solution.pixel_sd,
+        pixel_sd=solution.slice_sd * math.sqrt(strip.depth),
         excess=excess,
-        rows=len(strip.rows),
-        strip=strip,
+        rows=float(len(look.strip.rows) * strip.depth),
+        clipped=clipped,
+        peak=float(strip.brightest.max()),
     )
-
-
-def _lit(strip: Strip, shape: Shape) -> Strip | None:
-    """The rows in which the arm is there (a reticle may be shorter than the picture), the line
-    referred to their middle, where position and slope are least correlated.
-    """
-    across = np.abs(strip.offsets[None, :] - strip.phase[:, None]) * strip.line.cosine
-    core = across <= max(1.0, shape.half_width)
-    away = across >= min(shape.reach_px, 0.8 * across.max())
-    height = _row_means(strip.levels, core) - _row_means(strip.levels, away)
-    width = min(SMOOTHED_ROWS, len(height) // 2 * 2 - 1)
-    padded = np.pad(height, width // 2, mode="edge")
-    smooth = np.convolve(padded, np.full(width, 1 / width), "valid")
-    smooth *= math.copysign(1.0, shape.contrast)
-    keep = smooth > LIT * np.percentile(smooth, 95)
-    return strip.only(keep).about_its_middle() if keep.sum() >= 8 else None
-
-
-def _row_means(levels: F64, where: NDArray[np.bool_]) -> F64:
-    """Mean of each row over the places marked, 0 for a row without any."""
-    return np.asarray((levels * where).sum(axis=1) / np.maximum(where.sum(axis=1), 1))

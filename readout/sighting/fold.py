@@ -11,11 +11,19 @@ import math
 from dataclasses import dataclass, replace
 
 import numpy as np
+from numpy.lib.stride_tricks import sliding_window_view
 from numpy.typing import NDArray
 
 from readout.model import F64, Pixels
 
-PHASES = 32
+PHASES = 16
+"""groups of phase: within one the line moves by less than 1/32 px either way"""
+DEEPEST = 8
+"""most rows averaged to one slice: few enough that a speck of dust spoils a few slices only"""
+MOST_BLIND = 0.1
+"""pixels of one phase and column count for nothing if more than this share of them is blind"""
+LEAST_SLICES = 8
+LEAST_COLUMNS = 5
 
 
 @dataclass(frozen=True, slots=True)
@@ -29,6 +37,10 @@ class Line:
     def x_at(self, y: F64 | float) -> F64:
         return np.asarray(self.middle_x + self.slope * (np.asarray(y) - self.middle_y))
 
+    def about(self, y: float) -> Line:
+        """The same line referred to another row."""
+        return Line(self.middle_x + self.slope * (y - self.middle_y), self.slope, y)
+
     @property
     def cosine(self) -> float:
         """Width of a pixel across the arm, in pixels."""
@@ -37,30 +49,36 @@ class Line:
 
 @dataclass(frozen=True, slots=True)
 class Strip:
-    """Rows of pixels centred on a line, (rows, columns), with each row's place on it.
+    """Slices across a line, (slices, columns), each with its place on it.
 
-    ``phase``: line minus centre column, in [-0.5, 0.5] px. ``along``: row minus ``line.middle_y``.
-    ``offsets``: columns relative to the centre column.
+    A slice is the mean of ``depth`` neighbouring rows, so few that they cut the line at one phase.
+    ``rows``: middle of each slice. ``phase``: line minus centre column, in [-0.5, 0.5] px.
+    ``offsets``: columns relative to the centre column. ``brightest``: largest level in each mean.
     """
 
     line: Line
-    levels: F64
+    depth: int
     rows: F64
     phase: F64
     offsets: F64
+    levels: F64
+    brightest: F64
 
     @property
     def along(self) -> F64:
         return self.rows - self.line.middle_y
 
     def only(self, keep: NDArray[np.bool_]) -> Strip:
-        """The rows marked in ``keep``."""
-        return replace(self, levels=self.levels[keep], rows=self.rows[keep], phase=self.phase[keep])
-
-    def about_its_middle(self) -> Strip:
-        """The same strip, its line referred to the mean of its rows."""
-        middle = float(self.rows.mean())
-        return replace(self, line=Line(float(self.line.x_at(middle)), self.line.slope, middle))
+        """The slices marked in ``keep``, the line referred to their middle."""
+        rows = self.rows[keep]
+        return replace(
+            self,
+            line=self.line.about(float(rows.mean())),
+            rows=rows,
+            phase=self.phase[keep],
+            levels=self.levels[keep],
+            brightest=self.brightest[keep],
+        )
 
 
 def cut_strip(
@@ -75,74 +93,127 @@ def cut_strip(
 
     Rows from ``skip_from`` to ``skip_to`` (where the other arm crosses) are left out, and rows in
     which the border cuts the strip; where most rows are so, the whole strip is narrowed on that
-    side instead. Returns None if fewer than 8 rows or 5 columns remain.
+    side instead. Returns None if fewer than 8 slices or 5 columns remain.
     """
     height, width = pixels.shape
-    rows = np.arange(height, dtype=np.float64)
-    rows = rows[(rows < skip_from) | (rows > skip_to)]
-    to_border = np.minimum(line.x_at(rows), width - 1 - line.x_at(rows))
-    inside = rows[to_border >= 1]
-    whole = rows[to_border >= half_columns + 1]
-    rows = whole if 2 * whole.size > inside.size else inside
-    if rows.size < 8:
-        return None
+    depth = _depth(line, height)
+    first_row = np.arange(height // depth) * depth
+    rows = first_row + (depth - 1) / 2
     at = line.x_at(rows)
+    kept = (rows + depth / 2 < skip_from) | (rows - depth / 2 > skip_to)
+    to_border = np.minimum(at, width - 1 - at)
+    inside, whole = kept & (to_border >= 1), kept & (to_border >= half_columns + 0.5)
+    kept = whole if 2 * np.count_nonzero(whole) > np.count_nonzero(inside) else inside
+    if np.count_nonzero(kept) < LEAST_SLICES:
+        return None
+    at, rows, first_row = at[kept], rows[kept], first_row[kept]
     centre = np.rint(at).astype(np.intp)
     first = max(-half_columns, -int(centre.min()))
-    last = min(half_columns, width - 1 - int(centre.max()))
-    if last - first < 4:
+    columns = min(half_columns, width - 1 - int(centre.max())) - first + 1
+    if columns < LEAST_COLUMNS:
         return None
-    offsets = np.arange(first, last + 1)
-    levels = pixels[rows.astype(np.intp)[:, None], centre[:, None] + offsets[None, :]].astype(
-        np.float64
+    windows = sliding_window_view(pixels, columns, axis=1)
+    block = windows[first_row[:, None] + np.arange(depth), (centre + first)[:, None]]
+    return Strip(
+        line.about(float(rows.mean())),
+        depth,
+        rows,
+        at - centre,
+        np.arange(first, first + columns, dtype=np.float64),
+        block.sum(axis=1, dtype=np.uint32) / depth,
+        block.max(axis=1).astype(np.float64),
     )
-    return Strip(line, levels, rows, at - centre, offsets.astype(np.float64))
+
+
+def _depth(line: Line, height: int) -> int:
+    """Rows to a slice: over them the line moves by less than a phase is wide."""
+    depth = DEEPEST
+    while depth > 1 and (depth * abs(line.slope) * PHASES > 0.5 or height < 32 * depth):
+        depth //= 2
+    return depth
 
 
 @dataclass(frozen=True, slots=True)
 class Fold:
-    """Sums over the rows of each phase; shape (phases, columns) where a column matters.
+    """Sums over the slices of each phase; shape (phases, columns), or (phases, 1) if it is one.
 
-    ``u``: mean distance of the pixels across the arm, px. ``n``, ``along``, ``along2``: number of
-    rows, sum of their distances along the arm and of its squares, shape (phases, 1).
-    ``phase2``, ``phase_along``: sums of (phase - mean)^2 and (phase - mean)*along.
-    ``level``, ``level_along``, ``level2``: sums of the levels, times along, squared.
-    ``group``, ``deviation`` (rows,): each row's phase, and by how much it differs from the mean.
+    ``u``: mean distance of the pixels across the arm, px. ``n``: number of slices. With c a
+    slice's contrast relative to the arm's and a its distance along the arm: ``c``, ``ca``, ``c2``,
+    ``c2a``, ``c2a2`` sums of the products named, ``c2p2``, ``c2pa`` the same with p, the slice's
+    phase less the mean of its group. ``level``, ``level_c``, ``level_ca``, ``level2``: sums of the
+    levels, times c, times ca, squared. ``seen``: 0 where pixels say nothing, else 1.
+    ``group`` (slices,): the phase each slice went into; ``deviation`` (slices,): p.
     """
 
     u: F64
     n: F64
-    along: F64
-    along2: F64
-    phase2: F64
-    phase_along: F64
+    c: F64
+    ca: F64
+    c2: F64
+    c2a: F64
+    c2a2: F64
+    c2p2: F64
+    c2pa: F64
     level: F64
-    level_along: F64
+    level_c: F64
+    level_ca: F64
     level2: F64
+    seen: F64
     group: NDArray[np.intp]
     deviation: F64
 
 
-def fold_strip(strip: Strip) -> Fold:
-    """Sum the rows of a strip by sub-pixel phase."""
+def fold_strip(
+    strip: Strip, levels: F64, contrast: F64, blind: NDArray[np.bool_] | None = None
+) -> Fold:
+    """Sum the slices of a strip by sub-pixel phase.
+
+    ``levels`` (slices, columns): the strip's own, or brought to a common height. ``contrast``
+    (slices,): relative to the arm's: where the arm is faint its flanks say less of its place.
+    ``blind`` (slices, columns): pixels that say nothing, if there are any.
+    """
     group = np.minimum(((strip.phase + 0.5) * PHASES).astype(np.intp), PHASES - 1)
-    present, group = np.unique(group, return_inverse=True)
-    member = np.zeros((present.size, group.size))
-    member[group, np.arange(group.size)] = 1.0
-    n = member.sum(axis=1, keepdims=True)
-    phase = (member @ strip.phase)[:, None] / n
-    deviation = strip.phase - phase[group, 0]
-    member_along = member * strip.along
+    present = np.bincount(group, minlength=PHASES) > 0
+    group = (np.cumsum(present) - 1)[group]
+    groups, slices = int(group.max()) + 1, len(group)
+    along = strip.along
+    weights = np.empty((3, slices))
+    weights[0], weights[1], weights[2] = 1.0, contrast, contrast * along
+    member = np.zeros((3, groups, slices))
+    member[:, group, np.arange(slices)] = weights
+    each = member[0]
+    n = each.sum(axis=1)
+    phase = (each @ strip.phase) / n
+    deviation = strip.phase - phase[group]
+    scalars = np.stack(
+        [
+            contrast,
+            contrast * along,
+            contrast**2,
+            contrast**2 * along,
+            (contrast * along) ** 2,
+            (contrast * deviation) ** 2,
+            contrast**2 * deviation * along,
+        ],
+        axis=1,
+    )
+    c, ca, c2, c2a, c2a2, c2p2, c2pa = (each @ scalars).T[:, :, None]
+    level, level_c, level_ca = (member.reshape(-1, slices) @ levels).reshape(3, groups, -1)
     return Fold(
-        u=(strip.offsets[None, :] - phase) * strip.line.cosine,
-        n=n,
-        along=member_along.sum(axis=1, keepdims=True),
-        along2=(member_along @ strip.along)[:, None],
-        phase2=(member @ deviation**2)[:, None],
-        phase_along=(member_along @ deviation)[:, None],
-        level=member @ strip.levels,
-        level_along=member_along @ strip.levels,
-        level2=member @ strip.levels**2,
-        group=group,
-        deviation=deviation,
+        (strip.offsets[None, :] - phase[:, None]) * strip.line.cosine,
+        n[:, None],
+        c,
+        ca,
+        c2,
+        c2a,
+        c2a2,
+        c2p2,
+        c2pa,
+        level,
+        level_c,
+        level_ca,
+        each @ levels**2,
+        np.ones_like(level) if blind is None else 1.0 * (each @ blind < MOST_BLIND * n[:, None]),
+        group,
+        deviation,
     )

@@ -1,13 +1,14 @@
 """Least squares on a folded strip: shift and turn of the line, with every nuisance free.
 
-Level of a pixel at distance u across and y along the arm:
+Level of a pixel at distance u across and a along the arm, in a slice of relative contrast c:
 
-    b + g u + C F(u - c (dx + dt y)),
+    b + g u + C F(u) + c C [F(u - k (dx + dt a)) - F(u)],
 
-background b and its slope g, contrast C, half width and blur inside F, and the two wanted ones,
-shift dx and change of slope dt of the line the strip was cut along. The variance of a pixel is
-read from the residuals as a straight line in the light (photon noise grows with it: the photon
-transfer method, EMVA 1288), used as weight, and gives the covariance: no noise is assumed.
+background b and its slope g, contrast C, half width and blur inside F, k the width of a pixel
+across the arm, and the two wanted ones, shift dx and change of slope dt of the line the strip was
+cut along. The variance of a pixel is read from the scatter of slices that see the same phase, as a
+straight line in the light (photon noise grows with it: the photon transfer method, EMVA 1288); it
+gives weights and covariance: no noise is assumed.
 """
 
 from __future__ import annotations
@@ -17,17 +18,16 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from readout.least_squares import linear_least_squares
 from readout.model import F64, QUANTISATION_VAR
 from readout.sighting.fold import Fold
-from readout.sighting.profile import full_width_at_half_maximum, line_profile
+from readout.sighting.profile import line_profile
 
-MOST_STEPS = 4
+MOST_STEPS = 8
 SETTLED = 0.02
-"""pixels by which width, blur and line may still change in the step before the weighted one"""
+"""pixels by which width, blur and line may still change in the last step: the next one's change
+goes with its square"""
 DAMPING = np.array([1e-9, 1e-9, 1e-9, 0.01, 0.01, 1e-9, 1e-9])
 """Marquardt damping of half width and blur: of a line thinner than its blur only one is seen"""
-
 LEAST_COLUMN = 1e-50
 """a column of the Jacobian this small against the largest says nothing"""
 
@@ -43,19 +43,14 @@ class Shape:
     blur: float
 
     @property
+    def fades_px(self) -> float:
+        """Distance from the middle at which 0.1 per cent of the line is left."""
+        return self.half_width + 3 * self.blur + 0.5
+
+    @property
     def reach_px(self) -> float:
         """Distance from the middle at which the line has faded out."""
         return self.half_width + 4 * self.blur + 1
-
-    @property
-    def width_px(self) -> float:
-        return full_width_at_half_maximum(self.half_width, self.blur)
-
-    @property
-    def peak_contrast(self) -> float:
-        """Height of the profile at its middle: less than ``contrast`` for a thin line."""
-        middle = line_profile(np.zeros(1), self.half_width, self.blur)
-        return self.contrast * float(middle.value[0])
 
 
 @dataclass(frozen=True, slots=True)
@@ -63,9 +58,10 @@ class Solution:
     """What one solution of a fold gives.
 
     ``shift`` (px, along x) and ``turn`` (slope) improve the line the strip was cut along;
-    ``cov`` (2, 2) is their covariance. ``explained``: share of the folded profile's variance that
-    the model explains. ``pixel_sd``: typical noise of a pixel, levels. ``model``, ``flank``,
-    ``weight`` (phases, columns): expected level, its derivative by shift, 1 / variance.
+    ``cov`` (2, 2) is their covariance. ``explained``: share of the folded profile's variance, less
+    that of its noise, that the model explains. ``model``, ``profile``, ``flank``, ``weight``
+    (phases, columns): expected level, F, its derivative by shift in levels per pixel, and
+    1 / variance of a slice's pixel.
     """
 
     shape: Shape
@@ -73,137 +69,172 @@ class Solution:
     turn: float
     cov: F64
     explained: float
-    pixel_sd: float
     model: F64
+    profile: F64
     flank: F64
     weight: F64
 
+    @property
+    def slice_sd(self) -> float:
+        """Typical noise of a slice's pixel, levels."""
+        return 1 / math.sqrt(max(float(np.median(self.weight)), 1e-300))
 
-def solve_fold(fold: Fold, cosine: float, shape: Shape) -> Solution | None:
+
+def solve_fold(fold: Fold, cosine: float, shape: Shape, depth: int = 1) -> Solution | None:
     """Separable least squares for one fold (Golub and Pereyra, SIAM J. Numer. Anal. 10 (1973) 413).
 
     Background, gradient and contrast are linear and solved for at each step; width, blur, shift
-    and turn follow by Gauss-Newton. Unweighted first, then with the variance the residuals show.
+    and turn follow by Gauss-Newton. Unweighted first, then with the variance the slices show;
+    ``depth`` rows were averaged to each. Returns None where the pixels say nothing.
     """
-    weight = np.ones_like(fold.level)
-    shift = turn = 0.0
-    weighted = False
+    weight = fold.seen
+    started = _started(fold, cosine, shape)
+    if started is None:
+        return None
+    shape, shift, turn = started, 0.0, 0.0
     for step in range(MOST_STEPS):
         profile = line_profile(fold.u - cosine * shift, shape.half_width, shape.blur, cosine)
-        levels = _linear_part(fold, profile.value, weight)
-        if levels is None:
-            return None
-        background, gradient, contrast = levels
-        shape = replace(shape, background=background, gradient=gradient, contrast=contrast)
-        model = background + gradient * fold.u + contrast * profile.value
-        flank = -contrast * cosine * profile.by_u
-        if weighted:
-            weight = 1 / _pixel_variance(fold, model, flank, contrast * profile.value)
-        jacobian = np.stack(
+        model = shape.background + shape.gradient * fold.u + shape.contrast * profile.value
+        flank = (-shape.contrast * cosine) * profile.by_u
+        if step > 0:
+            weight = fold.seen / _slice_variance(fold, model, flank, turn, depth)
+        columns = np.stack(
             [
                 np.ones_like(fold.u),
                 fold.u,
                 profile.value,
-                contrast * profile.by_half_width,
-                contrast * profile.by_blur,
-                flank,
-                flank,  # times the distance along the arm, which enters through the sums
+                shape.contrast * profile.by_half_width,
+                shape.contrast * profile.by_blur,
             ]
         )
-        normal, right = _normal_equations(fold, jacobian, model, flank, turn, weight)
-        inverse = _inverse(normal, DAMPING)
+        normal, right = _normal_equations(fold, columns, model, flank, turn, weight)
+        inverse = _inverse(normal)
         if inverse is None:
             return None
-        change, cov = inverse @ right, inverse[5:, 5:]
-        size = max(shape.half_width, shape.blur)
-        shape = replace(
-            shape,
-            half_width=_step(shape.half_width, change[3], size / 2, shape.blur / 4, 60.0),
-            blur=_step(shape.blur, change[4], shape.blur / 2, 0.35, 30.0),
-        )
-        shift = _step(shift, change[5], 2 * size, -20 * size, 20 * size)
-        turn += float(change[6])
-        if weighted:
+        cov = inverse[5:, 5:]
+        change = inverse @ right
+        *_, dh, ds, dx, dt = change.tolist()
+        shape, shift, turn = _moved(shape, change), _limited(shift, dx, shape), turn + dt
+        if step > 0 and max(abs(dh), abs(ds), abs(dx)) < SETTLED:
             break
-        weighted = step == MOST_STEPS - 2 or np.abs(change[3:6]).max() < SETTLED
-    mean_level = fold.level / fold.n
-    around = mean_level - fold.level.sum() / (fold.n.sum() * fold.u.shape[1])
-    left = float((fold.n * (mean_level - model) ** 2).sum())
+    model += (change[:5] @ columns.reshape(5, -1)).reshape(model.shape) + dx * flank
     return Solution(
         shape,
         shift,
         turn,
         cov,
-        1 - left / max(float((fold.n * around**2).sum()), 1e-300),
-        math.sqrt(float(np.median(1 / weight))),
+        _explained(fold, model, weight),
         model,
+        profile.value,
         flank,
         weight,
     )
 
 
+def _started(fold: Fold, cosine: float, shape: Shape) -> Shape | None:
+    """The shape with the background, gradient and contrast that fit it best, unweighted."""
+    value = line_profile(fold.u, shape.half_width, shape.blur, cosine).value
+    columns = np.stack([np.ones_like(value), fold.u, value]).reshape(3, -1)
+    normal = (columns * (fold.seen * fold.n).ravel()) @ columns.T
+    try:
+        linear = np.linalg.solve(normal, columns @ (fold.seen * fold.level).ravel()).tolist()
+    except np.linalg.LinAlgError:
+        return None
+    if not all(map(math.isfinite, linear)):
+        return None
+    return replace(shape, background=linear[0], gradient=linear[1], contrast=linear[2])
+
+
+def _moved(shape: Shape, change: F64) -> Shape:
+    """The shape after a step, its width and blur within what can be."""
+    background, gradient, contrast, half_width, blur = change[:5].tolist()
+    longest = max(shape.half_width, shape.blur) / 2
+    return Shape(
+        shape.background + background,
+        shape.gradient + gradient,
+        shape.contrast + contrast,
+        _step(shape.half_width, half_width, longest, shape.blur / 4, 60.0),
+        _step(shape.blur, blur, shape.blur / 2, 0.35, 30.0),
+    )
+
+
+def _limited(shift: float, change: float, shape: Shape) -> float:
+    size = max(shape.half_width, shape.blur)
+    return _step(shift, change, 2 * size, -20 * size, 20 * size)
+
+
 def _step(value: float, change: float, longest: float, least: float, most: float) -> float:
     """``value`` after a change no longer than ``longest``, kept between the bounds."""
-    return float(np.clip(value + np.clip(change, -longest, longest), least, most))
+    return min(max(value + min(max(change, -longest), longest), least), most)
 
 
-def _inverse(normal: F64, damping: F64 | float = 1e-9) -> F64 | None:
+def _inverse(normal: F64) -> F64 | None:
     """Inverse of normal equations with columns of very different size; None if there is none."""
-    scale = np.sqrt(np.diag(normal))
+    scale = np.sqrt(normal.diagonal())
     if not scale.min() > LEAST_COLUMN * scale.max():
         return None
+    scales = scale[:, None] * scale
     try:
-        inverse = np.linalg.inv(normal / np.outer(scale, scale) + damping * np.eye(len(scale)))
+        inverse = np.linalg.inv(normal / scales + np.diag(DAMPING)) / scales
     except np.linalg.LinAlgError:
         return None
-    inverse = inverse / np.outer(scale, scale)
-    return inverse if np.all(np.isfinite(inverse)) else None
-
-
-def _linear_part(fold: Fold, value: F64, weight: F64) -> tuple[float, float, float] | None:
-    """Background, gradient and contrast that fit best for a given profile."""
-    design = np.stack([np.ones_like(value), fold.u, value], axis=-1).reshape(-1, 3)
-    try:
-        fit = linear_least_squares(design, (fold.level / fold.n).ravel(), (weight * fold.n).ravel())
-    except np.linalg.LinAlgError:
-        return None
-    background, gradient, contrast = fit.parameters
-    return float(background), float(gradient), float(contrast)
+    return inverse if math.isfinite(float(inverse.sum())) else None
 
 
 def _normal_equations(
-    fold: Fold, jacobian: F64, model: F64, flank: F64, turn: float, weight: F64
+    fold: Fold, columns: F64, model: F64, flank: F64, turn: float, weight: F64
 ) -> tuple[F64, F64]:
     """J^T W J (7, 7) and J^T W r (7,), rebuilt from the sums.
 
-    Within a phase group the line runs by (phase - mean) off the mean phase and by turn * along off
-    the cut: both enter to first order, through the flank.
+    ``columns`` are alike in all slices of a phase. Within a phase the line runs by p off the mean
+    phase and by turn * a off the cut: both enter to first order, through the flank, as the shift.
     """
-    n = np.broadcast_to(fold.n, model.shape)
-    residual = fold.level - n * model - flank * turn * fold.along
-    residual_along = (
-        fold.level_along - fold.along * model - flank * (turn * fold.along2 + fold.phase_along)
+    flat, line = columns.reshape(5, -1), weight * flank
+    weighted = columns * weight
+    steep = (line * flank).sum(axis=1)
+    normal = np.empty((7, 7))
+    normal[:5, :5] = (weighted * fold.n).reshape(5, -1) @ flat.T
+    normal[:5, 5] = normal[5, :5] = flat @ (line * fold.c).ravel()
+    normal[:5, 6] = normal[6, :5] = flat @ (line * fold.ca).ravel()
+    normal[5, 5] = steep @ fold.c2[:, 0]
+    normal[5, 6] = normal[6, 5] = steep @ fold.c2a[:, 0]
+    normal[6, 6] = steep @ fold.c2a2[:, 0]
+    turned = turn * flank
+    right = np.empty(7)
+    right[:5] = weighted.reshape(5, -1) @ (fold.level - fold.n * model - turned * fold.ca).ravel()
+    right[5] = np.vdot(line, fold.level_c - fold.c * model - turned * fold.c2a)
+    right[6] = np.vdot(
+        line, fold.level_ca - fold.ca * model - turned * fold.c2a2 - flank * fold.c2pa
     )
-    flat = jacobian.reshape(7, -1)
-    normal = (flat * (weight * n).ravel()) @ flat.T
-    crossed = (flat[:6] * (weight * fold.along).ravel()) @ flat[6]
-    normal[:6, 6] = normal[6, :6] = crossed
-    normal[6, 6] = float((weight * fold.along2 * flank**2).sum())
-    right = flat @ (weight * residual).ravel()
-    right[6] = float((weight * flank * residual_along).sum())
     return normal, right
 
 
-def _pixel_variance(fold: Fold, model: F64, flank: F64, light: F64) -> F64:
-    """Variance of one pixel as a straight line in its light, from the residuals, shape as model.
+def _slice_variance(fold: Fold, model: F64, flank: F64, turn: float, depth: int) -> F64:
+    """Variance of a slice's pixel as a straight line in its level, shape as ``model``.
 
-    The spread of the phases inside a group moves the flanks a little: known, taken out.
+    From the scatter of slices of one phase about their mean: what the model does not describe
+    moves them all alike and does not count. The known spread of their places is taken out.
     """
-    squares = fold.level2 - 2 * model * fold.level + fold.n * model**2 - flank**2 * fold.phase2
-    n = np.broadcast_to(fold.n, model.shape)
-    total = float(n.sum())
-    mean, mean_light = float(squares.sum()) / total, float((n * light).sum()) / total
-    spread = float((n * (light - mean_light) ** 2).sum())
-    rise = float(((light - mean_light) * squares).sum()) / spread if spread > 0 else 0.0
-    variance = (mean + rise * (light - mean_light)) * (total / max(total - 7, 1.0))
-    return np.asarray(np.maximum(variance, max(QUANTISATION_VAR, 0.1 * mean)))
+    freedom = (fold.n - 1) * fold.seen
+    places = fold.c2p2 + turn**2 * (fold.c2a2 - fold.ca**2 / fold.n)
+    squares = (fold.level2 - fold.level**2 / fold.n - flank**2 * places) * fold.seen
+    total = float(freedom.sum())
+    if total < 1:
+        return np.ones_like(model)
+    mean = float(squares.sum()) / total
+    light = model - float((freedom * model).sum()) / total
+    spread = float((freedom * light**2).sum())
+    rise = float((light * squares).sum()) / spread if spread > 0 else 0.0
+    return np.maximum(mean + rise * light, max(QUANTISATION_VAR / depth, 0.1 * mean))
+
+
+def _explained(fold: Fold, model: F64, weight: F64) -> float:
+    """Share of the folded profile's variance that the model explains, both without the noise."""
+    seen = weight > 0
+    n = fold.n * seen
+    mean_level = fold.level / fold.n
+    around = mean_level - float((n * mean_level).sum()) / float(n.sum())
+    noise = float((1 / weight[seen]).sum())
+    left = float((n * (mean_level - model) ** 2).sum()) - noise
+    there = float((n * around**2).sum()) - noise
+    return 1 - max(left, 0.0) / there if there > 0 else 0.0
