@@ -14,56 +14,51 @@ from numpy.typing import NDArray
 
 from readout.model import F64
 from readout.sighting.fold import Line
-from readout.sighting.peaks import Peaks
+from readout.sighting.peaks import FAINTEST, Peaks
 
 STEEPEST = 1.08
 """tangent of 47 degrees: a line at 45 is sure to be met upright or level"""
-SLOPES = 145
+SLOPES = 97
 CELL_COLUMNS = 2
-SLOPE_SLACK = 1.3
+SLOPE_SLACK = 1.2
 """steps of slope by which a ridge may be wrong"""
-TOLERANCES = (3.0, 2.0, 1.5)
-"""columns a ridge may be off the line, closer at each refinement"""
-SURE = 4.5
-"""a ridge this many noise sd high is hardly noise"""
+TOLERANCES = (3.0, 1.5)
+"""columns a ridge may be off the line, closer at the second refinement"""
+HIGHEST = 30.0
+"""a ridge higher than this many noise sd draws a line no more than one as high"""
 LEAST_BANDS = 3
 LEAST_SHARE = 0.12
-LEAST_STRENGTH = 8.0
+LEAST_STRENGTH = 3.0
 MOST_LINES = 6
-MOST_TRIES = 12
+MOST_TRIES = 10
 
 
 @dataclass(frozen=True, slots=True)
 class AgreedLine:
-    """A line in averaged columns and rows, its ridges' median width, and its strength.
+    """A line in averaged columns and rows, the median width of its ridges, and its strength.
 
-    ``strength``: sum of ln(1 + height / noise sd) over the bands it is seen in.
-    ``first``, ``last``: the bands it is seen in.
+    ``strength``: sum over the bands it is seen in of ln(height / least height looked at).
     """
 
     line: Line
     width: float
     strength: float
-    first: int
-    last: int
 
 
 def lines_of(peaks: Peaks) -> list[AgreedLine]:
     """The lines that most bands agree on, each of other ridges than the ones before."""
-    height = peaks.height.copy()
     lines: list[AgreedLine] = []
-    middle = float(peaks.y.mean())
-    votes = _Votes.of(peaks, middle)
+    weight = np.log(peaks.height / FAINTEST)
+    votes = _Votes.of(peaks)
     for _ in range(MOST_TRIES):
-        weight = np.log1p(height)
-        cell = votes.fullest(weight)
-        if cell is None:
+        line = votes.fullest(weight)
+        if line is None:
             break
-        line, used = _refined(peaks, height, cell)
-        found = _agreed(peaks, height, line, used)
+        line, near = _refined(peaks, weight, line)
+        found = _agreed(peaks, weight, line, near)
         if found is not None:
             lines.append(found)
-        height[used] = 0.0
+        weight[near] = 0.0
         if len(lines) == MOST_LINES:
             break
     return lines
@@ -71,9 +66,8 @@ def lines_of(peaks: Peaks) -> list[AgreedLine]:
 
 @dataclass(frozen=True, slots=True)
 class _Votes:
-    """Cells each ridge votes for, (voters, slopes near its own)."""
+    """Cells each ridge votes for and the share of its vote in each, (ridges, votes)."""
 
-    voter: tuple[NDArray[np.intp], ...]
     cell: NDArray[np.intp]
     share: F64
     slopes: F64
@@ -82,25 +76,23 @@ class _Votes:
     middle_y: float
 
     @classmethod
-    def of(cls, peaks: Peaks, middle_y: float) -> _Votes:
+    def of(cls, peaks: Peaks) -> _Votes:
         slopes = np.linspace(-STEEPEST, STEEPEST, SLOPES)
         step = slopes[1] - slopes[0]
-        voter = np.nonzero(peaks.height > 0)
-        reach = int(np.ceil(SLOPE_SLACK * peaks.slope_step / step))
-        own = np.rint((peaks.slope[voter] + STEEPEST) / step).astype(np.intp)
+        middle_y = (peaks.rows - 1) / 2
+        reach = int(SLOPE_SLACK * peaks.slope_step / step + 1)
+        own = np.rint((peaks.slope + STEEPEST) / step).astype(np.intp)
         slope = own[:, None] + np.arange(-reach, reach + 1)[None, :]
         valid = (slope >= 0) & (slope < SLOPES)
         slope = np.clip(slope, 0, SLOPES - 1)
-        along = peaks.y[voter[0], 0] - middle_y
-        first = -STEEPEST * middle_y - 2
+        first = -STEEPEST * middle_y
         columns = int((peaks.columns - 2 * first) / CELL_COLUMNS) + 2
-        at = (peaks.x[voter][:, None] - slopes[slope] * along[:, None] - first) / CELL_COLUMNS
-        at = np.clip(at, 0, columns - 2)
+        at = peaks.x[:, None] - slopes[slope] * (peaks.y - middle_y)[:, None] - first
+        at = np.clip(at / CELL_COLUMNS, 0, columns - 2)
         low = at.astype(np.intp)
         part = at - low
         cell = slope * columns + low
         return cls(
-            voter,
             np.concatenate([cell, cell + 1], axis=1),
             np.concatenate([(1 - part) * valid, part * valid], axis=1),
             slopes,
@@ -110,52 +102,56 @@ class _Votes:
         )
 
     def fullest(self, weight: F64) -> Line | None:
-        """The line most voted for; None where no votes are left."""
-        shares = self.share * weight[self.voter][:, None]
-        table = np.bincount(self.cell.ravel(), shares.ravel(), SLOPES * self.columns)
+        """The line most voted for; None where too few votes are left."""
+        table = np.bincount(
+            self.cell.ravel(), (self.share * weight[:, None]).ravel(), SLOPES * self.columns
+        )
         best = int(table.argmax())
-        if table[best] < LEAST_STRENGTH / 2:
+        if table[best] < LEAST_STRENGTH / 3:
             return None
         slope, column = divmod(best, self.columns)
         x = column * CELL_COLUMNS + self.first_column
         return Line(x, float(self.slopes[slope]), self.middle_y)
 
 
-def _refined(peaks: Peaks, height: F64, line: Line) -> tuple[Line, NDArray[np.bool_]]:
+def _refined(peaks: Peaks, weight: F64, line: Line) -> tuple[Line, NDArray[np.intp]]:
     """A straight line through the ridges nearby, and which they are."""
     wide = np.maximum(1.0, peaks.width / 3)
     for tolerance in TOLERANCES:
-        alike = np.abs(peaks.slope - line.slope) <= 1.5 * SLOPE_SLACK * peaks.slope_step
         off = peaks.x - line.x_at(peaks.y)
-        near = (np.abs(off) <= tolerance * wide) & alike & (height > 0)
-        weight = np.where(near, np.minimum(height, 30.0), 0.0)
-        weight *= weight >= weight.max(axis=1, keepdims=True)  # one a band
-        total = weight.sum()
-        if total == 0:
+        near = np.abs(off) <= tolerance * wide
+        near &= np.abs(peaks.slope - line.slope) <= 1.5 * SLOPE_SLACK * peaks.slope_step
+        used = np.nonzero(near & (weight > 0))[0]
+        used = used[np.diff(peaks.band[used], prepend=-1) > 0]  # the highest of each band
+        if used.size < 2:
             break
-        along = peaks.y - line.middle_y
-        mean_y = (weight * along).sum() / total
-        mean_off = (weight * off).sum() / total
-        spread = (weight * (along - mean_y) ** 2).sum()
-        turn = (weight * (along - mean_y) * off).sum() / spread if spread > 0 else 0.0
-        line = Line(
-            float(line.middle_x + mean_off - turn * mean_y), float(line.slope + turn), line.middle_y
-        )
+        line = _through(line, peaks.y[used], off[used], np.minimum(peaks.height[used], HIGHEST))
     off = np.abs(peaks.x - line.x_at(peaks.y))
-    return line, (off <= np.maximum(TOLERANCES[-1] * wide, 2.0)) & (height > 0)
+    return line, np.nonzero(off <= np.maximum(TOLERANCES[-1] * wide, 2.0))[0]
 
 
-def _agreed(peaks: Peaks, height: F64, line: Line, used: NDArray[np.bool_]) -> AgreedLine | None:
+def _through(line: Line, y: F64, off: F64, weight: F64) -> Line:
+    """The line moved and turned to the weighted least squares of points ``off`` it."""
+    total = weight.sum()
+    along = y - line.middle_y
+    mean_along, mean_off = weight @ along / total, weight @ off / total
+    along = along - mean_along
+    turn = weight @ (along * off) / max(weight @ along**2, 1e-9)
+    moved = mean_off - turn * mean_along
+    return Line(float(line.middle_x + moved), float(line.slope + turn), line.middle_y)
+
+
+def _agreed(peaks: Peaks, weight: F64, line: Line, near: NDArray[np.intp]) -> AgreedLine | None:
     """The line if it is seen in enough bands."""
-    if abs(line.slope) > STEEPEST:
+    seen = near[weight[near] > 0]
+    seen = seen[np.diff(peaks.band[seen], prepend=-1) > 0]
+    strength = float(weight[seen].sum())
+    if abs(line.slope) > STEEPEST or strength < LEAST_STRENGTH:
         return None
-    highest = np.where(used, height, 0.0).max(axis=1)
-    x = line.x_at(peaks.y[:, 0])
-    inside = (x > -1) & (x < peaks.columns)
-    seen = np.nonzero(highest > SURE)[0]
-    strength = float(np.log1p(highest[highest > SURE / 2]).sum())
-    if seen.size < max(LEAST_BANDS, LEAST_SHARE * inside.sum()) or strength < LEAST_STRENGTH:
+    rows = np.arange(0.0, peaks.rows, 8.0)
+    x = line.x_at(rows)
+    share = float(np.mean((x > -1) & (x < peaks.columns)))
+    bands = int(peaks.band[-1]) + 1
+    if seen.size < max(LEAST_BANDS, LEAST_SHARE * share * bands):
         return None
-    return AgreedLine(
-        line, float(np.median(peaks.width[used])), strength, int(seen[0]), int(seen[-1])
-    )
+    return AgreedLine(line, float(np.median(peaks.width[seen])), strength)
