@@ -20,14 +20,15 @@ STEEPEST = 1.08
 """tangent of 47 degrees: a line at 45 is sure to be met upright or level"""
 SLOPES = 97
 CELL_COLUMNS = 2
-SLOPE_SLACK = 1.2
+SLOPE_SLACK = 0.8
 """steps of slope by which a ridge may be wrong"""
 TOLERANCES = (3.0, 1.5)
 """columns a ridge may be off the line, closer at the second refinement"""
 HIGHEST = 30.0
 """a ridge higher than this many noise sd draws a line no more than one as high"""
 LEAST_BANDS = 3
-LEAST_SHARE = 0.12
+MISSING = 0.5
+"""what a band without a ridge takes from the strength, as a share of what one with a ridge gives"""
 LEAST_STRENGTH = 3.0
 MOST_LINES = 6
 MOST_TRIES = 10
@@ -37,7 +38,8 @@ MOST_TRIES = 10
 class AgreedLine:
     """A line in averaged columns and rows, the median width of its ridges, and its strength.
 
-    ``strength``: sum over the bands it is seen in of ln(height / least height looked at).
+    ``strength``: sum of ln(height / least height looked at) over the bands where it is seen, less
+    half their median for each band between them where it is not.
     """
 
     line: Line
@@ -142,16 +144,16 @@ def _through(line: Line, y: F64, off: F64, weight: F64) -> Line:
 
 
 def _agreed(peaks: Peaks, weight: F64, line: Line, near: NDArray[np.intp]) -> AgreedLine | None:
-    """The line if it is seen in enough bands."""
+    """The line if it is seen in enough bands that follow each other."""
     seen = near[weight[near] > 0]
     seen = seen[np.diff(peaks.band[seen], prepend=-1) > 0]
-    strength = float(weight[seen].sum())
-    if abs(line.slope) > STEEPEST or strength < LEAST_STRENGTH:
+    if seen.size < LEAST_BANDS or abs(line.slope) > STEEPEST:
         return None
-    rows = np.arange(0.0, peaks.rows, 8.0)
-    x = line.x_at(rows)
-    share = float(np.mean((x > -1) & (x < peaks.columns)))
-    bands = int(peaks.band[-1]) + 1
-    if seen.size < max(LEAST_BANDS, LEAST_SHARE * share * bands):
+    of_band = np.full(peaks.band[-1] + 2, -MISSING * float(np.median(weight[seen])))
+    of_band[0] = 0.0
+    of_band[peaks.band[seen] + 1] = weight[seen]
+    total = np.cumsum(of_band)
+    strength = float((total - np.minimum.accumulate(total)).max())
+    if strength < LEAST_STRENGTH:
         return None
     return AgreedLine(line, float(np.median(peaks.width[seen])), strength)

@@ -20,6 +20,7 @@ from readout.sighting.stretches import F32, averaged, stretches_of
 __all__ = ["RoughArm", "RoughArms", "RoughCrosshair", "find_arms", "find_crosshairs"]
 
 MOST_ARMS = 6
+LEAST_OF_STRONGEST = 0.04
 
 
 def find_arms(pixels: Pixels) -> RoughArms:
@@ -43,7 +44,10 @@ def _arms(small: F32, step_px: int) -> tuple[RoughArm, ...]:
         for polarity, of_polarity in zip((1, -1), peaks, strict=True)
         for line in lines_of(of_polarity)
     ]
-    return tuple(sorted(arms, key=lambda arm: -arm.strength)[:MOST_ARMS])
+    arms.sort(key=lambda arm: -arm.strength)
+    return tuple(
+        arm for arm in arms[:MOST_ARMS] if arm.strength > LEAST_OF_STRONGEST * arms[0].strength
+    )
 
 
 def _in_pixels(found: AgreedLine, polarity: int, step_px: int) -> RoughArm:

@@ -90,7 +90,8 @@ def _widened(stretches: Stretches, step_px: int) -> Iterator[tuple[F32, int]]:
         if width > 1:  # three of the width before
             third = width // 3
             end = sums.shape[1] - 2 * third
-            sums = sums[:, :end] + sums[:, third : third + end] + sums[:, 2 * third :]
+            two = cv2.add(sums[:, :end], sums[:, third : third + end])
+            sums = np.asarray(cv2.add(two, sums[:, 2 * third :]), dtype=np.float32)
         yield sums, width
 
 
@@ -155,7 +156,7 @@ def _peaks(ridges: list[_Ridges], stretches: Stretches, polarity: int) -> Peaks:
         height[order].astype(np.float64),
         slope,
         width,
-        1 / max(1, stretches.rows - 1),
+        stretches.slope_step,
         bands * stretches.rows,
         columns,
     )
@@ -182,7 +183,7 @@ def _shape_of(
         after = polarity * of[at, band, place + 1]
         bend = np.maximum(2 * height - before - after, 1e-6)
         aside = np.clip((after - before) / (2 * bend), -0.5, 0.5)
-        middle = place + ridge.width // 2 + aside + stretches.shifts[at] % 2 / 2
+        middle = place + ridge.width // 2 + aside
         noises = height / (ridge.noise * CLEARLY**k)
         better = noises > best
         best = np.where(better, noises, best)

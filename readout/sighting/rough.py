@@ -11,8 +11,10 @@ from readout.sighting.fold import Line
 class RoughArm:
     """A line seen in many bands: where, bright (1) or dark (-1), about how wide, px.
 
-    ``strength``: sum over the bands it is seen in of ln(1 + height / noise sd), so that a long
-    line goes before a short one and a bright one before a faint one.
+    ``strength``: the order in which to try them. It grows with the length of a line and with the
+    logarithm of its contrast, and falls for gaps: the picture is cut into bands, and it is the
+    sum of ln(height / 3 noise sd) over the bands where the line is seen, less half their median
+    for each band between them where it is not.
     """
 
     line: Line

@@ -15,7 +15,7 @@ import cv2
 import numpy as np
 from numpy.typing import NDArray
 
-from readout.model import Pixels
+from readout.model import F64, Pixels
 
 F32 = NDArray[np.float32]
 
@@ -30,8 +30,8 @@ LEAST_BANDS = 6
 class Stretches:
     """``sums``: (slopes, bands, columns), of ``rows`` averaged rows each.
 
-    Slope k stands for ``shifts[k]`` columns from the first to the last row of a band; the middle of
-    the stretch at column c is ``c + shifts[k] % 2 / 2``.
+    Slope k stands for ``shifts[k]`` columns from the first to the last row of a band; it is even,
+    so that the middle of a stretch is a column.
     """
 
     sums: F32
@@ -39,9 +39,13 @@ class Stretches:
     rows: int
 
     @property
-    def slopes(self) -> NDArray[np.float64]:
-        """Columns a row."""
-        return np.asarray(self.shifts / max(1, self.rows - 1))
+    def slopes(self) -> F64:
+        """Columns a row, in even steps."""
+        return np.asarray(self.shifts / (self.rows - 1))
+
+    @property
+    def slope_step(self) -> float:
+        return 2 / (self.rows - 1)
 
 
 def averaged(pixels: Pixels) -> tuple[F32, int]:
@@ -78,9 +82,10 @@ def stretches_of(small: F32) -> Stretches | None:
     sums[0, :, pad:-pad] = small[: bands * rows]
     sums[0, :, :pad] = sums[0, :, pad : pad + 1]
     sums[0, :, -pad:] = sums[0, :, -pad - 1 : -pad]
-    for doubling in range(1, doublings + 1):
-        sums = _doubled(sums, 2**doubling - 1)
-    shifts = np.arange(1 - rows, rows)
+    for doubling in range(1, doublings):
+        sums = _doubled(sums, np.arange(1 - 2**doubling, 2**doubling))
+    shifts = np.arange(2 - rows, rows, 2)
+    sums = _doubled(sums, shifts)
     centred = np.empty((shifts.size, bands, columns), dtype=np.float32)
     for k, shift in enumerate(shifts):
         first = pad - shift // 2
@@ -88,16 +93,18 @@ def stretches_of(small: F32) -> Stretches | None:
     return Stretches(centred, shifts, rows)
 
 
-def _doubled(halves: F32, largest: int) -> F32:
-    """Stretches of twice the rows, shifted by -largest to largest; column: that of the top row."""
-    middle = len(halves) // 2
-    whole = np.zeros((2 * largest + 1, halves.shape[1] // 2, halves.shape[2]), dtype=np.float32)
-    for shift in range(-largest, largest + 1):
+def _doubled(halves: F32, shifts: NDArray[np.intp]) -> F32:
+    """Stretches of twice the rows of each shift; columns are those of the top row.
+
+    What would leave the padded picture stays undefined; ``stretches_of`` does not reach so far.
+    """
+    middle, wide = len(halves) // 2, halves.shape[2]
+    whole = np.empty((shifts.size, halves.shape[1] // 2, wide), dtype=np.float32)
+    for out, shift in zip(whole, shifts, strict=True):
         half = abs(shift) // 2
         move = abs(shift) - half
         of_half = halves[middle + half if shift > 0 else middle - half]
-        top, bottom, out = of_half[0::2], of_half[1::2], whole[largest + shift]
-        end = halves.shape[2] - move
+        top, bottom, end = of_half[0::2], of_half[1::2], wide - move
         if shift >= 0:
             np.add(top[:, :end], bottom[:, move:], out=out[:, :end])
         else:
