@@ -24,7 +24,7 @@ CLEARLY = 1.1
 """a wider stretch must stand out by this much more to be preferred"""
 ROUNDING_SD = 0.3
 """noise of a pixel is at least that of rounding to whole levels"""
-FAINTEST = 3.0
+FAINTEST = 2.8
 """a ridge lower than this many noise sd is not looked at"""
 PEAKS_PER_BAND = 12
 APART = 5

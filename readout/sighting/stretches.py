@@ -96,10 +96,13 @@ def stretches_of(small: F32) -> Stretches | None:
 def _doubled(halves: F32, shifts: NDArray[np.intp]) -> F32:
     """Stretches of twice the rows of each shift; columns are those of the top row.
 
-    What would leave the padded picture stays undefined; ``stretches_of`` does not reach so far.
+    Those that would leave the padded picture are 0; ``stretches_of`` does not reach so far.
     """
     middle, wide = len(halves) // 2, halves.shape[2]
     whole = np.empty((shifts.size, halves.shape[1] // 2, wide), dtype=np.float32)
+    beyond = (int(shifts[-1]) + 1) // 2
+    whole[:, :, :beyond] = 0.0
+    whole[:, :, wide - beyond :] = 0.0
     for out, shift in zip(whole, shifts, strict=True):
         half = abs(shift) // 2
         move = abs(shift) - half
