@@ -75,8 +75,8 @@ class Crosshair:
     def level(self) -> Bar:
         """The level arm."""
         return Bar(
-            (self.level_line_px or self.line_px) / 2,
-            self.level_blur_px or self.blur_px,
+            (self.line_px if self.level_line_px is None else self.level_line_px) / 2,
+            self.blur_px if self.level_blur_px is None else self.level_blur_px,
             math.radians(self.rotation_deg + self.skew_deg + 90),
             self.half_length_px,
             self.gap_px,

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -16,20 +17,31 @@ BARE = {"background": 0.0, "contrast": 1.0}
 
 
 def point_brightness(x: float, y: float, c: Crosshair) -> float:
-    """The blurred union of two bars at a point, through the complement: math.erf, no scipy."""
-    turn = math.radians(c.rotation_deg)
+    """The picture's definition at a point, for like arms: math.erf, no scipy."""
+    up, level = math.radians(c.rotation_deg), math.radians(c.rotation_deg + c.skew_deg)
 
-    def uncovered(distance: float) -> float:
+    def within(distance: float, half: float) -> float:
         edge = math.sqrt(2) * c.blur_px
-        inner, outer = distance - c.line_px / 2, distance + c.line_px / 2
-        return 1 - 0.5 * (math.erf(outer / edge) - math.erf(inner / edge))
+        return 0.5 * (math.erf((distance + half) / edge) - math.erf((distance - half) / edge))
 
-    u = math.cos(turn) * x + math.sin(turn) * y
-    v = math.cos(turn) * y - math.sin(turn) * x
-    return 1 - uncovered(u) * uncovered(v)
+    def between_ends(distance: float) -> float:
+        return within(distance, c.half_length_px) - within(distance, c.gap_px)
+
+    def cut(distance: float) -> float:
+        half = c.line_px / 2
+        return within(distance, half) - within(distance, min(c.gap_px, half))
+
+    u, along_up = math.cos(up) * x + math.sin(up) * y, math.cos(up) * y - math.sin(up) * x
+    v, along_level = (
+        math.cos(level) * y - math.sin(level) * x,
+        math.cos(level) * x + math.sin(level) * y,
+    )
+    upright = within(u, c.line_px / 2) * between_ends(along_up)
+    across = within(v, c.line_px / 2) * between_ends(along_level)
+    return upright + across - cut(u) * cut(v)
 
 
-@pytest.mark.parametrize("rotation_deg", [0.0, 3.7, -10.0])
+@pytest.mark.parametrize("rotation_deg", [0.0, 3.7, -10.0, 45.0])
 @pytest.mark.parametrize("blur_px", [LEAST_BLUR_PX, 0.6, 1.2])
 def test_a_pixel_is_the_integral_over_its_square(rotation_deg: float, blur_px: float) -> None:
     """scipy.integrate.dblquad (QUADPACK): pixels at an edge, in an inner corner, in the middle."""
@@ -39,6 +51,28 @@ def test_a_pixel_is_the_integral_over_its_square(rotation_deg: float, blur_px: f
     for row, column in ((3, 10), (14, 15), (12, 12), (9, 20), (15, 10)):
         expected, _ = dblquad(
             lambda b, a: point_brightness(a - x, b - y, crosshair),
+            *(column - 0.5, column + 0.5, row - 0.5, row + 0.5),
+            epsabs=1e-10,
+        )
+        assert image[row, column] == pytest.approx(expected, rel=0, abs=1e-6)
+
+
+@pytest.mark.parametrize(
+    "reticle",
+    [
+        Crosshair(5.0, 1.2, 6.0, skew_deg=5.0, **BARE),
+        Crosshair(5.0, 0.7, -31.0, half_length_px=9.0, gap_px=4.0, **BARE),
+        Crosshair(5.0, 1.2, 12.0, gap_px=1.5, **BARE),
+    ],
+    ids=["skewed", "short with a gap", "narrow gap"],
+)
+def test_skewed_short_and_gapped_arms_are_the_integral_too(reticle: Crosshair) -> None:
+    """As above, at the crossing, in the gap, on both ends and along the arms."""
+    x, y = 12.37, 11.81
+    image = crosshair_image((25, 25), x, y, reticle)
+    for row, column in ((12, 12), (11, 14), (14, 10), (8, 12), (3, 11), (12, 4), (16, 20), (4, 17)):
+        expected, _ = dblquad(
+            lambda b, a: point_brightness(a - x, b - y, reticle),
             *(column - 0.5, column + 0.5, row - 0.5, row + 0.5),
             epsabs=1e-10,
         )
@@ -79,6 +113,63 @@ def test_blur_and_pixels_keep_the_flux(rotation_deg: float, x_px: float, y_px: f
     assert image.sum() == pytest.approx(area, rel=1e-9)
 
 
+@pytest.mark.parametrize(("gap_px", "both_px"), [(10.0, 0.0), (1.5, 0.5)])
+def test_a_gap_takes_its_flux(gap_px: float, both_px: float) -> None:
+    """Area of two lines without their gaps, less the four corners both cover in a narrow gap."""
+    crosshair = Crosshair(
+        line_px=4.0, blur_px=1.5, rotation_deg=19.0, half_length_px=40.0, gap_px=gap_px, **BARE
+    )
+    area = 2 * 4.0 * 2 * (40.0 - gap_px) - 4 * both_px**2
+    image = crosshair_image((121, 121), 60.2, 59.7, crosshair)
+    assert image.sum() == pytest.approx(area, rel=1e-9)
+
+
+def test_every_reticle_is_symmetric_about_its_crossing() -> None:
+    """Turned by 180 degrees about a pixel centre it is itself: the truth cannot be in doubt."""
+    odd = Crosshair(
+        rotation_deg=17.0,
+        skew_deg=-6.0,
+        half_length_px=21.0,
+        gap_px=3.0,
+        level_line_px=8.0,
+        level_blur_px=2.1,
+        level_contrast=3000.0,
+    )
+    image = crosshair_image((61, 61), 30.0, 30.0, odd)
+    np.testing.assert_allclose(image, image[::-1, ::-1], rtol=1e-10)
+    assert np.abs(image - image[::-1]).max() > 100.0
+
+
+def test_the_level_arm_may_differ() -> None:
+    """Its own width, blur and contrast are those of a reticle that has them for both arms."""
+    mixed = Crosshair(level_line_px=9.0, level_blur_px=2.0, level_contrast=3000.0)
+    other = Crosshair(line_px=9.0, blur_px=2.0, contrast=3000.0)
+    image = crosshair_image((81, 81), 40.2, 39.7, mixed)
+    np.testing.assert_array_equal(
+        image[:10], crosshair_image((81, 81), 40.2, 39.7, Crosshair())[:10]
+    )
+    np.testing.assert_array_equal(
+        image[:, :10], crosshair_image((81, 81), 40.2, 39.7, other)[:, :10]
+    )
+    wide = replace(mixed, line_px=15.0, level_line_px=15.0)
+    crossing = crosshair_image((81, 81), 40.0, 40.0, wide)[40, 40]
+    assert crossing == pytest.approx(800.0 + 7000.0, abs=2.0)  # the stronger one holds
+
+
+def test_skew_turns_the_level_arm_alone() -> None:
+    straight = crosshair_image((101, 101), 50.0, 50.0, Crosshair(**BARE))
+    skewed = crosshair_image((101, 101), 50.0, 50.0, Crosshair(skew_deg=5.0, **BARE))
+    np.testing.assert_array_equal(straight[:10], skewed[:10])
+    rows, right = np.arange(101.0), skewed[:, 90]
+    expected_px = 40 * math.tan(math.radians(5.0))
+    assert (rows * right).sum() / right.sum() - 50 == pytest.approx(expected_px, abs=1e-3)
+
+
+def test_an_arm_beyond_the_frame_leaves_the_ground() -> None:
+    ground = crosshair_image((20, 30), -300.0, 500.0, Crosshair(rotation_deg=3.0))
+    np.testing.assert_array_equal(ground, np.full((20, 30), 800.0))
+
+
 def test_a_part_of_the_picture_is_the_picture_s_part() -> None:
     crosshair = Crosshair(rotation_deg=2.0)
     whole = crosshair_image((60, 80), 41.3, 28.9, crosshair)
@@ -102,7 +193,22 @@ def test_rotation_is_clockwise_on_screen() -> None:
     assert (rows * left).sum() / left.sum() - 50 == pytest.approx(-expected_px, abs=1e-3)
 
 
-@pytest.mark.parametrize("wrong", [{"line_px": 0.0}, {"blur_px": -1.0}, {"half_length_px": 0.0}])
+@pytest.mark.parametrize(
+    "wrong",
+    [
+        {"line_px": 0.0},
+        {"blur_px": -1.0},
+        {"half_length_px": 0.0},
+        {"level_line_px": 0.0},
+        {"level_blur_px": -0.5},
+    ],
+)
 def test_sizes_must_be_positive(wrong: dict[str, float]) -> None:
     with pytest.raises(ValueError, match="must be positive"):
         Crosshair(**wrong)
+
+
+@pytest.mark.parametrize("gap_px", [-1.0, 30.0])
+def test_a_gap_is_shorter_than_the_arms(gap_px: float) -> None:
+    with pytest.raises(ValueError, match="gap"):
+        Crosshair(half_length_px=30.0, gap_px=gap_px)
