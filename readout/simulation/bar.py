@@ -36,7 +36,7 @@ HALF_DIAGONAL_PX: Final = math.sqrt(0.5)
 TABLE_STEPS_PER_PX: Final = 64
 
 
-def bar(u: F64, half_width_px: float, blur_px: float) -> F64:
+def bar(u: F64, half_width_px: float | F64, blur_px: float) -> F64:
     """Share of full brightness at distance ``u`` from the middle of a blurred bar, any shape."""
     return np.asarray(ndtr((u + half_width_px) / blur_px) - ndtr((u - half_width_px) / blur_px))
 

@@ -134,7 +134,8 @@ def graduated_scale(
         )
         return lying.T
     blur = math.hypot(blur_px, math.sqrt(1 / 12))  # the pixel's own width, to second order
-    rows, columns = np.arange(shape[0]) - at_px, np.arange(shape[1]) - first_px
+    rows = np.arange(shape[0], dtype=np.float64) - at_px
+    columns = np.arange(shape[1], dtype=np.float64) - first_px
     number = np.rint(columns / pitch_px)
     graduation = bar(columns - number * pitch_px, line_px / 2, blur)
     half_length = pitch_px * np.where(number % 5 == 0, 0.6, 0.3)
