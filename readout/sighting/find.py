@@ -20,7 +20,7 @@ from readout.sighting.stretches import F32, averaged, stretches_of
 __all__ = ["RoughArm", "RoughArms", "RoughCrosshair", "find_arms", "find_crosshairs"]
 
 MOST_ARMS = 6
-LEAST_OF_STRONGEST = 0.04
+LEAST_OF_STRONGEST = 0.06
 
 
 def find_arms(pixels: Pixels) -> RoughArms:

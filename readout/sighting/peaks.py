@@ -27,8 +27,8 @@ ROUNDING_SD = 0.3
 FAINTEST = 2.8
 """a ridge lower than this many noise sd is not looked at"""
 PEAKS_PER_BAND = 12
-APART = 5
-"""columns among which only the highest ridge counts"""
+APART = 2
+"""columns to either side within which only the highest ridge counts"""
 NOISE_SAMPLES = 3000
 
 
@@ -115,12 +115,6 @@ def _ridges(sums: F32, width: int, least_noise: float, shape: tuple[int, ...]) -
     inner = slice(gap, places - gap)
     bright[:, inner] = cv2.min(rise[:, :-gap], fall[:, gap:])
     dark[:, inner] = cv2.max(rise[:, :-gap], fall[:, gap:])
-    left, right = bend[:, : -2 * gap], bend[:, 2 * gap :]
-    inner = slice(2 * gap, places - 2 * gap)
-    if width > 1:
-        slack = np.float32(FAINTEST * noise)
-        np.minimum(bright[:, inner], cv2.min(left, right) + slack, out=bright[:, inner])
-        np.maximum(dark[:, inner], cv2.max(left, right) - slack, out=dark[:, inner])
     first, last = slice(0, gap), slice(places - gap, places)
     for side, over, change in (
         (first, fall[:, :gap], fall[:, gap : 2 * gap]),
@@ -128,6 +122,14 @@ def _ridges(sums: F32, width: int, least_noise: float, shape: tuple[int, ...]) -
     ):
         bright[:, side] = over - np.abs(change)
         dark[:, side] = over + np.abs(change)
+    if width > 1:
+        slack = np.float32(FAINTEST * noise)
+        for of, limit, nearer in (
+            (bright, bend + slack, np.minimum),
+            (dark, bend - slack, np.maximum),
+        ):
+            for side in (slice(2 * gap, places), slice(0, places - 2 * gap)):
+                nearer(of[:, side], limit, out=of[:, side])
     return _Ridges(bright.reshape(*shape, places), dark.reshape(*shape, places), width, noise)
 
 
@@ -138,10 +140,14 @@ def _peaks(ridges: list[_Ridges], stretches: Stretches, polarity: int) -> Peaks:
     for k, ridge in enumerate(ridges):
         of = ridge.of(polarity)
         highest = of.max(axis=0) if polarity > 0 else -of.min(axis=0)
+        highest /= np.float32(ridge.noise * CLEARLY**k)
         first = ridge.width // 2
         inner = best[:, first : columns - first]
-        np.maximum(inner, highest / np.float32(ridge.noise * CLEARLY**k), out=inner)
-    highest = cv2.dilate(best, np.ones((1, APART), dtype=np.uint8))
+        if first > 0:  # a wide stretch that reaches a narrow ridge at its edge is no wide ridge
+            reached = _highest_within(inner, first + APART)
+            highest[highest < reached] = 0.0
+        np.maximum(inner, highest, out=inner)
+    highest = _highest_within(best, APART)
     band, column = np.nonzero((best == highest) & (best > FAINTEST))
     height = best[band, column]
     order = np.lexsort((-height, band))
@@ -160,6 +166,12 @@ def _peaks(ridges: list[_Ridges], stretches: Stretches, polarity: int) -> Peaks:
         bands * stretches.rows,
         columns,
     )
+
+
+def _highest_within(heights: F32, columns: int) -> F32:
+    """The highest at most so many columns to either side, of each place."""
+    window = np.ones((1, 2 * columns + 1), dtype=np.uint8)
+    return np.asarray(cv2.dilate(heights, window), dtype=np.float32)
 
 
 def _shape_of(
