@@ -7,6 +7,7 @@ place, brightness, width, polarity or turn; upright and level arms are sought ea
 
 from __future__ import annotations
 
+import cv2
 import numpy as np
 
 from readout.model import Pixels
@@ -30,7 +31,9 @@ def find_arms(pixels: Pixels) -> RoughArms:
     horizontal: a line near 45 degrees may be in both lists.
     """
     small, step_px = averaged(pixels)
-    return RoughArms(_arms(small, step_px), _arms(np.ascontiguousarray(small.T), step_px))
+    return RoughArms(
+        _arms(small, step_px), _arms(np.asarray(cv2.transpose(small), dtype=np.float32), step_px)
+    )
 
 
 def _arms(small: F32, step_px: int) -> tuple[RoughArm, ...]:

@@ -8,7 +8,7 @@ picture the ground is taken to go on as straight as it came.
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import cv2
 import numpy as np
@@ -51,21 +51,29 @@ class Peaks:
     rows: int
     columns: int
 
+    def only(self, of: slice) -> Peaks:
+        """Some of the peaks."""
+        return replace(
+            self,
+            band=self.band[of],
+            x=self.x[of],
+            y=self.y[of],
+            height=self.height[of],
+            slope=self.slope[of],
+            width=self.width[of],
+        )
+
 
 @dataclass(frozen=True, slots=True)
 class _Ridges:
-    """Ridges of one width in levels, (slopes, bands, places), from column ``width // 2`` on.
+    """Ridges of one width in levels: bright ones, then dark ones, both positive.
 
-    Bright ones are positive in ``bright``, dark ones negative in ``dark``.
+    ``heights``: (polarities, slopes, bands, places), the first place in column ``width // 2``.
     """
 
-    bright: F32
-    dark: F32
+    heights: F32
     width: int
     noise: float
-
-    def of(self, polarity: int) -> F32:
-        return self.bright if polarity > 0 else self.dark
 
 
 def peaks_of(stretches: Stretches, step_px: int) -> tuple[Peaks, Peaks] | None:
@@ -75,9 +83,7 @@ def peaks_of(stretches: Stretches, step_px: int) -> tuple[Peaks, Peaks] | None:
         _ridges(sums, width, least_noise * width**0.5, stretches.sums.shape[:2])
         for sums, width in _widened(stretches, step_px)
     ]
-    if not ridges:
-        return None
-    return _peaks(ridges, stretches, 1), _peaks(ridges, stretches, -1)
+    return _peaks(ridges, stretches) if ridges else None
 
 
 def _widened(stretches: Stretches, step_px: int) -> Iterator[tuple[F32, int]]:
@@ -98,74 +104,69 @@ def _widened(stretches: Stretches, step_px: int) -> Iterator[tuple[F32, int]]:
 def _ridges(sums: F32, width: int, least_noise: float, shape: tuple[int, ...]) -> _Ridges:
     """How far each stretch stands out over the nearer of its two sides.
 
-    ``rise`` is the step from each stretch to the next one to its right, ``bend`` how much the
-    rise grows. On sloping ground the foot of a strong line would be a ridge of the other
-    polarity; but there the bend towards its other side is nothing but noise.
+    ``rise`` is the step from each stretch to the one to its right, ``bend`` how much the rise
+    grows. On sloping ground the foot of a strong line would be a ridge of the other polarity; but
+    there the bend towards its other side is nothing but noise.
     """
     gap = width + max(1, width // 2)
     places = sums.shape[1]
     rise = cv2.subtract(sums[:, gap:], sums[:, :-gap])
     fall = cv2.subtract(sums[:, :-gap], sums[:, gap:])
     bend = cv2.subtract(rise[:, gap:], rise[:, :-gap])
+    unbend = cv2.subtract(fall[:, gap:], fall[:, :-gap])
     sampled = np.abs(bend.ravel()[:: max(1, bend.size // NOISE_SAMPLES)])
     middle = sampled.size // 2
     noise = max(1.4826 / 2 * float(np.partition(sampled, middle)[middle]), least_noise)
-    bright = np.empty(sums.shape, dtype=np.float32)
-    dark = np.empty(sums.shape, dtype=np.float32)
-    inner = slice(gap, places - gap)
-    bright[:, inner] = cv2.min(rise[:, :-gap], fall[:, gap:])
-    dark[:, inner] = cv2.max(rise[:, :-gap], fall[:, gap:])
-    first, last = slice(0, gap), slice(places - gap, places)
-    for side, over, change in (
-        (first, fall[:, :gap], fall[:, gap : 2 * gap]),
-        (last, rise[:, -gap:], rise[:, -2 * gap : -gap]),
+    heights = np.empty((2, *sums.shape), dtype=np.float32)
+    for height, up, down, bent in zip(
+        heights, (rise, fall), (fall, rise), (bend, unbend), strict=True
     ):
-        bright[:, side] = over - np.abs(change)
-        dark[:, side] = over + np.abs(change)
-    if width > 1:
-        slack = np.float32(FAINTEST * noise)
-        for of, limit, nearer in (
-            (bright, bend + slack, np.minimum),
-            (dark, bend - slack, np.maximum),
+        cv2.min(up[:, :-gap], down[:, gap:], dst=height[:, gap:-gap])
+        for border, over, change in (
+            (slice(0, gap), down[:, :gap], down[:, gap : 2 * gap]),
+            (slice(places - gap, places), up[:, -gap:], up[:, -2 * gap : -gap]),
         ):
-            for side in (slice(2 * gap, places), slice(0, places - 2 * gap)):
-                nearer(of[:, side], limit, out=of[:, side])
-    return _Ridges(bright.reshape(*shape, places), dark.reshape(*shape, places), width, noise)
+            cv2.subtract(over, np.abs(change), dst=height[:, border])
+        if width > 1:
+            limit = bent + np.float32(FAINTEST * noise)
+            for inner in (slice(2 * gap, places), slice(0, places - 2 * gap)):
+                cv2.min(height[:, inner], limit, dst=height[:, inner])
+    return _Ridges(heights.reshape(2, *shape, places), width, noise)
 
 
-def _peaks(ridges: list[_Ridges], stretches: Stretches, polarity: int) -> Peaks:
-    """The highest ridges of one polarity in each band."""
+def _peaks(ridges: list[_Ridges], stretches: Stretches) -> tuple[Peaks, Peaks]:
+    """The highest ridges of each band, those of a band and polarity apart from each other."""
     _, bands, columns = stretches.sums.shape
-    best = np.zeros((bands, columns), dtype=np.float32)
+    best = np.zeros((2 * bands, columns), dtype=np.float32)
     for k, ridge in enumerate(ridges):
-        of = ridge.of(polarity)
-        highest = of.max(axis=0) if polarity > 0 else -of.min(axis=0)
-        highest /= np.float32(ridge.noise * CLEARLY**k)
+        highest = ridge.heights.max(axis=1).reshape(2 * bands, -1)
+        highest *= np.float32(1 / (ridge.noise * CLEARLY**k))
         first = ridge.width // 2
         inner = best[:, first : columns - first]
         if first > 0:  # a wide stretch that reaches a narrow ridge at its edge is no wide ridge
-            reached = _highest_within(inner, first + APART)
-            highest[highest < reached] = 0.0
+            highest[highest < _highest_within(inner, first + APART)] = 0.0
         np.maximum(inner, highest, out=inner)
-    highest = _highest_within(best, APART)
-    band, column = np.nonzero((best == highest) & (best > FAINTEST))
-    height = best[band, column]
-    order = np.lexsort((-height, band))
-    rank = np.arange(band.size) - np.searchsorted(band, band)
-    order = order[rank < PEAKS_PER_BAND]
-    band, column = band[order], column[order]
-    x, slope, width = _shape_of(ridges, stretches, polarity, band, column)
-    return Peaks(
+    row, column = np.nonzero((best >= _highest_within(best, APART)) & (best > FAINTEST))
+    height = best[row, column]
+    order = np.lexsort((-height, row))
+    order = order[np.arange(row.size) - np.searchsorted(row, row) < PEAKS_PER_BAND]
+    row, column = row[order], column[order]
+    band = row % bands
+    shape = _shape_of(ridges, stretches, row // bands, band, column)
+    y = (band + 0.5) * stretches.rows - 0.5
+    both = Peaks(
         band,
-        x,
+        shape[0],
         np.asarray((band + 0.5) * stretches.rows - 0.5),
         height[order].astype(np.float64),
-        slope,
-        width,
+        shape[1],
+        shape[2],
         stretches.slope_step,
         bands * stretches.rows,
         columns,
     )
+    dark = int(np.searchsorted(row, bands))
+    return both.only(slice(0, dark)), both.only(slice(dark, None))
 
 
 def _highest_within(heights: F32, columns: int) -> F32:
@@ -177,28 +178,25 @@ def _highest_within(heights: F32, columns: int) -> F32:
 def _shape_of(
     ridges: list[_Ridges],
     stretches: Stretches,
-    polarity: int,
+    sign: NDArray[np.intp],
     band: NDArray[np.intp],
     column: NDArray[np.intp],
 ) -> tuple[F64, F64, F64]:
-    """Middle, slope and width of the ridge at each place."""
+    """Middle, slope and width of the ridge at each place; ``sign`` 0: bright, 1: dark."""
     best = np.zeros(band.size)
     x, slope, width = column.astype(np.float64), np.zeros(band.size), np.ones(band.size)
-    every = np.arange(band.size)
     for k, ridge in enumerate(ridges):
-        of = ridge.of(polarity)
-        place = np.clip(column - ridge.width // 2, 1, of.shape[2] - 2)
-        heights = polarity * of[:, band, place]
-        at = heights.argmax(axis=0)
-        height = heights[at, every]
-        before = polarity * of[at, band, place - 1]
-        after = polarity * of[at, band, place + 1]
+        place = np.clip(column - ridge.width // 2, 1, ridge.heights.shape[3] - 2)
+        at = ridge.heights[sign, :, band, place].argmax(axis=1)
+        before, height, after = (
+            ridge.heights[sign, at, band, place + aside] for aside in (-1, 0, 1)
+        )
+        noises = height / (ridge.noise * CLEARLY**k)
+        better = noises > best
+        best[better] = noises[better]
         bend = np.maximum(2 * height - before - after, 1e-6)
         aside = np.clip((after - before) / (2 * bend), -0.5, 0.5)
         middle = place + ridge.width // 2 + aside
-        noises = height / (ridge.noise * CLEARLY**k)
-        better = noises > best
-        best = np.where(better, noises, best)
-        x, slope = np.where(better, middle, x), np.where(better, stretches.slopes[at], slope)
-        width = np.where(better, float(ridge.width), width)
+        x[better], slope[better] = middle[better], stretches.slopes[at[better]]
+        width[better] = ridge.width
     return x, slope, width

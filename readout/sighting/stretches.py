@@ -23,6 +23,7 @@ LARGEST_AREA_PX2 = 90_000
 """the picture is halved until no more pixels than this are left"""
 DOUBLINGS = 3
 """a stretch is 2^3 averaged rows long, where the picture has the rows"""
+LEAST_DOUBLINGS = 2
 LEAST_BANDS = 6
 
 
@@ -72,44 +73,33 @@ def averaged(pixels: Pixels) -> tuple[F32, int]:
 def stretches_of(small: F32) -> Stretches | None:
     """Sums along the stretches of each band of rows; None where there are too few rows."""
     doublings = min(DOUBLINGS, int(math.log2(max(1, small.shape[0] // LEAST_BANDS))))
-    if doublings < 1:
+    if doublings < LEAST_DOUBLINGS:
         return None
     rows = 2**doublings
     bands, columns = small.shape[0] // rows, small.shape[1]
-    pad = rows // 2
-    wide = columns + 2 * pad
-    sums = np.empty((1, bands * rows, wide), dtype=np.float32)
-    sums[0, :, pad:-pad] = small[: bands * rows]
-    sums[0, :, :pad] = sums[0, :, pad : pad + 1]
-    sums[0, :, -pad:] = sums[0, :, -pad - 1 : -pad]
+    pad = rows - 2
+    padded = cv2.copyMakeBorder(small[: bands * rows], 0, 0, pad, pad, cv2.BORDER_REPLICATE)
+    sums = np.asarray(padded, dtype=np.float32)[None]
     for doubling in range(1, doublings):
-        sums = _doubled(sums, np.arange(1 - 2**doubling, 2**doubling))
+        largest = 2**doubling - 1
+        shifts = np.arange(-largest, largest + 1)
+        reach = 2 ** (doubling - 1)
+        first = np.full(shifts.size, reach)
+        sums = _doubled(sums, shifts, first, sums.shape[2] - 2 * reach)
     shifts = np.arange(2 - rows, rows, 2)
-    sums = _doubled(sums, shifts)
-    centred = np.empty((shifts.size, bands, columns), dtype=np.float32)
-    for k, shift in enumerate(shifts):
-        first = pad - shift // 2
-        centred[k] = sums[k, :, first : first + columns]
-    return Stretches(centred, shifts, rows)
+    first = (sums.shape[2] - columns - shifts) // 2
+    return Stretches(_doubled(sums, shifts, first, columns), shifts, rows)
 
 
-def _doubled(halves: F32, shifts: NDArray[np.intp]) -> F32:
-    """Stretches of twice the rows of each shift; columns are those of the top row.
-
-    Those that would leave the padded picture are 0; ``stretches_of`` does not reach so far.
-    """
-    middle, wide = len(halves) // 2, halves.shape[2]
-    whole = np.empty((shifts.size, halves.shape[1] // 2, wide), dtype=np.float32)
-    beyond = (int(shifts[-1]) + 1) // 2
-    whole[:, :, :beyond] = 0.0
-    whole[:, :, wide - beyond :] = 0.0
-    for out, shift in zip(whole, shifts, strict=True):
+def _doubled(halves: F32, shifts: NDArray[np.intp], first: NDArray[np.intp], columns: int) -> F32:
+    """Stretches of twice the rows for each shift, their top rows from its column ``first`` on."""
+    middle = len(halves) // 2
+    whole = np.empty((shifts.size, halves.shape[1] // 2, columns), dtype=np.float32)
+    for out, shift, start in zip(whole, shifts.tolist(), first.tolist(), strict=True):
         half = abs(shift) // 2
         move = abs(shift) - half
-        of_half = halves[middle + half if shift > 0 else middle - half]
-        top, bottom, end = of_half[0::2], of_half[1::2], wide - move
-        if shift >= 0:
-            np.add(top[:, :end], bottom[:, move:], out=out[:, :end])
-        else:
-            np.add(top[:, move:], bottom[:, :end], out=out[:, move:])
+        of_half = halves[middle + (half if shift > 0 else -half)]
+        below = start + (move if shift > 0 else -move)
+        top, bottom = of_half[0::2, start : start + columns], of_half[1::2, below : below + columns]
+        np.add(top, bottom, out=out)
     return whole
