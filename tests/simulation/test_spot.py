@@ -77,3 +77,20 @@ def test_the_bound_of_a_gaussian_spot_on_a_bright_ground() -> None:
 def test_sizes_must_be_positive(wrong: dict[str, float]) -> None:
     with pytest.raises(ValueError, match="must be positive"):
         Spot(**wrong)
+
+
+def test_an_elongated_spot_leans_the_way_it_is_turned() -> None:
+    """Second moments of a uniform ellipse and a Gaussian add: r^2/4 + s^2 along each axis, and
+    1/12 for the pixel; turned clockwise on screen, the long axis leans towards -x for +y.
+    """
+    spot = Spot(6.0, 1.4, background=0.0, elongation=1.5, rotation_deg=30.0)
+    image = spot_image((81, 81), 40.3, 39.8, spot)
+    rows, columns = np.mgrid[:81, :81]
+    x, y = columns - 40.3, rows - 39.8
+    moments = np.array([[x * x, x * y], [x * y, y * y]])
+    found = (image * moments).sum(axis=(2, 3)) / image.sum() - np.eye(2) / 12
+    turn = math.radians(30.0)
+    along = np.array([-math.sin(turn), math.cos(turn)])
+    across = np.array([math.cos(turn), math.sin(turn)])
+    expected = (3.0**2 / 4 + 1.4**2) * (1.5**2 * np.outer(along, along) + np.outer(across, across))
+    assert found == pytest.approx(expected, abs=1e-5)
