@@ -1,0 +1,207 @@
+"""Weighted least squares on a window about a spot, robust, with the noise read from the window.
+
+First all pixels count alike, until the shape stands; then each by its variance, residuals beyond
+three sd cut to three, as modified residuals (P. J. Huber, Robust Statistics, 1981, 7.8), beyond
+six left out. What is above the sensor's range is left out by what the model expects there, not by
+what the noise made of it.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, replace
+
+import cv2
+import numpy as np
+
+from readout.model import F64
+from readout.sighting.disc import half_maximum
+from readout.sighting.spot_model import (
+    HEIGHT,
+    MIDDLE,
+    PARAMETERS,
+    Columns,
+    Mask,
+    SpotShape,
+    State,
+    Window,
+    best_state_of,
+    columns_of,
+    held,
+    state_of,
+    stepped,
+)
+from readout.sighting.spot_noise import (
+    CUT_SD,
+    excess_variance,
+    explained_share,
+    known_from_few,
+    rough_variance,
+    variance_line,
+)
+
+LEFT_OUT_SD = 6.0
+MOST_STEPS = 8
+WEIGHTED_STEPS = 2
+NEARLY, SETTLED = 0.1, 0.02
+"""widths by which place and blur may still change when a shape counts as nearly right, as right"""
+STEEPEST = 1.5
+"""a pixel is this much of the smoothed height above its brightest neighbour at most"""
+
+_NEIGHBOURS = np.array([[1, 1, 1], [1, 0, 1], [1, 1, 1]], np.uint8)
+_SURE = np.array([1e-9] * 9 + [0.01])
+_CAREFUL = np.array([1e-9] * 6 + [0.003] * 3 + [0.03])
+"""Marquardt damping: of a disc smaller than its blur hardly more is seen than of the blur"""
+
+
+@dataclass(frozen=True, slots=True)
+class SpotFit:
+    """A fitted spot; ``cov`` (2, 2) is the covariance of its middle, px^2.
+
+    ``height_sd``: uncertainty of the height, levels. ``explained``: share of the structure in the
+    window that the spot explains. ``pixel_sd``: noise of one pixel on the ground, levels.
+    ``left_out``: share of the usable pixels that had to be left out as foreign.
+    """
+
+    shape: SpotShape
+    cov: F64
+    height_sd: float
+    explained: float
+    pixel_sd: float
+    left_out: float
+
+
+@dataclass(frozen=True, slots=True)
+class _Step:
+    """One solution: change of the parameters, cofactor matrix, derivatives over the sd.
+
+    ``below``: pixels below saturation; ``inside``: those of them that are used.
+    """
+
+    change: F64
+    cofactor: F64
+    rows: F64
+    below: Mask
+    inside: Mask
+
+
+def first_look(window: Window) -> SpotShape | None:
+    """A rough shape from the places above one half and above eight tenths of the height."""
+    calm = cv2.GaussianBlur(cv2.medianBlur(window.levels.astype(np.float32), 3), (3, 3), 0)
+    border = np.concatenate([calm[0], calm[-1], calm[:, 0], calm[:, -1]])
+    ground = float(np.median(border))
+    rows, columns = calm.shape
+    inner = calm[rows // 4 : rows - rows // 4, columns // 4 : columns - columns // 4]
+    height = float(inner.max(initial=ground)) - ground
+    y, x = np.nonzero(calm > ground + 0.5 * height)
+    if not height > 0 or x.size < 3:
+        return None
+    sharpness = math.sqrt(np.count_nonzero(calm > ground + 0.8 * height) / x.size)
+    edge = min(0.84 / (1 - min(sharpness, 0.95)), 10.0) if sharpness > 0.65 else 1.0
+    (xx, xy), (_, yy) = np.cov(x, y) * (4 / half_maximum(edge) ** 2)
+    blur = held(float(xx), float(xy), float(yy))
+    middle = float(x.mean()), float(y.mean())
+    return window.in_pixels(SpotShape(*middle, ground, 0.0, 0.0, height, blur, edge))
+
+
+def settle(window: Window, start: SpotShape, *, ceiling: float) -> SpotShape | None:
+    """A shape near enough to the spot to cut a better window, or None."""
+    shape = window.in_cells(start)
+    settled = _settled(columns_of(_without_hot(window, start), shape), shape, ceiling, NEARLY)
+    return None if settled is None else window.in_pixels(settled)
+
+
+def fit_spot(window: Window, start: SpotShape, *, ceiling: float) -> SpotFit | None:
+    """Fit a spot whose shape is nearly known; ``ceiling`` is the level at which pixels saturate.
+
+    None where there is none.
+    """
+    near = window.in_cells(start)
+    settled = _settled(columns_of(_without_hot(window, start), near), near, ceiling, SETTLED)
+    if settled is None:
+        return None
+    columns = columns_of(window, settled)
+    state = state_of(columns, settled)
+    variance, freedom = rough_variance(state, columns.least_variance), math.inf
+    step = _solve(state, variance, ceiling)
+    shape = settled
+    for _ in range(WEIGHTED_STEPS):
+        if step is None:
+            return None
+        shape, _ = stepped(shape, step.change)
+        state = state_of(columns, shape)
+        variance, freedom = variance_line(
+            state, step.rows, step.cofactor, step.below, variance, columns.least_variance
+        )
+        step = _solve(state, variance, ceiling)
+    if step is None:
+        return None
+    left = state.residual - step.change @ state.jacobian
+    shape, _ = stepped(shape, step.change)
+    excess = excess_variance(columns, left, step.rows, step.cofactor, step.inside, variance)
+    factor = excess * known_from_few(freedom)
+    return SpotFit(
+        shape=window.in_pixels(shape),
+        cov=step.cofactor[MIDDLE, MIDDLE] * (factor * window.cell**2),
+        height_sd=math.sqrt(step.cofactor[HEIGHT, HEIGHT] * factor),
+        explained=explained_share(columns, shape, left, variance),
+        pixel_sd=math.sqrt(float(np.min(variance))) * window.cell,
+        left_out=1 - float(np.mean(step.inside)),
+    )
+
+
+def _settled(columns: Columns, shape: SpotShape, ceiling: float, enough: float) -> SpotShape | None:
+    """The shape that fits best when all pixels count alike: nothing is known of their noise as
+    long as the shape is wrong.
+    """
+    if columns.x.size < 2 * PARAMETERS:
+        return None
+    for _ in range(MOST_STEPS):
+        shape, state = best_state_of(columns, shape)
+        if not shape.height > 0:
+            return None
+        rows = state.jacobian * (state.model < ceiling)
+        cofactor = _inverse(rows @ rows.T, _CAREFUL)
+        if cofactor is None:
+            return None
+        shape, moved = stepped(shape, cofactor @ (rows @ state.residual))
+        if moved < enough:
+            break
+    return shape
+
+
+def _without_hot(window: Window, shape: SpotShape) -> Window:
+    """Levels cut to what the spot's own steepness allows above and below the eight neighbours."""
+    levels, most = window.levels, STEEPEST * shape.height
+    lowest, highest = cv2.erode(levels, _NEIGHBOURS), cv2.dilate(levels, _NEIGHBOURS)
+    return replace(window, levels=np.clip(levels, lowest - most, highest + most))
+
+
+def _solve(state: State, variance: F64, ceiling: float) -> _Step | None:
+    """One step of Gauss and Newton on modified residuals; None if the pixels cannot tell."""
+    sd = np.sqrt(variance)
+    z = state.residual / sd
+    below = state.model + CUT_SD * sd < ceiling
+    inside = below & (np.abs(z) <= LEFT_OUT_SD)
+    if np.count_nonzero(inside) < 2 * PARAMETERS:
+        return None
+    rows = state.jacobian * (inside / sd)
+    cofactor = _inverse(rows @ rows.T, _SURE)
+    if cofactor is None:
+        return None
+    change = cofactor @ (rows @ np.clip(z, -CUT_SD, CUT_SD))
+    return _Step(change, cofactor, rows, below, inside)
+
+
+def _inverse(normal: F64, damping: F64) -> F64 | None:
+    """Inverse of normal equations damped after Marquardt, None if there is none."""
+    scale = np.sqrt(np.diag(normal))
+    if not (scale.min() > 0 and np.all(np.isfinite(scale))):
+        return None
+    unit = normal / np.outer(scale, scale)
+    unit[np.diag_indices(PARAMETERS)] += damping
+    try:
+        inverse = np.linalg.inv(unit) / np.outer(scale, scale)
+    except np.linalg.LinAlgError:
+        return None
+    return inverse if np.all(np.isfinite(inverse)) and np.all(np.diag(inverse) > 0) else None

@@ -1,0 +1,225 @@
+"""What a spot looks like on the pixels: its shape, the level it gives each pixel, and how both
+change with its parameters.
+
+Level of a pixel at (x, y), with d = (x - x0, y - y0):
+
+    b + g d + A D(sqrt(d^T S^-1 d); h)
+
+background b and its two slopes g, height A, the middle (x0, y0), the blur's covariance S (an
+ellipse with any turn) and the radius h of the disc in units of the blur, inside the profile D.
+
+The mean over a pixel is a Gaussian blur of 1/12 px^2 up to the fourth order, and S absorbs it. The
+remainder is a symmetric change of the profile: by itself it moves nothing, and at a blur of 0.7 px
+its beat with the pixels stays below 0.0001 px.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from readout.model import F64, QUANTISATION_VAR
+from readout.sighting.disc import DiscProfile, disc_profile, half_maximum
+
+Mask = NDArray[np.bool_]
+
+LEAST_BLUR_PX = 0.3
+LEAST_EDGE, MOST_EDGE = 0.3, 20.0
+PARAMETERS = 10
+MIDDLE = slice(4, 6)
+"""where the middle stands among the parameters: b, g (2), A, (x0, y0), S (xx, xy, yy), h"""
+HEIGHT = 3
+PATCH_WIDTHS = 0.8
+"""side of the patches, in widths of the spot: foreign light of about its own size is seen best"""
+WIDTH_OF_SPREAD = 2.355
+
+
+@dataclass(frozen=True, slots=True)
+class SpotShape:
+    """A spot in pixels and levels; ``blur`` is (xx, xy, yy), ``edge`` the radius h."""
+
+    x: float
+    y: float
+    background: float
+    slope_x: float
+    slope_y: float
+    height: float
+    blur: tuple[float, float, float]
+    edge: float
+
+    @property
+    def axes_px(self) -> tuple[float, float]:
+        """Standard deviations of the blur along its longer and its shorter axis."""
+        xx, xy, yy = self.blur
+        mean, half = (xx + yy) / 2, math.hypot((xx - yy) / 2, xy)
+        return math.sqrt(mean + half), math.sqrt(max(mean - half, 0.0))
+
+    @property
+    def spread_px(self) -> float:
+        """Standard deviation of the light along the longer axis."""
+        return self.axes_px[0] * math.sqrt(1 + self.edge**2 / 4)
+
+    @property
+    def width_px(self) -> float:
+        """Full width at half maximum, the geometric mean of the two axes."""
+        longer, shorter = self.axes_px
+        return 2 * half_maximum(self.edge) * math.sqrt(longer * shorter)
+
+
+@dataclass(frozen=True, slots=True)
+class Window:
+    """Pixels about a spot, averaged ``cell`` by ``cell``; ``x0, y0`` is the middle of the first.
+
+    ``usable`` leaves out what is defective, saturated or nearer to something else.
+    """
+
+    levels: F64
+    usable: Mask
+    x0: float
+    y0: float
+    cell: int
+
+    def in_cells(self, shape: SpotShape) -> SpotShape:
+        """A shape in pixels of the picture as one in cells from the first one."""
+        moved = replace(shape, x=shape.x - self.x0, y=shape.y - self.y0)
+        return _scaled(moved, 1 / self.cell)
+
+    def in_pixels(self, shape: SpotShape) -> SpotShape:
+        """The way back."""
+        scaled = _scaled(shape, self.cell)
+        return replace(scaled, x=scaled.x + self.x0, y=scaled.y + self.y0)
+
+
+def _scaled(shape: SpotShape, factor: float) -> SpotShape:
+    xx, xy, yy = shape.blur
+    return replace(
+        shape,
+        x=shape.x * factor,
+        y=shape.y * factor,
+        slope_x=shape.slope_x / factor,
+        slope_y=shape.slope_y / factor,
+        blur=(xx * factor**2, xy * factor**2, yy * factor**2),
+    )
+
+
+@dataclass(frozen=True, slots=True)
+class Columns:
+    """The usable pixels of a window, places in cells; ``patch`` numbers squares of them."""
+
+    x: F64
+    y: F64
+    level: F64
+    patch: NDArray[np.intp]
+    least_variance: float
+
+
+def columns_of(window: Window, shape: SpotShape) -> Columns:
+    """A window's usable pixels, in patches as large as the spot (in cells) is wide."""
+    row, column = np.nonzero(window.usable)
+    side = max(2, round(PATCH_WIDTHS * WIDTH_OF_SPREAD * shape.spread_px))
+    across = -(-window.usable.shape[1] // side)
+    return Columns(
+        column.astype(np.float64),
+        row.astype(np.float64),
+        window.levels[row, column],
+        (row // side) * across + column // side,
+        QUANTISATION_VAR / window.cell**2,
+    )
+
+
+@dataclass(frozen=True, slots=True)
+class State:
+    """What a shape gives at n pixels: light above the ground, level, what is left; (10, n)."""
+
+    light: F64
+    model: F64
+    residual: F64
+    jacobian: F64
+
+
+def state_of(columns: Columns, shape: SpotShape) -> State:
+    """Model and derivatives of a shape in cells."""
+    return _state(columns, shape, *_profile(columns, shape))
+
+
+def best_state_of(columns: Columns, shape: SpotShape) -> tuple[SpotShape, State]:
+    """The same with the ground, its slopes and the height that fit best (variable projection;
+    G. H. Golub and V. Pereyra, SIAM J. Numer. Anal. 10 (1973) 413).
+    """
+    profile, dx, dy, qx, qy = _profile(columns, shape)
+    design = np.stack([np.ones_like(dx), dx, dy, profile.value])
+    normal = design @ design.T
+    normal[np.diag_indices(4)] *= 1 + 1e-9
+    background, slope_x, slope_y, height = np.linalg.solve(normal, design @ columns.level).tolist()
+    shape = replace(shape, background=background, slope_x=slope_x, slope_y=slope_y, height=height)
+    return shape, _state(columns, shape, profile, dx, dy, qx, qy)
+
+
+def _profile(columns: Columns, shape: SpotShape) -> tuple[DiscProfile, F64, F64, F64, F64]:
+    """The profile at the pixels, d, and S^-1 d."""
+    dx, dy = columns.x - shape.x, columns.y - shape.y
+    xx, xy, yy = shape.blur
+    determinant = xx * yy - xy * xy
+    qx, qy = (yy * dx - xy * dy) / determinant, (xx * dy - xy * dx) / determinant
+    return disc_profile(np.sqrt(dx * qx + dy * qy), shape.edge), dx, dy, qx, qy
+
+
+def _state(
+    columns: Columns, shape: SpotShape, profile: DiscProfile, dx: F64, dy: F64, qx: F64, qy: F64
+) -> State:
+    pull = -shape.height * profile.by_r_over_r
+    pull_x, pull_y = pull * qx, pull * qy
+    light = shape.height * profile.value
+    model = shape.background + shape.slope_x * dx + shape.slope_y * dy + light
+    jacobian = np.stack(
+        [
+            np.ones_like(dx),
+            dx,
+            dy,
+            profile.value,
+            pull_x,
+            pull_y,
+            0.5 * pull_x * qx,
+            pull_x * qy,
+            0.5 * pull_y * qy,
+            shape.height * profile.by_edge,
+        ]
+    )
+    return State(light, model, columns.level - model, jacobian)
+
+
+def stepped(shape: SpotShape, change: F64) -> tuple[SpotShape, float]:
+    """The shape after a step held within reason, and how far the step went, in widths."""
+    by = change.tolist()
+    longer, shorter = shape.axes_px
+    far = math.hypot(by[4], by[5])
+    middle = min(1.0, shape.spread_px / far) if far > 0 else 1.0
+    widening = math.hypot(by[6] + by[8], by[6] - by[8], 2 * by[7])
+    grown = min(1.0, 0.7 * shorter**2 / widening) if widening > 0 else 1.0
+    xx, xy, yy = (value + grown * more for value, more in zip(shape.blur, by[6:9], strict=True))
+    longest = 0.5 + shape.edge / 4
+    edge = shape.edge + min(max(by[9], -longest), longest)
+    return (
+        SpotShape(
+            shape.x + middle * by[4],
+            shape.y + middle * by[5],
+            shape.background + by[0],
+            shape.slope_x + by[1],
+            shape.slope_y + by[2],
+            shape.height + by[HEIGHT],
+            held(xx, xy, yy),
+            min(max(edge, LEAST_EDGE), MOST_EDGE),
+        ),
+        max(far / shape.spread_px, widening / (2 * shorter * longer)),
+    )
+
+
+def held(xx: float, xy: float, yy: float) -> tuple[float, float, float]:
+    """A blur no sharper than a pixel shows."""
+    least = LEAST_BLUR_PX**2
+    if (xx + yy) / 2 - math.hypot((xx - yy) / 2, xy) >= least:
+        return xx, xy, yy
+    return max(xx, least), 0.0, max(yy, least)
