@@ -62,7 +62,7 @@ def spot_image(shape: tuple[int, int], x_px: float, y_px: float, spot: Spot) -> 
 
     Exact to 1e-6 of the contrast for a blur of 0.3 px and more.
     """
-    image = np.full(shape, spot.background)
+    image = np.full(shape, spot.background, dtype=np.float64)
     reach = spot.diameter_px / 2 + TAIL_SIGMAS * spot.blur_px
     reach = reach * max(spot.elongation, 1.0) + HALF_DIAGONAL_PX
     rows = np.arange(shape[0], dtype=np.float64)[:, None] - y_px
