@@ -109,7 +109,7 @@ class _Votes:
             self.cell.ravel(), (self.share * weight[:, None]).ravel(), SLOPES * self.columns
         )
         best = int(table.argmax())
-        if table[best] < LEAST_STRENGTH / 3:
+        if table[best] < LEAST_STRENGTH / 2:
             return None
         slope, column = divmod(best, self.columns)
         x = column * CELL_COLUMNS + self.first_column

@@ -13,6 +13,7 @@ import numpy as np
 from readout.model import Pixels
 from readout.sighting.agree import AgreedLine, lines_of
 from readout.sighting.bands import RoughCrosshair, find_crosshairs
+from readout.sighting.companions import with_companions
 from readout.sighting.fold import Line
 from readout.sighting.peaks import peaks_of
 from readout.sighting.rough import RoughArm, RoughArms
@@ -22,6 +23,8 @@ __all__ = ["RoughArm", "RoughArms", "RoughCrosshair", "find_arms", "find_crossha
 
 MOST_ARMS = 6
 LEAST_OF_STRONGEST = 0.06
+"""weaker lines are shadows of dust and of blocks of compression"""
+SAME_WIDTHS = 1.0
 
 
 def find_arms(pixels: Pixels) -> RoughArms:
@@ -31,13 +34,12 @@ def find_arms(pixels: Pixels) -> RoughArms:
     horizontal: a line near 45 degrees may be in both lists.
     """
     small, step_px = averaged(pixels)
-    return RoughArms(
-        _arms(small, step_px), _arms(np.asarray(cv2.transpose(small), dtype=np.float32), step_px)
-    )
+    across = np.asarray(cv2.transpose(small), dtype=np.float32)
+    return RoughArms(_arms(pixels, small, step_px), _arms(pixels.T, across, step_px))
 
 
-def _arms(small: F32, step_px: int) -> tuple[RoughArm, ...]:
-    """Arms upright in an averaged picture."""
+def _arms(pixels: Pixels, small: F32, step_px: int) -> tuple[RoughArm, ...]:
+    """Arms upright in a picture and in its average."""
     stretches = stretches_of(small)
     peaks = None if stretches is None else peaks_of(stretches, step_px)
     if peaks is None:
@@ -47,9 +49,32 @@ def _arms(small: F32, step_px: int) -> tuple[RoughArm, ...]:
         for polarity, of_polarity in zip((1, -1), peaks, strict=True)
         for line in lines_of(of_polarity)
     ]
-    arms.sort(key=lambda arm: -arm.strength)
-    return tuple(
-        arm for arm in arms[:MOST_ARMS] if arm.strength > LEAST_OF_STRONGEST * arms[0].strength
+    if not arms:
+        return ()
+    arms.sort(key=_strength, reverse=True)
+    strongest, *companions = with_companions(pixels, arms[0], step_px)
+    last_row = pixels.shape[0] - 1
+    arms = [
+        strongest,
+        *(arm for arm in arms[1:] if not _among(companions, arm, last_row)),
+        *companions,
+    ]
+    arms.sort(key=_strength, reverse=True)
+    least = LEAST_OF_STRONGEST * arms[0].strength
+    return tuple(arm for arm in arms[:MOST_ARMS] if arm.strength > least)
+
+
+def _strength(arm: RoughArm) -> float:
+    return arm.strength
+
+
+def _among(arms: list[RoughArm], arm: RoughArm, last_row: int) -> bool:
+    """True for a line that is one of others, seen less well."""
+    rows = np.array([0.0, last_row])
+    return any(
+        arm.polarity == other.polarity
+        and np.abs(arm.line.x_at(rows) - other.line.x_at(rows)).max() < SAME_WIDTHS * other.width_px
+        for other in arms
     )
 
 

@@ -113,13 +113,14 @@ def _ridges(sums: F32, width: int, least_noise: float, shape: tuple[int, ...]) -
     rise = cv2.subtract(sums[:, gap:], sums[:, :-gap])
     fall = cv2.subtract(sums[:, :-gap], sums[:, gap:])
     bend = cv2.subtract(rise[:, gap:], rise[:, :-gap])
-    unbend = cv2.subtract(fall[:, gap:], fall[:, :-gap])
     sampled = np.abs(bend.ravel()[:: max(1, bend.size // NOISE_SAMPLES)])
     middle = sampled.size // 2
     noise = max(1.4826 / 2 * float(np.partition(sampled, middle)[middle]), least_noise)
-    heights = np.empty((2, *sums.shape), dtype=np.float32)
-    for height, up, down, bent in zip(
-        heights, (rise, fall), (fall, rise), (bend, unbend), strict=True
+    slack = np.float32(FAINTEST * noise)
+    bright, dark = heights = np.empty((2, *sums.shape), dtype=np.float32)
+    for height, up, down, limit in (
+        (bright, rise, fall, slack + bend),
+        (dark, fall, rise, slack - bend),
     ):
         cv2.min(up[:, :-gap], down[:, gap:], dst=height[:, gap:-gap])
         for border, over, change in (
@@ -128,7 +129,6 @@ def _ridges(sums: F32, width: int, least_noise: float, shape: tuple[int, ...]) -
         ):
             cv2.subtract(over, np.abs(change), dst=height[:, border])
         if width > 1:
-            limit = bent + np.float32(FAINTEST * noise)
             for inner in (slice(2 * gap, places), slice(0, places - 2 * gap)):
                 cv2.min(height[:, inner], limit, dst=height[:, inner])
     return _Ridges(heights.reshape(2, *shape, places), width, noise)
@@ -146,14 +146,13 @@ def _peaks(ridges: list[_Ridges], stretches: Stretches) -> tuple[Peaks, Peaks]:
         if first > 0:  # a wide stretch that reaches a narrow ridge at its edge is no wide ridge
             highest[highest < _highest_within(inner, first + APART)] = 0.0
         np.maximum(inner, highest, out=inner)
-    row, column = np.nonzero((best >= _highest_within(best, APART)) & (best > FAINTEST))
-    height = best[row, column]
+    place = np.flatnonzero((best >= _highest_within(best, APART)) & (best > FAINTEST))
+    row, column, height = place // columns, place % columns, best.ravel()[place]
     order = np.lexsort((-height, row))
     order = order[np.arange(row.size) - np.searchsorted(row, row) < PEAKS_PER_BAND]
     row, column = row[order], column[order]
     band = row % bands
     shape = _shape_of(ridges, stretches, row // bands, band, column)
-    y = (band + 0.5) * stretches.rows - 0.5
     both = Peaks(
         band,
         shape[0],
