@@ -20,8 +20,8 @@ from concurrent.futures import Executor, ProcessPoolExecutor
 
 import cv2
 
+from readout.model import Target
 from tests.bench import gross, phases, placing, rivals, tables
-from tests.bench.kinds import COARSE_KIND, LIMIT
 from tests.bench.placing import KINDS
 
 PARTS = ("kinds", "phases", "gross", "time")
@@ -44,12 +44,15 @@ def kinds_rows(pool: Executor, options: argparse.Namespace) -> Iterator[tuple[st
     """Each kind and seed, each kind, and the honesty of all with a bound together."""
     bounded = []
     for name in chosen(options.kinds):
+        if KINDS[name].target not in set(Target):
+            print(f"{name}: left out, there is no method for a {KINDS[name].target}")
+            continue
         by_seed = placing.run_kind(pool, name, options.seeds, options.frames, options.tracked)
         whole = placing.pooled(by_seed)
         for seed, placed in zip(options.seeds, by_seed, strict=True):
             yield tables.placing_row(KINDS[name], str(seed), placed)
         yield tables.placing_row(KINDS[name], "all", whole)
-        if name in LIMIT or name == COARSE_KIND.name:
+        if KINDS[name].has_bound:
             bounded.append(whole)
     if bounded:
         yield tables.honesty_row(placing.pooled(bounded))

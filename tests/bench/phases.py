@@ -9,8 +9,9 @@ import numpy as np
 
 from readout.model import F64
 from readout.sighting import locate
-from readout.simulation import Sensor, crosshair_image, expose
-from tests.bench.kinds import LIMIT, REFERENCE, SHAPE
+from readout.simulation import Crosshair, Sensor, crosshair_image
+from readout.simulation.ground import UniformGround, expose_on
+from tests.bench.kinds import BITS8, REFERENCE, SHAPE, THIN, WIDE
 
 PHASES = 32
 QUIET = Sensor(bits=16, gain_levels_per_electron=0.0768, read_noise_electrons=6.0)
@@ -18,12 +19,12 @@ QUIET_LIGHT = 100.0
 """this many times the electrons: a tenth of the noise"""
 SEED = 100
 
-RETICLES = {
+RETICLES: dict[str, Crosshair] = {
     "clean": REFERENCE,
     "turned 2°": replace(REFERENCE, rotation_deg=2.0),
     "turned 30°": replace(REFERENCE, rotation_deg=30.0),
-    "thin": LIMIT["thin, 8 bit"].crosshair,
-    "wide": LIMIT["wide, 8 bit"].crosshair,
+    "thin": THIN,
+    "wide": WIDE,
 }
 
 
@@ -38,7 +39,7 @@ class PhaseErrors:
 
 def errors_at(name: str, phase: float, frames: int, quiet: bool) -> F64:
     """Errors (frames, 2) at one phase of x and another of y."""
-    crosshair, sensor = RETICLES[name], LIMIT["clean, 8 bit"].sensor
+    crosshair, sensor = RETICLES[name], BITS8
     if quiet:
         crosshair = replace(
             crosshair,
@@ -48,10 +49,11 @@ def errors_at(name: str, phase: float, frames: int, quiet: bool) -> F64:
         sensor = QUIET
     x, y = SHAPE[1] / 2 + phase, SHAPE[0] / 2 + (phase + 0.5) % 1
     electrons = crosshair_image(SHAPE, x, y, crosshair)
+    ground = UniformGround(crosshair.background, sensor)
     rng = np.random.default_rng((SEED, int(phase * PHASES)))
     errors = []
     for _ in range(frames):
-        found = locate(expose(electrons, sensor, rng), full_scale=sensor.full_scale)
+        found = locate(expose_on(electrons, ground, rng), full_scale=sensor.full_scale)
         errors.append((found.x_px - x, found.y_px - y))
     return np.array(errors)
 

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from readout.model import F64, Quality
+from readout.model import F64, Quality, Target
 from readout.sighting import locate
 from tests.bench.kinds import COARSE_KIND, LIMIT, Kind
 from tests.bench.real import REAL
@@ -50,7 +50,9 @@ def place(name: str, seed: int, first: int, last: int, tracked: bool) -> Placed:
     errors, sds, flagged = [], [], []
     for k in range(first, last):
         picture = kind.picture(seed, k)
-        found = locate(picture.pixels, full_scale=picture.full_scale, prior=before)
+        found = locate(
+            picture.pixels, full_scale=picture.full_scale, target=Target(kind.target), prior=before
+        )
         before = found if tracked else None
         errors.append((found.x_px - picture.x_px, found.y_px - picture.y_px))
         sds.append((found.cov_px2[0] ** 0.5, found.cov_px2[2] ** 0.5))

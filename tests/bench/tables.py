@@ -41,7 +41,7 @@ def placing_row(kind: Kind, seed: str, placed: Placed) -> tuple[str, ...]:
     )
     if len(error) < 2:
         return (*start, *([""] * 8), *counts)
-    bound = kind.bound_px() if kind.light is None and kind.finish is None else None
+    bound = kind.bound_px() if kind.has_bound else None
     rms = [rms_of(error[:, axis]) for axis in (0, 1)]
     ratio = [""] * 2
     if bound is not None:
@@ -149,8 +149,8 @@ def print_table(
     head: tuple[str, ...], rows: Iterable[tuple[str, ...]], *, markdown: bool = False
 ) -> None:
     """A table as its rows come, in columns or as Markdown."""
-    widths = [max(len(text), 13) for text in head]
-    widths[0] = 44
+    widths = [max(len(text), 11) for text in head]
+    widths[0] = 38
     if markdown:
         print("\n| " + " | ".join(head) + " |\n|" + "---|" * len(head))
     else:
