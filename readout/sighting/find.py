@@ -14,6 +14,7 @@ from readout.model import Pixels
 from readout.sighting.agree import AgreedLine, lines_of
 from readout.sighting.bands import RoughCrosshair, find_crosshairs
 from readout.sighting.companions import with_companions
+from readout.sighting.distinct import without_doubles, without_valleys
 from readout.sighting.fold import Line
 from readout.sighting.peaks import peaks_of
 from readout.sighting.rough import RoughArm, RoughArms
@@ -24,7 +25,6 @@ __all__ = ["RoughArm", "RoughArms", "RoughCrosshair", "find_arms", "find_crossha
 MOST_ARMS = 6
 LEAST_OF_STRONGEST = 0.06
 """weaker lines are shadows of dust and of blocks of compression"""
-SAME_WIDTHS = 1.0
 
 
 def find_arms(pixels: Pixels) -> RoughArms:
@@ -54,11 +54,8 @@ def _arms(pixels: Pixels, small: F32, step_px: int) -> tuple[RoughArm, ...]:
     arms.sort(key=_strength, reverse=True)
     strongest, *companions = with_companions(pixels, arms[0], step_px)
     last_row = pixels.shape[0] - 1
-    arms = [
-        strongest,
-        *(arm for arm in arms[1:] if not _among(companions, arm, last_row)),
-        *companions,
-    ]
+    others = without_doubles(arms[1:], companions, last_row)
+    arms = without_valleys([strongest, *companions, *others], last_row)
     arms.sort(key=_strength, reverse=True)
     least = LEAST_OF_STRONGEST * arms[0].strength
     return tuple(arm for arm in arms[:MOST_ARMS] if arm.strength > least)
@@ -66,16 +63,6 @@ def _arms(pixels: Pixels, small: F32, step_px: int) -> tuple[RoughArm, ...]:
 
 def _strength(arm: RoughArm) -> float:
     return arm.strength
-
-
-def _among(arms: list[RoughArm], arm: RoughArm, last_row: int) -> bool:
-    """True for a line that is one of others, seen less well."""
-    rows = np.array([0.0, last_row])
-    return any(
-        arm.polarity == other.polarity
-        and np.abs(arm.line.x_at(rows) - other.line.x_at(rows)).max() < SAME_WIDTHS * other.width_px
-        for other in arms
-    )
 
 
 def _in_pixels(found: AgreedLine, polarity: int, step_px: int) -> RoughArm:

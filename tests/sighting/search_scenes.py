@@ -242,6 +242,21 @@ def returns(rng: np.random.Generator) -> Scene:
     return Scene(exposed(np.maximum(electrons, 0), rng), arms, share)
 
 
+def fixed(rng: np.random.Generator) -> Scene:
+    """A short-armed return over a fixed crosshair as large as the frame, of its polarity."""
+    crosshair = random_crosshair(rng, turn_deg=15.0, noises=(30.0, 200.0), lines=(2.0, 6.0))
+    shape = any_shape(rng)
+    reach = float(rng.uniform(0.15, 0.3)) * shape[0]
+    short_armed = replace(crosshair, half_length_px=reach, gap_px=0.1 * reach)
+    x, y = place(shape, rng, 0.3)
+    at = place(shape, rng, 0.3)
+    reticle = replace(random_crosshair(rng, turn_deg=1.0, lines=(2.0, 5.0)), background=0.0)
+    reticle = replace(reticle, contrast=float(rng.uniform(0.3, 1.0)) * crosshair.contrast)
+    electrons = crosshair_image(shape, x, y, short_armed) + crosshair_image(shape, *at, reticle)
+    arms = arms_of(shape, x, y, short_armed) + arms_of(shape, *at, reticle)
+    return Scene(exposed(np.maximum(electrons, 0), rng), arms)
+
+
 def scale(rng: np.random.Generator) -> Scene:
     """A fixed graduated scale of the same polarity across the picture."""
     crosshair = random_crosshair(rng, turn_deg=5.0, noises=(15.0, 200.0), lines=(2.0, 6.0))
@@ -285,7 +300,7 @@ KINDS: dict[str, Callable[[np.random.Generator], Scene]] = {
     kind.__name__: kind
     for kind in (
         upright, turned, faint, fainter, faintest, short, uneven, round_field, border, outside,
-        returns, scale, dirty,
+        returns, fixed, scale, dirty,
     )
 }  # fmt: skip
 

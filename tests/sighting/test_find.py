@@ -64,6 +64,7 @@ def rank_of(arm: TrueArm, found: RoughArms) -> int | None:
         ("border", 0.95),
         ("outside", 0.92),
         ("returns", 0.95),
+        ("fixed", 0.93),
         ("scale", 0.95),
         ("dirty", 0.95),
     ],
