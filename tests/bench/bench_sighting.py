@@ -3,10 +3,10 @@
     python -m tests.bench.bench_sighting [--only PART...] [--frames N] [--kinds NAME...]
         [--seeds 0 1 2] [--processes 2] [--tracked] [--markdown]
 
-Parts: kinds, phases, gross, time. Every figure carries its own standard error or the number behind
-it, every seed is printed. `kinds`: rms against the Cramér-Rao bound where there is one, over all
-frames in which something was found; µpx: a millionth of a pixel; gross: wrong by more than 0.1 px
-without a word. A full run takes a good quarter of an hour on two cores.
+Parts: kinds, phases, light, gross, time. Every figure carries its own standard error or the number
+behind it, every seed is printed. `kinds`: rms against the Cramér-Rao bound where there is one, over
+all frames in which something was found; µpx: a millionth of a pixel; gross: wrong by more than
+0.1 px without a word.
 """
 
 from __future__ import annotations
@@ -21,11 +21,12 @@ from concurrent.futures import Executor, ProcessPoolExecutor
 import cv2
 
 from readout.model import Target
-from tests.bench import gross, phases, placing, rivals, tables
+from tests.bench import gross, light, phases, placing, rivals, tables
 from tests.bench.placing import KINDS
 
-PARTS = ("kinds", "phases", "gross", "time")
+PARTS = ("kinds", "phases", "light", "gross", "time")
 PHASE_FRAMES = 64
+LIGHT_FRAMES = 100
 MIXED_FRAMES = 5001
 TIMED_FRAMES = 40
 
@@ -63,6 +64,11 @@ def phases_rows(pool: Executor, frames: int) -> Iterator[tuple[str, ...]]:
         for quiet, each in ((False, frames), (True, max(frames // 8, 2))):
             errors = phases.phase_errors(pool, name, each, quiet=quiet)
             yield tables.phases_row(name, each, errors, quiet=quiet)
+
+
+def light_rows(pool: Executor, frames: int) -> Iterator[tuple[str, ...]]:
+    for line, camera, shifts in light.all_shifts(pool, frames):
+        yield tables.light_row(line, camera, frames, shifts)
 
 
 def time_rows(pool: Executor, frames: int) -> Iterator[tuple[str, ...]]:
@@ -105,11 +111,14 @@ def main() -> None:
         if "phases" in given.only:
             rows = phases_rows(pool, PHASE_FRAMES)
             tables.print_table(tables.PHASES_HEAD, rows, markdown=given.markdown)
+        if "light" in given.only:
+            rows = light_rows(pool, LIGHT_FRAMES)
+            tables.print_table(tables.LIGHT_HEAD, rows, markdown=given.markdown)
         if "gross" in given.only:
             tally, wrong = gross.run_mixed(pool, given.seeds, given.mixed)
             rows = iter(tables.gross_rows(tally))
             tables.print_table(tables.GROSS_HEAD, rows, markdown=given.markdown)
-            print(*wrong, sep="\n", file=sys.stderr)
+            print(*wrong, sep="\n", end="\n" if wrong else "", file=sys.stderr)
         if "time" in given.only:
             rows = time_rows(pool, TIMED_FRAMES)
             tables.print_table(tables.TIME_HEAD, rows, markdown=given.markdown)

@@ -39,11 +39,16 @@ NO_TARGET = (
 WITH_TARGET = "a return"
 
 
+def sort_of(k: int) -> str:
+    """What frame k shows."""
+    return NO_TARGET[k // 10 % len(NO_TARGET)] if k % 10 == 9 else WITH_TARGET
+
+
 def mixed_picture(seed: int, k: int) -> tuple[str, Picture]:
     """What is shown, and the frame; the truth of a frame without a return is NaN."""
     rng = np.random.default_rng((seed, 4, k))
-    if k % 10 == 9:
-        sort = NO_TARGET[k // 10 % len(NO_TARGET)]
+    sort = sort_of(k)
+    if sort != WITH_TARGET:
         electrons, sensor = without_target(sort, rng), BITS8
         pixels = expose(electrons, sensor, rng)
         return sort, Picture(pixels, sensor.full_scale, math.nan, math.nan)

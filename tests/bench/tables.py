@@ -12,6 +12,7 @@ import numpy as np
 from readout.model import F64
 from tests.bench.gross import Tally, upper_limit
 from tests.bench.kinds import Kind
+from tests.bench.light import LIGHTS, Shifts
 from tests.bench.phases import PHASES, QUIET_LIGHT, PhaseErrors
 from tests.bench.placing import Placed
 from tests.bench.rivals import Timed
@@ -91,14 +92,30 @@ PHASES_HEAD = (
 
 def phases_row(name: str, frames: int, errors: PhaseErrors, *, quiet: bool) -> tuple[str, ...]:
     """The largest mean error at any phase of either axis, and the usual error of such a mean."""
+    start = (name, f"x{QUIET_LIGHT:.0f}" if quiet else "x1", str(PHASES * frames))
+    if errors.lost == PHASES * frames:
+        return (*start, "", "", "", str(errors.lost))
     largest = 1e6 * np.abs(errors.mean_px).max(axis=0)
+    se = f"±{1e6 * float(np.median(errors.se_px)):.0f}"
+    return (*start, *(f"{value:.0f}" for value in largest), se, str(errors.lost))
+
+
+LIGHT_HEAD = (
+    "shift with the light", "camera", "frames", "-30 % x µpx", "-30 % y µpx", "+30 % x µpx",
+    "+30 % y µpx", "flagged", "lost",
+)  # fmt: skip
+
+
+def light_row(line: str, camera: str, frames: int, shifts: Shifts) -> tuple[str, ...]:
+    """How far a change of light alone moves the place."""
+    values = zip(1e6 * shifts.shift_px.ravel(), 1e6 * shifts.se_px.ravel(), strict=True)
     return (
-        name,
-        f"x{QUIET_LIGHT:.0f}" if quiet else "x1",
-        f"{PHASES * frames}",
-        *(f"{value:.0f}" for value in largest),
-        f"±{1e6 * float(np.median(errors.se_px)):.0f}",
-        str(errors.lost),
+        line,
+        camera,
+        str(len(LIGHTS) * frames),
+        *(f"{value:+.0f} ±{se:.0f}" for value, se in values),
+        str(shifts.flagged),
+        str(shifts.lost),
     )
 
 
