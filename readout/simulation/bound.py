@@ -9,7 +9,7 @@ import numpy as np
 
 from readout.model import F64, QUANTISATION_VAR
 from readout.sighting.bound import cramer_rao_cov
-from readout.simulation.crosshair import Crosshair, arm_shares
+from readout.simulation.crosshair import Crosshair, union_image
 from readout.simulation.sensor import Sensor
 
 PARAMETERS: Final = (
@@ -65,7 +65,7 @@ def crossing_bound_cov(
         x, y, background, of_up, of_level, of_both = p[:6]
         up_line, level_line, up_blur, level_blur, up_angle, level_angle = p[6:12]
         up_slide, level_slide = p[12:14] if ended else (0.0, 0.0)
-        up, across, both = arm_shares(
+        image = union_image(
             columns - x,
             rows - y,
             replace(
@@ -82,11 +82,12 @@ def crossing_bound_cov(
                 normal_rad=level_angle,
                 slide_px=level_slide,
             ),
+            background=background,
+            contrasts=(of_up, of_level, of_both),
         )
-        image = background + of_up * up + of_level * across - of_both * both
         if plane:
             image += p[-2] * (columns - x_px) + p[-1] * (rows - y_px)[:, None]
-        return np.asarray(image)
+        return image
 
     largest = max(abs(contrast) for contrast in crosshair.contrasts)
     shortest = min(upright.half_width_px, level.half_width_px, upright.blur_px, level.blur_px)

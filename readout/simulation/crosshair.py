@@ -113,33 +113,46 @@ def crosshair_image(
     """
     rows = first_row + np.arange(shape[0], dtype=np.float64) - y_px
     columns = first_column + np.arange(shape[1], dtype=np.float64) - x_px
-    up, level, both = arm_shares(columns, rows, crosshair.upright, crosshair.level)
-    of_up, of_level, of_both = crosshair.contrasts
-    return crosshair.background + of_up * up + of_level * level - of_both * both
+    return union_image(
+        columns,
+        rows,
+        crosshair.upright,
+        crosshair.level,
+        background=crosshair.background,
+        contrasts=crosshair.contrasts,
+    )
 
 
-def arm_shares(columns: F64, rows: F64, up: Bar, level: Bar) -> tuple[F64, F64, F64]:
-    """Pixel means of the upright arm, of the level arm and of what both cover, (rows, columns).
+def union_image(
+    columns: F64,
+    rows: F64,
+    up: Bar,
+    level: Bar,
+    *,
+    background: float,
+    contrasts: tuple[float, float, float],
+) -> F64:
+    """Two bars on a ground, shape (rows, columns): what ``crosshair_image`` draws, part by part.
 
     ``columns`` and ``rows``: the sides of the grid of pixel centres, seen from the crossing.
+    ``contrasts``: of the upright bar, of the level one, and what is taken off where both are.
     """
-    images = np.zeros((3, rows.size, columns.size))
-    for image, arm in zip(images, (up, level), strict=False):
+    image = np.full((rows.size, columns.size), background)
+    for contrast, arm in zip(contrasts, (up, level), strict=False):
         row, column = arm.near(columns, rows)
-        image[row, column] = arm.means(columns[column], rows[row])
+        image[row, column] += contrast * arm.means(columns[column], rows[row])
 
     row, column = up.near(columns, rows)
-    x, y = columns[column], rows[row]
-    crossed = np.abs(level.across(x, y)) < level.reach_px
+    crossed = np.abs(level.across(columns[column], rows[row])) < level.reach_px
+    row, column = row[crossed], column[crossed]
 
     def both_at(x: F64, y: F64) -> F64:
         return _inner(up, up.across(x, y)) * _inner(level, level.across(x, y))
 
     least_blur_px = min(up.blur_px, level.blur_px)
-    images[2][row[crossed], column[crossed]] = pixel_means(
-        both_at, x[crossed], y[crossed], least_blur_px
-    )
-    return images[0], images[1], images[2]
+    both = pixel_means(both_at, columns[column], rows[row], least_blur_px)
+    image[row, column] -= contrasts[2] * both
+    return image
 
 
 def _inner(arm: Bar, across: F64) -> F64:

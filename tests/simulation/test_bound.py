@@ -12,7 +12,7 @@ from scipy.optimize import least_squares
 from readout.sighting.bound import cramer_rao_cov
 from readout.simulation import Crosshair, Sensor, crosshair_image, crossing_bound_cov, expose
 from readout.simulation.bar import Bar
-from readout.simulation.crosshair import arm_shares
+from readout.simulation.crosshair import union_image
 
 NO_ROUNDING = Sensor(16, gain_levels_per_electron=1e3, read_noise_electrons=0.0)
 
@@ -162,9 +162,10 @@ def test_a_joint_fit_of_everything_reaches_the_bound() -> None:
     def model(p: np.ndarray) -> np.ndarray:
         up = Bar(p[6] / 2, p[8], p[10], 18.0, 4.0, p[12])
         level = Bar(p[7] / 2, p[9], p[11], 18.0, 4.0, p[13])
-        shares = arm_shares(columns - p[0], rows - p[1], up, level)
-        plane = p[14] * (columns - x) + p[15] * (rows - y)[:, None]
-        return p[2] + p[3] * shares[0] + p[4] * shares[1] - p[5] * shares[2] + plane
+        image = union_image(
+            columns - p[0], rows - p[1], up, level, background=p[2], contrasts=p[3:6]
+        )
+        return image + p[14] * (columns - x) + p[15] * (rows - y)[:, None]
 
     turn = crosshair.upright.normal_rad, crosshair.level.normal_rad
     truth = np.array([x, y, 800.0, *[7000.0] * 3, 3.0, 3.0, 1.3, 1.3, *turn, *[0.0] * 4])
