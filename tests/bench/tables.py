@@ -18,7 +18,7 @@ from tests.bench.placing import Placed
 from tests.bench.rivals import Timed
 
 PLACING_HEAD = (
-    "kind", "seed", "frames", "rms/bound x", "rms/bound y", "rms x µpx", "rms y µpx",
+    "kind", "seed", "frames", "aim", "rms/bound x", "rms/bound y", "rms x µpx", "rms y µpx",
     "bias x µpx", "bias y µpx", "within 1 sd", "within 2 sd", "flagged", "lost", "gross",
 )  # fmt: skip
 
@@ -30,11 +30,18 @@ def rms_of(error: F64) -> tuple[float, float]:
     return rms, float(squares.std() / math.sqrt(squares.size) / (2 * rms)) if rms > 0 else 0.0
 
 
+def aim_of(kind: Kind) -> str:
+    """What a kind's rms is to stay below."""
+    if kind.ratio is not None:
+        return f"{kind.ratio:.2f} bound"
+    return "" if kind.rms_px is None else f"{1e6 * kind.rms_px:.0f} µpx"
+
+
 def placing_row(kind: Kind, seed: str, placed: Placed) -> tuple[str, ...]:
     """One kind and seed as text; statistics over all frames in which something was found."""
     found = placed.found
     error = placed.error_px[found]
-    start = (kind.name, seed, str(found.size))
+    start = (kind.name, seed, str(found.size), aim_of(kind))
     counts = (
         str(int(placed.flagged[found].sum())),
         str(int((~found).sum())),
@@ -75,8 +82,8 @@ def within(placed: Placed) -> tuple[str, str]:
 
 def honesty_row(placed: Placed) -> tuple[str, ...]:
     """All kinds with a bound together."""
-    n = str(len(placed.error_px))
-    return ("all with a bound", "all", n, *([""] * 6), *within(placed), "", "", "")
+    n = str(int(placed.found.sum()))
+    return ("all with a bound", "all", n, *([""] * 7), *within(placed), "", "", "")
 
 
 PHASES_HEAD = (

@@ -8,7 +8,8 @@ import pytest
 from tests.bench.gross import upper_limit
 from tests.bench.kinds import BITS8, REFERENCE, SHAPE, WANDER_PX, Kind
 from tests.bench.mixed import NO_TARGET, WITH_TARGET, mixed_picture, sort_of
-from tests.bench.placing import KINDS
+from tests.bench.placing import KINDS, Placed
+from tests.bench.tables import PLACING_HEAD, placing_row, rms_of
 
 CROSSHAIRS = [
     name for name, kind in KINDS.items() if kind.target == "crosshair" and "12 bit" not in name
@@ -73,6 +74,24 @@ def test_a_mixed_frame_follows_from_seed_and_number(k: int) -> None:
     assert sort == again == sort_of(k)
     np.testing.assert_array_equal(picture.pixels, same.pixels)
     assert np.isfinite(picture.x_px) == np.isfinite(picture.y_px) == (sort == WITH_TARGET)
+
+
+def test_an_rms_comes_with_its_standard_error() -> None:
+    """Normal errors: the rms of n has a standard error of rms / sqrt(2 n)."""
+    errors = 3.0 * np.random.default_rng(71).standard_normal((400, 250))
+    rms, se = np.array([rms_of(row) for row in errors]).T
+    assert rms.mean() == pytest.approx(3.0, rel=0.01)
+    assert rms.std() == pytest.approx(3.0 / np.sqrt(500), rel=4 / np.sqrt(800))
+    assert se.mean() == pytest.approx(3.0 / np.sqrt(500), rel=0.03)
+
+
+def test_a_lost_frame_counts_for_nothing_and_a_gross_one_is_counted() -> None:
+    errors = np.array([[0.01, -0.02], [np.nan, np.nan], [0.0, 0.3], [0.5, 0.0]])
+    placed = Placed(errors, np.full((4, 2), 0.05), np.array([False, True, False, True]))
+    row = dict(zip(PLACING_HEAD, placing_row(Kind("one"), "0", placed), strict=True))
+    assert (row["frames"], row["lost"], row["gross"], row["flagged"]) == ("4", "1", "1", "1")
+    assert row["within 1 sd"].startswith("66.7")  # four of six
+    assert row["rms y µpx"].startswith(f"{1e6 * np.sqrt((0.02**2 + 0.3**2) / 3):.0f} ")
 
 
 def test_the_upper_limit_of_a_share() -> None:
