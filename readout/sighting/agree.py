@@ -30,6 +30,9 @@ LEAST_BANDS = 3
 MISSING = 0.5
 """what a band without a ridge takes from the strength, as a share of what one with a ridge gives"""
 LEAST_STRENGTH = 3.0
+LEAST_OF_STRONGEST = 0.07
+LEAST_VOTES = 0.5
+"""the votes for a line are spread over a few cells: one holds at least half its strength"""
 MOST_LINES = 6
 MOST_TRIES = 10
 
@@ -47,19 +50,25 @@ class AgreedLine:
     strength: float
 
 
-def lines_of(peaks: Peaks) -> list[AgreedLine]:
-    """The lines that most bands agree on, each of other ridges than the ones before."""
+def lines_of(peaks: Peaks, strongest: float = 0.0) -> list[AgreedLine]:
+    """The lines that most bands agree on, each of other ridges than the ones before.
+
+    Lines that are weak beside the strongest, or beside the ``strongest`` already known, are
+    shadows of dust, of edges and of the blocks of compression, and left out.
+    """
     lines: list[AgreedLine] = []
     weight = np.log(peaks.height / FAINTEST)
     votes = _Votes.of(peaks)
+    least = max(LEAST_STRENGTH, LEAST_OF_STRONGEST * strongest)
     for _ in range(MOST_TRIES):
-        line = votes.fullest(weight)
+        line = votes.fullest(weight, LEAST_VOTES * least)
         if line is None:
             break
         line, near = _refined(peaks, weight, line)
         found = _agreed(peaks, weight, line, near)
-        if found is not None:
+        if found is not None and found.strength >= least:
             lines.append(found)
+            least = max(least, LEAST_OF_STRONGEST * found.strength)
         weight[near] = 0.0
         if len(lines) == MOST_LINES:
             break
@@ -103,13 +112,13 @@ class _Votes:
             middle_y,
         )
 
-    def fullest(self, weight: F64) -> Line | None:
-        """The line most voted for; None where too few votes are left."""
+    def fullest(self, weight: F64, least: float) -> Line | None:
+        """The line most voted for; None where none has as many votes as the least."""
         table = np.bincount(
             self.cell.ravel(), (self.share * weight[:, None]).ravel(), SLOPES * self.columns
         )
         best = int(table.argmax())
-        if table[best] < LEAST_STRENGTH / 2:
+        if table[best] < least:
             return None
         slope, column = divmod(best, self.columns)
         x = column * CELL_COLUMNS + self.first_column
@@ -154,6 +163,4 @@ def _agreed(peaks: Peaks, weight: F64, line: Line, near: NDArray[np.intp]) -> Ag
     of_band[peaks.band[seen] + 1] = weight[seen]
     total = np.cumsum(of_band)
     strength = float((total - np.minimum.accumulate(total)).max())
-    if strength < LEAST_STRENGTH:
-        return None
     return AgreedLine(line, float(np.median(peaks.width[seen])), strength)

@@ -11,7 +11,7 @@ import cv2
 import numpy as np
 
 from readout.model import Pixels
-from readout.sighting.agree import AgreedLine, lines_of
+from readout.sighting.agree import LEAST_OF_STRONGEST, AgreedLine, lines_of
 from readout.sighting.bands import RoughCrosshair, find_crosshairs
 from readout.sighting.companions import with_companions
 from readout.sighting.distinct import without_doubles, without_valleys
@@ -23,8 +23,6 @@ from readout.sighting.stretches import F32, averaged, stretches_of
 __all__ = ["RoughArm", "RoughArms", "RoughCrosshair", "find_arms", "find_crosshairs"]
 
 MOST_ARMS = 6
-LEAST_OF_STRONGEST = 0.06
-"""weaker lines are shadows of dust and of blocks of compression"""
 
 
 def find_arms(pixels: Pixels) -> RoughArms:
@@ -44,18 +42,18 @@ def _arms(pixels: Pixels, small: F32, step_px: int) -> tuple[RoughArm, ...]:
     peaks = None if stretches is None else peaks_of(stretches, step_px)
     if peaks is None:
         return ()
-    arms = [
-        _in_pixels(line, polarity, step_px)
-        for polarity, of_polarity in zip((1, -1), peaks, strict=True)
-        for line in lines_of(of_polarity)
-    ]
+    arms: list[RoughArm] = []
+    plainer_first = sorted(zip((1, -1), peaks, strict=True), key=lambda of: -of[1].height.sum())
+    for polarity, of_polarity in plainer_first:
+        strongest = max(map(_strength, arms), default=0.0)
+        arms += [_in_pixels(line, polarity, step_px) for line in lines_of(of_polarity, strongest)]
     if not arms:
         return ()
     arms.sort(key=_strength, reverse=True)
-    strongest, *companions = with_companions(pixels, arms[0], step_px)
+    first, *companions = with_companions(pixels, arms[0], step_px)
     last_row = pixels.shape[0] - 1
     others = without_doubles(arms[1:], companions, last_row)
-    arms = without_valleys([strongest, *companions, *others], last_row)
+    arms = without_valleys([first, *companions, *others], last_row)
     arms.sort(key=_strength, reverse=True)
     least = LEAST_OF_STRONGEST * arms[0].strength
     return tuple(arm for arm in arms[:MOST_ARMS] if arm.strength > least)

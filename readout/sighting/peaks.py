@@ -142,10 +142,10 @@ def _peaks(ridges: list[_Ridges], stretches: Stretches) -> tuple[Peaks, Peaks]:
         highest = ridge.heights.max(axis=1).reshape(2 * bands, -1)
         highest *= np.float32(1 / (ridge.noise * CLEARLY**k))
         first = ridge.width // 2
-        inner = best[:, first : columns - first]
+        inner = slice(first, columns - first)
         if first > 0:  # a wide stretch that reaches a narrow ridge at its edge is no wide ridge
-            highest[highest < _highest_within(inner, first + APART)] = 0.0
-        np.maximum(inner, highest, out=inner)
+            highest[highest < _highest_within(best, first + APART)[:, inner]] = 0.0
+        np.maximum(best[:, inner], highest, out=best[:, inner])
     place = np.flatnonzero((best >= _highest_within(best, APART)) & (best > FAINTEST))
     row, column, height = place // columns, place % columns, best.ravel()[place]
     order = np.lexsort((-height, row))
@@ -185,16 +185,19 @@ def _shape_of(
     best = np.zeros(band.size)
     x, slope, width = column.astype(np.float64), np.zeros(band.size), np.ones(band.size)
     for k, ridge in enumerate(ridges):
-        place = np.clip(column - ridge.width // 2, 1, ridge.heights.shape[3] - 2)
+        last = ridge.heights.shape[3] - 1
+        place = column - ridge.width // 2
+        within = (place >= 0) & (place <= last)
+        place = np.clip(place, 0, last)
         at = ridge.heights[sign, :, band, place].argmax(axis=1)
         before, height, after = (
-            ridge.heights[sign, at, band, place + aside] for aside in (-1, 0, 1)
+            ridge.heights[sign, at, band, np.clip(place + aside, 0, last)] for aside in (-1, 0, 1)
         )
-        noises = height / (ridge.noise * CLEARLY**k)
+        noises = within * height / (ridge.noise * CLEARLY**k)
         better = noises > best
         best[better] = noises[better]
         bend = np.maximum(2 * height - before - after, 1e-6)
-        aside = np.clip((after - before) / (2 * bend), -0.5, 0.5)
+        aside = np.clip((after - before) / (2 * bend), -0.5, 0.5) * ((place > 0) & (place < last))
         middle = place + ridge.width // 2 + aside
         x[better], slope[better] = middle[better], stretches.slopes[at[better]]
         width[better] = ridge.width
