@@ -31,6 +31,8 @@ def find_arms(pixels: Pixels) -> RoughArms:
     Upright lines are turned by up to 47 degrees from the picture's vertical, level ones from its
     horizontal: a line near 45 degrees may be in both lists.
     """
+    if pixels.size == 0:
+        return RoughArms((), ())
     small, step_px = averaged(pixels)
     across = np.asarray(cv2.transpose(small), dtype=np.float32)
     return RoughArms(_arms(pixels, small, step_px), _arms(pixels.T, across, step_px))
