@@ -141,10 +141,14 @@ def _fit(
     rough = None if window is None or shape is None else settle(window, shape, ceiling=full_scale)
     if rough is None or not _near_enough(rough, thing):
         return None
-    reach = max(LEAST_REACH_PX, math.ceil(REACH_SPREADS * rough.spread_px) + 1)
+    reach = max(LEAST_REACH_PX, math.ceil(REACH_SPREADS * rough.spreads_px[0]) + 1)
     if reach > LARGEST_SHARE * 3 * min(pixels.shape):
         return None
-    cell = max(1, int(rough.axes_px[1] / CELLS_A_BLUR), 2 * reach // MOST_CELLS_A_SIDE)
+    cell = max(
+        1,
+        int(rough.spreads_px[1] * rough.blur_share / CELLS_A_BLUR),
+        2 * reach // MOST_CELLS_A_SIDE,
+    )
     window = _cut(pixels, rough.x, rough.y, reach, cell, full_scale, others, unusable)
     fit = None if window is None else fit_spot(window, rough, ceiling=full_scale)
     return fit if fit is not None and _near_enough(fit.shape, thing) else None
@@ -152,12 +156,14 @@ def _fit(
 
 def _near_enough(shape: SpotShape, thing: Compact) -> bool:
     off = math.hypot(shape.x - thing.x_px, shape.y - thing.y_px)
-    return off < 4 * thing.cell_px + shape.spread_px
+    return off < 4 * thing.cell_px + shape.spreads_px[0]
 
 
 def _within(shape: SpotShape, thing: Compact) -> bool:
     """True for a thing that is part of the spot."""
-    return math.hypot(shape.x - thing.x_px, shape.y - thing.y_px) < shape.spread_px + thing.cell_px
+    return (
+        math.hypot(shape.x - thing.x_px, shape.y - thing.y_px) < shape.spreads_px[0] + thing.cell_px
+    )
 
 
 def _cut(
@@ -209,7 +215,7 @@ def _averaged(values: NDArray[np.float64], cell: int) -> NDArray[np.float64]:
 
 def _credible(fit: SpotFit, frame: tuple[int, ...]) -> bool:
     shape = fit.shape
-    longer, shorter = shape.axes_px
+    longer, shorter = shape.spreads_px
     return bool(
         np.all(np.isfinite(fit.cov))
         and -0.5 <= shape.x <= frame[1] - 0.5
@@ -240,7 +246,7 @@ def _sighting(pixels: Pixels, full_scale: float, fit: SpotFit, *, alone: bool) -
         quality |= Quality.DIM
     if width > BLURRED_PX:
         quality |= Quality.BLURRED
-    longer, shorter = shape.axes_px
+    longer, shorter = shape.spreads_px
     if longer > ASTIGMATIC_RATIO * shorter:
         quality |= Quality.ASTIGMATIC
     (xx, xy), (_, yy) = fit.cov

@@ -1,9 +1,9 @@
 """Weighted least squares on a window about a spot, robust, with the noise read from the window.
 
 First all pixels count alike, until the shape stands; then each by its variance, residuals beyond
-three sd cut to three, as modified residuals (P. J. Huber, Robust Statistics, 1981, 7.8), beyond
-six left out. What is above the sensor's range is left out by what the model expects there, not by
-what the noise made of it.
+three sd cut to three and far ones left out: modified residuals (P. J. Huber, Robust Statistics,
+1981, 7.8) that fade as those of F. R. Hampel (J. Am. Stat. Assoc. 69 (1974) 383). What is above the
+sensor's range is left out by what the model expects there, not by what the noise made of it.
 """
 
 from __future__ import annotations
@@ -40,11 +40,15 @@ from readout.sighting.spot_noise import (
     variance_line,
 )
 
-LEFT_OUT_SD = 6.0
+FADING_SD, LEFT_OUT_SD = 5.0, 9.0
+"""a residual counts less from the first on and nothing beyond the second: without a step, so that
+a spot of another shape does not jump with the noise"""
 MOST_STEPS = 8
 WEIGHTED_STEPS = 2
+"""few on purpose: on a spot of another shape many steps would wander off to fit a part of it"""
 NEARLY, SETTLED = 0.1, 0.02
-"""widths by which place and blur may still change when a shape counts as nearly right, as right"""
+"""widths by which place and width may still change when a shape counts as nearly right, as right"""
+USUAL_EDGE, USUAL_EDGE_SD = 1.0, 2.0
 STEEPEST = 1.5
 """a pixel is this much of the smoothed height above its brightest neighbour at most"""
 
@@ -98,10 +102,11 @@ def first_look(window: Window) -> SpotShape | None:
         return None
     sharpness = math.sqrt(np.count_nonzero(calm > ground + 0.8 * height) / x.size)
     edge = min(0.84 / (1 - min(sharpness, 0.95)), 10.0) if sharpness > 0.65 else 1.0
-    (xx, xy), (_, yy) = np.cov(x, y) * (4 / half_maximum(edge) ** 2)
-    blur = held(float(xx), float(xy), float(yy))
+    of_spread = half_maximum(edge) / math.sqrt(1 + edge**2 / 4)
+    (xx, xy), (_, yy) = np.cov(x, y) * (4 / of_spread**2)
+    moments = held(float(xx), float(xy), float(yy))
     middle = float(x.mean()), float(y.mean())
-    return window.in_pixels(SpotShape(*middle, ground, 0.0, 0.0, height, blur, edge))
+    return window.in_pixels(SpotShape(*middle, ground, 0.0, 0.0, height, moments, edge))
 
 
 def settle(window: Window, start: SpotShape, *, ceiling: float) -> SpotShape | None:
@@ -123,7 +128,7 @@ def fit_spot(window: Window, start: SpotShape, *, ceiling: float) -> SpotFit | N
     columns = columns_of(window, settled)
     state = state_of(columns, settled)
     variance, freedom = rough_variance(state, columns.least_variance), math.inf
-    step = _solve(state, variance, ceiling)
+    step = _solve(state, settled, variance, ceiling)
     shape = settled
     for _ in range(WEIGHTED_STEPS):
         if step is None:
@@ -133,7 +138,7 @@ def fit_spot(window: Window, start: SpotShape, *, ceiling: float) -> SpotFit | N
         variance, freedom = variance_line(
             state, step.rows, step.cofactor, step.below, variance, columns.least_variance
         )
-        step = _solve(state, variance, ceiling)
+        step = _solve(state, shape, variance, ceiling)
     if step is None:
         return None
     left = state.residual - step.change @ state.jacobian
@@ -161,10 +166,12 @@ def _settled(columns: Columns, shape: SpotShape, ceiling: float, enough: float) 
         if not shape.height > 0:
             return None
         rows = state.jacobian * (state.model < ceiling)
-        cofactor = _inverse(rows @ rows.T, _CAREFUL)
+        scatter = float(state.residual @ state.residual) / state.residual.size
+        normal, right = _with_usual_edge(rows @ rows.T, rows @ state.residual, shape, scatter)
+        cofactor = _inverse(normal, _CAREFUL)
         if cofactor is None:
             return None
-        shape, moved = stepped(shape, cofactor @ (rows @ state.residual))
+        shape, moved = stepped(shape, cofactor @ right)
         if moved < enough:
             break
     return shape
@@ -177,7 +184,7 @@ def _without_hot(window: Window, shape: SpotShape) -> Window:
     return replace(window, levels=np.clip(levels, lowest - most, highest + most))
 
 
-def _solve(state: State, variance: F64, ceiling: float) -> _Step | None:
+def _solve(state: State, shape: SpotShape, variance: F64, ceiling: float) -> _Step | None:
     """One step of Gauss and Newton on modified residuals; None if the pixels cannot tell."""
     sd = np.sqrt(variance)
     z = state.residual / sd
@@ -186,11 +193,22 @@ def _solve(state: State, variance: F64, ceiling: float) -> _Step | None:
     if np.count_nonzero(inside) < 2 * PARAMETERS:
         return None
     rows = state.jacobian * (inside / sd)
-    cofactor = _inverse(rows @ rows.T, _SURE)
-    if cofactor is None:
-        return None
-    change = cofactor @ (rows @ np.clip(z, -CUT_SD, CUT_SD))
-    return _Step(change, cofactor, rows, below, inside)
+    fading = np.clip((LEFT_OUT_SD - np.abs(z)) / (LEFT_OUT_SD - FADING_SD), 0.0, 1.0)
+    pull = rows @ (fading * np.clip(z, -CUT_SD, CUT_SD))
+    normal, right = _with_usual_edge(rows @ rows.T, pull, shape, 1.0)
+    cofactor = _inverse(normal, _SURE)
+    return None if cofactor is None else _Step(cofactor @ right, cofactor, rows, below, inside)
+
+
+def _with_usual_edge(normal: F64, right: F64, shape: SpotShape, variance: float) -> tuple[F64, F64]:
+    """Normal equations with what is known beforehand of a disc's radius, in units of its blur.
+
+    In a dim picture it is not seen, and would follow the noise. The place does not depend on it.
+    """
+    knowledge = variance / USUAL_EDGE_SD**2
+    normal[-1, -1] += knowledge
+    right[-1] += knowledge * (USUAL_EDGE - shape.edge)
+    return normal, right
 
 
 def _inverse(normal: F64, damping: F64) -> F64 | None:

@@ -3,12 +3,13 @@ change with its parameters.
 
 Level of a pixel at (x, y), with d = (x - x0, y - y0):
 
-    b + g d + A D(sqrt(d^T S^-1 d); h)
+    b + g d + A D(sqrt(d^T S^-1 d); h),    S = T / (1 + h^2 / 4)
 
-background b and its two slopes g, height A, the middle (x0, y0), the blur's covariance S (an
-ellipse with any turn) and the radius h of the disc in units of the blur, inside the profile D.
+background b and its two slopes g, height A, the middle (x0, y0), the light's second moments T (an
+ellipse with any turn) and the radius h of the disc in units of the blur S, inside the profile D.
+How wide the light is and how sharp its edge is are so two separate questions.
 
-The mean over a pixel is a Gaussian blur of 1/12 px^2 up to the fourth order, and S absorbs it. The
+The mean over a pixel is a Gaussian blur of 1/12 px^2 up to the fourth order, and T absorbs it. The
 remainder is a symmetric change of the profile: by itself it moves nothing, and at a blur of 0.7 px
 its beat with the pixels stays below 0.0001 px.
 """
@@ -26,7 +27,7 @@ from readout.sighting.disc import DiscProfile, disc_profile, half_maximum
 
 Mask = NDArray[np.bool_]
 
-LEAST_BLUR_PX = 0.3
+LEAST_SPREAD_PX = 0.3
 LEAST_EDGE, MOST_EDGE = 0.3, 20.0
 PARAMETERS = 10
 MIDDLE = slice(4, 6)
@@ -39,7 +40,7 @@ WIDTH_OF_SPREAD = 2.355
 
 @dataclass(frozen=True, slots=True)
 class SpotShape:
-    """A spot in pixels and levels; ``blur`` is (xx, xy, yy), ``edge`` the radius h."""
+    """A spot in pixels and levels; ``moments`` is T as (xx, xy, yy), ``edge`` the radius h."""
 
     x: float
     y: float
@@ -47,26 +48,26 @@ class SpotShape:
     slope_x: float
     slope_y: float
     height: float
-    blur: tuple[float, float, float]
+    moments: tuple[float, float, float]
     edge: float
 
     @property
-    def axes_px(self) -> tuple[float, float]:
-        """Standard deviations of the blur along its longer and its shorter axis."""
-        xx, xy, yy = self.blur
+    def spreads_px(self) -> tuple[float, float]:
+        """Standard deviations of the light along its longer and its shorter axis."""
+        xx, xy, yy = self.moments
         mean, half = (xx + yy) / 2, math.hypot((xx - yy) / 2, xy)
         return math.sqrt(mean + half), math.sqrt(max(mean - half, 0.0))
 
     @property
-    def spread_px(self) -> float:
-        """Standard deviation of the light along the longer axis."""
-        return self.axes_px[0] * math.sqrt(1 + self.edge**2 / 4)
+    def blur_share(self) -> float:
+        """The blur as a share of the spread."""
+        return 1 / math.sqrt(1 + self.edge**2 / 4)
 
     @property
     def width_px(self) -> float:
         """Full width at half maximum, the geometric mean of the two axes."""
-        longer, shorter = self.axes_px
-        return 2 * half_maximum(self.edge) * math.sqrt(longer * shorter)
+        longer, shorter = self.spreads_px
+        return 2 * half_maximum(self.edge) * self.blur_share * math.sqrt(longer * shorter)
 
 
 @dataclass(frozen=True, slots=True)
@@ -94,14 +95,14 @@ class Window:
 
 
 def _scaled(shape: SpotShape, factor: float) -> SpotShape:
-    xx, xy, yy = shape.blur
+    xx, xy, yy = shape.moments
     return replace(
         shape,
         x=shape.x * factor,
         y=shape.y * factor,
         slope_x=shape.slope_x / factor,
         slope_y=shape.slope_y / factor,
-        blur=(xx * factor**2, xy * factor**2, yy * factor**2),
+        moments=(xx * factor**2, xy * factor**2, yy * factor**2),
     )
 
 
@@ -119,7 +120,7 @@ class Columns:
 def columns_of(window: Window, shape: SpotShape) -> Columns:
     """A window's usable pixels, in patches as large as the spot (in cells) is wide."""
     row, column = np.nonzero(window.usable)
-    side = max(2, round(PATCH_WIDTHS * WIDTH_OF_SPREAD * shape.spread_px))
+    side = max(2, round(PATCH_WIDTHS * WIDTH_OF_SPREAD * shape.spreads_px[0]))
     across = -(-window.usable.shape[1] // side)
     return Columns(
         column.astype(np.float64),
@@ -161,7 +162,7 @@ def best_state_of(columns: Columns, shape: SpotShape) -> tuple[SpotShape, State]
 def _profile(columns: Columns, shape: SpotShape) -> tuple[DiscProfile, F64, F64, F64, F64]:
     """The profile at the pixels, d, and S^-1 d."""
     dx, dy = columns.x - shape.x, columns.y - shape.y
-    xx, xy, yy = shape.blur
+    xx, xy, yy = (moment * shape.blur_share**2 for moment in shape.moments)
     determinant = xx * yy - xy * xy
     qx, qy = (yy * dx - xy * dy) / determinant, (xx * dy - xy * dx) / determinant
     return disc_profile(np.sqrt(dx * qx + dy * qy), shape.edge), dx, dy, qx, qy
@@ -174,18 +175,21 @@ def _state(
     pull_x, pull_y = pull * qx, pull * qy
     light = shape.height * profile.value
     model = shape.background + shape.slope_x * dx + shape.slope_y * dy + light
+    share2 = shape.blur_share**2
+    by_xx, by_xy, by_yy = (
+        0.5 * share2 * pull_x * qx,
+        share2 * pull_x * qy,
+        0.5 * share2 * pull_y * qy,
+    )
+    xx, xy, yy = shape.moments
+    narrowing = 0.5 * shape.edge * share2 * (xx * by_xx + xy * by_xy + yy * by_yy)
+    by_edge = shape.height * profile.by_edge - narrowing
     jacobian = np.stack(
         [
-            np.ones_like(dx),
-            dx,
-            dy,
-            profile.value,
-            pull_x,
-            pull_y,
-            0.5 * pull_x * qx,
-            pull_x * qy,
-            0.5 * pull_y * qy,
-            shape.height * profile.by_edge,
+            *(np.ones_like(dx), dx, dy, profile.value),
+            *(pull_x - shape.slope_x, pull_y - shape.slope_y),
+            *(by_xx, by_xy, by_yy),
+            by_edge,
         ]
     )
     return State(light, model, columns.level - model, jacobian)
@@ -194,32 +198,32 @@ def _state(
 def stepped(shape: SpotShape, change: F64) -> tuple[SpotShape, float]:
     """The shape after a step held within reason, and how far the step went, in widths."""
     by = change.tolist()
-    longer, shorter = shape.axes_px
+    longer, shorter = shape.spreads_px
     far = math.hypot(by[4], by[5])
-    middle = min(1.0, shape.spread_px / far) if far > 0 else 1.0
+    middle = min(1.0, longer / far) if far > 0 else 1.0
     widening = math.hypot(by[6] + by[8], by[6] - by[8], 2 * by[7])
     grown = min(1.0, 0.7 * shorter**2 / widening) if widening > 0 else 1.0
-    xx, xy, yy = (value + grown * more for value, more in zip(shape.blur, by[6:9], strict=True))
-    longest = 0.5 + shape.edge / 4
+    xx, xy, yy = (now + grown * more for now, more in zip(shape.moments, by[6:9], strict=True))
+    longest = 0.5 + shape.edge / 2
     edge = shape.edge + min(max(by[9], -longest), longest)
-    return (
-        SpotShape(
-            shape.x + middle * by[4],
-            shape.y + middle * by[5],
-            shape.background + by[0],
-            shape.slope_x + by[1],
-            shape.slope_y + by[2],
-            shape.height + by[HEIGHT],
-            held(xx, xy, yy),
-            min(max(edge, LEAST_EDGE), MOST_EDGE),
-        ),
-        max(far / shape.spread_px, widening / (2 * shorter * longer)),
+    edge = min(max(edge, LEAST_EDGE), MOST_EDGE)
+    stepped_shape = SpotShape(
+        shape.x + middle * by[4],
+        shape.y + middle * by[5],
+        shape.background + by[0],
+        shape.slope_x + by[1],
+        shape.slope_y + by[2],
+        shape.height + by[HEIGHT],
+        held(xx, xy, yy),
+        edge,
     )
+    sharpening = abs(stepped_shape.blur_share / shape.blur_share - 1)
+    return stepped_shape, max(far / longer, widening / (2 * shorter * longer), sharpening)
 
 
 def held(xx: float, xy: float, yy: float) -> tuple[float, float, float]:
-    """A blur no sharper than a pixel shows."""
-    least = LEAST_BLUR_PX**2
+    """Moments no narrower than a pixel shows."""
+    least = LEAST_SPREAD_PX**2
     if (xx + yy) / 2 - math.hypot((xx - yy) / 2, xy) >= least:
         return xx, xy, yy
     return max(xx, least), 0.0, max(yy, least)
