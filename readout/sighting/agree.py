@@ -34,7 +34,8 @@ LEAST_OF_STRONGEST = 0.07
 LEAST_VOTES = 0.5
 """the votes for a line are spread over a few cells: one holds at least half its strength"""
 MOST_LINES = 6
-MOST_TRIES = 10
+MOST_VAIN = 3
+"""so many fullest cells that turn out to be no line end the search"""
 
 
 @dataclass(frozen=True, slots=True)
@@ -60,7 +61,8 @@ def lines_of(peaks: Peaks, strongest: float = 0.0) -> list[AgreedLine]:
     weight = np.log(peaks.height / FAINTEST)
     votes = _Votes.of(peaks)
     least = max(LEAST_STRENGTH, LEAST_OF_STRONGEST * strongest)
-    for _ in range(MOST_TRIES):
+    vain = 0
+    while len(lines) < MOST_LINES and vain < MOST_VAIN:
         line = votes.fullest(weight, LEAST_VOTES * least)
         if line is None:
             break
@@ -69,9 +71,9 @@ def lines_of(peaks: Peaks, strongest: float = 0.0) -> list[AgreedLine]:
         if found is not None and found.strength >= least:
             lines.append(found)
             least = max(least, LEAST_OF_STRONGEST * found.strength)
+        else:
+            vain += 1
         weight[near] = 0.0
-        if len(lines) == MOST_LINES:
-            break
     return lines
 
 

@@ -118,10 +118,7 @@ def _ridges(sums: F32, width: int, least_noise: float, shape: tuple[int, ...]) -
     noise = max(1.4826 / 2 * float(np.partition(sampled, middle)[middle]), least_noise)
     slack = np.float32(FAINTEST * noise)
     bright, dark = heights = np.empty((2, *sums.shape), dtype=np.float32)
-    for height, up, down, limit in (
-        (bright, rise, fall, slack + bend),
-        (dark, fall, rise, slack - bend),
-    ):
+    for height, up, down, polarity in ((bright, rise, fall, 1), (dark, fall, rise, -1)):
         cv2.min(up[:, :-gap], down[:, gap:], dst=height[:, gap:-gap])
         for border, over, change in (
             (slice(0, gap), down[:, :gap], down[:, gap : 2 * gap]),
@@ -129,6 +126,7 @@ def _ridges(sums: F32, width: int, least_noise: float, shape: tuple[int, ...]) -
         ):
             cv2.subtract(over, np.abs(change), dst=height[:, border])
         if width > 1:
+            limit = slack + bend if polarity > 0 else slack - bend
             for inner in (slice(2 * gap, places), slice(0, places - 2 * gap)):
                 cv2.min(height[:, inner], limit, dst=height[:, inner])
     return _Ridges(heights.reshape(2, *shape, places), width, noise)
