@@ -25,6 +25,7 @@ LEAST_SHARE = 0.1
 MOST_OF_A_SIZE = 12
 LEAST_CELLS = 12
 ROUNDING_SD = 0.3
+PLACES_FOR_NOISE = 8192
 
 F32 = NDArray[np.float32]
 
@@ -89,10 +90,11 @@ _RING = _ring()
 def _of_one_size(picture: F32, cell: int) -> list[Compact]:
     smooth = cv2.GaussianBlur(picture, (3, 3), 0)
     height = cv2.subtract(smooth, cv2.dilate(smooth, _RING))
-    step = max(1, smooth.shape[0] // 128)
-    apart = smooth[::step, 5:] - smooth[::step, :-5]
-    noise = 1.4826 * float(np.median(np.abs(apart[:, ::step]))) / math.sqrt(2)
-    noise = max(noise, ROUNDING_SD * 0.4 / cell)
+    step = max(1, math.isqrt(smooth.size // PLACES_FOR_NOISE))
+    apart = smooth[::step, 5::step] - smooth[::step, :-5:step]
+    steps = np.abs(apart).ravel()
+    noise = 1.4826 * float(np.partition(steps, steps.size // 2)[steps.size // 2]) / math.sqrt(2)
+    noise = max(noise, ROUNDING_SD / cell)
     found: list[Compact] = []
     for _ in range(MOST_OF_A_SIZE):
         _, best, _, (column, row) = cv2.minMaxLoc(height)

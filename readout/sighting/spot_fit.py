@@ -20,7 +20,6 @@ from readout.sighting.spot_model import (
     HEIGHT,
     MIDDLE,
     PARAMETERS,
-    Columns,
     Mask,
     SpotShape,
     State,
@@ -46,11 +45,9 @@ a spot of another shape does not jump with the noise"""
 MOST_STEPS = 8
 WEIGHTED_STEPS = 2
 """few on purpose: on a spot of another shape many steps would wander off to fit a part of it"""
-NEARLY, SETTLED = 0.1, 0.02
-"""widths by which place and width may still change when a shape counts as nearly right, as right"""
+SETTLED = 0.02
+"""widths by which place and width may still change in the step before the weighted ones"""
 USUAL_EDGE, USUAL_EDGE_SD = 1.0, 2.0
-STEEPEST = 1.5
-"""a pixel is this much of the smoothed height above its brightest neighbour at most"""
 
 _NEIGHBOURS = np.array([[1, 1, 1], [1, 0, 1], [1, 1, 1]], np.uint8)
 _SURE = np.array([1e-9] * 9 + [0.01])
@@ -110,26 +107,36 @@ def first_look(window: Window) -> SpotShape | None:
 
 
 def settle(window: Window, start: SpotShape, *, ceiling: float) -> SpotShape | None:
-    """A shape near enough to the spot to cut a better window, or None."""
-    shape = window.in_cells(start)
-    settled = _settled(columns_of(_without_hot(window, start), shape), shape, ceiling, NEARLY)
-    return None if settled is None else window.in_pixels(settled)
-
-
-def fit_spot(window: Window, start: SpotShape, *, ceiling: float) -> SpotFit | None:
-    """Fit a spot whose shape is nearly known; ``ceiling`` is the level at which pixels saturate.
-
-    None where there is none.
+    """The shape that fits best when all pixels count alike, or None: nothing is known of their
+    noise as long as the shape is wrong. ``ceiling`` is the level at which pixels saturate.
     """
-    near = window.in_cells(start)
-    settled = _settled(columns_of(_without_hot(window, start), near), near, ceiling, SETTLED)
-    if settled is None:
+    shape = window.in_cells(start)
+    columns = columns_of(_without_hot(window, shape), shape)
+    if columns.x.size < 2 * PARAMETERS:
         return None
-    columns = columns_of(window, settled)
-    state = state_of(columns, settled)
+    for _ in range(MOST_STEPS):
+        shape, state = best_state_of(columns, shape)
+        if not shape.height > 0:
+            return None
+        rows = state.jacobian * (state.model < ceiling)
+        scatter = float(state.residual @ state.residual) / state.residual.size
+        normal, right = _with_usual_edge(rows @ rows.T, rows @ state.residual, shape, scatter)
+        cofactor = _inverse(normal, _CAREFUL)
+        if cofactor is None:
+            return None
+        shape, moved = stepped(shape, cofactor @ right)
+        if moved < SETTLED:
+            break
+    return window.in_pixels(shape)
+
+
+def weigh(window: Window, settled: SpotShape, *, ceiling: float) -> SpotFit | None:
+    """The fit with each pixel's own weight, from a settled shape; None where there is none."""
+    shape = window.in_cells(settled)
+    columns = columns_of(window, shape)
+    state = state_of(columns, shape)
     variance, freedom = rough_variance(state, columns.least_variance), math.inf
-    step = _solve(state, settled, variance, ceiling)
-    shape = settled
+    step = _solve(state, shape, variance, ceiling)
     for _ in range(WEIGHTED_STEPS):
         if step is None:
             return None
@@ -155,33 +162,15 @@ def fit_spot(window: Window, start: SpotShape, *, ceiling: float) -> SpotFit | N
     )
 
 
-def _settled(columns: Columns, shape: SpotShape, ceiling: float, enough: float) -> SpotShape | None:
-    """The shape that fits best when all pixels count alike: nothing is known of their noise as
-    long as the shape is wrong.
-    """
-    if columns.x.size < 2 * PARAMETERS:
-        return None
-    for _ in range(MOST_STEPS):
-        shape, state = best_state_of(columns, shape)
-        if not shape.height > 0:
-            return None
-        rows = state.jacobian * (state.model < ceiling)
-        scatter = float(state.residual @ state.residual) / state.residual.size
-        normal, right = _with_usual_edge(rows @ rows.T, rows @ state.residual, shape, scatter)
-        cofactor = _inverse(normal, _CAREFUL)
-        if cofactor is None:
-            return None
-        shape, moved = stepped(shape, cofactor @ right)
-        if moved < enough:
-            break
-    return shape
-
-
 def _without_hot(window: Window, shape: SpotShape) -> Window:
-    """Levels cut to what the spot's own steepness allows above and below the eight neighbours."""
-    levels, most = window.levels, STEEPEST * shape.height
-    lowest, highest = cv2.erode(levels, _NEIGHBOURS), cv2.dilate(levels, _NEIGHBOURS)
-    return replace(window, levels=np.clip(levels, lowest - most, highest + most))
+    """Levels no farther above or below the eight neighbours than a spot of this width can be.
+
+    The height of a first look is that of a smoothed picture, far too low for a narrow spot.
+    """
+    longer, shorter = shape.spreads_px
+    most = shape.height * (1 + 2 / (longer * shorter))
+    lowest, highest = cv2.erode(window.levels, _NEIGHBOURS), cv2.dilate(window.levels, _NEIGHBOURS)
+    return replace(window, levels=np.clip(window.levels, lowest - most, highest + most))
 
 
 def _solve(state: State, shape: SpotShape, variance: F64, ceiling: float) -> _Step | None:
@@ -213,13 +202,14 @@ def _with_usual_edge(normal: F64, right: F64, shape: SpotShape, variance: float)
 
 def _inverse(normal: F64, damping: F64) -> F64 | None:
     """Inverse of normal equations damped after Marquardt, None if there is none."""
-    scale = np.sqrt(np.diag(normal))
-    if not (scale.min() > 0 and np.all(np.isfinite(scale))):
+    diagonal = normal.diagonal()
+    if not (diagonal.min() > 0 and math.isfinite(diagonal.sum())):
         return None
-    unit = normal / np.outer(scale, scale)
-    unit[np.diag_indices(PARAMETERS)] += damping
+    scale = 1 / np.sqrt(diagonal)
+    unit = normal * scale * scale[:, None]
+    unit.flat[:: PARAMETERS + 1] += damping
     try:
-        inverse = np.linalg.inv(unit) / np.outer(scale, scale)
+        inverse = np.linalg.inv(unit) * scale * scale[:, None]
     except np.linalg.LinAlgError:
         return None
-    return inverse if np.all(np.isfinite(inverse)) and np.all(np.diag(inverse) > 0) else None
+    return inverse if inverse.diagonal().min() > 0 and math.isfinite(inverse.sum()) else None

@@ -153,7 +153,7 @@ def best_state_of(columns: Columns, shape: SpotShape) -> tuple[SpotShape, State]
     profile, dx, dy, qx, qy = _profile(columns, shape)
     design = np.stack([np.ones_like(dx), dx, dy, profile.value])
     normal = design @ design.T
-    normal[np.diag_indices(4)] *= 1 + 1e-9
+    normal.flat[::5] *= 1 + 1e-9
     background, slope_x, slope_y, height = np.linalg.solve(normal, design @ columns.level).tolist()
     shape = replace(shape, background=background, slope_x=slope_x, slope_y=slope_y, height=height)
     return shape, _state(columns, shape, profile, dx, dy, qx, qy)
@@ -183,15 +183,12 @@ def _state(
     )
     xx, xy, yy = shape.moments
     narrowing = 0.5 * shape.edge * share2 * (xx * by_xx + xy * by_xy + yy * by_yy)
-    by_edge = shape.height * profile.by_edge - narrowing
-    jacobian = np.stack(
-        [
-            *(np.ones_like(dx), dx, dy, profile.value),
-            *(pull_x - shape.slope_x, pull_y - shape.slope_y),
-            *(by_xx, by_xy, by_yy),
-            by_edge,
-        ]
-    )
+    jacobian = np.empty((PARAMETERS, dx.size))
+    jacobian[0] = 1.0
+    jacobian[1:4] = dx, dy, profile.value
+    jacobian[MIDDLE] = pull_x - shape.slope_x, pull_y - shape.slope_y
+    jacobian[6:9] = by_xx, by_xy, by_yy
+    jacobian[9] = shape.height * profile.by_edge - narrowing
     return State(light, model, columns.level - model, jacobian)
 
 

@@ -30,6 +30,11 @@ MARGIN_SDS = 1.0
 """scatter of the patches beyond this many sd of chance widens the covariance"""
 
 
+def _middle(values: F64) -> float:
+    """The median, of an even number the upper of the middle two."""
+    return float(np.partition(values, values.size // 2)[values.size // 2])
+
+
 def rough_variance(state: State, least: float) -> F64:
     """Variance of each pixel from the middle residual everywhere and of the spot's own pixels.
 
@@ -37,7 +42,7 @@ def rough_variance(state: State, least: float) -> F64:
     noise is expected of them than that they are taken for foreign.
     """
     squares = state.residual**2
-    everywhere = max(MEDIAN_TO_VARIANCE * float(np.median(squares)), least)
+    everywhere = max(MEDIAN_TO_VARIANCE * _middle(squares), least)
     bright = state.light > BRIGHT * state.light.max()
     own = squares[bright]
     if own.size == 0:
@@ -128,5 +133,5 @@ def explained_share(columns: Columns, shape: SpotShape, left: F64, variance: F64
     limit = abs(shape.height) / 2
     noise = float((np.bincount(columns.patch, weights=variance) / pixels).sum())
     unexplained = structure(np.clip(left, -limit, limit)) - noise
-    whole = structure(columns.level - float(np.median(columns.level))) - noise
+    whole = structure(columns.level - _middle(columns.level)) - noise
     return 1 - unexplained / whole if whole > 0 else -math.inf
