@@ -102,13 +102,27 @@ class Arm:
 
 
 @dataclass(frozen=True, slots=True)
+class Return:
+    """Another return in the same frame, or a line that could be part of one.
+
+    ``cov_px2`` as in ``Sighting``. ``share``: its contrast relative to the main return's.
+    """
+
+    x_px: float
+    y_px: float
+    cov_px2: tuple[float, float, float]
+    share: float
+
+
+@dataclass(frozen=True, slots=True)
 class Sighting:
     """Where the return image lies in one frame.
 
     ``x_px, y_px``: intersection of the centre lines of the two arms; pixel centres are integers,
     origin at the centre of the top-left pixel, x right, y down. ``cov_px2``: (xx, xy, yy), the
     covariance claimed from noise alone. ``peak``: brightest level used. NaN where nothing could
-    be measured; ``quality`` then says why.
+    be measured; ``quality`` then says why. ``others``: further returns, brightest first.
+    ``tracked``: frames since the whole picture was searched for them.
     """
 
     x_px: float
@@ -118,6 +132,8 @@ class Sighting:
     upright: Arm | None = None
     level: Arm | None = None
     peak: float = math.nan
+    others: tuple[Return, ...] = ()
+    tracked: int = 0
 
     @property
     def found(self) -> bool:

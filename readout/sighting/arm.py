@@ -10,11 +10,13 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from readout.model import F64, Pixels
+from readout.model import F64, Arm, Pixels
 from readout.sighting.fold import Line, cut_strip, fold_strip
 from readout.sighting.look import Look
 from readout.sighting.profile import half_maximum
-from readout.sighting.solve import Shape, Solution, solve_fold
+from readout.sighting.sections import Light
+from readout.sighting.shape import Shape
+from readout.sighting.solve import Solution, solve_fold
 
 CUTS = 6
 RESTS_SHIFT_PX = 0.5
@@ -32,7 +34,9 @@ class ArmFit:
     ``explained``: share of the folded profile's variance that the model explains. ``pixel_sd``:
     typical noise of a pixel, levels. ``excess``: factor on the covariance for what the pixels'
     noise does not explain. ``rows``: rows in which the arm is there. ``clipped``: share of the
-    strip's pixels at full scale; ``peak``: the brightest.
+    strip's pixels at full scale; ``peak``: the brightest. ``lean``: px along x by which the line is
+    pulled if its contrast rises by its own size per pixel across it. ``lopsided_px``: the shift
+    that would make its sides differ as they do. ``light``: along the arm.
     """
 
     line: Line
@@ -46,6 +50,9 @@ class ArmFit:
     rows: float
     clipped: float
     peak: float
+    lean: float
+    lopsided_px: float
+    light: Light | None
 
     def x_var_at(self, y: float) -> float:
         """Variance of the line's x at row ``y``, px^2."""
@@ -102,7 +109,11 @@ def _looked_at(look: Look) -> ArmFit:
             break
         look = better
     solution, shape = look.solution, look.solution.shape
-    excess = 1.0 if sections is None else sections.excess_variance
+    lopsided, freedom = look.lopsidedness
+    excess = max(1.0 if sections is None else sections.excess_variance, lopsided)
+    lopsided_px = 0.0
+    if lopsided > 1:
+        lopsided_px = math.sqrt(float(solution.cov[0, 0]) * lopsided * freedom)
     width_px, height = half_maximum(shape.half_width, shape.blur)
     return ArmFit(
         line=_moved(look.strip.line, solution),
@@ -116,4 +127,19 @@ def _looked_at(look: Look) -> ArmFit:
         rows=float(len(look.strip.rows) * strip.depth),
         clipped=clipped,
         peak=float(strip.brightest.max()),
+        lean=solution.lean,
+        lopsided_px=lopsided_px,
+        light=None if sections is None else look.light(sections),
+    )
+
+
+def arm_of(fit: ArmFit, clockwise: int) -> Arm:
+    """A fitted arm as the outside sees it; ``clockwise``: -1 for an upright arm, 1 for a level."""
+    return Arm(
+        angle_deg=clockwise * math.degrees(math.atan(fit.line.slope)),
+        width_px=fit.width_px,
+        contrast=fit.peak_contrast,
+        background=fit.shape.background,
+        line_px=2 * fit.shape.half_width,
+        blur_px=fit.shape.blur,
     )

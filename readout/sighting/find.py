@@ -12,7 +12,6 @@ import numpy as np
 
 from readout.model import Pixels
 from readout.sighting.agree import LEAST_OF_STRONGEST, AgreedLine, lines_of
-from readout.sighting.bands import RoughCrosshair, find_crosshairs
 from readout.sighting.companions import with_companions
 from readout.sighting.distinct import without_doubles, without_valleys
 from readout.sighting.fold import Line
@@ -20,7 +19,7 @@ from readout.sighting.peaks import peaks_of
 from readout.sighting.rough import RoughArm, RoughArms
 from readout.sighting.stretches import F32, averaged, stretches_of
 
-__all__ = ["RoughArm", "RoughArms", "RoughCrosshair", "find_arms", "find_crosshairs"]
+__all__ = ["RoughArm", "RoughArms", "find_arms"]
 
 MOST_ARMS = 6
 

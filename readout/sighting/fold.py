@@ -139,9 +139,10 @@ class Fold:
 
     ``u``: mean distance of the pixels across the arm, px. ``n``: number of slices. With c a
     slice's contrast relative to the arm's and a its distance along the arm: ``c``, ``ca``, ``c2``,
-    ``c2a``, ``c2a2`` sums of the products named, ``c2p2``, ``c2pa`` the same with p, the slice's
-    phase less the mean of its group. ``level``, ``level_c``, ``level_ca``, ``level2``: sums of the
-    levels, times c, times ca, squared. ``seen``: 0 where pixels say nothing, else 1.
+    ``c2a``, ``c2a2`` sums of the products named, ``cp``, ``c2p``, ``c2p2``, ``c2pa`` the same with
+    p, the slice's phase less the mean of its group. ``level``, ``level_c``, ``level_ca``,
+    ``level2``: sums of the levels, times c, times ca, squared. ``seen``: 0 where pixels say nothing, else 1;
+    ``freedom``: how many of them scatter freely about their mean.
     ``group`` (slices,): the phase each slice went into; ``deviation`` (slices,): p.
     """
 
@@ -152,6 +153,8 @@ class Fold:
     c2: F64
     c2a: F64
     c2a2: F64
+    cp: F64
+    c2p: F64
     c2p2: F64
     c2pa: F64
     level: F64
@@ -159,18 +162,25 @@ class Fold:
     level_ca: F64
     level2: F64
     seen: F64
+    freedom: F64
     group: NDArray[np.intp]
     deviation: F64
 
 
 def fold_strip(
-    strip: Strip, levels: F64, contrast: F64, blind: NDArray[np.bool_] | None = None
+    strip: Strip,
+    levels: F64,
+    contrast: F64,
+    *,
+    replaced: NDArray[np.bool_] | None = None,
+    blind: NDArray[np.bool_] | None = None,
 ) -> Fold:
     """Sum the slices of a strip by sub-pixel phase.
 
     ``levels`` (slices, columns): the strip's own, or brought to a common height. ``contrast``
     (slices,): relative to the arm's: where the arm is faint its flanks say less of its place.
-    ``blind`` (slices, columns): pixels that say nothing, if there are any.
+    ``replaced``, ``blind`` (slices, columns), if there are any: pixels that hold what is expected
+    there, and those that are full.
     """
     group = np.minimum(((strip.phase + 0.5) * PHASES).astype(np.intp), PHASES - 1)
     present = np.bincount(group, minlength=PHASES) > 0
@@ -192,13 +202,20 @@ def fold_strip(
             contrast**2,
             contrast**2 * along,
             (contrast * along) ** 2,
+            contrast * deviation,
+            contrast**2 * deviation,
             (contrast * deviation) ** 2,
             contrast**2 * deviation * along,
         ],
         axis=1,
     )
-    c, ca, c2, c2a, c2a2, c2p2, c2pa = (each @ scalars).T[:, :, None]
+    c, ca, c2, c2a, c2a2, cp, c2p, c2p2, c2pa = (each @ scalars).T[:, :, None]
     level, level_c, level_ca = (member.reshape(-1, slices) @ levels).reshape(3, groups, -1)
+    seen, freedom = np.ones_like(level), np.broadcast_to(n[:, None] - 1, level.shape)
+    if blind is not None:
+        seen = 1.0 * (each @ blind < MOST_BLIND * n[:, None])
+    if replaced is not None:
+        freedom = np.maximum(freedom - each @ replaced, 0.0)
     return Fold(
         (strip.offsets[None, :] - phase[:, None]) * strip.line.cosine,
         n[:, None],
@@ -207,13 +224,16 @@ def fold_strip(
         c2,
         c2a,
         c2a2,
+        cp,
+        c2p,
         c2p2,
         c2pa,
         level,
         level_c,
         level_ca,
         each @ levels**2,
-        np.ones_like(level) if blind is None else 1.0 * (each @ blind < MOST_BLIND * n[:, None]),
+        seen,
+        freedom,
         group,
         deviation,
     )

@@ -1,6 +1,6 @@
 """A strip as the fit sees it, once it is known what is wrong with it.
 
-Where the light is uneven, slices are brought to one height and count by their contrast. Pixels
+Where the light is uneven, slices are freed of their grounds and expected at their contrast. Pixels
 that stand out from those of the same phase (dust, a hot pixel, a compression block) or are clipped
 give way to what the fit expects there, as a robust fit by modified residuals does (P. J. Huber,
 Robust Statistics, 1981, 7.8). Sections where the arm is not there, or off its line by more than
@@ -15,8 +15,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from readout.model import F64
+from readout.sighting.beside import fits_badly, line_beside
 from readout.sighting.fold import Fold, Strip, fold_strip
-from readout.sighting.sections import Sections, sections_of
+from readout.sighting.lopsided import lopsidedness
+from readout.sighting.sections import Light, Sections, sections_of
+from readout.sighting.shape import Beside, Shape
 from readout.sighting.solve import Solution, solve_fold
 
 OUTLIER = 5.0
@@ -31,13 +34,15 @@ LIT = 0.5
 class Look:
     """Slices of a strip, what is known of each, and the fit to them.
 
-    ``background`` (slices,), levels: how much more there is than on the arm at large.
-    ``contrast`` (slices,): relative to the arm's. ``spoilt`` (slices, columns): pixels replaced,
-    ``clipped``: those at full scale. ``levels``: after all this.
+    ``background`` (levels), ``gradient`` (levels per pixel across), both (slices,): how much more
+    there is than on the arm at large. ``contrast`` (slices,): relative to the arm's. ``spoilt``
+    (slices, columns): pixels replaced; ``clipped``: those at full scale. ``levels``: after all
+    this.
     """
 
     strip: Strip
     background: F64
+    gradient: F64
     contrast: F64
     spoilt: NDArray[np.bool_]
     clipped: NDArray[np.bool_]
@@ -54,6 +59,7 @@ class Look:
         return cls(
             strip,
             np.zeros(slices),
+            np.zeros(slices),
             np.ones(slices),
             np.zeros_like(clipped),
             clipped,
@@ -62,70 +68,128 @@ class Look:
             solution,
         )
 
+    def expected(self) -> F64:
+        """What the fit expects, (slices, columns)."""
+        fold, solution = self.fold, self.solution
+        off = self.fold.deviation + solution.turn * self.strip.along
+        line = solution.line[fold.group] + off[:, None] * solution.flank[fold.group]
+        return np.asarray(solution.ground[fold.group] + self.contrast[:, None] * line)
+
     def residual(self) -> F64:
         """Levels less what the fit expects, (slices, columns)."""
-        fold, solution = self.fold, self.solution
-        shift = self.contrast * (fold.deviation + solution.turn * self.strip.along)
-        expected = solution.model[fold.group]
-        expected += shift[:, None] * solution.flank[fold.group]
-        return self.levels - expected
+        return self.levels - self.expected()
 
     def sections(self, residual: F64) -> Sections | None:
         """The arm piece by piece; None of one too short for that."""
         return sections_of(self.strip, residual, self.contrast, self.fold, self.solution)
 
+    def light(self, sections: Sections) -> Light:
+        """Contrast along the arm, relative to its mean."""
+        arm = self.solution.shape.contrast
+        known = np.add.reduceat(self.contrast, sections.first) / np.diff(
+            np.append(sections.first, sections.slices)
+        )
+        return Light(
+            sections.along + self.strip.line.middle_y,
+            known + sections.contrast / arm,
+            sections.contrast_sd / abs(arm),
+            bool(np.any(self.contrast != 1.0)),
+        )
+
     def improved(self, residual: F64, sections: Sections) -> Look | None:
         """A better look, or None if nothing was found to improve or the rest cannot be fitted."""
-        background, contrast = self.background, self.contrast
+        background, gradient, contrast = self.background, self.gradient, self.contrast
         spoilt = self.spoilt | self.clipped
         keep = sections.on_line(OFF_LINE)
         if sections.uneven:
             background = background + sections.at(self.strip.along, sections.background)
+            gradient = gradient + sections.at(self.strip.along, sections.gradient)
             arm = self.solution.shape.contrast
             contrast = contrast + sections.at(self.strip.along, sections.contrast) / arm
-            keep &= sections.lit(arm, LIT)
+            keep &= _with_neighbours(sections.lit(arm, LIT))
         else:
             spoilt |= self._standing_out(residual)
         keep_slices = sections.of_slices(keep)
+        shape = self.solution.shape
         if not sections.uneven and keep.all() and not np.any(spoilt & ~self.spoilt):
-            return None
+            beside = self._beside()
+            if beside is None:
+                return None
+            with_it = self._fitted_anew(
+                background, gradient, contrast, spoilt, keep_slices, replace(shape, beside=beside)
+            )
+            return (
+                with_it if with_it and with_it.solution.misfit < self.solution.misfit / 2 else None
+            )
         if np.count_nonzero(keep_slices) < 8:
             return None
-        return self._fitted_anew(background, contrast, spoilt, keep_slices)
+        return self._fitted_anew(background, gradient, contrast, spoilt, keep_slices, shape)
 
     def _standing_out(self, residual: F64) -> NDArray[np.bool_]:
         """Pixels far from those of the same phase and column."""
         fold, solution = self.fold, self.solution
-        mean = (
-            fold.level - fold.n * solution.model - solution.turn * solution.flank * fold.ca
-        ) / fold.n
-        from_like = residual - mean[fold.group]
+        from_like = residual - (solution.left / fold.n)[fold.group]
         return np.abs(from_like) * np.sqrt(solution.weight)[fold.group] > OUTLIER
 
+    def _beside(self) -> Beside | None:
+        """A line beside the arm not known before, where the profile fits badly."""
+        if self.solution.shape.beside is not None or not fits_badly(self.solution):
+            return None
+        return line_beside(self.fold, self.strip.line.cosine, self.solution)
+
+    @property
+    def lopsidedness(self) -> tuple[float, int]:
+        """Reduced chi-square by which the profile's sides differ, 1 for noise, and its freedom."""
+        return lopsidedness(self.fold, self.strip.line.cosine, self.solution)
+
     def _fitted_anew(
-        self, background: F64, contrast: F64, spoilt: NDArray[np.bool_], keep: NDArray[np.bool_]
+        self,
+        background: F64,
+        gradient: F64,
+        contrast: F64,
+        spoilt: NDArray[np.bool_],
+        keep: NDArray[np.bool_],
+        shape: Shape,
     ) -> Look | None:
-        """The same strip with the slices to ``keep``, levelled, cleaned and fitted."""
-        solution, group = self.solution, self.fold.group
+        """The same strip with the slices to ``keep``, cleaned and fitted."""
         mean_contrast = float(contrast[keep].mean())
         if not mean_contrast > 0:
             return None
-        arm = solution.shape.contrast * mean_contrast
-        contrast = contrast / mean_contrast
-        profile = solution.profile[group]
+        arm = self.solution.shape.contrast * mean_contrast
         levels = self.strip.levels - background[:, None]
-        levels -= ((contrast - 1) * arm)[:, None] * profile
+        levels -= gradient[:, None] * self.fold.u[self.fold.group]
         if spoilt.any():
-            expected = solution.model[group] + (arm - solution.shape.contrast) * profile
-            shift = contrast * (self.fold.deviation + solution.turn * self.strip.along)
-            expected += shift[:, None] * solution.flank[group]
+            expected = replace(self, contrast=contrast).expected()
+            # of a clipped pixel it is known that it is no darker than it reads
+            expected = np.where(self.clipped, np.maximum(expected, levels), expected)
             levels = np.where(spoilt, expected, levels)
+        contrast = contrast / mean_contrast
         strip, levels, contrast = self.strip.only(keep), levels[keep], contrast[keep]
-        clipped = self.clipped[keep]
-        fold = fold_strip(strip, levels, contrast, clipped if clipped.any() else None)
-        anew = solve_fold(
-            fold, strip.line.cosine, replace(solution.shape, contrast=arm), strip.depth
+        spoilt, clipped = spoilt[keep], self.clipped[keep]
+        fold = fold_strip(
+            strip,
+            levels,
+            contrast,
+            replaced=spoilt if spoilt.any() else None,
+            blind=clipped if clipped.any() else None,
         )
+        anew = solve_fold(fold, strip.line.cosine, replace(shape, contrast=arm), strip.depth)
         if anew is None:
             return None
-        return Look(strip, background[keep], contrast, spoilt[keep], clipped, levels, fold, anew)
+        return Look(
+            strip,
+            background[keep],
+            gradient[keep],
+            contrast,
+            spoilt,
+            clipped,
+            levels,
+            fold,
+            anew,
+        )
+
+
+def _with_neighbours(lit: NDArray[np.bool_]) -> NDArray[np.bool_]:
+    """True where a section and those beside it are lit: the next to an end is half lit."""
+    before, after = np.append(True, lit[:-1]), np.append(lit[1:], True)
+    return np.asarray(lit & before & after)

@@ -16,6 +16,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from readout.least_squares import linear_least_squares
 from readout.model import F64
 from readout.sighting.fold import Fold, Strip
 from readout.sighting.solve import Solution
@@ -28,17 +29,45 @@ SURE = 6.0
 
 
 @dataclass(frozen=True, slots=True)
+class Light:
+    """How bright an arm is along itself: contrast relative to its mean, with its sd, by row."""
+
+    rows: F64
+    contrast: F64
+    contrast_sd: F64
+    uneven: bool
+
+    def rise_at(self, row: float) -> tuple[float, float]:
+        """Relative rise of the contrast per pixel at a row, and its sd.
+
+        From a straight line through all sections, or a cubic where they are uneven; at the end of
+        the arm for a row beyond it.
+        """
+        size = float(np.ptp(self.rows)) / 2
+        middle = float(self.rows.min()) + size
+        place = (self.rows - middle) / size
+        at = min(max((row - middle) / size, -1.0), 1.0)
+        powers = np.arange(4 if self.uneven else 2)
+        design = place[:, None] ** powers / self.contrast_sd[:, None]
+        fit = linear_least_squares(design, self.contrast / self.contrast_sd)
+        rise = np.array([0.0, 1.0, 2 * at, 3 * at**2])[: len(powers)] / size
+        scatter = max(1.0, fit.residual_sd)
+        return float(rise @ fit.parameters), scatter * math.sqrt(float(rise @ fit.cofactor @ rise))
+
+
+@dataclass(frozen=True, slots=True)
 class Sections:
     """Departures of each section from the fit, (sections,), with standard deviations from noise.
 
-    ``along``: place, px. ``background``, ``contrast``: levels. ``shift``: px along x, about the
-    straight line that fits the sections best. ``first``: first slice of each section, of
-    ``slices`` in all.
+    ``along``: place, px. ``background``, ``contrast``: levels; ``gradient``: levels per pixel.
+    ``shift``: px along x, about the straight line that fits the sections best. ``first``: first
+    slice of each section, of ``slices`` in all.
     """
 
     along: F64
     background: F64
     background_sd: F64
+    gradient: F64
     contrast: F64
     contrast_sd: F64
     shift: F64
@@ -92,28 +121,25 @@ def _reduced(scaled: F64, parameters: int) -> float:
 def sections_of(
     strip: Strip, residual: F64, contrast: F64, fold: Fold, solution: Solution
 ) -> Sections | None:
-    """Background, contrast and shift of each section; None of an arm too short for any."""
+    """What each section says for itself; None of an arm too short for sections."""
     slices = len(strip.rows)
     sections = min(SECTIONS, slices * strip.depth // LEAST_ROWS, slices)
     if sections < 8:
         return None
     first = np.arange(sections) * slices // sections
-    templates = np.stack([np.ones_like(solution.model), solution.profile, solution.flank])
-    weighted = templates * solution.weight
-    of_phase = np.einsum("ipc,jpc->pij", weighted, templates)
-    scale = np.ones((slices, 3))
-    scale[:, 2] = contrast
-    pull = scale * np.stack(
-        [np.einsum("sc,sc->s", residual, template[fold.group]) for template in weighted], axis=1
+    templates = np.stack(
+        [np.ones_like(fold.u), fold.u, solution.line / solution.shape.contrast, solution.flank],
+        axis=-1,
     )
-    normal = np.add.reduceat(
-        of_phase[fold.group] * scale[:, :, None] * scale[:, None, :], first, axis=0
+    weighted = templates * solution.weight[:, :, None]
+    of_phase = np.swapaxes(weighted, 1, 2) @ templates
+    scale = np.ones((slices, 4))
+    scale[:, 3] = contrast
+    pull = scale * (residual[:, None, :] @ weighted[fold.group])[:, 0, :]
+    normal = of_phase[fold.group] * (scale[:, :, None] * scale[:, None, :])
+    value, cov = _solved(
+        np.add.reduceat(normal, first, axis=0), np.add.reduceat(pull, first, axis=0)
     )
-    size = np.einsum("sii->si", normal)
-    size = np.sqrt(np.where(size > 0, size, 1.0))
-    normal = normal / (size[:, :, None] * size[:, None, :]) + 1e-9 * np.eye(3)
-    cov = np.linalg.inv(normal) / (size[:, :, None] * size[:, None, :])
-    value = np.einsum("sij,sj->si", cov, np.add.reduceat(pull, first, axis=0))
     sd = np.sqrt(np.einsum("sii->si", cov))
     along = np.add.reduceat(strip.along, first) / np.diff(np.append(first, slices))
     return Sections(
@@ -121,12 +147,22 @@ def sections_of(
         value[:, 0],
         sd[:, 0],
         value[:, 1],
-        sd[:, 1],
-        _about_line(along, value[:, 2], sd[:, 2]),
+        value[:, 2],
         sd[:, 2],
+        _about_line(along, value[:, 3], sd[:, 3]),
+        sd[:, 3],
         first,
         slices,
     )
+
+
+def _solved(normal: F64, pull: F64) -> tuple[F64, F64]:
+    """Solutions (n, 4) and covariances (n, 4, 4) of n small systems, huge where nothing is seen."""
+    size = np.einsum("sii->si", normal)
+    size = np.sqrt(np.where(size > 0, size, 1.0))
+    sizes = size[:, :, None] * size[:, None, :]
+    cov = np.linalg.inv(normal / sizes + 1e-9 * np.eye(normal.shape[-1])) / sizes
+    return (cov @ pull[:, :, None])[:, :, 0], cov
 
 
 def _about_line(along: F64, value: F64, sd: F64) -> F64:

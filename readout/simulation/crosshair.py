@@ -137,7 +137,7 @@ def union_image(
     ``columns`` and ``rows``: the sides of the grid of pixel centres, seen from the crossing.
     ``contrasts``: of the upright bar, of the level one, and what is taken off where both are.
     """
-    image = np.full((rows.size, columns.size), background)
+    image = np.full((rows.size, columns.size), float(background))
     for contrast, arm in zip(contrasts, (up, level), strict=False):
         row, column = arm.near(columns, rows)
         image[row, column] += contrast * arm.means(columns[column], rows[row])

@@ -1,0 +1,88 @@
+"""A picture in which the arms of a reticle are fitted: each where it is sought, or not at all."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+
+from readout.model import Pixels
+from readout.sighting.arm import ArmFit, fit_arm
+from readout.sighting.crossing import Cross, crossing
+from readout.sighting.fold import Line
+from readout.sighting.shape import Shape
+
+LEAST_EXPLAINED = 0.7
+"""share of a folded strip that a crosshair arm must explain, else it is something else"""
+LARGEST_SD_PX = 0.5
+"""a position less certain than this is none"""
+LEAST_LENGTH_WIDTHS = 4.0
+"""a thing shorter than this many of its widths is a blob, not an arm"""
+SLACK_PX = 0.5
+"""left out beside the other arm, so that a small move needs no second fit"""
+
+
+@dataclass(frozen=True, slots=True)
+class Picture:
+    """A picture and the level at which its pixels are full."""
+
+    pixels: Pixels
+    full_scale: int
+
+    def fit(
+        self,
+        line: Line,
+        shape: Shape,
+        *,
+        is_level: bool,
+        skip: tuple[float, float] | None = None,
+    ) -> ArmFit | None:
+        """A credible fit of an arm without the stretch from ``skip[0]`` to ``skip[1]``, or None."""
+        skip_from, skip_to = skip or (math.inf, -math.inf)
+        fit = fit_arm(
+            self.pixels.T if is_level else self.pixels,
+            line,
+            shape,
+            full_scale=self.full_scale,
+            skip_from=skip_from,
+            skip_to=skip_to,
+        )
+        return fit if fit is not None and _credible(fit) else None
+
+    def fit_both(
+        self, upright: Line, level: Line, upright_shape: Shape, level_shape: Shape
+    ) -> Cross | None:
+        """Fit each arm without the stretch where the other one crosses it; None unless both hold.
+
+        The first arm is fitted once more if the second, now known, reaches into what was taken.
+        """
+        left_out = _shadow(upright, upright_shape, level, level_shape)
+        slack = left_out[0] - SLACK_PX, left_out[1] + SLACK_PX
+        first = self.fit(upright, upright_shape, is_level=False, skip=slack)
+        if first is None:
+            return None
+        across = _shadow(level, level_shape, first.line, first.shape)
+        second = self.fit(level, level_shape, is_level=True, skip=across)
+        if second is None or first.shape.contrast * second.shape.contrast < 0:
+            return None
+        shadow = _shadow(first.line, first.shape, second.line, second.shape)
+        if shadow[0] < slack[0] or shadow[1] > slack[1]:
+            first = self.fit(first.line, first.shape, is_level=False, skip=shadow)
+        return None if first is None else Cross(first, second)
+
+
+def _shadow(line: Line, shape: Shape, other: Line, other_shape: Shape) -> tuple[float, float]:
+    """From where to where along an arm the other one reaches into its strip, pixels."""
+    along = crossing(line, other)[1]
+    half = other_shape.fades_px / other.cosine + abs(other.slope) * shape.fades_px
+    return along - half, along + half
+
+
+def _credible(fit: ArmFit) -> bool:
+    return bool(
+        fit.explained > LEAST_EXPLAINED
+        and fit.rows > LEAST_LENGTH_WIDTHS * fit.width_px
+        and math.sqrt(fit.cov[0, 0]) < LARGEST_SD_PX
+        and np.all(np.isfinite(fit.cov))
+    )
