@@ -144,7 +144,10 @@ class _Line:
         chance_cov, rounding_cov = np.zeros((2, 2)), np.zeros((2, 2))
         gain = float(fit.parameters[1]) if columns == 2 else 0.0
         chance_cov[:columns, :columns] = fit.cofactor
-        rounding_cov[:columns, :columns] = (pull * rounding) @ pull.T
+        # one flat ground may fall into two bins, and is off by the same in both
+        apart = np.abs(levels.level[:, None] - levels.level[None, :])
+        ripple = pull * np.sqrt(rounding)
+        rounding_cov[:columns, :columns] = ripple @ np.maximum(1 - apart, 0.0) @ ripple.T
         return cls(middle, float(fit.parameters[0]), gain, weight, chance_cov, rounding_cov)
 
     def at(self, level: F64) -> F64:
