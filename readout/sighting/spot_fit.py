@@ -45,7 +45,9 @@ a spot of another shape does not jump with the noise"""
 MOST_STEPS = 8
 WEIGHTED_STEPS = 2
 """few on purpose: on a spot of another shape many steps would wander off to fit a part of it"""
-SETTLED = 0.02
+CALMED = 1.2
+"""what smoothing adds to the second moments of a spot, in cells^2"""
+SETTLED = 0.1
 """widths by which place and width may still change in the step before the weighted ones"""
 USUAL_EDGE, USUAL_EDGE_SD = 1.0, 2.0
 
@@ -100,8 +102,9 @@ def first_look(window: Window) -> SpotShape | None:
     sharpness = math.sqrt(np.count_nonzero(calm > ground + 0.8 * height) / x.size)
     edge = min(0.84 / (1 - min(sharpness, 0.95)), 10.0) if sharpness > 0.65 else 1.0
     of_spread = half_maximum(edge) / math.sqrt(1 + edge**2 / 4)
-    (xx, xy), (_, yy) = np.cov(x, y) * (4 / of_spread**2)
-    moments = held(float(xx), float(xy), float(yy))
+    (xx, xy), (_, yy) = (np.cov(x, y) * (4 / of_spread**2)).tolist()
+    sharper = max(1 - 2 * CALMED / (xx + yy), 0.3)
+    moments = held(xx * sharper, xy * sharper, yy * sharper)
     middle = float(x.mean()), float(y.mean())
     return window.in_pixels(SpotShape(*middle, ground, 0.0, 0.0, height, moments, edge))
 
