@@ -105,13 +105,16 @@ class Arm:
 class Return:
     """Another return in the same frame, or a line that could be part of one.
 
-    ``cov_px2`` as in ``Sighting``. ``share``: its contrast relative to the main return's.
+    ``cov_px2`` as in ``Sighting``. ``share``: its contrast relative to the main return's, of the
+    brighter of its arms. ``lone``: only one arm of it was seen beside the main return's, so that
+    the other one, if there is one, hides in the main return's own.
     """
 
     x_px: float
     y_px: float
     cov_px2: tuple[float, float, float]
     share: float
+    lone: bool = False
 
 
 @dataclass(frozen=True, slots=True)

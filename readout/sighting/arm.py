@@ -13,7 +13,7 @@ import numpy as np
 from readout.model import F64, Arm, Pixels
 from readout.sighting.fold import Line, cut_strip, fold_strip
 from readout.sighting.look import Look
-from readout.sighting.profile import half_maximum
+from readout.sighting.profile import half_maximum, peak_height
 from readout.sighting.sections import Light
 from readout.sighting.shape import Shape
 from readout.sighting.solve import Solution, solve_fold
@@ -36,7 +36,8 @@ class ArmFit:
     noise does not explain. ``rows``: rows in which the arm is there. ``clipped``: share of the
     strip's pixels at full scale; ``peak``: the brightest. ``lean``: px along x by which the line is
     pulled if its contrast rises by its own size per pixel across it. ``lopsided_px``: the shift
-    that would make its sides differ as they do. ``light``: along the arm.
+    that would make its sides differ as they do. ``graduated``: marks cross it.
+    ``light``: along the arm.
     """
 
     line: Line
@@ -52,6 +53,7 @@ class ArmFit:
     peak: float
     lean: float
     lopsided_px: float
+    graduated: bool
     light: Light | None
 
     def x_var_at(self, y: float) -> float:
@@ -65,29 +67,37 @@ def fit_arm(
     line: Line,
     shape: Shape,
     *,
+    known: bool = False,
     full_scale: float = math.inf,
     skip_from: float = math.inf,
     skip_to: float = -math.inf,
 ) -> ArmFit | None:
     """Fit an upright arm near ``line``; for a level one pass the transposed picture.
 
-    ``shape`` is a rough start. Pixels at ``full_scale`` say nothing. Rows from ``skip_from`` to
-    ``skip_to`` are left out. Returns None where no arm can be fitted: never raises on a bad
-    picture.
+    ``shape`` is a rough start, or ``known`` to be near in all it says. Pixels at ``full_scale``
+    say nothing. Rows from ``skip_from`` to ``skip_to`` are left out. Returns None where no arm can
+    be fitted: never raises on a bad picture.
     """
     look = None
     for _ in range(CUTS):
         half_columns = math.ceil((1.25 * shape.reach_px + 2) / line.cosine)
-        strip = cut_strip(pixels, line, half_columns, skip_from=skip_from, skip_to=skip_to)
+        strip = cut_strip(
+            pixels,
+            line,
+            half_columns,
+            full_scale=full_scale,
+            skip_from=skip_from,
+            skip_to=skip_to,
+        )
         if strip is None:
             return None
-        fold = fold_strip(strip, strip.levels, np.ones(len(strip.rows)))
-        solution = solve_fold(fold, strip.line.cosine, shape, strip.depth)
+        fold = fold_strip(strip, strip.levels)
+        solution = solve_fold(fold, strip.line.cosine, shape, strip.depth, known=known)
         if solution is None or abs(solution.shift) > half_columns:
             return None
-        look = Look.at_first(strip, fold, solution, strip.brightest >= full_scale)
-        line, shape = _moved(strip.line, solution), solution.shape
-        ends = abs(solution.turn) * float(np.abs(strip.along).max())
+        look = Look.at_first(strip, fold, solution)
+        line, shape, known = _moved(strip.line, solution), solution.shape, True
+        ends = abs(solution.turn) * float(strip.rows[-1] - strip.rows[0]) / 2
         if abs(solution.shift) < RESTS_SHIFT_PX and ends < RESTS_TURN_PX:
             break
     return None if look is None else _looked_at(look)
@@ -100,10 +110,13 @@ def _moved(line: Line, solution: Solution) -> Line:
 def _looked_at(look: Look) -> ArmFit:
     """The arm's fit, improved as long as something is found to improve."""
     strip = look.strip
-    clipped = float(np.mean(look.clipped))
+    clipped = 0.0 if strip.clipped is None else float(np.mean(strip.clipped))
+    graduated = False
     for rounds_left in range(ROUNDS, -1, -1):
         residual = look.residual()
         sections = look.sections(residual)
+        if sections is not None and look.strip is strip:
+            graduated = sections.jagged(look.solution.shape.contrast)
         better = look.improved(residual, sections) if sections and rounds_left else None
         if better is None:
             break
@@ -114,21 +127,21 @@ def _looked_at(look: Look) -> ArmFit:
     lopsided_px = 0.0
     if lopsided > 1:
         lopsided_px = math.sqrt(float(solution.cov[0, 0]) * lopsided * freedom)
-    width_px, height = half_maximum(shape.half_width, shape.blur)
     return ArmFit(
         line=_moved(look.strip.line, solution),
         cov=solution.cov * excess,
         shape=shape,
-        width_px=width_px,
-        peak_contrast=shape.contrast * height,
+        width_px=half_maximum(shape.half_width, shape.blur),
+        peak_contrast=shape.contrast * peak_height(shape.half_width, shape.blur),
         explained=solution.explained,
         pixel_sd=solution.slice_sd * math.sqrt(strip.depth),
         excess=excess,
         rows=float(len(look.strip.rows) * strip.depth),
         clipped=clipped,
-        peak=float(strip.brightest.max()),
+        peak=strip.peak,
         lean=solution.lean,
         lopsided_px=lopsided_px,
+        graduated=graduated,
         light=None if sections is None else look.light(sections),
     )
 
@@ -143,3 +156,10 @@ def arm_of(fit: ArmFit, clockwise: int) -> Arm:
         line_px=2 * fit.shape.half_width,
         blur_px=fit.shape.blur,
     )
+
+
+def shape_of(arm: Arm) -> Shape:
+    """The shape of an arm fitted before."""
+    half_width = arm.line_px / 2
+    contrast = arm.contrast / peak_height(half_width, arm.blur_px)
+    return Shape(arm.background, 0.0, contrast, half_width, arm.blur_px)

@@ -28,9 +28,9 @@ NEAREST_WIDTHS = 0.8
 STEP_PX = 0.5
 
 
-def fits_badly(solution: Solution) -> bool:
+def fits_badly(solution: Solution, *, sure: float = SURE) -> bool:
     """True if the folded profile is not what the model says by more than noise."""
-    return solution.misfit > 1 + SURE * math.sqrt(2 / solution.freedom)
+    return solution.misfit > 1 + sure * math.sqrt(2 / solution.freedom)
 
 
 def line_beside(fold: Fold, cosine: float, solution: Solution) -> Beside | None:

@@ -46,7 +46,7 @@ class Compact:
 
 
 def find_compact(pixels: Pixels) -> list[Compact]:
-    """Bright things, the highest first; each once, at the size at which it stands out most."""
+    """Bright things, the highest first; each once, at the size at which it is highest."""
     if min(pixels.shape) < LEAST_CELLS:
         return []
     picture = np.asarray(cv2.medianBlur(np.ascontiguousarray(pixels), 3), dtype=np.float32)
@@ -56,12 +56,12 @@ def find_compact(pixels: Pixels) -> list[Compact]:
         found += _of_one_size(picture, cell)
         picture = _halved(picture)
         cell *= 2
-    found.sort(key=lambda thing: -thing.score)
+    found.sort(key=lambda thing: -thing.height)
     kept: list[Compact] = []
     for thing in found:
         if all(_apart(thing, other) for other in kept):
             kept.append(thing)
-    return sorted(kept, key=lambda thing: -thing.height)
+    return kept
 
 
 def _apart(thing: Compact, other: Compact) -> bool:

@@ -4,14 +4,13 @@ from __future__ import annotations
 
 import math
 
-from readout.model import Arm, Pixels, Quality, Return, Sighting, no_sighting
-from readout.sighting.arm import arm_of
+from readout.model import Pixels, Quality, Return, Sighting, no_sighting
+from readout.sighting.arm import arm_of, shape_of
 from readout.sighting.crossing import Cross
 from readout.sighting.fold import Line
 from readout.sighting.lone_arm import lone_arm
 from readout.sighting.reticle import Picture
 from readout.sighting.returns import search
-from readout.sighting.shape import Shape
 from readout.sighting.words import words_of
 
 SEARCHED_EVERY = 30
@@ -46,11 +45,8 @@ def _from_prior(picture: Picture, prior: Sighting) -> Cross | None:
         return None
     upright = Line(prior.x_px, -math.tan(math.radians(prior.upright.angle_deg)), prior.y_px)
     level = Line(prior.y_px, math.tan(math.radians(prior.level.angle_deg)), prior.x_px)
-    return picture.fit_both(upright, level, _shape_of(prior.upright), _shape_of(prior.level))
-
-
-def _shape_of(arm: Arm) -> Shape:
-    return Shape(arm.background, 0.0, arm.contrast, arm.line_px / 2, arm.blur_px)
+    shapes = shape_of(prior.upright), shape_of(prior.level)
+    return picture.fit_both(upright, level, *shapes, known=True)
 
 
 def _sighting(

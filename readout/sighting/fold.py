@@ -11,17 +11,19 @@ import math
 from dataclasses import dataclass, replace
 
 import numpy as np
-from numpy.lib.stride_tricks import sliding_window_view
+from numpy.lib.stride_tricks import as_strided
 from numpy.typing import NDArray
 
 from readout.model import F64, Pixels
 
-PHASES = 16
-"""groups of phase: within one the line moves by less than 1/32 px either way"""
+PHASES = 8
+"""groups of phase: within one the line moves by less than 1/16 px either way, which blurs the
+profile by far less than its own blur, and known to first order"""
 DEEPEST = 8
 """most rows averaged to one slice: few enough that a speck of dust spoils a few slices only"""
 MOST_BLIND = 0.1
 """pixels of one phase and column count for nothing if more than this share of them is blind"""
+SMEAR_PX = 0.25
 LEAST_SLICES = 8
 LEAST_COLUMNS = 5
 
@@ -51,9 +53,10 @@ class Line:
 class Strip:
     """Slices across a line, (slices, columns), each with its place on it.
 
-    A slice is the mean of ``depth`` neighbouring rows, so few that they cut the line at one phase.
+    A slice is the mean of ``depth`` neighbouring rows, so few that the line hardly moves.
     ``rows``: middle of each slice. ``phase``: line minus centre column, in [-0.5, 0.5] px.
-    ``offsets``: columns relative to the centre column. ``brightest``: largest level in each mean.
+    ``offsets``: columns relative to the centre column. ``clipped``: places at full
+    scale in any of the rows, None if there are none; ``peak``: the brightest level of a pixel.
     """
 
     line: Line
@@ -62,7 +65,8 @@ class Strip:
     phase: F64
     offsets: F64
     levels: F64
-    brightest: F64
+    clipped: NDArray[np.bool_] | None
+    peak: float
 
     @property
     def along(self) -> F64:
@@ -77,7 +81,7 @@ class Strip:
             rows=rows,
             phase=self.phase[keep],
             levels=self.levels[keep],
-            brightest=self.brightest[keep],
+            clipped=None if self.clipped is None else self.clipped[keep],
         )
 
 
@@ -86,6 +90,7 @@ def cut_strip(
     line: Line,
     half_columns: int,
     *,
+    full_scale: float = math.inf,
     skip_from: float = math.inf,
     skip_to: float = -math.inf,
 ) -> Strip | None:
@@ -112,8 +117,12 @@ def cut_strip(
     columns = min(half_columns, width - 1 - int(centre.max())) - first + 1
     if columns < LEAST_COLUMNS:
         return None
-    windows = sliding_window_view(pixels, columns, axis=1)
+    down, right = pixels.strides
+    windows = as_strided(  # every stretch of so many pixels along a row, without a copy
+        pixels, (height, width - columns + 1, columns), (down, right, right), writeable=False
+    )
     block = windows[first_row[:, None] + np.arange(depth), (centre + first)[:, None]]
+    peak = float(block.max())
     return Strip(
         line.about(float(rows.mean())),
         depth,
@@ -121,33 +130,27 @@ def cut_strip(
         at - centre,
         np.arange(first, first + columns, dtype=np.float64),
         block.sum(axis=1, dtype=np.uint32) / depth,
-        block.max(axis=1).astype(np.float64),
+        np.asarray((block >= full_scale).any(axis=1)) if peak >= full_scale else None,
+        peak,
     )
 
 
 def _depth(line: Line, height: int) -> int:
-    """Rows to a slice: over them the line moves by less than a phase is wide."""
+    """Rows to a slice: over them the line moves no more than blurs a sharp one by 1 per cent."""
     depth = DEEPEST
-    while depth > 1 and (depth * abs(line.slope) * PHASES > 0.5 or height < 32 * depth):
+    while depth > 1 and (depth * abs(line.slope) > SMEAR_PX or height < 32 * depth):
         depth //= 2
     return depth
 
 
 @dataclass(frozen=True, slots=True)
-class Fold:
-    """Sums over the slices of each phase; shape (phases, columns), or (phases, 1) if it is one.
+class FoldedContrast:
+    """Sums over the slices of each phase, (phases, 1), of products.
 
-    ``u``: mean distance of the pixels across the arm, px. ``n``: number of slices. With c a
-    slice's contrast relative to the arm's and a its distance along the arm: ``c``, ``ca``, ``c2``,
-    ``c2a``, ``c2a2`` sums of the products named, ``cp``, ``c2p``, ``c2p2``, ``c2pa`` the same with
-    p, the slice's phase less the mean of its group. ``level``, ``level_c``, ``level_ca``,
-    ``level2``: sums of the levels, times c, times ca, squared. ``seen``: 0 where pixels say nothing, else 1;
-    ``freedom``: how many of them scatter freely about their mean.
-    ``group`` (slices,): the phase each slice went into; ``deviation`` (slices,): p.
+    c is a slice's contrast relative to the arm's, a its distance along the arm, p its phase less
+    the mean of its group.
     """
 
-    u: F64
-    n: F64
     c: F64
     ca: F64
     c2: F64
@@ -157,6 +160,22 @@ class Fold:
     c2p: F64
     c2p2: F64
     c2pa: F64
+
+
+@dataclass(frozen=True, slots=True)
+class Fold:
+    """Sums over the slices of each phase; (phases, columns), or (phases, 1) if columns are alike.
+
+    ``u``: mean distance of the pixels across the arm, px. ``n``: number of slices. ``of``: sums of
+    what the slices are like. ``level``, ``level_c``, ``level_ca``, ``level2``: sums of the levels,
+    times c, times ca, squared. ``seen``: 0 where pixels say nothing, else 1; ``freedom``: how many
+    of them scatter freely about their mean. ``group``, ``deviation`` (slices,): the phase each
+    slice went into, and p. ``contrasted``: whether c differs from 1 anywhere.
+    """
+
+    u: F64
+    n: F64
+    of: FoldedContrast
     level: F64
     level_c: F64
     level_ca: F64
@@ -165,75 +184,55 @@ class Fold:
     freedom: F64
     group: NDArray[np.intp]
     deviation: F64
+    contrasted: bool
 
 
 def fold_strip(
     strip: Strip,
     levels: F64,
-    contrast: F64,
+    contrast: F64 | None = None,
     *,
     replaced: NDArray[np.bool_] | None = None,
     blind: NDArray[np.bool_] | None = None,
 ) -> Fold:
     """Sum the slices of a strip by sub-pixel phase.
 
-    ``levels`` (slices, columns): the strip's own, or brought to a common height. ``contrast``
-    (slices,): relative to the arm's: where the arm is faint its flanks say less of its place.
-    ``replaced``, ``blind`` (slices, columns), if there are any: pixels that hold what is expected
-    there, and those that are full.
+    ``levels`` (slices, columns): the strip's own, or freed of their grounds. ``contrast``
+    (slices,): relative to the arm's, if it is not the same everywhere. ``replaced``, ``blind``
+    (slices, columns), if there are any: pixels that hold what is expected there, and those that
+    are full.
     """
     group = np.minimum(((strip.phase + 0.5) * PHASES).astype(np.intp), PHASES - 1)
     present = np.bincount(group, minlength=PHASES) > 0
     group = (np.cumsum(present) - 1)[group]
-    groups, slices = int(group.max()) + 1, len(group)
-    along = strip.along
-    weights = np.empty((3, slices))
-    weights[0], weights[1], weights[2] = 1.0, contrast, contrast * along
-    member = np.zeros((3, groups, slices))
-    member[:, group, np.arange(slices)] = weights
-    each = member[0]
-    n = each.sum(axis=1)
-    phase = (each @ strip.phase) / n
+    groups, slices = int(np.count_nonzero(present)), len(group)
+    member = np.zeros((groups, slices))
+    member[group, np.arange(slices)] = 1.0
+    n = member.sum(axis=1)
+    phase = (member @ strip.phase) / n
     deviation = strip.phase - phase[group]
-    scalars = np.stack(
-        [
-            contrast,
-            contrast * along,
-            contrast**2,
-            contrast**2 * along,
-            (contrast * along) ** 2,
-            contrast * deviation,
-            contrast**2 * deviation,
-            (contrast * deviation) ** 2,
-            contrast**2 * deviation * along,
-        ],
-        axis=1,
-    )
-    c, ca, c2, c2a, c2a2, cp, c2p, c2p2, c2pa = (each @ scalars).T[:, :, None]
-    level, level_c, level_ca = (member.reshape(-1, slices) @ levels).reshape(3, groups, -1)
+    c = np.ones(slices) if contrast is None else contrast
+    ca, cp = c * strip.along, c * deviation
+    products = np.stack([c, ca, c * c, c * ca, ca * ca, cp, c * cp, cp * cp, cp * ca])
+    sums = (products @ member.T)[:, :, None]
+    level, level_ca = member @ levels, (member * ca) @ levels
+    level_c = level if contrast is None else (member * c) @ levels
     seen, freedom = np.ones_like(level), np.broadcast_to(n[:, None] - 1, level.shape)
     if blind is not None:
-        seen = 1.0 * (each @ blind < MOST_BLIND * n[:, None])
+        seen = 1.0 * (member @ blind < MOST_BLIND * n[:, None])
     if replaced is not None:
-        freedom = np.maximum(freedom - each @ replaced, 0.0)
+        freedom = np.maximum(freedom - member @ replaced, 0.0)
     return Fold(
         (strip.offsets[None, :] - phase[:, None]) * strip.line.cosine,
         n[:, None],
-        c,
-        ca,
-        c2,
-        c2a,
-        c2a2,
-        cp,
-        c2p,
-        c2p2,
-        c2pa,
+        FoldedContrast(*sums),
         level,
         level_c,
         level_ca,
-        each @ levels**2,
+        member @ levels**2,
         seen,
         freedom,
         group,
         deviation,
+        contrast is not None,
     )

@@ -36,8 +36,7 @@ class Look:
 
     ``background`` (levels), ``gradient`` (levels per pixel across), both (slices,): how much more
     there is than on the arm at large. ``contrast`` (slices,): relative to the arm's. ``spoilt``
-    (slices, columns): pixels replaced; ``clipped``: those at full scale. ``levels``: after all
-    this.
+    (slices, columns): pixels replaced. ``levels``: after all this.
     """
 
     strip: Strip
@@ -45,24 +44,20 @@ class Look:
     gradient: F64
     contrast: F64
     spoilt: NDArray[np.bool_]
-    clipped: NDArray[np.bool_]
     levels: F64
     fold: Fold
     solution: Solution
 
     @classmethod
-    def at_first(
-        cls, strip: Strip, fold: Fold, solution: Solution, clipped: NDArray[np.bool_]
-    ) -> Look:
-        """Nothing is known but which pixels are clipped."""
+    def at_first(cls, strip: Strip, fold: Fold, solution: Solution) -> Look:
+        """Nothing is known yet."""
         slices = len(strip.rows)
         return cls(
             strip,
             np.zeros(slices),
             np.zeros(slices),
             np.ones(slices),
-            np.zeros_like(clipped),
-            clipped,
+            np.zeros(strip.levels.shape, dtype=np.bool_),
             strip.levels,
             fold,
             solution,
@@ -99,7 +94,7 @@ class Look:
     def improved(self, residual: F64, sections: Sections) -> Look | None:
         """A better look, or None if nothing was found to improve or the rest cannot be fitted."""
         background, gradient, contrast = self.background, self.gradient, self.contrast
-        spoilt = self.spoilt | self.clipped
+        spoilt = self.spoilt if self.strip.clipped is None else self.spoilt | self.strip.clipped
         keep = sections.on_line(OFF_LINE)
         if sections.uneven:
             background = background + sections.at(self.strip.along, sections.background)
@@ -108,7 +103,7 @@ class Look:
             contrast = contrast + sections.at(self.strip.along, sections.contrast) / arm
             keep &= _with_neighbours(sections.lit(arm, LIT))
         else:
-            spoilt |= self._standing_out(residual)
+            spoilt = spoilt | self._standing_out(residual)
         keep_slices = sections.of_slices(keep)
         shape = self.solution.shape
         if not sections.uneven and keep.all() and not np.any(spoilt & ~self.spoilt):
@@ -139,7 +134,12 @@ class Look:
 
     @property
     def lopsidedness(self) -> tuple[float, int]:
-        """Reduced chi-square by which the profile's sides differ, 1 for noise, and its freedom."""
+        """Reduced chi-square by which the profile's sides differ, 1 for noise, and its freedom.
+
+        Not looked for where the profile as a whole fits.
+        """
+        if not fits_badly(self.solution, sure=3.0):
+            return 1.0, 1
         return lopsidedness(self.fold, self.strip.line.cosine, self.solution)
 
     def _fitted_anew(
@@ -161,19 +161,30 @@ class Look:
         if spoilt.any():
             expected = replace(self, contrast=contrast).expected()
             # of a clipped pixel it is known that it is no darker than it reads
-            expected = np.where(self.clipped, np.maximum(expected, levels), expected)
+            if self.strip.clipped is not None:
+                brighter = np.maximum(expected, levels)
+                expected = np.where(self.strip.clipped, brighter, expected)
             levels = np.where(spoilt, expected, levels)
         contrast = contrast / mean_contrast
         strip, levels, contrast = self.strip.only(keep), levels[keep], contrast[keep]
-        spoilt, clipped = spoilt[keep], self.clipped[keep]
+        spoilt = spoilt[keep]
         fold = fold_strip(
             strip,
             levels,
-            contrast,
+            contrast if np.any(contrast != 1.0) else None,
             replaced=spoilt if spoilt.any() else None,
-            blind=clipped if clipped.any() else None,
+            blind=strip.clipped,
         )
-        anew = solve_fold(fold, strip.line.cosine, replace(shape, contrast=arm), strip.depth)
+        moved = strip.line.middle_y - self.strip.line.middle_y
+        anew = solve_fold(
+            fold,
+            strip.line.cosine,
+            replace(shape, contrast=arm),
+            strip.depth,
+            known=True,
+            shift=self.solution.shift + self.solution.turn * moved,
+            turn=self.solution.turn,
+        )
         if anew is None:
             return None
         return Look(
@@ -182,7 +193,6 @@ class Look:
             gradient[keep],
             contrast,
             spoilt,
-            clipped,
             levels,
             fold,
             anew,

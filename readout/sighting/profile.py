@@ -33,46 +33,57 @@ class Profile:
 
 def line_profile(u: F64, half_width: float, blur: float, pixel: float = 1.0) -> Profile:
     """Profile of a line of height 1 at distances ``u`` from its middle; all lengths in pixels."""
-    z = (
-        u[None]
-        + np.array([1, 1, -1, -1]).reshape(4, *[1] * u.ndim) * half_width
-        + np.array([1, -1, 1, -1]).reshape(4, *[1] * u.ndim) * (pixel / 2)
-    ) / blur
-    below = ndtr(z)
-    density = np.exp(-0.5 * z * z) / math.sqrt(2 * math.pi)
-    twice = z * below + density
+    edge, side = half_width / blur, pixel / (2 * blur)
+    at = u / blur
+    z = np.empty((4, *u.shape))
+    for place, offset in enumerate((edge + side, edge - side, side - edge, -edge - side)):
+        np.add(at, offset, out=z[place])
+    parts = np.empty((3, *z.shape))
+    below, density, twice = parts
+    ndtr(z, out=below)
+    np.multiply(z, z, out=density)
+    density *= -0.5
+    np.exp(density, out=density)
+    density *= 1 / math.sqrt(2 * math.pi)
+    np.multiply(z, below, out=twice)
+    twice += density
+    of_edges = (parts[:, ::2] - parts[:, 1::2]) * (1 / pixel)
+    by_u, by_blur, value = of_edges[:, 0] - of_edges[:, 1]
     return Profile(
-        value=(twice[0] - twice[1] - twice[2] + twice[3]) * (blur / pixel),
-        by_u=(below[0] - below[1] - below[2] + below[3]) / pixel,
-        by_half_width=(below[0] - below[1] + below[2] - below[3]) / pixel,
-        by_blur=(density[0] - density[1] - density[2] + density[3]) / pixel,
+        value=value * blur,
+        by_u=by_u,
+        by_half_width=of_edges[0, 0] + of_edges[0, 1],
+        by_blur=by_blur,
     )
 
 
-def half_maximum(half_width: float, blur: float) -> tuple[float, float]:
-    """Full width at half maximum of the profile, px, and its height in the middle.
+def peak_height(half_width: float, blur: float) -> float:
+    """Height of the profile in its middle, with pixels of width 1."""
+    return _value_and_rise(0.0, half_width, blur)[0]
 
-    Newton's method on the profile of pixels of width 1: plain numbers, it is asked of every arm.
-    """
 
-    def value_and_rise(u: float) -> tuple[float, float]:
-        value = rise = 0.0
-        for edge, pixel in ((1, 1), (1, -1), (-1, 1), (-1, -1)):
-            z = (u + edge * half_width + pixel / 2) / blur
-            below = 0.5 * math.erfc(-z / math.sqrt(2))
-            sign = edge * pixel
-            value += sign * (z * below + math.exp(-0.5 * z * z) / math.sqrt(2 * math.pi)) * blur
-            rise += sign * below
-        return value, rise
-
-    peak = value_and_rise(0.0)[0]
+def half_maximum(half_width: float, blur: float) -> float:
+    """Full width at half maximum of the profile, px, by Newton's method."""
+    half = peak_height(half_width, blur) / 2
     u = max(half_width, 1.18 * blur)
     for _ in range(6):
-        value, rise = value_and_rise(u)
+        value, rise = _value_and_rise(u, half_width, blur)
         if not rise < 0:
             break
-        step = (value - peak / 2) / rise
+        step = (value - half) / rise
         u -= step
-        if abs(step) < 1e-6:
+        if abs(step) < 1e-4:
             break
-    return 2 * u, peak
+    return 2 * u
+
+
+def _value_and_rise(u: float, half_width: float, blur: float) -> tuple[float, float]:
+    """F and its derivative at one place, in plain numbers: it is asked of every arm."""
+    value = rise = 0.0
+    for edge, pixel in ((1, 1), (1, -1), (-1, 1), (-1, -1)):
+        z = (u + edge * half_width + pixel / 2) / blur
+        below = 0.5 * math.erfc(-z / math.sqrt(2))
+        sign = edge * pixel
+        value += sign * (z * below + math.exp(-0.5 * z * z) / math.sqrt(2 * math.pi)) * blur
+        rise += sign * below
+    return value, rise

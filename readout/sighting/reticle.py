@@ -36,6 +36,7 @@ class Picture:
         shape: Shape,
         *,
         is_level: bool,
+        known: bool = False,
         skip: tuple[float, float] | None = None,
     ) -> ArmFit | None:
         """A credible fit of an arm without the stretch from ``skip[0]`` to ``skip[1]``, or None."""
@@ -44,6 +45,7 @@ class Picture:
             self.pixels.T if is_level else self.pixels,
             line,
             shape,
+            known=known,
             full_scale=self.full_scale,
             skip_from=skip_from,
             skip_to=skip_to,
@@ -51,24 +53,31 @@ class Picture:
         return fit if fit is not None and _credible(fit) else None
 
     def fit_both(
-        self, upright: Line, level: Line, upright_shape: Shape, level_shape: Shape
+        self,
+        upright: Line,
+        level: Line,
+        upright_shape: Shape,
+        level_shape: Shape,
+        *,
+        known: bool = False,
     ) -> Cross | None:
         """Fit each arm without the stretch where the other one crosses it; None unless both hold.
 
+        ``known``: the shapes are near in all they say, else only in width and polarity.
         The first arm is fitted once more if the second, now known, reaches into what was taken.
         """
         left_out = _shadow(upright, upright_shape, level, level_shape)
         slack = left_out[0] - SLACK_PX, left_out[1] + SLACK_PX
-        first = self.fit(upright, upright_shape, is_level=False, skip=slack)
+        first = self.fit(upright, upright_shape, is_level=False, known=known, skip=slack)
         if first is None:
             return None
         across = _shadow(level, level_shape, first.line, first.shape)
-        second = self.fit(level, level_shape, is_level=True, skip=across)
+        second = self.fit(level, level_shape, is_level=True, known=known, skip=across)
         if second is None or first.shape.contrast * second.shape.contrast < 0:
             return None
         shadow = _shadow(first.line, first.shape, second.line, second.shape)
         if shadow[0] < slack[0] or shadow[1] > slack[1]:
-            first = self.fit(first.line, first.shape, is_level=False, skip=shadow)
+            first = self.fit(first.line, first.shape, is_level=False, known=True, skip=shadow)
         return None if first is None else Cross(first, second)
 
 

@@ -55,17 +55,17 @@ class Found:
             )
             for k in range(count)
         ]
-        return tuple(Return(*cross.point(), share=self._share(cross)) for cross in crosses)
+        return tuple(self._return(cross) for cross in crosses)
 
-    def _share(self, cross: Cross) -> float:
-        """Contrast relative to the main return's, of the fainter of the arms that are not its."""
+    def _return(self, cross: Cross) -> Return:
+        assert self.main is not None
         main = self.main
-        assert main is not None
-        return min(
+        shares = [
             abs(arm.peak_contrast / of_main.peak_contrast)
             for arm, of_main in ((cross.upright, main.upright), (cross.level, main.level))
             if arm is not of_main
-        )
+        ]
+        return Return(*cross.point(), share=max(shares), lone=len(shares) == 1)
 
 
 def search(picture: Picture, known: Cross | None = None) -> Found:

@@ -24,6 +24,8 @@ from readout.sighting.solve import Solution
 SECTIONS = 64
 LEAST_ROWS = 4
 """rows in a section, at least: correlation over fewer rows than this is seen in full"""
+JAGGED_SDS, JAGGED_SHARE = 4.0, 0.01
+"""a ground is jagged if it bends by so many sds and by this share of the arm's contrast"""
 SURE = 6.0
 """a reduced chi-square this many of its standard deviations above 1 is no noise"""
 
@@ -43,14 +45,16 @@ class Light:
         From a straight line through all sections, or a cubic where they are uneven; at the end of
         the arm for a row beyond it.
         """
+        if not self.uneven:
+            return _slope(self.rows, self.contrast, self.contrast_sd**-2)
         size = float(np.ptp(self.rows)) / 2
         middle = float(self.rows.min()) + size
         place = (self.rows - middle) / size
         at = min(max((row - middle) / size, -1.0), 1.0)
-        powers = np.arange(4 if self.uneven else 2)
-        design = place[:, None] ** powers / self.contrast_sd[:, None]
-        fit = linear_least_squares(design, self.contrast / self.contrast_sd)
-        rise = np.array([0.0, 1.0, 2 * at, 3 * at**2])[: len(powers)] / size
+        fit = linear_least_squares(
+            place[:, None] ** np.arange(4), self.contrast, self.contrast_sd**-2
+        )
+        rise = np.array([0.0, 1.0, 2 * at, 3 * at**2]) / size
         scatter = max(1.0, fit.residual_sd)
         return float(rise @ fit.parameters), scatter * math.sqrt(float(rise @ fit.cofactor @ rise))
 
@@ -94,7 +98,7 @@ class Sections:
         The usual scatter is the median one: where all sections scatter, none is the culprit.
         """
         off = np.abs(self.shift / self.shift_sd)
-        return off <= limit * max(1.0, 1.4826 * float(np.median(off)))
+        return off <= limit * max(1.0, 1.4826 * _quantile(off, 0.5))
 
     def lit(self, contrast: float, share: float) -> NDArray[np.bool_]:
         """False for a section that surely has less than ``share`` of the best ones' contrast.
@@ -102,7 +106,17 @@ class Sections:
         ``contrast``: the arm's, from which the sections' depart.
         """
         height = math.copysign(1.0, contrast) * (contrast + self.contrast)
-        return height + 2 * self.contrast_sd >= share * np.percentile(height, 90)
+        return height + 2 * self.contrast_sd >= share * _quantile(height, 0.9)
+
+    def jagged(self, contrast: float) -> bool:
+        """True if the ground goes up and down from section to section: graduations cross the arm.
+
+        Judged by the second differences that 3 in 10 exceed, so that some dust is none.
+        """
+        bends = np.abs(np.diff(self.background, 2))
+        sd = _quantile(self.background_sd, 0.5) * math.sqrt(6)
+        bend = _quantile(bends, 0.7) / 1.036
+        return bend > JAGGED_SDS * sd and bend > JAGGED_SHARE * abs(contrast)
 
     @property
     def uneven(self) -> bool:
@@ -114,6 +128,11 @@ class Sections:
         )
 
 
+def _quantile(values: F64, share: float) -> float:
+    """The value that a share of them does not exceed; numpy's own takes ten times as long."""
+    return float(np.sort(values)[int(share * (len(values) - 1))])
+
+
 def _reduced(scaled: F64, parameters: int) -> float:
     return float(scaled @ scaled) / max(len(scaled) - parameters, 1)
 
@@ -121,7 +140,11 @@ def _reduced(scaled: F64, parameters: int) -> float:
 def sections_of(
     strip: Strip, residual: F64, contrast: F64, fold: Fold, solution: Solution
 ) -> Sections | None:
-    """What each section says for itself; None of an arm too short for sections."""
+    """What each section says for itself; None of an arm too short for sections.
+
+    Each slice is solved with the templates of its phase, and the slices of a section are averaged,
+    for the shift with the square of their contrast.
+    """
     slices = len(strip.rows)
     sections = min(SECTIONS, slices * strip.depth // LEAST_ROWS, slices)
     if sections < 8:
@@ -132,16 +155,17 @@ def sections_of(
         axis=-1,
     )
     weighted = templates * solution.weight[:, :, None]
-    of_phase = np.swapaxes(weighted, 1, 2) @ templates
-    scale = np.ones((slices, 4))
-    scale[:, 3] = contrast
-    pull = scale * (residual[:, None, :] @ weighted[fold.group])[:, 0, :]
-    normal = of_phase[fold.group] * (scale[:, :, None] * scale[:, None, :])
-    value, cov = _solved(
-        np.add.reduceat(normal, first, axis=0), np.add.reduceat(pull, first, axis=0)
-    )
-    sd = np.sqrt(np.einsum("sii->si", cov))
-    along = np.add.reduceat(strip.along, first) / np.diff(np.append(first, slices))
+    cov = _inverses(np.swapaxes(weighted, 1, 2) @ templates)
+    matched = np.ascontiguousarray(np.moveaxis(weighted @ cov, 2, 0))
+    of_slice = [np.einsum("sc,sc->s", residual, match[fold.group]) for match in matched]
+    var = np.einsum("pii->pi", cov)[fold.group]
+    count = np.diff(np.append(first, slices))[:, None]
+    weight = np.ones((slices, 4))
+    weight[:, 3] = contrast
+    total = np.add.reduceat(weight**2, first, axis=0)
+    value = np.add.reduceat(weight * np.stack(of_slice, axis=1), first, axis=0) / total
+    sd = np.sqrt(np.add.reduceat(weight**2 * var, first, axis=0)) / total
+    along = np.add.reduceat(strip.along, first) / count[:, 0]
     return Sections(
         along,
         value[:, 0],
@@ -156,20 +180,25 @@ def sections_of(
     )
 
 
-def _solved(normal: F64, pull: F64) -> tuple[F64, F64]:
-    """Solutions (n, 4) and covariances (n, 4, 4) of n small systems, huge where nothing is seen."""
-    size = np.einsum("sii->si", normal)
+def _inverses(normal: F64) -> F64:
+    """Inverses of small matrices (n, 4, 4), huge where nothing is seen."""
+    size = np.einsum("pii->pi", normal)
     size = np.sqrt(np.where(size > 0, size, 1.0))
     sizes = size[:, :, None] * size[:, None, :]
-    cov = np.linalg.inv(normal / sizes + 1e-9 * np.eye(normal.shape[-1])) / sizes
-    return (cov @ pull[:, :, None])[:, :, 0], cov
+    return np.linalg.inv(normal / sizes + 1e-9 * np.eye(normal.shape[-1])) / sizes
 
 
 def _about_line(along: F64, value: F64, sd: F64) -> F64:
     """Values less the weighted straight line through them."""
     weight = sd**-2
     middle = float(weight @ along) / float(weight.sum())
-    arm = along - middle
     mean = float(weight @ value) / float(weight.sum())
-    slope = float(weight @ (arm * value)) / max(float(weight @ arm**2), 1e-300)
-    return value - mean - slope * arm
+    return value - mean - _slope(along, value, weight)[0] * (along - middle)
+
+
+def _slope(along: F64, value: F64, weight: F64) -> tuple[float, float]:
+    """Slope of the weighted straight line through values, and its standard deviation."""
+    middle = float(weight @ along) / float(weight.sum())
+    arm = weight * (along - middle)
+    size = max(float(arm @ along), 1e-300)
+    return float(arm @ value) / size, 1 / math.sqrt(size)

@@ -27,6 +27,9 @@ from readout.sighting.shape import Shape
 MOST_STEPS = 20
 NEAR = 0.5
 """pixels by which width, blur and line may still change before weights come in"""
+FAR_PX = 0.3
+"""variances are found anew for a line that moved further, or is not of one contrast: it is only
+against the best fit that its slices scatter by their noise alone"""
 SETTLED = 0.02
 """the same before the last step: the next one's change goes with its square"""
 DAMPING = 0.01
@@ -69,7 +72,8 @@ class Solution:
     @property
     def slice_sd(self) -> float:
         """Typical noise of a slice's pixel, levels."""
-        return 1 / math.sqrt(max(float(np.median(self.weight)), 1e-300))
+        middle = float(np.sort(self.weight, axis=None)[self.weight.size // 2])
+        return 1 / math.sqrt(max(middle, 1e-300))
 
 
 @dataclass(frozen=True, slots=True)
@@ -77,13 +81,17 @@ class _Model:
     """The model at one step: what is expected, and its derivatives, (phases, columns) each.
 
     ``ground``: b + g u. ``line``: C P. ``columns`` (n, phases, columns): by the parameters of
-    ``Shape.changed``, of which the first two are the ground's. ``flank``: by shift.
+    ``Shape.changed``, of which the first two are the ground's, and by shift.
     """
 
     ground: F64
     line: F64
-    flank: F64
     columns: F64
+
+    @property
+    def flank(self) -> F64:
+        """Derivative by shift, levels per pixel."""
+        return np.asarray(self.columns[-1])
 
 
 @dataclass(frozen=True, slots=True)
@@ -98,42 +106,55 @@ class _State:
     def left(self, fold: Fold) -> F64:
         """What is left of the sums of levels, (phases, columns)."""
         model = self.model
-        off = self.turn * fold.ca + fold.cp
-        return fold.level - fold.n * model.ground - fold.c * model.line - off * model.flank
+        off = self.turn * fold.of.ca + fold.of.cp
+        return fold.level - fold.n * model.ground - fold.of.c * model.line - off * model.flank
 
     def cost(self, fold: Fold, weight: F64) -> float:
         """Weighted sum of squares of what is left of the folded profile."""
         return float(np.vdot(weight / fold.n, self.left(fold) ** 2))
 
 
-def solve_fold(fold: Fold, cosine: float, shape: Shape, depth: int = 1) -> Solution | None:
+def solve_fold(
+    fold: Fold,
+    cosine: float,
+    shape: Shape,
+    depth: int = 1,
+    *,
+    known: bool = False,
+    shift: float = 0.0,
+    turn: float = 0.0,
+) -> Solution | None:
     """Least squares for one fold: unweighted until near, then with the variance found there.
 
     ``shape`` is a rough start, of which only the sign of the contrast, width and blur matter;
-    ``depth`` rows were averaged to each slice. Returns None where the pixels say nothing.
+    ``known``: all of it is near, and so are ``shift`` and ``turn``. ``depth`` rows were averaged to
+    each slice. Returns None where the pixels say nothing.
     """
-    state = _started(fold, cosine, shape)
-    near = None if state is None else _descended(fold, cosine, state, fold.seen, NEAR, DAMPING)
+    if known:
+        near: _State | None = _State(shape, shift, turn, _model(fold, cosine, shape, shift))
+    else:
+        near = _approached(fold, cosine, shape)
     if near is None:
         return None
-    weight = fold.seen / _slice_variance(fold, near[0], depth)
-    settled = _descended(fold, cosine, near[0], weight, 0.0, TINY)
-    inverse = None if settled is None else _inverse(settled[2], TINY)
-    if settled is None or inverse is None:
+    weight = fold.seen / _slice_variance(fold, near, depth)
+    settled = _descended(fold, cosine, near, weight, 0.0, TINY)
+    if settled is not None and (fold.contrasted or abs(settled[0].shift - near.shift) > FAR_PX):
+        weight = fold.seen / _slice_variance(fold, settled[0], depth)
+        settled = _descended(fold, cosine, settled[0], weight, 0.0, TINY)
+    if settled is None:
         return None
-    state, change, _ = settled
-    shape, model, count = state.shape.changed(change[:-2]), state.model, len(state.model.columns)
+    state, change, inverse = settled
+    shape, model = state.shape.changed(change[:-2]), state.model
+    flat = model.columns.reshape(len(model.columns), -1)
     ground = shape.background + shape.gradient * fold.u
-    line = model.line + np.tensordot(change[2:count], model.columns[2:], 1)
-    line += float(change[-2]) * model.flank
+    line = model.line + (change[2:-1] @ flat[2:]).reshape(model.line.shape)
     turn = state.turn + float(change[-1])
-    off = turn * fold.ca + fold.cp
-    left = fold.level - fold.n * ground - fold.c * line - off * model.flank
-    leaning = (weight * fold.u * line).ravel()
-    lean = inverse[-2, :2] @ (model.columns[:2].reshape(2, -1) @ (leaning * _flat(fold.c, line)))
-    by_line = np.concatenate([model.columns[2:], model.flank[None]]).reshape(count - 1, -1)
-    lean += inverse[-2, 2:-1] @ (by_line @ (leaning * _flat(fold.c2, line)))
-    freedom = max(int(fold.seen.sum()) - count - 2, 1)
+    off = turn * fold.of.ca + fold.of.cp
+    left = fold.level - fold.n * ground - fold.of.c * line - off * model.flank
+    leaning = weight * fold.u * line
+    lean = inverse[-2, :2] @ (flat[:2] @ (leaning * fold.of.c).ravel())
+    lean += inverse[-2, 2:-1] @ (flat[2:] @ (leaning * fold.of.c2).ravel())
+    freedom = max(int(fold.seen.sum()) - len(flat) - 1, 1)
     return Solution(
         shape,
         state.shift + float(change[-2]),
@@ -151,14 +172,10 @@ def solve_fold(fold: Fold, cosine: float, shape: Shape, depth: int = 1) -> Solut
     )
 
 
-def _flat(per_phase: F64, like: F64) -> F64:
-    return np.broadcast_to(per_phase, like.shape).ravel()
-
-
 def _descended(
     fold: Fold, cosine: float, state: _State, weight: F64, near: float, damping: float
 ) -> tuple[_State, F64, F64] | None:
-    """The state near the least squares, the last step towards it and its normal equations.
+    """The state near the least squares, the last step towards it and the inverse it was made with.
 
     It is the one after a step of less than ``near`` px, or before one that changes nothing much.
 
@@ -166,16 +183,17 @@ def _descended(
     """
     cost = state.cost(fold, weight)
     normal, right = _normal_equations(fold, state, weight)
-    change = right
+    change = np.zeros_like(right)
     for _ in range(MOST_STEPS):
         inverse = _inverse(normal, damping)
         if inverse is None:
             return None
         change = inverse @ right
-        if _largest(state, change) < SETTLED and damping < CALM:
-            break
-        if _largest(state, change) < near:
-            return _moved(fold, cosine, state, change), change, normal
+        step_px = _largest(state, change)
+        if step_px < SETTLED and damping < CALM:
+            return state, change, inverse
+        if step_px < near:
+            return _moved(fold, cosine, state, change), change, inverse
         trial = _moved(fold, cosine, state, change)
         trial_cost = trial.cost(fold, weight)
         if trial_cost <= cost * (1 + ROUNDING):
@@ -183,7 +201,8 @@ def _descended(
             normal, right = _normal_equations(fold, state, weight)
         else:
             damping = max(damping * 30, DAMPING)
-    return state, change, normal
+    inverse = _inverse(normal, TINY)
+    return None if inverse is None else (state, change, inverse)
 
 
 def _largest(state: _State, change: F64) -> float:
@@ -199,6 +218,13 @@ def _moved(fold: Fold, cosine: float, state: _State, change: F64) -> _State:
     return _State(shape, shift, turn, _model(fold, cosine, shape, shift))
 
 
+def _approached(fold: Fold, cosine: float, shape: Shape) -> _State | None:
+    """Near the unweighted least squares, from a rough shape."""
+    state = _started(fold, cosine, shape)
+    near = None if state is None else _descended(fold, cosine, state, fold.seen, NEAR, DAMPING)
+    return None if near is None else near[0]
+
+
 def _started(fold: Fold, cosine: float, shape: Shape) -> _State | None:
     """The background, gradient and contrast that fit best for a width, blur and place.
 
@@ -209,13 +235,12 @@ def _started(fold: Fold, cosine: float, shape: Shape) -> _State | None:
     value = _model(fold, cosine, shape, 0.0).line
     columns = np.stack([np.ones_like(value), fold.u, value])
     normal, right = np.empty((3, 3)), np.empty(3)
-    flat = columns.reshape(3, -1)
-    seen = fold.seen.ravel()
-    normal[:2] = (flat[:2] * seen * _flat(fold.n, value)) @ flat.T
-    normal[:2, 2] = normal[2, :2] = (flat[:2] * seen * _flat(fold.c, value)) @ flat[2]
-    normal[2, 2] = float((flat[2] * seen * _flat(fold.c2, value)) @ flat[2])
-    right[:2] = flat[:2] @ (seen * fold.level.ravel())
-    right[2] = float(flat[2] @ (seen * fold.level_c.ravel()))
+    flat, seen = columns.reshape(3, -1), fold.seen
+    normal[:2] = (columns[:2] * (seen * fold.n)).reshape(2, -1) @ flat.T
+    normal[:2, 2] = normal[2, :2] = flat[:2] @ (value * seen * fold.of.c).ravel()
+    normal[2, 2] = np.vdot(value, value * seen * fold.of.c2)
+    right[:2] = flat[:2] @ (seen * fold.level).ravel()
+    right[2] = np.vdot(value, seen * fold.level_c)
     try:
         linear = np.linalg.solve(normal, right).tolist()
     except np.linalg.LinAlgError:
@@ -248,8 +273,7 @@ def _model(fold: Fold, cosine: float, shape: Shape, shift: float) -> _Model:
     return _Model(
         shape.background + shape.gradient * fold.u,
         contrast * value,
-        (-contrast * cosine) * by_u,
-        np.stack(columns + extra),
+        np.stack([*columns, *extra, (-contrast * cosine) * by_u]),
     )
 
 
@@ -275,27 +299,29 @@ def _normal_equations(fold: Fold, state: _State, weight: F64) -> tuple[F64, F64]
     Within a phase the line runs by p off the mean phase and by turn * a off the cut: both enter to
     first order, through the flank, as the shift.
     """
-    model = state.model
-    count, flank, line = len(model.columns), model.flank, model.line
-    by_ground, by_line = model.columns[:2], np.concatenate([model.columns[2:], flank[None]])
-    flat_ground, flat_line = by_ground.reshape(2, -1), by_line.reshape(count - 1, -1)
-    weighted_ground, weighted_line = by_ground * weight, by_line * weight
-    weighted_flank = weighted_line[-1]
-    normal, right = np.empty((count + 2, count + 2)), np.empty(count + 2)
-    normal[:2, :2] = (weighted_ground * fold.n).reshape(2, -1) @ flat_ground.T
-    normal[:2, 2:-1] = (weighted_ground * fold.c).reshape(2, -1) @ flat_line.T
+    model, of = state.model, fold.of
+    columns, line, flank = model.columns, model.line, model.flank
+    count = len(columns)
+    flat, weighted = columns.reshape(count, -1), columns * weight
+    flank_weighted = weighted[-1]
+    normal, right = np.empty((count + 1, count + 1)), np.empty(count + 1)
+    normal[:2, :2] = (weighted[:2] * fold.n).reshape(2, -1) @ flat[:2].T
+    normal[:2, 2:-1] = (weighted[:2] * of.c).reshape(2, -1) @ flat[2:].T
     normal[2:-1, :2] = normal[:2, 2:-1].T
-    normal[2:-1, 2:-1] = (weighted_line * fold.c2).reshape(count - 1, -1) @ flat_line.T
-    normal[:2, -1] = normal[-1, :2] = flat_ground @ (weighted_flank * fold.ca).ravel()
-    normal[2:-1, -1] = normal[-1, 2:-1] = flat_line @ (weighted_flank * fold.c2a).ravel()
-    normal[-1, -1] = (weighted_flank * flank).sum(axis=1) @ fold.c2a2[:, 0]
-    right[:2] = weighted_ground.reshape(2, -1) @ state.left(fold).ravel()
-    left_c = fold.level_c - fold.c * model.ground - fold.c2 * line
-    left_c -= (state.turn * fold.c2a + fold.c2p) * flank
-    right[2:-1] = weighted_line.reshape(count - 1, -1) @ left_c.ravel()
-    left_ca = fold.level_ca - fold.ca * model.ground - fold.c2a * line
-    left_ca -= (state.turn * fold.c2a2 + fold.c2pa) * flank
-    right[-1] = np.vdot(weighted_flank, left_ca)
+    normal[2:-1, 2:-1] = (weighted[2:] * of.c2).reshape(count - 2, -1) @ flat[2:].T
+    normal[:2, -1] = normal[-1, :2] = flat[:2] @ (flank_weighted * of.ca).ravel()
+    normal[2:-1, -1] = normal[-1, 2:-1] = flat[2:] @ (flank_weighted * of.c2a).ravel()
+    normal[-1, -1] = (flank_weighted * flank).sum(axis=1) @ of.c2a2[:, 0]
+    left = state.left(fold)
+    left_c = left
+    if fold.contrasted:
+        left_c = fold.level_c - of.c * model.ground - of.c2 * line
+        left_c -= (state.turn * of.c2a + of.c2p) * flank
+    left_ca = fold.level_ca - of.ca * model.ground - of.c2a * line
+    left_ca -= (state.turn * of.c2a2 + of.c2pa) * flank
+    right[:2] = weighted[:2].reshape(2, -1) @ left.ravel()
+    right[2:-1] = weighted[2:].reshape(count - 2, -1) @ left_c.ravel()
+    right[-1] = np.vdot(flank_weighted, left_ca)
     return normal, right
 
 
@@ -307,12 +333,13 @@ def _slice_variance(fold: Fold, state: _State, depth: int) -> F64:
     """
     model = state.model
     freedom = fold.freedom * fold.seen
-    places = fold.c2p2 + state.turn**2 * (fold.c2a2 - fold.ca**2 / fold.n)
+    of, turn = fold.of, state.turn
+    places = of.c2p2 + turn * (2 * of.c2pa + turn * of.c2a2) - (of.cp + turn * of.ca) ** 2 / fold.n
     about_model = (
         fold.level2
         - 2 * (model.ground * fold.level + model.line * fold.level_c)
-        + model.ground * (fold.n * model.ground + 2 * fold.c * model.line)
-        + fold.c2 * model.line**2
+        + model.ground * (fold.n * model.ground + 2 * fold.of.c * model.line)
+        + fold.of.c2 * model.line**2
     )
     about_mean = about_model - state.left(fold) ** 2 / fold.n - model.flank**2 * places
     squares = about_mean * fold.seen
@@ -329,11 +356,10 @@ def _slice_variance(fold: Fold, state: _State, depth: int) -> F64:
 
 def _explained(fold: Fold, left: F64, weight: F64) -> float:
     """Share of the folded profile's variance that the model explains, both without the noise."""
-    seen = weight > 0
-    n = fold.n * seen
+    n = fold.n * fold.seen
     mean_level = fold.level / fold.n
-    around = mean_level - float((n * mean_level).sum()) / float(n.sum())
-    noise = float((1 / weight[seen]).sum())
-    unexplained = float((seen * left**2 / fold.n).sum()) - noise
-    there = float((n * around**2).sum()) - noise
+    around = mean_level - np.vdot(n, mean_level) / n.sum()
+    noise = float((fold.seen / np.maximum(weight, 1e-300)).sum())
+    unexplained = float(np.vdot(fold.seen / fold.n, left**2)) - noise
+    there = float(np.vdot(n, around**2)) - noise
     return 1 - max(unexplained, 0.0) / there if there > 0 else 0.0

@@ -35,6 +35,8 @@ RIVAL_SHARE = 0.2
 """another bright thing this high beside the spot makes it one of several returns"""
 ASTIGMATIC_RATIO = 1.5
 BLURRED_PX = 40.0
+NEARLY_SATURATED = 0.85
+"""a spot lower than this share of the range is not saturated by a hot pixel in it"""
 DIM_CONTRAST = 3.0
 """a spot less than this many pixel noises high is called dim"""
 AT_EDGE_WIDTHS = 2.0
@@ -164,7 +166,8 @@ def _sighting(picture: Picture, fit: SpotFit, *, alone: bool) -> Sighting:
     half = max(1, round(width / 2))
     x, y = round(shape.x), round(shape.y)
     core = pixels[max(0, y - half) : y + half + 1, max(0, x - half) : x + half + 1]
-    if np.any(core >= picture.ceiling):
+    clipped = np.count_nonzero(core >= picture.ceiling)
+    if clipped and shape.background + shape.height > NEARLY_SATURATED * picture.ceiling:
         quality |= Quality.SATURATED
     if shape.height < DIM_CONTRAST * fit.pixel_sd:
         quality |= Quality.DIM

@@ -32,9 +32,11 @@ from readout.sighting.spot_model import (
 )
 from readout.sighting.spot_noise import (
     CUT_SD,
+    Leftover,
     excess_variance,
     explained_share,
     known_from_few,
+    lopsidedness,
     rough_variance,
     variance_line,
 )
@@ -45,6 +47,8 @@ a spot of another shape does not jump with the noise"""
 MOST_STEPS = 8
 WEIGHTED_STEPS = 2
 """few on purpose: on a spot of another shape many steps would wander off to fit a part of it"""
+DARK = 0.02
+"""share of the height below which a pixel counts as ground"""
 CALMED = 1.2
 """what smoothing adds to the second moments of a spot, in cells^2"""
 SETTLED = 0.1
@@ -63,7 +67,9 @@ class SpotFit:
 
     ``height_sd``: uncertainty of the height, levels. ``explained``: share of the structure in the
     window that the spot explains. ``pixel_sd``: noise of one pixel on the ground, levels.
-    ``left_out``: share of the usable pixels that had to be left out as foreign.
+    ``left_out``: share of the usable pixels that had to be left out as foreign. ``excess``: factor
+    in ``cov`` for what the noise does not explain. ``lopsided_px``, ``lopsided_sds``: how far the
+    spot's core and skirt disagree about its place, and in standard deviations.
     """
 
     shape: SpotShape
@@ -72,6 +78,9 @@ class SpotFit:
     explained: float
     pixel_sd: float
     left_out: float
+    excess: float
+    lopsided_px: float
+    lopsided_sds: float
 
 
 @dataclass(frozen=True, slots=True)
@@ -153,8 +162,13 @@ def weigh(window: Window, settled: SpotShape, *, ceiling: float) -> SpotFit | No
         return None
     left = state.residual - step.change @ state.jacobian
     shape, _ = stepped(shape, step.change)
-    excess = excess_variance(columns, left, step.rows, step.cofactor, step.inside, variance)
+    z = np.clip(left / np.sqrt(variance), -CUT_SD, CUT_SD) * step.inside
+    dark = state.light < DARK * shape.height
+    steady = np.maximum(1 - columns.least_variance / variance, 0.0)
+    leftover = Leftover(z, step.rows, step.cofactor, dark, steady)
+    excess = excess_variance(columns, shape, leftover)
     factor = excess * known_from_few(freedom)
+    apart, apart_sds = lopsidedness(state, leftover)
     return SpotFit(
         shape=window.in_pixels(shape),
         cov=step.cofactor[MIDDLE, MIDDLE] * (factor * window.cell**2),
@@ -162,6 +176,9 @@ def weigh(window: Window, settled: SpotShape, *, ceiling: float) -> SpotFit | No
         explained=explained_share(columns, shape, left, variance),
         pixel_sd=math.sqrt(float(np.min(variance))) * window.cell,
         left_out=1 - float(np.mean(step.inside)),
+        excess=excess,
+        lopsided_px=apart * window.cell,
+        lopsided_sds=apart_sds,
     )
 
 

@@ -8,6 +8,7 @@ squares of the residuals, each divided by what the fit leaves of it (D. V. Hinkl
 from __future__ import annotations
 
 import math
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -27,7 +28,13 @@ MEDIAN_TO_VARIANCE = 2.198
 SHAPE_PARAMETERS = 7
 LEAST_FREEDOM = 3.0
 MARGIN_SDS = 1.0
-"""scatter of the patches beyond this many sd of chance widens the covariance"""
+"""correlation or scatter beyond this many sd of chance widens the covariance"""
+MOST_CORRELATED = 0.95
+LEAST_STEADY = 0.25
+"""where less of the variance is noise, rounding hides whether it is correlated"""
+LEAST_LEFT = 0.25
+"""share of the noise that a fit leaves in the residuals at least"""
+_DISTANCE2 = np.arange(1.0, 7.0) ** 2
 
 
 def _middle(values: F64) -> float:
@@ -88,35 +95,115 @@ def known_from_few(freedom: float) -> float:
     return freedom / (freedom - 1)
 
 
-def excess_variance(
-    columns: Columns, left: F64, rows: F64, cofactor: F64, inside: Mask, variance: F64
-) -> float:
-    """By how much sums over patches scatter more than independent pixels do, at least 1.
+@dataclass(frozen=True, slots=True)
+class Leftover:
+    """What the last step leaves: residuals ``z`` in sd (n,), 0 where a pixel is not used.
 
-    The Birge ratio (R. T. Birge, Phys. Rev. 40 (1932) 207), of all patches alike (noise that goes
-    from pixel to pixel) and of those where the spot is steep (a spot of another shape, dust), the
-    larger one. ``left``: residuals after the last step.
+    ``rows`` (10, n): derivatives over the sd, ``cofactor`` (10, 10): inverse normal matrix,
+    ``dark``: pixels of the ground, ``steady`` (n,): share of a pixel's variance that is not
+    rounding.
+    """
+
+    z: F64
+    rows: F64
+    cofactor: F64
+    dark: Mask
+    steady: F64
+
+    @property
+    def flank2(self) -> F64:
+        """Share of each pixel in the knowledge of the middle."""
+        return np.asarray(self.rows[4] ** 2 + self.rows[5] ** 2)
+
+
+def excess_variance(columns: Columns, shape: SpotShape, left: Leftover) -> float:
+    """Factor on the covariance for what independent noise of the pixels does not explain, >= 1.
+
+    Noise that goes from pixel to pixel, or light the model does not know, whichever is more.
+    """
+    return max(1.0, _for_correlation(columns, shape, left), _for_misfit(columns, left))
+
+
+def _for_correlation(columns: Columns, shape: SpotShape, left: Leftover) -> float:
+    """Factor on the variance of the middle if the noise of neighbours is correlated.
+
+    Their correlation on the ground, where the fit takes little of it, or on the flanks, whichever
+    is more; rounding has none. Noise blurred by a Gaussian falls off as correlation^(distance^2),
+    summed here over all pairs with the weights of a Gaussian spot's flanks. Of noise that is
+    correlated the fit takes so much more, too, and the variance read from the residuals is too
+    small by it.
+    """
+    flank = np.sqrt(left.flank2)
+    steady = float(flank @ left.steady) / max(float(flank.sum()), 1e-300)
+    correlation = max(
+        _of_neighbours(columns, left, flank),
+        _of_neighbours(columns, left, left.dark.astype(np.float64)),
+    )
+    if correlation <= 0:
+        return 1.0
+    longer, shorter = shape.spreads_px
+    near = correlation**_DISTANCE2 * np.exp(-_DISTANCE2 / (4 * longer * shorter))
+    along = 1 + 2 * float(near.sum())
+    across = 1 + 2 * float(near @ (1 - _DISTANCE2 / (2 * longer * shorter)))
+    factor = 1 + steady * (along * across - 1)
+    taken = np.einsum("pi,pi->i", left.cofactor @ left.rows, left.rows)
+    share = float(left.flank2 @ taken) / max(float(left.flank2.sum()), 1e-300)
+    return factor * (1 - share) / max(1 - share * factor, LEAST_LEFT)
+
+
+def _of_neighbours(columns: Columns, left: Leftover, weight: F64) -> float:
+    """Correlation of the noise of neighbours, less what chance may make of it, 0 to 1.
+
+    What the fit makes of independent noise is added back.
+    """
+    i, j = columns.pairs
+    weights = weight[i] * weight[j] * ((left.z[i] != 0) & (left.z[j] != 0))
+    total = float(weights.sum())
+    steady = float(weights @ left.steady[i]) / total if total > 0 else 0.0
+    if steady < LEAST_STEADY:
+        return 0.0
+    by_fit = np.einsum("pi,pi->i", (left.cofactor @ left.rows)[:, i], left.rows[:, j])
+    found = float(weights @ (left.z[i] * left.z[j] + by_fit)) / total
+    chance = math.sqrt(float(weights @ weights)) / total
+    return min(max((found - MARGIN_SDS * chance) / steady, 0.0), MOST_CORRELATED)
+
+
+def _for_misfit(columns: Columns, left: Leftover) -> float:
+    """The Birge ratio (R. T. Birge, Phys. Rev. 40 (1932) 207) of patches where the spot is steep:
+    by how much their sums scatter more than independent pixels do.
     """
     patches = int(columns.patch.max()) + 1
 
     def sums(values: F64) -> F64:
         return np.asarray(np.bincount(columns.patch, values, patches), dtype=np.float64)
 
-    rows_of_patches = np.stack([sums(row) for row in rows])
-    taken = np.einsum("pb,pb->b", cofactor @ rows_of_patches, rows_of_patches)
-    pixels = sums(inside.astype(np.float64))
-    expected = pixels - taken
+    rows = np.stack([sums(row) for row in left.rows])
+    pixels = sums((left.z != 0).astype(np.float64))
+    expected = pixels - np.einsum("pb,pb->b", left.cofactor @ rows, rows)
     good = expected > 0.3 * np.maximum(pixels, 1.0)
-    pull = sums(np.clip(left / np.sqrt(variance), -CUT_SD, CUT_SD) * inside)
-    ratio = pull[good] ** 2 / expected[good]
-    steep = sums(rows[4] ** 2 + rows[5] ** 2)[good]
-    excess = 1.0
-    for share in (np.ones_like(steep), steep):
-        total = float(share.sum())
-        if total > 0:
-            chance = math.sqrt(2 * float(share @ share)) / total
-            excess = max(excess, float(share @ ratio) / total - MARGIN_SDS * chance)
-    return excess
+    share = sums(left.flank2)[good]
+    total = float(share.sum())
+    if total <= 0:
+        return 1.0
+    ratio = sums(left.z)[good] ** 2 / expected[good]
+    chance = math.sqrt(2 * float(share @ share)) / total
+    return float(share @ ratio) / total - MARGIN_SDS * chance
+
+
+def lopsidedness(state: State, left: Leftover) -> tuple[float, float]:
+    """How far core and skirt of the spot, above and below half its height, disagree about its
+    place: cells, and standard deviations of that. The larger one of x and y in sd.
+    """
+    core = state.light > 0.5 * state.light.max()
+    worst = (0.0, 0.0)
+    for flank in left.rows[4:6]:
+        pull, knowledge = flank * left.z, flank * flank
+        inner, outer = float(knowledge[core].sum()), float(knowledge[~core].sum())
+        if inner > 0 and outer > 0:
+            apart = abs(float(pull[core].sum()) / inner - float(pull[~core].sum()) / outer)
+            sds = apart / math.sqrt(1 / inner + 1 / outer)
+            worst = max(worst, (sds, apart))
+    return worst[1], worst[0]
 
 
 def explained_share(columns: Columns, shape: SpotShape, left: F64, variance: F64) -> float:

@@ -16,11 +16,15 @@ SATURATED_SHARE = 0.002
 AT_EDGE_WIDTHS = 2.0
 RIVAL_SHARE = 0.25
 """a second return of more than this share of the main one's contrast could be the right one"""
-LOPSIDED_PX = 0.1
+UNLIKE_RATIO = 4.0
+"""arms whose contrasts differ by more than this are of different things"""
+HIDDEN_PX = 0.1
+"""what a second return whose other arm hides in the main one's may pull it by"""
+LOPSIDED_PX = 0.06
 """a profile whose sides differ by what would shift it so far has something beside it"""
 BLURRED_PX = 12.0
 """blur, standard deviation, beyond which a sharper setting is worth the trouble"""
-ASTIGMATIC_RATIO = 1.5
+ASTIGMATIC_RATIO = 1.25
 """the arms' profiles differ in spread: the mirror or the window in the way is bent"""
 
 
@@ -39,8 +43,7 @@ def words_of(
         Quality.SATURATED: max(arm.clipped for arm in arms) > SATURATED_SHARE,
         Quality.DIM: sd > DIM_SD_PX
         or min(abs(arm.peak_contrast) / arm.pixel_sd for arm in arms) < DIM_CONTRAST,
-        Quality.SEVERAL_RETURNS: any(other.share > RIVAL_SHARE for other in others)
-        or any(map(_crowded, arms)),
+        Quality.SEVERAL_RETURNS: _rivalled(cross, others) or any(map(_crowded, arms)),
         Quality.BLURRED: max(arm.shape.blur for arm in arms) > BLURRED_PX,
         Quality.ASTIGMATIC: spreads[1] > ASTIGMATIC_RATIO * spreads[0],
     }
@@ -51,7 +54,22 @@ def words_of(
     return quality
 
 
+def _rivalled(cross: Cross, others: tuple[Return, ...]) -> bool:
+    """True if another return, or a part of one, could be the right one or pulls at this one."""
+    arms = (cross.upright, cross.level)
+    low, high = sorted(abs(arm.peak_contrast) for arm in arms)
+    half_width = max(arm.width_px for arm in arms) / 2
+    return high > UNLIKE_RATIO * low or any(
+        other.share > RIVAL_SHARE or (other.lone and other.share * half_width > HIDDEN_PX)
+        for other in others
+    )
+
+
 def _crowded(arm: ArmFit) -> bool:
     """True if something else lies on the arm or close beside it."""
     beside = arm.shape.beside
-    return arm.lopsided_px > LOPSIDED_PX or (beside is not None and beside.height > RIVAL_SHARE)
+    return (
+        arm.graduated
+        or arm.lopsided_px > LOPSIDED_PX
+        or (beside is not None and beside.height > RIVAL_SHARE)
+    )

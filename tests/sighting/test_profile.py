@@ -5,7 +5,7 @@ import pytest
 from scipy.integrate import quad
 from scipy.stats import norm
 
-from readout.sighting.profile import half_maximum, line_profile
+from readout.sighting.profile import half_maximum, line_profile, peak_height
 
 CASES = [(2.5, 1.3, 1.0), (0.2, 1.0, 0.985), (6.0, 0.5, 1.0), (1.0, 3.0, 0.99)]
 
@@ -46,7 +46,7 @@ def test_the_area_is_the_width_of_the_bar():
 def test_width_of_a_blurred_line_is_that_of_the_gaussian():
     """2 sqrt(2 ln 2) sigma for a line and a pixel much thinner than the blur; its peak is the
     line's width in the Gaussian's density."""
-    width, peak = half_maximum(0.5, 25.0)
+    width, peak = half_maximum(0.5, 25.0), peak_height(0.5, 25.0)
     sigma = np.sqrt(25.0**2 + 2 / 12)
     assert width == pytest.approx(2 * np.sqrt(2 * np.log(2)) * sigma, rel=1e-4)
     assert peak == pytest.approx(1 / (np.sqrt(2 * np.pi) * sigma), rel=1e-4)
@@ -54,7 +54,7 @@ def test_width_of_a_blurred_line_is_that_of_the_gaussian():
 
 @pytest.mark.parametrize(("half_width", "blur"), [(0.4, 0.35), (2.0, 1.6), (10.0, 0.5), (3.0, 6.0)])
 def test_width_and_peak_are_those_of_the_profile(half_width, blur):
-    width, peak = half_maximum(half_width, blur)
+    width, peak = half_maximum(half_width, blur), peak_height(half_width, blur)
     middle, side = line_profile(np.array([0.0, width / 2]), half_width, blur).value
     assert peak == pytest.approx(middle, rel=1e-9)
     assert side == pytest.approx(middle / 2, rel=1e-6)
