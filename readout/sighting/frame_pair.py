@@ -213,7 +213,7 @@ def _steadied(mean: F32, raw: F32, bins: NDArray[np.intp], within: NDArray[np.bo
         usual = max(1.4826 * float(np.median(unusual[::3, ::3])), 1 / np.sqrt(24))
         found = (unusual > CHANGED * usual).astype(np.uint8)
         changed |= cv2.dilate(found, np.ones((NEAR_PX, NEAR_PX), np.uint8)) > 0
-        count = int(np.count_nonzero(changed))
+        count = int(np.count_nonzero(changed | outlying))
         if count <= before + LEAST_NEWS * changed.size:
             break
         before = count

@@ -11,12 +11,12 @@ Photon Transfer, SPIE 2007). 1/12 is what rounding to whole levels adds.
 *Rounding.* It adds exactly 1/12 only where noise spreads over the steps (B. Widrow and I. Kollar,
 Quantization Noise, 2008; W. F. Sheppard, Proc. London Math. Soc. 29 (1898) 353). Noise of s levels
 leaves a ripple of amplitude (4 s^2 + 1/pi^2) exp(-2 pi^2 s^2) that depends on where between two
-steps the level lies: 0.1 % of the variance at s = 0.6, 3 % at half a step, 20 % at 0.4, and below
-0.2 the ripple is all there is; a quiet flat ground shows no noise whatever. EMVA 1288 takes no dark
-variance below 0.24 level^2 (s = 0.4) for a measurement. Here the ripple enters as an uncertainty of
-each level's variance, so that quiet levels lose their weight and the claimed uncertainty of the
-read noise grows to some 0.3 levels; ``Doubt.ROUNDED`` says so. The gain comes from the levels that
-have noise enough.
+steps the level lies: 0.4 % of s^2 at s = 0.6, 3 % at half a step, 20 % at 0.4, and below 0.2 the
+ripple is all there is; a quiet flat ground shows no noise whatever. EMVA 1288 takes no dark variance
+below 0.24 level^2 (s = 0.4) for a measurement (value from memory). Here the ripple enters as an
+uncertainty of each level's variance, so that quiet levels lose their weight and the claimed
+uncertainty of the read noise grows to as much as 0.3 levels; ``Doubt.ROUNDED`` says so. The gain
+comes from the levels that have noise enough.
 """
 
 from __future__ import annotations
@@ -122,12 +122,16 @@ class PhotonTransfer:
 
     @property
     def read_noise_electrons(self) -> float:
-        """Noise in the dark, electrons; NaN without dark frames."""
+        """Noise in the dark, electrons; NaN without dark frames or without a gain."""
+        if Doubt.NO_GAIN in self.doubt:
+            return math.nan
         return self.read_noise_levels / self.gain_levels_per_electron
 
     @property
     def read_noise_electrons_sd(self) -> float:
         """Its standard uncertainty."""
+        if Doubt.NO_GAIN in self.doubt:
+            return math.nan
         gain, noise = self.gain_levels_per_electron, self.read_noise_levels
         _, vg, gg = self.cov
         noise_var = self.read_noise_levels_sd**2

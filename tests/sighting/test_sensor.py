@@ -139,8 +139,20 @@ def test_flicker_is_seen_and_taken_out(light):
     assert all(Doubt.FLICKERED in found.doubt for found in transfers)
 
 
+def test_light_in_bands_is_taken_out_where_it_is_smooth():
+    """Mains on a rolling shutter, 1 % in bands of 100 rows, on a slope of light: 7 % of gain."""
+    bands = 2 * np.pi * np.arange(400.0)[:, None] / 200
+    slope = np.linspace(300.0, 7000.0, 300)[None, :]
+    gains = []
+    for seed in range(5):
+        rng = np.random.default_rng(seed)
+        a, b = (expose(slope * (1 + 0.01 * np.sin(bands + at)), SENSOR, rng) for at in (0.0, 1.5))
+        gains.append(photon_transfer(a, b, full_scale=255).gain_levels_per_electron)
+    assert np.mean(gains) == pytest.approx(0.03, rel=0.03)
+
+
 def test_light_in_bands_is_not_passed_over():
-    """Mains on a rolling shutter: 5 % in bands of 100 rows, at another phase in each frame."""
+    """5 % of such bands on a crosshair: its arms have no smooth neighbourhood."""
     rng = np.random.default_rng(1)
     bands = 2 * np.pi * np.arange(400.0)[:, None] / 200
     scene = crosshair_image((400, 200), 90.3, 200.2, RETICLE)
@@ -157,12 +169,14 @@ def test_hot_pixels_do_no_harm():
     assert np.mean(black) == pytest.approx(4.5, abs=0.12)
 
 
-def test_blinking_pixels_do_no_harm():
-    """Sixty pixels of 32000 at 4 in one frame and at 200 in the other."""
+@pytest.mark.parametrize(("level", "count"), [(26, 400), (200, 60)])
+def test_blinking_pixels_do_no_harm(level, count):
+    """Pixels of the ground, of 32000, at 16 in one frame and above it in the other."""
     for seed in range(5):
         rng = np.random.default_rng(seed)
         first, second = pair(SENSOR, rng)
-        second = np.where(hot_pixels(rng, 60) > 0, 200, second).astype(np.uint8)
+        blinking = (hot_pixels(rng, count) > 0) & (first < 25)
+        second = np.where(blinking, level, second).astype(np.uint8)
         found = photon_transfer(first, second, full_scale=255, dark=dark_pair(SENSOR, rng))
         assert found.gain_levels_per_electron == pytest.approx(0.03, abs=3 * found.gain_sd)
 
@@ -290,6 +304,16 @@ class TestWithoutAnAnswer:
         expected = 0.03**2 * (3000 + 625) + QUANTISATION_VAR
         assert float(found.variance_at(94.0)) == pytest.approx(expected, rel=0.05)
         assert math.isnan(found.read_noise_levels)
+
+    def test_dark_frames_alone_give_a_read_noise_in_levels(self):
+        """All in one level of the table, too: a slope cannot be had from that."""
+        camera = replace(FINE, black_levels=72.0, read_noise_electrons=4.0)
+        dark = dark_pair(camera, np.random.default_rng(10))
+        found = photon_transfer(dark[0], dark[0], full_scale=4095, dark=dark)
+        assert found.read_noise_levels == pytest.approx(2.0, abs=4 * found.read_noise_levels_sd)
+        assert found.read_noise_levels_sd < 0.02
+        assert math.isnan(found.read_noise_electrons)
+        assert math.isnan(found.read_noise_electrons_sd)
 
     @pytest.mark.parametrize("level", [0, 255])
     def test_nothing_but_the_ends_of_the_scale(self, level):
