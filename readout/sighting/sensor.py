@@ -12,8 +12,8 @@ Photon Transfer, SPIE 2007). 1/12 is what rounding to whole levels adds.
 Quantization Noise, 2008; W. F. Sheppard, Proc. London Math. Soc. 29 (1898) 353). Noise of s levels
 leaves a ripple of amplitude (4 s^2 + 1/pi^2) exp(-2 pi^2 s^2) that depends on where between two
 steps the level lies: 0.4 % of s^2 at s = 0.6, 3 % at half a step, 20 % at 0.4, and below 0.2 the
-ripple is all there is; a quiet flat ground shows no noise whatever. EMVA 1288 takes no dark variance
-below 0.24 level^2 (s = 0.4) for a measurement (value from memory). Here the ripple enters as an
+ripple is all there is; a quiet flat ground shows no noise whatever. EMVA 1288 takes no variance
+in the dark below 0.24 level^2 for a measurement (value from memory). Here the ripple enters as an
 uncertainty of each level's variance, so that quiet levels lose their weight and the claimed
 uncertainty of the read noise grows to as much as 0.3 levels; ``Doubt.ROUNDED`` says so. The gain
 comes from the levels that have noise enough.
