@@ -96,12 +96,14 @@ class Look:
         background, gradient, contrast = self.background, self.gradient, self.contrast
         spoilt = self.spoilt if self.strip.clipped is None else self.spoilt | self.strip.clipped
         keep = sections.on_line(OFF_LINE)
-        if sections.uneven:
+        lit = _with_neighbours(sections.lit(self.solution.shape.contrast, LIT))
+        if sections.uneven and not lit.all():
+            keep &= lit  # what is left may be even
+        elif sections.uneven:
             background = background + sections.at(self.strip.along, sections.background)
             gradient = gradient + sections.at(self.strip.along, sections.gradient)
             arm = self.solution.shape.contrast
             contrast = contrast + sections.at(self.strip.along, sections.contrast) / arm
-            keep &= _with_neighbours(sections.lit(arm, LIT))
         else:
             spoilt = spoilt | self._standing_out(residual)
         keep_slices = sections.of_slices(keep)

@@ -78,11 +78,15 @@ class Shape:
         )
 
     def change_px(self, change: F64) -> float:
-        """How far a step moves the profile's width, its fourth moment in widths, a line beside."""
+        """How far a step moves the profile, px.
+
+        Its width; its fourth moment and its flux, relative and in widths; a line beside.
+        """
         width = math.sqrt(self.spread)
-        _, _, _, spread, fourth, *beside = change.tolist()
+        _, _, flux, spread, fourth, *beside = change.tolist()
         flatness = abs(fourth) / (10 * width**3)
-        return max(abs(spread) / (2 * width), flatness, *map(abs, beside[1:]))
+        share = abs(flux) / max(abs(2 * self.half_width * self.contrast), 1e-300)
+        return max(share * width, abs(spread) / (2 * width), flatness, *map(abs, beside[1:]))
 
     def shifted(self, shift: float, change: float) -> float:
         """A shift of the line after a step, px."""

@@ -27,9 +27,9 @@ from readout.sighting.shape import Shape
 MOST_STEPS = 20
 NEAR = 0.5
 """pixels by which width, blur and line may still change before weights come in"""
-FAR_PX = 0.3
-"""variances are found anew for a line that moved further, or is not of one contrast: it is only
-against the best fit that its slices scatter by their noise alone"""
+FAR_PX, FAR_TURNED_PX = 0.3, 0.02
+"""variances are found anew for a line that moved further, turned by more than this along it, or is
+not of one contrast: it is only about the best fit that its slices scatter by noise alone"""
 SETTLED = 0.02
 """the same before the last step: the next one's change goes with its square"""
 DAMPING = 0.01
@@ -38,6 +38,8 @@ CALM = 1e-6
 """a step this little damped tells how far there is to go"""
 TINY = 1e-9
 ROUNDING = 1e-9
+BESIDE_SHARE = 0.02
+"""where less than this share of the line's height is left, there is only ground"""
 LEAST_COLUMN = 1e-50
 """a column of the Jacobian this small against the largest says nothing"""
 
@@ -138,7 +140,7 @@ def solve_fold(
         return None
     weight = fold.seen / _slice_variance(fold, near, depth)
     settled = _descended(fold, cosine, near, weight, 0.0, TINY)
-    if settled is not None and (fold.contrasted or abs(settled[0].shift - near.shift) > FAR_PX):
+    if settled is not None and (fold.contrasted or _far(fold, near, settled[0])):
         weight = fold.seen / _slice_variance(fold, settled[0], depth)
         settled = _descended(fold, cosine, settled[0], weight, 0.0, TINY)
     if settled is None:
@@ -216,6 +218,14 @@ def _moved(fold: Fold, cosine: float, state: _State, change: F64) -> _State:
     shift = state.shape.shifted(state.shift, float(change[-2]))
     turn = state.turn + float(change[-1])
     return _State(shape, shift, turn, _model(fold, cosine, shape, shift))
+
+
+def _far(fold: Fold, one: _State, other: _State) -> bool:
+    """True if two states differ by more than variances bear, in place or in turn."""
+    size = math.sqrt(float(fold.of.c2a2.sum() / fold.n.sum()))
+    return (
+        abs(one.shift - other.shift) > FAR_PX or abs(one.turn - other.turn) * size > FAR_TURNED_PX
+    )
 
 
 def _approached(fold: Fold, cosine: float, shape: Shape) -> _State | None:
@@ -326,10 +336,12 @@ def _normal_equations(fold: Fold, state: _State, weight: F64) -> tuple[F64, F64]
 
 
 def _slice_variance(fold: Fold, state: _State, depth: int) -> F64:
-    """Variance of a slice's pixel as a straight line in its level, (phases, columns).
+    """Variance of a slice's pixel as a straight line in its light, (phases, columns).
 
     From the scatter of slices of one phase about their mean: what the model does not describe
-    moves them all alike and does not count. The known spread of their places is taken out.
+    moves them all alike and does not count. The known spread of their places is taken out. The
+    ground gives the variance in the dark, the line by how much light adds to it: both as ratios of
+    sums, the best estimate where variances go with the light.
     """
     model = state.model
     freedom = fold.freedom * fold.seen
@@ -346,12 +358,14 @@ def _slice_variance(fold: Fold, state: _State, depth: int) -> F64:
     total = float(freedom.sum())
     if total < 1:
         return np.ones_like(model.line)
-    level = model.ground + model.line
+    beside = freedom * (np.abs(model.line) < BESIDE_SHARE * np.abs(model.line).max())
+    on_line = freedom - beside
+    dark = float(np.vdot(squares, beside > 0)) / max(float(beside.sum()), 1.0)
+    light = float(np.vdot(on_line, model.line))
+    more = float(np.vdot(squares, on_line > 0)) - dark * float(on_line.sum())
+    rise = more / light if light else 0.0
     mean = float(squares.sum()) / total
-    light = level - float((freedom * level).sum()) / total
-    spread = float((freedom * light**2).sum())
-    rise = float((light * squares).sum()) / spread if spread > 0 else 0.0
-    return np.maximum(mean + rise * light, max(QUANTISATION_VAR / depth, 0.1 * mean))
+    return np.maximum(dark + rise * model.line, max(QUANTISATION_VAR / depth, 0.1 * mean))
 
 
 def _explained(fold: Fold, left: F64, weight: F64) -> float:

@@ -33,6 +33,8 @@ LARGEST_SHARE = 0.35
 MOST_ELONGATED = 3.0
 RIVAL_SHARE = 0.2
 """another bright thing this high beside the spot makes it one of several returns"""
+LOPSIDED_PX, LOPSIDED_SDS, SURELY_LOPSIDED_SDS = 0.1, 2.5, 3.5
+"""the spot's core and skirt may disagree about its place by either of the first two, or the third"""
 ASTIGMATIC_RATIO = 1.5
 BLURRED_PX = 40.0
 NEARLY_SATURATED = 0.85
@@ -53,7 +55,9 @@ def locate_spot(
 
     Of several returns the highest above its ground is the main one; with a ``prior``, the one
     nearest to where it was. The word ``several_returns`` says that there was a choice: something
-    else stands out by a fifth of the spot's height or more, whatever it is.
+    else stands out by a fifth of the spot's height or more, whatever it is, or the spot is
+    lopsided, so that something lies beside it unresolved or a fixed line across it. A spot narrower
+    than 1.4 px at half its height is taken for a hot pixel.
 
     Parameters
     ----------
@@ -126,10 +130,12 @@ def _fit(picture: Picture, thing: Compact, others: list[tuple[float, float]]) ->
         settled = None if window is None else settle(window, shape, ceiling=picture.ceiling)
         if window is None or settled is None:
             return None
-        if suits(window, shape, settled):
-            fit = weigh(window, settled, ceiling=picture.ceiling)
-            return fit if fit is not None and _is_part(thing, fit.shape) else None
+        enough = suits(window, shape, settled)
         shape = settled
+        if enough:
+            window = picture.around(shape, others)
+            fit = None if window is None else weigh(window, shape, ceiling=picture.ceiling)
+            return fit if fit is not None and _is_part(thing, fit.shape) else None
     return None
 
 
@@ -155,8 +161,15 @@ def _credible(fit: SpotFit, frame: tuple[int, ...]) -> bool:
     )
 
 
+def _lopsided(fit: SpotFit) -> bool:
+    """True if core and skirt disagree about the place: something lies beside or across the spot."""
+    far = fit.lopsided_px > LOPSIDED_PX and fit.lopsided_sds > LOPSIDED_SDS
+    return far or fit.lopsided_sds > SURELY_LOPSIDED_SDS
+
+
 def _sighting(picture: Picture, fit: SpotFit, *, alone: bool) -> Sighting:
     shape, pixels = fit.shape, picture.pixels
+    alone = alone and not _lopsided(fit)
     width = shape.width_px
     quality = Quality.OK if alone else Quality.SEVERAL_RETURNS
     margin = AT_EDGE_WIDTHS * width

@@ -109,7 +109,7 @@ def first_look(window: Window) -> SpotShape | None:
     if not height > 0 or x.size < 3:
         return None
     sharpness = math.sqrt(np.count_nonzero(calm > ground + 0.8 * height) / x.size)
-    edge = min(0.84 / (1 - min(sharpness, 0.95)), 10.0) if sharpness > 0.65 else 1.0
+    edge = min(0.84 / (1 - min(sharpness, 0.95)), 10.0) if sharpness > 0.6 else 1.0
     of_spread = half_maximum(edge) / math.sqrt(1 + edge**2 / 4)
     (xx, xy), (_, yy) = (np.cov(x, y) * (4 / of_spread**2)).tolist()
     sharper = max(1 - 2 * CALMED / (xx + yy), 0.3)

@@ -110,24 +110,28 @@ def _scaled(shape: SpotShape, factor: float) -> SpotShape:
 class Columns:
     """The usable pixels of a window, places in cells.
 
-    ``patch`` numbers squares of them; ``index`` holds the number of the pixel at each place of
-    the window, -1 where there is none.
+    ``patch`` numbers squares of them, ``usable`` is the window's.
     """
 
     x: F64
     y: F64
     level: F64
     patch: NDArray[np.intp]
-    index: NDArray[np.intp]
+    usable: Mask
     least_variance: float
 
-    @property
-    def pairs(self) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
-        """Numbers of the pixels that are neighbours in a row or in a column."""
-        one = np.concatenate([self.index[:, :-1].ravel(), self.index[:-1].ravel()])
-        other = np.concatenate([self.index[:, 1:].ravel(), self.index[1:].ravel()])
-        there = (one >= 0) & (other >= 0)
-        return one[there], other[there]
+    def on_grid(self, values: F64) -> F64:
+        """Values (..., n) back on the window (..., rows, columns), 0 where a pixel is left out."""
+        shape = (*values.shape[:-1], *self.usable.shape)
+        if self.x.size == self.usable.size:
+            return values.reshape(shape)
+        grid = np.zeros(shape)
+        grid[..., self.usable] = values
+        return grid
+
+
+STEPS = {1.0: ((0, 1), (1, 0)), 2.0: ((1, 1), (1, -1)), 4.0: ((0, 2), (2, 0))}
+"""steps down and right to the neighbours of a pixel, by their distance squared"""
 
 
 def columns_of(window: Window, shape: SpotShape) -> Columns:
@@ -135,14 +139,12 @@ def columns_of(window: Window, shape: SpotShape) -> Columns:
     row, column = np.nonzero(window.usable)
     side = max(2, round(PATCH_WIDTHS * WIDTH_OF_SPREAD * shape.spreads_px[0]))
     across = -(-window.usable.shape[1] // side)
-    index = np.full(window.usable.shape, -1, dtype=np.intp)
-    index[row, column] = np.arange(row.size)
     return Columns(
         column.astype(np.float64),
         row.astype(np.float64),
         window.levels[row, column],
         (row // side) * across + column // side,
-        index,
+        window.usable,
         QUANTISATION_VAR / window.cell**2,
     )
 

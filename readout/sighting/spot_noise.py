@@ -13,7 +13,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from readout.model import F64
-from readout.sighting.spot_model import Columns, Mask, SpotShape, State
+from readout.sighting.spot_model import STEPS, Columns, Mask, SpotShape, State
 
 CUT_SD = 3.0
 CUT_VARIANCE = 0.995
@@ -29,12 +29,12 @@ SHAPE_PARAMETERS = 7
 LEAST_FREEDOM = 3.0
 MARGIN_SDS = 1.0
 """correlation or scatter beyond this many sd of chance widens the covariance"""
-MOST_CORRELATED = 0.95
-LEAST_STEADY = 0.25
+CERTAIN_SDS = 2.0
+"""but correlation less than so many sd of chance is none"""
+LEAST_STEADY = 0.5
 """where less of the variance is noise, rounding hides whether it is correlated"""
 LEAST_LEFT = 0.25
 """share of the noise that a fit leaves in the residuals at least"""
-_DISTANCE2 = np.arange(1.0, 7.0) ** 2
 
 
 def _middle(values: F64) -> float:
@@ -128,44 +128,71 @@ def _for_correlation(columns: Columns, shape: SpotShape, left: Leftover) -> floa
     """Factor on the variance of the middle if the noise of neighbours is correlated.
 
     Their correlation on the ground, where the fit takes little of it, or on the flanks, whichever
-    is more; rounding has none. Noise blurred by a Gaussian falls off as correlation^(distance^2),
-    summed here over all pairs with the weights of a Gaussian spot's flanks. Of noise that is
-    correlated the fit takes so much more, too, and the variance read from the residuals is too
-    small by it.
+    is more; rounding has none. It is summed over pairs up to two pixels apart with the weights of
+    a Gaussian spot's flanks. Of correlated noise the fit takes so much more, too, and the variance
+    read from the residuals is too small by it.
     """
+    used = left.z != 0
     flank = np.sqrt(left.flank2)
     steady = float(flank @ left.steady) / max(float(flank.sum()), 1e-300)
-    correlation = max(
-        _of_neighbours(columns, left, flank),
-        _of_neighbours(columns, left, left.dark.astype(np.float64)),
-    )
-    if correlation <= 0:
-        return 1.0
     longer, shorter = shape.spreads_px
-    near = correlation**_DISTANCE2 * np.exp(-_DISTANCE2 / (4 * longer * shorter))
-    along = 1 + 2 * float(near.sum())
-    across = 1 + 2 * float(near @ (1 - _DISTANCE2 / (2 * longer * shorter)))
-    factor = 1 + steady * (along * across - 1)
+    steadies = columns.on_grid(left.steady)
+    weights = [columns.on_grid(weight * used) for weight in (flank, left.dark)]
+    nearest = _products(columns, left, 1.0)
+    most = 0.0
+    for weight in weights:
+        certain = _correlation(nearest, weight, steadies, margin_sds=CERTAIN_SDS)
+        if certain > 0:
+            total = 0.0
+            for distance2 in (1.0, 2.0, 4.0):
+                far = distance2 / (4 * longer * shorter)
+                products = nearest if distance2 == 1 else _products(columns, left, distance2)
+                found = _correlation(products, weight, steadies, margin_sds=MARGIN_SDS)
+                total += 4 * math.exp(-far) * (1 - far) * found
+            most = max(most, total)
+    if most == 0:
+        return 1.0
+    factor = 1 + steady * most
     taken = np.einsum("pi,pi->i", left.cofactor @ left.rows, left.rows)
     share = float(left.flank2 @ taken) / max(float(left.flank2.sum()), 1e-300)
     return factor * (1 - share) / max(1 - share * factor, LEAST_LEFT)
 
 
-def _of_neighbours(columns: Columns, left: Leftover, weight: F64) -> float:
-    """Correlation of the noise of neighbours, less what chance may make of it, 0 to 1.
+Pairs = tuple[tuple[slice, slice], tuple[slice, slice], F64]
 
-    What the fit makes of independent noise is added back.
+
+def _products(columns: Columns, left: Leftover, distance2: float) -> list[Pairs]:
+    """Places of pixels so far apart, and the products of their residuals; what the fit makes of
+    independent noise is added back.
     """
-    i, j = columns.pairs
-    weights = weight[i] * weight[j] * ((left.z[i] != 0) & (left.z[j] != 0))
-    total = float(weights.sum())
-    steady = float(weights @ left.steady[i]) / total if total > 0 else 0.0
-    if steady < LEAST_STEADY:
+    z, rows = columns.on_grid(left.z), columns.on_grid(left.rows)
+    solved = columns.on_grid(left.cofactor @ left.rows)
+    pairs: list[Pairs] = []
+    for down, right in STEPS[distance2]:
+        height, width = z.shape
+        skipped = max(0, -right)
+        one = slice(0, height - down), slice(skipped, width - max(0, right))
+        other = slice(down, height), slice(skipped + right, width - skipped)
+        by_fit = np.einsum("prc,prc->rc", solved[:, *one], rows[:, *other])
+        pairs.append((one, other, z[one] * z[other] + by_fit))
+    return pairs
+
+
+def _correlation(pairs: list[Pairs], weight: F64, steady: F64, *, margin_sds: float = 0.0) -> float:
+    """Weighted correlation of the noise of pairs of pixels, rounding taken off; at most 1.
+
+    What chance may make of it is taken off; 0 where rounding hides it.
+    """
+    total = squares = products = noise = 0.0
+    for one, other, product in pairs:
+        weights = weight[one] * weight[other]
+        total += float(weights.sum())
+        squares += float((weights * weights).sum())
+        products += float((weights * product).sum())
+        noise += float((weights * steady[one]).sum())
+    if total <= 0 or noise < LEAST_STEADY * total:
         return 0.0
-    by_fit = np.einsum("pi,pi->i", (left.cofactor @ left.rows)[:, i], left.rows[:, j])
-    found = float(weights @ (left.z[i] * left.z[j] + by_fit)) / total
-    chance = math.sqrt(float(weights @ weights)) / total
-    return min(max((found - MARGIN_SDS * chance) / steady, 0.0), MOST_CORRELATED)
+    return min((products - margin_sds * math.sqrt(squares)) / noise, 1.0)
 
 
 def _for_misfit(columns: Columns, left: Leftover) -> float:
