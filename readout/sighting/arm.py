@@ -22,6 +22,8 @@ CUTS = 6
 RESTS_SHIFT_PX = 0.5
 RESTS_TURN_PX = 0.1
 """a line that moves less than this, in the middle and at its ends, needs no new strip"""
+CROOKED = 25.0
+"""an arm whose sections scatter by this factor, in variance, more than noise has marks across it"""
 ROUNDS = 4
 """times an uneven or spoilt arm is looked at anew"""
 
@@ -141,7 +143,7 @@ def _looked_at(look: Look) -> ArmFit:
         peak=strip.peak,
         lean=solution.lean,
         lopsided_px=lopsided_px,
-        graduated=graduated,
+        graduated=graduated or (sections is not None and sections.excess_variance > CROOKED),
         light=None if sections is None else look.light(sections),
     )
 

@@ -26,8 +26,6 @@ OUTLIER = 5.0
 """a pixel this many of its sds from its like is none of the arm's: 1 in 2 million by chance"""
 OFF_LINE = 4.5
 """so many sds of its place off the line, or of their usual scatter, a section is not the arm's"""
-LIT = 0.5
-"""a section whose contrast is surely less than this share of the arm's is not of the arm"""
 
 
 @dataclass(frozen=True, slots=True)
@@ -96,7 +94,7 @@ class Look:
         background, gradient, contrast = self.background, self.gradient, self.contrast
         spoilt = self.spoilt if self.strip.clipped is None else self.spoilt | self.strip.clipped
         keep = sections.on_line(OFF_LINE)
-        lit = _with_neighbours(sections.lit(self.solution.shape.contrast, LIT))
+        lit = sections.lit(self.solution.shape.contrast)
         if sections.uneven and not lit.all():
             keep &= lit  # what is left may be even
         elif sections.uneven:
@@ -199,9 +197,3 @@ class Look:
             fold,
             anew,
         )
-
-
-def _with_neighbours(lit: NDArray[np.bool_]) -> NDArray[np.bool_]:
-    """True where a section and those beside it are lit: the next to an end is half lit."""
-    before, after = np.append(True, lit[:-1]), np.append(lit[1:], True)
-    return np.asarray(lit & before & after)

@@ -24,6 +24,8 @@ from readout.sighting.solve import Solution
 SECTIONS = 64
 LEAST_ROWS = 4
 """rows in a section, at least: correlation over fewer rows than this is seen in full"""
+LIT, WHOLLY_LIT = 0.5, 0.93
+"""shares of contrast below which a section is not the arm's, or lies across its end"""
 JAGGED_SDS, JAGGED_SHARE = 4.0, 0.01
 """a ground is jagged if it bends by so many sds and by this share of the arm's contrast"""
 SURE = 6.0
@@ -100,13 +102,19 @@ class Sections:
         off = np.abs(self.shift / self.shift_sd)
         return off <= limit * max(1.0, 1.4826 * _quantile(off, 0.5))
 
-    def lit(self, contrast: float, share: float) -> NDArray[np.bool_]:
-        """False for a section that surely has less than ``share`` of the best ones' contrast.
+    def lit(self, contrast: float) -> NDArray[np.bool_]:
+        """False for a section where the arm is not, or only in part.
 
-        ``contrast``: the arm's, from which the sections' depart.
+        One that surely has less than half of the best ones' contrast; and one beside it that has
+        less than its neighbour on the other side. ``contrast``: the arm's, from which the
+        sections' depart.
         """
         height = math.copysign(1.0, contrast) * (contrast + self.contrast)
-        return height + 2 * self.contrast_sd >= share * _quantile(height, 0.9)
+        lit = height + 2 * self.contrast_sd >= LIT * _quantile(height, 0.9)
+        for side in (1, -1):
+            one, two = _shifted(lit, side), _shifted(height, -side)
+            lit = lit & (one | (height >= WHOLLY_LIT * two))
+        return lit
 
     def jagged(self, contrast: float) -> bool:
         """True if the ground goes up and down from section to section: graduations cross the arm.
@@ -126,6 +134,11 @@ class Sections:
             _reduced(self.contrast / self.contrast_sd, 1) > least
             or _reduced(self.background / self.background_sd, 1) > least
         )
+
+
+def _shifted(values: NDArray[Any], by: int) -> NDArray[Any]:
+    """The value of the next section (-1) or of the one before (1); its own at the end."""
+    return np.append(values[:1], values[:-1]) if by > 0 else np.append(values[1:], values[-1:])
 
 
 def _quantile(values: F64, share: float) -> float:

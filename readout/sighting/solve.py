@@ -27,9 +27,11 @@ from readout.sighting.shape import Shape
 MOST_STEPS = 20
 NEAR = 0.5
 """pixels by which width, blur and line may still change before weights come in"""
-FAR_PX, FAR_TURNED_PX = 0.3, 0.02
-"""variances are found anew for a line that moved further, turned by more than this along it, or is
-not of one contrast: it is only about the best fit that its slices scatter by noise alone"""
+FAR_PX, FAR_TURNED = 0.3, 0.03
+"""variances are found anew for a line that moved further, whose turn moves its ends by so much (in
+variances of a pixel), or that is not of one contrast: only about the best fit do slices scatter by
+their noise alone"""
+MOST_WEIGHTED = 4
 SETTLED = 0.02
 """the same before the last step: the next one's change goes with its square"""
 DAMPING = 0.01
@@ -138,14 +140,10 @@ def solve_fold(
         near = _approached(fold, cosine, shape)
     if near is None:
         return None
-    weight = fold.seen / _slice_variance(fold, near, depth)
-    settled = _descended(fold, cosine, near, weight, 0.0, TINY)
-    if settled is not None and (fold.contrasted or _far(fold, near, settled[0])):
-        weight = fold.seen / _slice_variance(fold, settled[0], depth)
-        settled = _descended(fold, cosine, settled[0], weight, 0.0, TINY)
+    settled = _weighted(fold, cosine, near, depth)
     if settled is None:
         return None
-    state, change, inverse = settled
+    state, change, inverse, weight = settled
     shape, model = state.shape.changed(change[:-2]), state.model
     flat = model.columns.reshape(len(model.columns), -1)
     ground = shape.background + shape.gradient * fold.u
@@ -220,12 +218,28 @@ def _moved(fold: Fold, cosine: float, state: _State, change: F64) -> _State:
     return _State(shape, shift, turn, _model(fold, cosine, shape, shift))
 
 
-def _far(fold: Fold, one: _State, other: _State) -> bool:
-    """True if two states differ by more than variances bear, in place or in turn."""
-    size = math.sqrt(float(fold.of.c2a2.sum() / fold.n.sum()))
-    return (
-        abs(one.shift - other.shift) > FAR_PX or abs(one.turn - other.turn) * size > FAR_TURNED_PX
-    )
+def _weighted(
+    fold: Fold, cosine: float, near: _State, depth: int
+) -> tuple[_State, F64, F64, F64] | None:
+    """The weighted least squares: state, last step, inverse and weights, found anew while far."""
+    for rounds_left in range(MOST_WEIGHTED, 0, -1):
+        weight = fold.seen / _slice_variance(fold, near, depth)
+        settled = _descended(fold, cosine, near, weight, 0.0, TINY)
+        if settled is None:
+            return None
+        state, change, inverse = settled
+        again = fold.contrasted and rounds_left == MOST_WEIGHTED
+        if rounds_left == 1 or not (again or _far(fold, near, state, weight)):
+            return state, change, inverse, weight
+        near = state
+    return None
+
+
+def _far(fold: Fold, one: _State, other: _State, weight: F64) -> bool:
+    """True if two states differ by more than the variances bear, in place or in turn."""
+    turned = (one.turn - other.turn) ** 2 * float(fold.of.c2a2.sum() / fold.n.sum())
+    seen = turned * float((weight * other.model.flank**2).max())
+    return abs(one.shift - other.shift) > FAR_PX or seen > FAR_TURNED
 
 
 def _approached(fold: Fold, cosine: float, shape: Shape) -> _State | None:
@@ -353,7 +367,8 @@ def _slice_variance(fold: Fold, state: _State, depth: int) -> F64:
         + model.ground * (fold.n * model.ground + 2 * fold.of.c * model.line)
         + fold.of.c2 * model.line**2
     )
-    about_mean = about_model - state.left(fold) ** 2 / fold.n - model.flank**2 * places
+    sum_left = fold.level - fold.n * model.ground - of.c * model.line
+    about_mean = about_model - sum_left**2 / fold.n - model.flank**2 * places
     squares = about_mean * fold.seen
     total = float(freedom.sum())
     if total < 1:
