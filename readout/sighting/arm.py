@@ -118,7 +118,7 @@ def _looked_at(look: Look) -> ArmFit:
         residual = look.residual()
         sections = look.sections(residual)
         if sections is not None and look.strip is strip:
-            graduated = sections.jagged(look.solution.shape.contrast)
+            graduated = sections.jagged
         better = look.improved(residual, sections) if sections and rounds_left else None
         if better is None:
             break

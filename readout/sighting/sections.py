@@ -26,7 +26,7 @@ LEAST_ROWS = 4
 """rows in a section, at least: correlation over fewer rows than this is seen in full"""
 LIT, WHOLLY_LIT = 0.5, 0.93
 """shares of contrast below which a section is not the arm's, or lies across its end"""
-JAGGED_SDS, JAGGED_SHARE = 4.0, 0.01
+JAGGED_SDS, JAGGED_SHARE = 2.2, 0.01
 """a ground is jagged if it bends by so many sds and by this share of the arm's contrast"""
 SURE = 6.0
 """a reduced chi-square this many of its standard deviations above 1 is no noise"""
@@ -67,7 +67,8 @@ class Sections:
 
     ``along``: place, px. ``background``, ``contrast``: levels; ``gradient``: levels per pixel.
     ``shift``: px along x, about the straight line that fits the sections best. ``first``: first
-    slice of each section, of ``slices`` in all.
+    slice of each section, of ``slices`` in all. ``jagged``: whether the ground goes up and down
+    from slice to slice, as where graduations cross the arm.
     """
 
     along: F64
@@ -80,6 +81,7 @@ class Sections:
     shift_sd: F64
     first: NDArray[np.intp]
     slices: int
+    jagged: bool
 
     @property
     def excess_variance(self) -> float:
@@ -115,16 +117,6 @@ class Sections:
             one, two = _shifted(lit, side), _shifted(height, -side)
             lit = lit & (one | (height >= WHOLLY_LIT * two))
         return lit
-
-    def jagged(self, contrast: float) -> bool:
-        """True if the ground goes up and down from section to section: graduations cross the arm.
-
-        Judged by the second differences that 3 in 10 exceed, so that some dust is none.
-        """
-        bends = np.abs(np.diff(self.background, 2))
-        sd = _quantile(self.background_sd, 0.5) * math.sqrt(6)
-        bend = _quantile(bends, 0.7) / 1.036
-        return bend > JAGGED_SDS * sd and bend > JAGGED_SHARE * abs(contrast)
 
     @property
     def uneven(self) -> bool:
@@ -190,7 +182,18 @@ def sections_of(
         sd[:, 3],
         first,
         slices,
+        _jagged(of_slice[0], var[:, 0], solution.shape.contrast),
     )
+
+
+def _jagged(ground: F64, var: F64, contrast: float) -> bool:
+    """True if the ground of slices bends up and down by more than noise all along the arm.
+
+    Judged by the second differences that 3 in 10 exceed, so that some dust is none, nor a slope.
+    """
+    bend = _quantile(np.abs(np.diff(ground, 2)), 0.7) / 1.036
+    sd = math.sqrt(6 * _quantile(var, 0.5))
+    return bend > JAGGED_SDS * sd and bend > JAGGED_SHARE * abs(contrast)
 
 
 def _inverses(normal: F64) -> F64:
