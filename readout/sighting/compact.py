@@ -9,12 +9,11 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, replace
+from typing import Any
 
 import cv2
 import numpy as np
 from numpy.typing import NDArray
-
-from readout.model import Pixels
 
 RING_CELLS = 4
 """radius of the ring: a spot of the size looked for has faded out there"""
@@ -45,11 +44,13 @@ class Compact:
         return replace(self, x_px=self.x_px + x_px, y_px=self.y_px + y_px)
 
 
-def find_compact(pixels: Pixels) -> list[Compact]:
+def find_compact(pixels: NDArray[Any]) -> list[Compact]:
     """Bright things, the highest first; each once, at the size at which it is highest."""
     if min(pixels.shape) < LEAST_CELLS:
         return []
-    picture = np.asarray(cv2.medianBlur(np.ascontiguousarray(pixels), 3), dtype=np.float32)
+    kept_type = pixels.dtype in (np.uint8, np.uint16, np.float32)
+    levels = np.ascontiguousarray(pixels, dtype=None if kept_type else np.float32)
+    picture = np.asarray(cv2.medianBlur(levels, 3), dtype=np.float32)
     found: list[Compact] = []
     cell = 1
     while min(picture.shape) >= LEAST_CELLS:

@@ -130,7 +130,8 @@ def settle(window: Window, start: SpotShape, *, ceiling: float) -> SpotShape | N
         shape, state = best_state_of(columns, shape)
         if not shape.height > 0:
             return None
-        rows = state.jacobian * (state.model < ceiling)
+        below = state.model < ceiling
+        rows = state.jacobian if below.all() else state.jacobian * below
         scatter = float(state.residual @ state.residual) / state.residual.size
         normal, right = _with_usual_edge(rows @ rows.T, rows @ state.residual, shape, scatter)
         cofactor = _inverse(normal, _CAREFUL)
@@ -197,13 +198,16 @@ def _solve(state: State, shape: SpotShape, variance: F64, ceiling: float) -> _St
     """One step of Gauss and Newton on modified residuals; None if the pixels cannot tell."""
     sd = np.sqrt(variance)
     z = state.residual / sd
+    far = np.abs(z)
     below = state.model + CUT_SD * sd < ceiling
-    inside = below & (np.abs(z) <= LEFT_OUT_SD)
+    inside = below & (far <= LEFT_OUT_SD)
     if np.count_nonzero(inside) < 2 * PARAMETERS:
         return None
     rows = state.jacobian * (inside / sd)
-    fading = np.clip((LEFT_OUT_SD - np.abs(z)) / (LEFT_OUT_SD - FADING_SD), 0.0, 1.0)
-    pull = rows @ (fading * np.clip(z, -CUT_SD, CUT_SD))
+    if far.max() > CUT_SD:
+        fading = np.minimum((LEFT_OUT_SD - far) / (LEFT_OUT_SD - FADING_SD), 1.0)
+        z *= fading * (CUT_SD / np.maximum(far, CUT_SD))
+    pull = rows @ z
     normal, right = _with_usual_edge(rows @ rows.T, pull, shape, 1.0)
     cofactor = _inverse(normal, _SURE)
     return None if cofactor is None else _Step(cofactor @ right, cofactor, rows, below, inside)

@@ -313,6 +313,23 @@ class TestWords:
             levels = np.clip(np.rint(noise), 0, 65535).astype(np.uint16)
             assert locate_spot(levels, full_scale=65535).quality is Quality.NO_IMAGE
 
+    @pytest.mark.filterwarnings("error")
+    def test_anything_at_all_may_be_in_it(self):
+        rng = np.random.default_rng(66)
+        pictures = [np.full(SHAPE, np.nan), np.zeros((5, 5, 3), np.uint8)]
+        spot = expose(spot_image(SHAPE, 50.2, 45.1, Spot()), SENSOR, rng)
+        pictures += [np.where(spot > 150, np.nan, spot), spot[::2, ::2], spot.T, spot[:, :12]]
+        for _ in range(40):
+            height, width = rng.integers(1, 70, 2)
+            sparks = 255 * (rng.random((height, width)) < 0.02).astype(np.uint8)
+            grain = cv2.GaussianBlur(sparks, (0, 0), float(rng.uniform(0.5, 4)))
+            bars = 200 * np.outer(np.arange(height) % 7 < 3, np.arange(width) % 5 < 2)
+            pictures += [sparks, grain, bars.astype(np.uint8)]
+        for picture in pictures:
+            found = locate_spot(picture, full_scale=255)
+            assert found.found or found.quality is Quality.NO_IMAGE
+            assert locate_spot(picture, full_scale=255, prior=found).found == found.found
+
     @pytest.mark.parametrize(
         "name", ["upright", "turned", "short", "round_field", "border", "returns", "fixed", "scale"]
     )
