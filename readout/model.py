@@ -57,9 +57,10 @@ class Quality(Flag):
 
 
 class Target(StrEnum):
-    """What the instrument images on the sensor: those there is a method for."""
+    """What the instrument images on the sensor."""
 
     CROSSHAIR = "crosshair"
+    SPOT = "spot"
 
 
 @dataclass(frozen=True, slots=True)

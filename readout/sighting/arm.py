@@ -9,6 +9,7 @@ import math
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from readout.model import F64, Arm, Pixels
 from readout.sighting.fold import Line, cut_strip, fold_strip
@@ -71,14 +72,15 @@ def fit_arm(
     *,
     known: bool = False,
     full_scale: float = math.inf,
+    unusable: NDArray[np.bool_] | None = None,
     skip_from: float = math.inf,
     skip_to: float = -math.inf,
 ) -> ArmFit | None:
     """Fit an upright arm near ``line``; for a level one pass the transposed picture.
 
     ``shape`` is a rough start, or ``known`` to be near in all it says. Pixels at ``full_scale``
-    say nothing. Rows from ``skip_from`` to ``skip_to`` are left out. Returns None where no arm can
-    be fitted: never raises on a bad picture.
+    and ``unusable`` ones say nothing. Rows from ``skip_from`` to ``skip_to`` are left out. Returns
+    None where no arm can be fitted: never raises on a bad picture.
     """
     look = None
     for _ in range(CUTS):
@@ -88,6 +90,7 @@ def fit_arm(
             line,
             half_columns,
             full_scale=full_scale,
+            unusable=unusable,
             skip_from=skip_from,
             skip_to=skip_to,
         )

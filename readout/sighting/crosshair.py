@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 
-from readout.model import Pixels, Quality, Return, Sighting, no_sighting
+from readout.model import Quality, Return, Sighting, no_sighting
 from readout.sighting.arm import arm_of, shape_of
 from readout.sighting.crossing import Cross
 from readout.sighting.fold import Line
@@ -17,15 +17,14 @@ SEARCHED_EVERY = 30
 """frames after which a tracked picture is looked over for other returns"""
 
 
-def locate_crosshair(pixels: Pixels, *, full_scale: int, prior: Sighting | None = None) -> Sighting:
+def locate_crosshair(picture: Picture, prior: Sighting | None = None) -> Sighting:
     """The crossing of the centre lines of the two arms, in the frame or outside it.
 
     A bright crosshair on a dark ground or a dark one on a bright ground, anywhere, turned by up
-    to 45 degrees, its arms not quite square; arguments and result as in ``locate``. Of several
+    to 45 degrees, its arms not quite square; result as in ``locate``. Of several
     returns the one whose arms are strongest together (longest and brightest) is the main one; while
     tracking, the one that was.
     """
-    picture = Picture(pixels, full_scale)
     near = None if prior is None else _from_prior(picture, prior)
     if near is not None and prior is not None:
         if prior.others or prior.tracked + 1 >= SEARCHED_EVERY:
@@ -35,7 +34,7 @@ def locate_crosshair(pixels: Pixels, *, full_scale: int, prior: Sighting | None 
     if found.main is not None:
         return _sighting(picture, found.main, found.others)
     if found.upright is not None or found.level is not None:
-        return lone_arm(pixels.shape, found.upright, found.level)
+        return lone_arm(picture.pixels.shape, found.upright, found.level)
     return no_sighting(Quality.NO_IMAGE)
 
 

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 from numpy.lib.stride_tricks import as_strided
@@ -55,8 +56,8 @@ class Strip:
 
     A slice is the mean of ``depth`` neighbouring rows, so few that the line hardly moves.
     ``rows``: middle of each slice. ``phase``: line minus centre column, in [-0.5, 0.5] px.
-    ``offsets``: columns relative to the centre column. ``clipped``: places at full
-    scale in any of the rows, None if there are none; ``peak``: the brightest level of a pixel.
+    ``offsets``: columns relative to the centre column. ``clipped``, ``unusable``: places at full
+    scale, or marked, in any of the rows, None if there are none. ``peak``: the brightest level.
     """
 
     line: Line
@@ -66,6 +67,7 @@ class Strip:
     offsets: F64
     levels: F64
     clipped: NDArray[np.bool_] | None
+    unusable: NDArray[np.bool_] | None
     peak: float
 
     @property
@@ -82,6 +84,7 @@ class Strip:
             phase=self.phase[keep],
             levels=self.levels[keep],
             clipped=None if self.clipped is None else self.clipped[keep],
+            unusable=None if self.unusable is None else self.unusable[keep],
         )
 
 
@@ -91,6 +94,7 @@ def cut_strip(
     half_columns: int,
     *,
     full_scale: float = math.inf,
+    unusable: NDArray[np.bool_] | None = None,
     skip_from: float = math.inf,
     skip_to: float = -math.inf,
 ) -> Strip | None:
@@ -117,11 +121,8 @@ def cut_strip(
     columns = min(half_columns, width - 1 - int(centre.max())) - first + 1
     if columns < LEAST_COLUMNS:
         return None
-    down, right = pixels.strides
-    windows = as_strided(  # every stretch of so many pixels along a row, without a copy
-        pixels, (height, width - columns + 1, columns), (down, right, right), writeable=False
-    )
-    block = windows[first_row[:, None] + np.arange(depth), (centre + first)[:, None]]
+    places = first_row[:, None] + np.arange(depth), (centre + first)[:, None]
+    block = _stretches(pixels, columns)[places]
     peak = float(block.max())
     return Strip(
         line.about(float(rows.mean())),
@@ -129,10 +130,19 @@ def cut_strip(
         rows,
         at - centre,
         np.arange(first, first + columns, dtype=np.float64),
-        block.sum(axis=1, dtype=np.uint32) / depth,
+        block.sum(axis=1, dtype=np.float64 if block.dtype.kind == "f" else np.uint32) / depth,
         np.asarray((block >= full_scale).any(axis=1)) if peak >= full_scale else None,
+        None if unusable is None else _stretches(unusable, columns)[places].any(axis=1),
         peak,
     )
+
+
+def _stretches(picture: NDArray[Any], columns: int) -> NDArray[Any]:
+    """Every stretch of so many pixels along a row, (rows, places, columns), without a copy."""
+    height, width = picture.shape
+    down, right = picture.strides
+    shape = (height, width - columns + 1, columns)
+    return as_strided(picture, shape, (down, right, right), writeable=False)
 
 
 def _depth(line: Line, height: int) -> int:

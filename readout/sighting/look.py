@@ -92,7 +92,9 @@ class Look:
     def improved(self, residual: F64, sections: Sections) -> Look | None:
         """A better look, or None if nothing was found to improve or the rest cannot be fitted."""
         background, gradient, contrast = self.background, self.gradient, self.contrast
-        spoilt = self.spoilt if self.strip.clipped is None else self.spoilt | self.strip.clipped
+        spoilt = self.spoilt
+        for known in (self.strip.clipped, self.strip.unusable):
+            spoilt = spoilt if known is None else spoilt | known
         keep = sections.on_line(OFF_LINE)
         lit = sections.lit(self.solution.shape.contrast)
         if sections.uneven and not lit.all():

@@ -4,10 +4,11 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
-from readout.model import Pixels
 from readout.sighting.arm import ArmFit, fit_arm
 from readout.sighting.crossing import Cross, crossing
 from readout.sighting.fold import Line
@@ -19,16 +20,27 @@ LARGEST_SD_PX = 0.5
 """a position less certain than this is none"""
 LEAST_LENGTH_WIDTHS = 4.0
 """a thing shorter than this many of its widths is a blob, not an arm"""
+SPARSE = 8
 SLACK_PX = 0.5
 """left out beside the other arm, so that a small move needs no second fit"""
 
 
 @dataclass(frozen=True, slots=True)
 class Picture:
-    """A picture and the level at which its pixels are full."""
+    """A picture, the level at which its pixels are full, and those that are not to be used."""
 
-    pixels: Pixels
-    full_scale: int
+    pixels: NDArray[Any]
+    full_scale: float
+    unusable: NDArray[np.bool_] | None = None
+
+    @property
+    def searchable(self) -> NDArray[Any]:
+        """The picture for a search: no pixel stands out that is not to be used."""
+        if self.unusable is None:
+            return self.pixels
+        cleaned = self.pixels.copy()
+        cleaned[self.unusable] = np.median(self.pixels[::SPARSE, ::SPARSE])
+        return cleaned
 
     def fit(
         self,
@@ -41,12 +53,16 @@ class Picture:
     ) -> ArmFit | None:
         """A credible fit of an arm without the stretch from ``skip[0]`` to ``skip[1]``, or None."""
         skip_from, skip_to = skip or (math.inf, -math.inf)
+        unusable = self.unusable
+        if unusable is not None and is_level:
+            unusable = unusable.T
         fit = fit_arm(
             self.pixels.T if is_level else self.pixels,
             line,
             shape,
             known=known,
             full_scale=self.full_scale,
+            unusable=unusable,
             skip_from=skip_from,
             skip_to=skip_to,
         )

@@ -71,7 +71,7 @@ class Found:
 def search(picture: Picture, known: Cross | None = None) -> Found:
     """Look the whole picture over; ``known``: the main return, if it has been found already."""
     height, width = picture.pixels.shape
-    arms = both_ways(find_arms(picture.pixels), width, height)
+    arms = both_ways(find_arms(picture.searchable), width, height)
     main = known or _strongest(picture, arms)
     if main is None:
         upright = _first(picture, arms.uprights, is_level=False)
