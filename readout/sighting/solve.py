@@ -15,14 +15,16 @@ weights and covariance: no noise is assumed.
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 
-from readout.model import F64, QUANTISATION_VAR
+from readout.model import F64
 from readout.sighting.fold import Fold
-from readout.sighting.profile import line_profile
+from readout.sighting.normal import TINY, damped_inverse, normal_equations
+from readout.sighting.scatter import slice_variance
 from readout.sighting.shape import Shape
+from readout.sighting.trial import State, model_of, started
 
 MOST_STEPS = 20
 NEAR = 0.5
@@ -38,12 +40,7 @@ DAMPING = 0.01
 """of shape and place in the first step: a rough start is far off"""
 CALM = 1e-6
 """a step this little damped tells how far there is to go"""
-TINY = 1e-9
 ROUNDING = 1e-9
-BESIDE_SHARE = 0.02
-"""where less than this share of the line's height is left, there is only ground"""
-LEAST_COLUMN = 1e-50
-"""a column of the Jacobian this small against the largest says nothing"""
 
 
 @dataclass(frozen=True, slots=True)
@@ -80,44 +77,6 @@ class Solution:
         return 1 / math.sqrt(max(middle, 1e-300))
 
 
-@dataclass(frozen=True, slots=True)
-class _Model:
-    """The model at one step: what is expected, and its derivatives, (phases, columns) each.
-
-    ``ground``: b + g u. ``line``: C P. ``columns`` (n, phases, columns): by the parameters of
-    ``Shape.changed``, of which the first two are the ground's, and by shift.
-    """
-
-    ground: F64
-    line: F64
-    columns: F64
-
-    @property
-    def flank(self) -> F64:
-        """Derivative by shift, levels per pixel."""
-        return np.asarray(self.columns[-1])
-
-
-@dataclass(frozen=True, slots=True)
-class _State:
-    """Where the search for the best parameters stands, and what the model says there."""
-
-    shape: Shape
-    shift: float
-    turn: float
-    model: _Model
-
-    def left(self, fold: Fold) -> F64:
-        """What is left of the sums of levels, (phases, columns)."""
-        model = self.model
-        off = self.turn * fold.of.ca + fold.of.cp
-        return fold.level - fold.n * model.ground - fold.of.c * model.line - off * model.flank
-
-    def cost(self, fold: Fold, weight: F64) -> float:
-        """Weighted sum of squares of what is left of the folded profile."""
-        return float(np.vdot(weight / fold.n, self.left(fold) ** 2))
-
-
 def solve_fold(
     fold: Fold,
     cosine: float,
@@ -135,7 +94,7 @@ def solve_fold(
     each slice. Returns None where the pixels say nothing.
     """
     if known:
-        near: _State | None = _State(shape, shift, turn, _model(fold, cosine, shape, shift))
+        near: State | None = State(shape, shift, turn, model_of(fold, cosine, shape, shift))
     else:
         near = _approached(fold, cosine, shape)
     if near is None:
@@ -173,8 +132,8 @@ def solve_fold(
 
 
 def _descended(
-    fold: Fold, cosine: float, state: _State, weight: F64, near: float, damping: float
-) -> tuple[_State, F64, F64] | None:
+    fold: Fold, cosine: float, state: State, weight: F64, near: float, damping: float
+) -> tuple[State, F64, F64] | None:
     """The state near the least squares, the last step towards it and the inverse it was made with.
 
     It is the one after a step of less than ``near`` px, or before one that changes nothing much.
@@ -182,10 +141,10 @@ def _descended(
     Levenberg 1944, Marquardt 1963: a step that makes the fit worse is taken back and damped.
     """
     cost = state.cost(fold, weight)
-    normal, right = _normal_equations(fold, state, weight)
+    normal, right = normal_equations(fold, state, weight)
     change = np.zeros_like(right)
     for _ in range(MOST_STEPS):
-        inverse = _inverse(normal, damping)
+        inverse = damped_inverse(normal, damping)
         if inverse is None:
             return None
         change = inverse @ right
@@ -198,32 +157,32 @@ def _descended(
         trial_cost = trial.cost(fold, weight)
         if trial_cost <= cost * (1 + ROUNDING):
             state, cost, damping = trial, trial_cost, damping / 100
-            normal, right = _normal_equations(fold, state, weight)
+            normal, right = normal_equations(fold, state, weight)
         else:
             damping = max(damping * 30, DAMPING)
-    inverse = _inverse(normal, TINY)
+    inverse = damped_inverse(normal, TINY)
     return None if inverse is None else (state, change, inverse)
 
 
-def _largest(state: _State, change: F64) -> float:
+def _largest(state: State, change: F64) -> float:
     """How far a step moves line and profile, px."""
     return max(abs(float(change[-2])), state.shape.change_px(change[:-2]))
 
 
-def _moved(fold: Fold, cosine: float, state: _State, change: F64) -> _State:
+def _moved(fold: Fold, cosine: float, state: State, change: F64) -> State:
     """The state after a step."""
     shape = state.shape.changed(change[:-2])
     shift = state.shape.shifted(state.shift, float(change[-2]))
     turn = state.turn + float(change[-1])
-    return _State(shape, shift, turn, _model(fold, cosine, shape, shift))
+    return State(shape, shift, turn, model_of(fold, cosine, shape, shift))
 
 
 def _weighted(
-    fold: Fold, cosine: float, near: _State, depth: int
-) -> tuple[_State, F64, F64, F64] | None:
+    fold: Fold, cosine: float, near: State, depth: int
+) -> tuple[State, F64, F64, F64] | None:
     """The weighted least squares: state, last step, inverse and weights, found anew while far."""
     for rounds_left in range(MOST_WEIGHTED, 0, -1):
-        weight = fold.seen / _slice_variance(fold, near, depth)
+        weight = fold.seen / slice_variance(fold, near, depth)
         settled = _descended(fold, cosine, near, weight, 0.0, TINY)
         if settled is None:
             return None
@@ -235,152 +194,18 @@ def _weighted(
     return None
 
 
-def _far(fold: Fold, one: _State, other: _State, weight: F64) -> bool:
+def _far(fold: Fold, one: State, other: State, weight: F64) -> bool:
     """True if two states differ by more than the variances bear, in place or in turn."""
     turned = (one.turn - other.turn) ** 2 * float(fold.of.c2a2.sum() / fold.n.sum())
     seen = turned * float((weight * other.model.flank**2).max())
     return abs(one.shift - other.shift) > FAR_PX or seen > FAR_TURNED
 
 
-def _approached(fold: Fold, cosine: float, shape: Shape) -> _State | None:
+def _approached(fold: Fold, cosine: float, shape: Shape) -> State | None:
     """Near the unweighted least squares, from a rough shape."""
-    state = _started(fold, cosine, shape)
+    state = started(fold, cosine, shape)
     near = None if state is None else _descended(fold, cosine, state, fold.seen, NEAR, DAMPING)
     return None if near is None else near[0]
-
-
-def _started(fold: Fold, cosine: float, shape: Shape) -> _State | None:
-    """The background, gradient and contrast that fit best for a width, blur and place.
-
-    They are linear: separable least squares (Golub and Pereyra, SIAM J. Numer. Anal. 10 (1973)
-    413), without weights.
-    """
-    shape = replace(shape, contrast=1.0).changed(np.zeros(7))
-    value = _model(fold, cosine, shape, 0.0).line
-    columns = np.stack([np.ones_like(value), fold.u, value])
-    normal, right = np.empty((3, 3)), np.empty(3)
-    flat, seen = columns.reshape(3, -1), fold.seen
-    normal[:2] = (columns[:2] * (seen * fold.n)).reshape(2, -1) @ flat.T
-    normal[:2, 2] = normal[2, :2] = flat[:2] @ (value * seen * fold.of.c).ravel()
-    normal[2, 2] = np.vdot(value, value * seen * fold.of.c2)
-    right[:2] = flat[:2] @ (seen * fold.level).ravel()
-    right[2] = np.vdot(value, seen * fold.level_c)
-    try:
-        linear = np.linalg.solve(normal, right).tolist()
-    except np.linalg.LinAlgError:
-        return None
-    if not all(map(math.isfinite, linear)):
-        return None
-    levels = dict(zip(("background", "gradient", "contrast"), linear, strict=True))
-    shape = replace(shape, **levels)
-    return _State(shape, 0.0, 0.0, _model(fold, cosine, shape, 0.0))
-
-
-def _model(fold: Fold, cosine: float, shape: Shape, shift: float) -> _Model:
-    """What the shape makes one expect at a shift."""
-    at = fold.u - cosine * shift
-    arm = line_profile(at, shape.half_width, shape.blur, cosine)
-    value, by_u, by_half_width, by_blur = arm.value, arm.by_u, arm.by_half_width, arm.by_blur
-    extra: list[F64] = []
-    if shape.beside is not None:
-        height = shape.beside.height
-        line = line_profile(at - shape.beside.distance, shape.half_width, shape.blur, cosine)
-        value, by_u = value + height * line.value, by_u + height * line.by_u
-        by_half_width = by_half_width + height * line.by_half_width
-        by_blur = by_blur + height * line.by_blur
-        extra = [shape.contrast * line.value, (-shape.contrast * height) * line.by_u]
-    contrast = shape.contrast
-    by_spread = by_blur * (contrast / (2 * shape.blur))
-    by_fourth = by_half_width - by_blur * (shape.half_width / (3 * shape.blur))
-    by_fourth = (by_fourth - value / shape.half_width) * (contrast / (4 * shape.half_width**3))
-    columns = [np.ones_like(at), fold.u, value / (2 * shape.half_width), by_spread, by_fourth]
-    return _Model(
-        shape.background + shape.gradient * fold.u,
-        contrast * value,
-        np.stack([*columns, *extra, (-contrast * cosine) * by_u]),
-    )
-
-
-def _inverse(normal: F64, damping: float) -> F64 | None:
-    """Inverse of normal equations with columns of very different size; None if there is none."""
-    scale = np.sqrt(normal.diagonal())
-    if not scale.min() > LEAST_COLUMN * scale.max():
-        return None
-    scales = scale[:, None] * scale
-    scaled = normal / scales
-    scaled.flat[:: len(scale) + 1] += TINY
-    scaled.flat[3 * (len(scale) + 1) : -1 : len(scale) + 1] += damping
-    try:
-        inverse = np.linalg.inv(scaled) / scales
-    except np.linalg.LinAlgError:
-        return None
-    return inverse if math.isfinite(float(inverse.sum())) else None
-
-
-def _normal_equations(fold: Fold, state: _State, weight: F64) -> tuple[F64, F64]:
-    """J^T W J (n + 2, n + 2) and J^T W r (n + 2,), rebuilt from the sums; shift and turn last.
-
-    Within a phase the line runs by p off the mean phase and by turn * a off the cut: both enter to
-    first order, through the flank, as the shift.
-    """
-    model, of = state.model, fold.of
-    columns, line, flank = model.columns, model.line, model.flank
-    count = len(columns)
-    flat, weighted = columns.reshape(count, -1), columns * weight
-    flank_weighted = weighted[-1]
-    normal, right = np.empty((count + 1, count + 1)), np.empty(count + 1)
-    normal[:2, :2] = (weighted[:2] * fold.n).reshape(2, -1) @ flat[:2].T
-    normal[:2, 2:-1] = (weighted[:2] * of.c).reshape(2, -1) @ flat[2:].T
-    normal[2:-1, :2] = normal[:2, 2:-1].T
-    normal[2:-1, 2:-1] = (weighted[2:] * of.c2).reshape(count - 2, -1) @ flat[2:].T
-    normal[:2, -1] = normal[-1, :2] = flat[:2] @ (flank_weighted * of.ca).ravel()
-    normal[2:-1, -1] = normal[-1, 2:-1] = flat[2:] @ (flank_weighted * of.c2a).ravel()
-    normal[-1, -1] = (flank_weighted * flank).sum(axis=1) @ of.c2a2[:, 0]
-    left = state.left(fold)
-    left_c = left
-    if fold.contrasted:
-        left_c = fold.level_c - of.c * model.ground - of.c2 * line
-        left_c -= (state.turn * of.c2a + of.c2p) * flank
-    left_ca = fold.level_ca - of.ca * model.ground - of.c2a * line
-    left_ca -= (state.turn * of.c2a2 + of.c2pa) * flank
-    right[:2] = weighted[:2].reshape(2, -1) @ left.ravel()
-    right[2:-1] = weighted[2:].reshape(count - 2, -1) @ left_c.ravel()
-    right[-1] = np.vdot(flank_weighted, left_ca)
-    return normal, right
-
-
-def _slice_variance(fold: Fold, state: _State, depth: int) -> F64:
-    """Variance of a slice's pixel as a straight line in its light, (phases, columns).
-
-    From the scatter of slices of one phase about their mean: what the model does not describe
-    moves them all alike and does not count. The known spread of their places is taken out. The
-    ground gives the variance in the dark, the line by how much light adds to it: both as ratios of
-    sums, the best estimate where variances go with the light.
-    """
-    model = state.model
-    freedom = fold.freedom * fold.seen
-    of, turn = fold.of, state.turn
-    places = of.c2p2 + turn * (2 * of.c2pa + turn * of.c2a2) - (of.cp + turn * of.ca) ** 2 / fold.n
-    about_model = (
-        fold.level2
-        - 2 * (model.ground * fold.level + model.line * fold.level_c)
-        + model.ground * (fold.n * model.ground + 2 * fold.of.c * model.line)
-        + fold.of.c2 * model.line**2
-    )
-    sum_left = fold.level - fold.n * model.ground - of.c * model.line
-    about_mean = about_model - sum_left**2 / fold.n - model.flank**2 * places
-    squares = about_mean * fold.seen
-    total = float(freedom.sum())
-    if total < 1:
-        return np.ones_like(model.line)
-    beside = freedom * (np.abs(model.line) < BESIDE_SHARE * np.abs(model.line).max())
-    on_line = freedom - beside
-    dark = float(np.vdot(squares, beside > 0)) / max(float(beside.sum()), 1.0)
-    light = float(np.vdot(on_line, model.line))
-    more = float(np.vdot(squares, on_line > 0)) - dark * float(on_line.sum())
-    rise = more / light if light else 0.0
-    mean = float(squares.sum()) / total
-    return np.maximum(dark + rise * model.line, max(QUANTISATION_VAR / depth, 0.1 * mean))
 
 
 def _explained(fold: Fold, left: F64, weight: F64) -> float:
