@@ -176,11 +176,12 @@ class FoldedContrast:
 class Fold:
     """Sums over the slices of each phase; (phases, columns), or (phases, 1) if columns are alike.
 
-    ``u``: mean distance of the pixels across the arm, px. ``n``: number of slices. ``of``: sums of
-    what the slices are like. ``level``, ``level_c``, ``level_ca``, ``level2``: sums of the levels,
-    times c, times ca, squared. ``seen``: 0 where pixels say nothing, else 1; ``freedom``: how many
-    of them scatter freely about their mean. ``group``, ``deviation`` (slices,): the phase each
-    slice went into, and p. ``contrasted``: whether c differs from 1 anywhere.
+    ``u``: mean distance of the pixels across the arm, px. ``n``: number of slices. ``of``: sums
+    of what the slices are like. ``level``, ``level_c``, ``level_ca``, ``level_cp``, ``level2``:
+    sums of the levels, times c, times ca, times cp, squared. ``seen``: 0 where pixels say nothing,
+    else 1; ``freedom``: how many of them scatter freely about their mean. ``group``,
+    ``deviation`` (slices,): the phase each slice went into, and p. ``contrasted``: whether c
+    differs from 1 anywhere.
     """
 
     u: F64
@@ -189,6 +190,7 @@ class Fold:
     level: F64
     level_c: F64
     level_ca: F64
+    level_cp: F64
     level2: F64
     seen: F64
     freedom: F64
@@ -239,6 +241,7 @@ def fold_strip(
         level,
         level_c,
         level_ca,
+        (member * cp) @ levels,
         member @ levels**2,
         seen,
         freedom,

@@ -6,7 +6,7 @@ import numpy as np
 
 from readout.model import F64, QUANTISATION_VAR
 from readout.sighting.fold import Fold
-from readout.sighting.trial import Model, State
+from readout.sighting.trial import State
 
 BESIDE_SHARE = 0.02
 """where less than this share of the line's height is left, there is only ground"""
@@ -16,15 +16,13 @@ def slice_variance(fold: Fold, state: State, depth: int) -> F64:
     """Variance of a slice's pixel as a straight line in its light, (phases, columns).
 
     From the scatter of slices of one phase about their mean: what the model does not describe
-    moves them all alike and does not count. The known spread of their places is taken out. The
+    moves them all alike and does not count. The
     ground gives the variance in the dark, the line by how much light adds to it: both as ratios of
     sums, the best estimate where variances go with the light.
     """
-    model, of, turn = state.model, fold.of, state.turn
+    model = state.model
     freedom = fold.freedom * fold.seen
-    places = of.c2p2 + turn * (2 * of.c2pa + turn * of.c2a2) - (of.cp + turn * of.ca) ** 2 / fold.n
-    about_mean = _about_mean(fold, model) - model.flank**2 * places
-    squares = about_mean * fold.seen
+    squares = (_about_model(fold, state) - state.left(fold) ** 2 / fold.n) * fold.seen
     total = float(freedom.sum())
     if total < 1:
         return np.ones_like(model.line)
@@ -38,18 +36,20 @@ def slice_variance(fold: Fold, state: State, depth: int) -> F64:
     return np.maximum(dark + rise * model.line, max(QUANTISATION_VAR / depth, 0.1 * mean))
 
 
-def _about_mean(fold: Fold, model: Model) -> F64:
-    """Sums of squares of the slices' levels about their mean, (phases, columns).
+def _about_model(fold: Fold, state: State) -> F64:
+    """Sums of squares of what the model leaves of each slice, (phases, columns), from the sums.
 
-    Where their contrasts differ it is what the model leaves of each that scatters.
+    A slice is off the mean of its phase by o = p + turn * a, which moves it by o times the flank:
+    far more than its noise, so that each is moved back before it is squared.
     """
-    if not fold.contrasted:
-        return fold.level2 - fold.level**2 / fold.n
-    of = fold.of
-    about_model = (
+    of, turn, model = fold.of, state.turn, state.model
+    ground, line, flank = model.ground, model.line, model.flank
+    level_off = fold.level_cp + turn * fold.level_ca
+    off, c_off = of.cp + turn * of.ca, of.c2p + turn * of.c2a
+    off2 = of.c2p2 + turn * (2 * of.c2pa + turn * of.c2a2)
+    return (
         fold.level2
-        - 2 * (model.ground * fold.level + model.line * fold.level_c)
-        + model.ground * (fold.n * model.ground + 2 * of.c * model.line)
-        + of.c2 * model.line**2
+        + ground * (fold.n * ground - 2 * fold.level + 2 * (of.c * line + off * flank))
+        + line * (of.c2 * line - 2 * fold.level_c + 2 * c_off * flank)
+        + flank * (off2 * flank - 2 * level_off)
     )
-    return about_model - (fold.level - fold.n * model.ground - of.c * model.line) ** 2 / fold.n

@@ -119,6 +119,12 @@ REAL: dict[str, Kind] = {
         Kind("gamma 0.45", sensor=BEFORE_GAMMA, finish=gamma_encoded, rms_px=0.003),
         Kind("JPEG q90", finish=jpeg_90, rms_px=0.003),
         Kind("JPEG q70", finish=jpeg_70, rms_px=0.005),
+        Kind(
+            "JPEG q70, turned 0.5°",
+            replace(REFERENCE, rotation_deg=0.5),
+            finish=jpeg_70,
+            rms_px=0.005,
+        ),
         Kind("ghost 5 % at 17 px", light=near_ghost, rms_px=0.005),
         Kind("side lobe 10 %", light=comatic),
         Kind("uneven light ±30 %", light=unevenly_lit, rms_px=0.003),
