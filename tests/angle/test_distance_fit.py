@@ -1,5 +1,6 @@
 """The check with two tilts: a known defocus is found beneath a way that pitches by far more."""
 
+import functools
 import json
 import math
 
@@ -7,7 +8,7 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from readout.angle.distance_check import check_distance
+from readout.angle.distance_fit import check_distance
 from readout.angle.distance_rows import DistanceRow, distance_rows
 from readout.errors import BadInput
 from tests.angle.traced_distance import traced_reading
@@ -17,6 +18,7 @@ DISTANCES_MM = (300.0, 700.0, 1100.0, 1500.0, 1900.0)
 LOW, HIGH = -300.0, 300.0
 
 
+@functools.cache
 def gains(defocus_mm, distances_mm=DISTANCES_MM):
     """Traced reading per tilt at each distance: a mirror of 12 mm, the return unclipped.
 
@@ -159,6 +161,27 @@ def test_a_stop_that_is_off_is_named():
             rows[number] = DistanceRow(row.distance_mm, row.step, row.x_arcsec + 50, math.nan, 0.05)
     found = check_distance(rows, focal_length_mm=FOCAL_MM)
     assert any("may not repeat" in line for line in found.warnings)
+    assert any("the difference at 1100 mm is" in line for line in found.warnings)
+    unknown = [DistanceRow(row.distance_mm, row.step, row.x_arcsec) for row in rows]
+    found = check_distance(unknown, focal_length_mm=FOCAL_MM)
+    assert any("the difference at 1100 mm is" in line for line in found.warnings)
+
+
+@pytest.mark.parametrize("told", [0.1, None], ids=["sd known", "sd from scatter"])
+def test_a_good_stop_is_seldom_named(told):
+    """Once in a hundred checks by chance; the limit is three standard errors above."""
+    walks, gain = 600, gains(1.0)
+    named = sum(
+        any("read this distance again" in line for line in found.warnings)
+        for found in (
+            check_distance(
+                measured(gain, np.random.default_rng([10, k]), noise=0.1, told=told)[0],
+                focal_length_mm=FOCAL_MM,
+            )
+            for k in range(walks)
+        )
+    )
+    assert named <= 0.01 * walks + 3 * math.sqrt(0.01 * walks)
 
 
 def good_rows():
