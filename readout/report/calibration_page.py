@@ -10,15 +10,23 @@ from typing import Any
 from jinja2 import Environment, PackageLoader, Template
 
 from readout.angle import Calibration
+from readout.angle.budget_reading import Seen, TiltBudget, reading_budget
+from readout.report.budget_table import budget_html
 from readout.report.style import FAINT, FIGURE, INK, PAPER, TILT_X, TILT_Y
 from readout.units import decimals_for, signed
 
 MM_WIDE, MM_HIGH = 170.0, 110.0
 
 
-def calibration_page(calibration: Calibration) -> str:
-    """The page as HTML that needs nothing from outside."""
+def calibration_page(calibration: Calibration, budget: TiltBudget | None = None) -> str:
+    """The page as HTML that needs nothing from outside.
+
+    ``budget``: of a reading made with it; without one, of a reading at the farthest place used.
+    """
+    shown = reading_budget(calibration, farthest(calibration)) if budget is None else budget
     return _template().render(
+        budget=budget_html(shown),
+        budget_at=[signed(one.value, 0) for one in (shown.x, shown.y)],
         calibration=calibration,
         focal=_focal_words(calibration),
         rotation=signed(calibration.rotation_deg, 3),
@@ -28,6 +36,16 @@ def calibration_page(calibration: Calibration) -> str:
         ink=INK,
         faint=FAINT,
     )
+
+
+def farthest(calibration: Calibration) -> Seen:
+    """The place farthest from the axis that was used, else half-way to the picture's corner."""
+    axis_x, axis_y = calibration.p0_px
+    places = [(float(r["x_px"]), float(r["y_px"])) for r in calibration.residuals]
+    if not places:
+        right, bottom = calibration.image_width_px - 1, calibration.image_height_px - 1
+        places = [((axis_x + right) / 2, (axis_y + bottom) / 2)]
+    return Seen(*max(places, key=lambda place: math.hypot(place[0] - axis_x, place[1] - axis_y)))
 
 
 @cache
