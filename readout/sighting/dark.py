@@ -66,7 +66,7 @@ def _moments(frames: Iterable[Pixels]) -> tuple[F64, F64, int]:
         squares += levels**2
         n += 1
     if total is None or squares is None:
-        raise BadInput("no dark frame given: take at least one")
+        raise BadInput("no frame given: take at least one")
     mean = total / n
     variance = (squares - n * mean**2) / (n - 1) if n > 1 else np.zeros_like(mean)
     return mean, np.maximum(variance, 0.0), n

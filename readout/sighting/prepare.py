@@ -9,14 +9,14 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 from dataclasses import dataclass, replace
-from typing import Any
+from typing import Any, TypeVar
 
 import cv2
 import numpy as np
 from numpy.typing import NDArray
 
 from readout.errors import BadInput
-from readout.model import Arm, Pixels, Sighting
+from readout.model import Arm, Pixels, Return, Sighting
 from readout.sighting.dark import mean_frame
 from readout.sighting.raw import Plane
 from readout.sighting.response import Response
@@ -128,6 +128,7 @@ class Preparation:
 
 
 _SPARSE = 8
+_Placed = TypeVar("_Placed", Sighting, Return)
 
 
 def _size(picture: NDArray[Any]) -> str:
@@ -142,14 +143,27 @@ def _moved(sighting: Sighting, plane: Plane, scale: float) -> Sighting:
         return offset + scale * value if forth else scale * (value - offset)
 
     def arm(old: Arm | None) -> Arm | None:
-        return None if old is None else replace(old, width_px=old.width_px * scale)
+        if old is None:
+            return None
+        return replace(
+            old,
+            width_px=old.width_px * scale,
+            line_px=old.line_px * scale,
+            blur_px=old.blur_px * scale,
+        )
 
-    xx, xy, yy = (value * scale**2 for value in sighting.cov_px2)
+    def moved(old: _Placed) -> _Placed:
+        xx, xy, yy = (value * scale**2 for value in old.cov_px2)
+        return replace(
+            old,
+            x_px=place(old.x_px, plane.x0_px),
+            y_px=place(old.y_px, plane.y0_px),
+            cov_px2=(xx, xy, yy),
+        )
+
     return replace(
-        sighting,
-        x_px=place(sighting.x_px, plane.x0_px),
-        y_px=place(sighting.y_px, plane.y0_px),
-        cov_px2=(xx, xy, yy),
+        moved(sighting),
         upright=arm(sighting.upright),
         level=arm(sighting.level),
+        others=tuple(moved(other) for other in sighting.others),
     )

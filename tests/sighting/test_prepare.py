@@ -9,7 +9,7 @@ import pytest
 from scipy.ndimage import center_of_mass
 
 from readout.errors import BadInput
-from readout.model import Arm, Quality, Sighting
+from readout.model import Arm, Quality, Return, Sighting
 from readout.sighting.dark import defective_pixels, mean_frame, saturation_level
 from readout.sighting.prepare import Preparation
 from readout.sighting.raw import Colour, Depth, Mosaic, Plane, depth_of, luma_of
@@ -147,12 +147,14 @@ class TestMosaic:
 
     def test_there_and_back(self):
         preparation = Preparation(plane=Plane(Mosaic.RGGB, Colour.BLUE))
-        arm = Arm(1.0, 5.0, 100.0, 10.0)
-        sighting = Sighting(10.25, 7.5, (0.01, 0.002, 0.03), Quality.OK, arm, arm, 200.0)
+        arm = Arm(1.0, 5.0, 100.0, 10.0, line_px=4.0, blur_px=1.5)
+        other = Return(3.0, 4.0, (0.02, 0.0, 0.02), 0.3)
+        sighting = Sighting(10.25, 7.5, (0.01, 0.002, 0.03), Quality.OK, arm, arm, 200.0, (other,))
         frame = preparation.in_frame(sighting)
         assert (frame.x_px, frame.y_px) == (21.5, 16.0)
         assert frame.cov_px2 == pytest.approx((0.04, 0.008, 0.12))
-        assert frame.upright == replace(arm, width_px=10.0)
+        assert frame.upright == replace(arm, width_px=10.0, line_px=8.0, blur_px=3.0)
+        assert frame.others == (Return(7.0, 9.0, (0.08, 0.0, 0.08), 0.3),)
         assert preparation.in_prepared(frame) == sighting
 
     def test_a_saturated_green_is_not_hidden_by_its_neighbour(self):
