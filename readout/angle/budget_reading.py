@@ -329,7 +329,9 @@ class _Case:
     def _seating(self) -> Contribution:
         if self.given.seating_arcsec is None:
             return absent("seating", "arcsec", "0 for a mirror that stays where it is")
-        return within("seating", self.given.seating_arcsec, "arcsec", common=False)
+        # New with each setting down, but the readings of one share it: no average lessens it.
+        note = "new each time it is set down"
+        return within("seating", self.given.seating_arcsec, "arcsec", note=note)
 
     @staticmethod
     def _limits(

@@ -13,6 +13,7 @@ from readout.angle.budget_reading import TiltBudget
 from readout.units import decimals_for, signed
 
 NOTHING = "\N{EN DASH}"
+NO_BREAK = "\N{NO-BREAK SPACE}"
 HEADINGS = ("line", "from", "input", "u(X), ″", "share", "u(Y), ″", "share")
 
 
@@ -97,7 +98,7 @@ def _effect(line: Contribution, share: float) -> tuple[str, str]:
     if line.standard_uncertainty is None:
         return NOTHING, NOTHING
     u = abs(line.signed_u)
-    return _two_figures(u), f"{100 * share:.1f} %"
+    return _two_figures(u), f"{100 * share:.1f}{NO_BREAK}%"
 
 
 def _two_figures(u: float) -> str:
@@ -109,7 +110,7 @@ def _sums(both: TiltBudget) -> tuple[Row, ...]:
         return Row((name, "", "", words[0], "", words[1], ""), note)
 
     budgets = (both.x, both.y)
-    level = f"{100 * both.x.level:g} %"
+    level = f"{100 * both.x.level:g}{NO_BREAK}%"
     return (
         row("combined", [_two_figures(one.combined_u) for one in budgets], "standard uncertainty"),
         row("degrees of freedom", [_freedom(one.effective_freedom) for one in budgets]),

@@ -71,6 +71,17 @@ def test_averaging_lessens_the_noise_and_nothing_else():
     assert line(one, "averaging").standing is Standing.NOT_APPLICABLE
 
 
+def test_averaging_lessens_only_what_is_new_in_each_picture():
+    given = Conditions(seating_arcsec=1.0, linearity_arcsec=1.0, path_m=10.0)
+    mean = seen(300.0, 50.0, cov_px2=NOISE_PX2, n=100, x_se_arcsec=0.5, y_se_arcsec=0.5)
+    budget = reading_budget(calibration(), mean, given, zero=seen(0.0, 0.0, cov_px2=NOISE_PX2)).x
+    assert budget.independent_u == pytest.approx(0.5, rel=1e-12)
+    assert math.hypot(budget.independent_u, budget.common_u) == pytest.approx(budget.combined_u)
+    for name in ("calibration", "zero", "seating", "linearity", "air", "cross-talk"):
+        assert line(budget, name).common
+        assert u(budget, name) > 0
+
+
 def test_nobody_has_said():
     """What is not known is named, never zero; what has a usual value is marked as that."""
     both = reading_budget(calibration(), Seen(800.0, 300.0), zero=Seen(600.0, 500.0))

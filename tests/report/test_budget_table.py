@@ -29,7 +29,7 @@ def test_every_line_is_there_and_the_shares_sum():
     table = budget_table(budget)
     assert [row.cells[0] for row in table.lines] == [one.name for one in budget.x.contributions]
     for column in (4, 6):
-        shares = [row.cells[column].removesuffix(" %") for row in table.lines]
+        shares = [row.cells[column].removesuffix("\u00a0%") for row in table.lines]
         found = sum(float(share) for share in shares if share != "–")
         assert found == pytest.approx(100, abs=0.05 * len(shares))
 
@@ -51,13 +51,13 @@ def test_the_figures_are_those_of_the_budget():
     assert rows["seating"][2] == "±3″, rectangular"
     assert rows["seating"][3] == "1.7"  # 3 / sqrt 3 = 1.73
     assert float(rows["combined"][3]) == pytest.approx(budget.x.combined_u, rel=0.05)
-    assert float(rows["expanded, 95 %"][5]) == pytest.approx(budget.y.expanded_u, rel=0.05)
-    assert rows["factor for 95 %"][3] == f"{budget.x.coverage_factor:.2f}"
+    assert float(rows["expanded, 95\u00a0%"][5]) == pytest.approx(budget.y.expanded_u, rel=0.05)
+    assert rows["factor for 95\u00a0%"][3] == f"{budget.x.coverage_factor:.2f}"
 
 
 def test_a_line_of_one_axis_alone():
     table = budget_table(both(further_y=(Contribution("table", 0.1, "arcsec"),)))
-    assert table.lines[-1].cells == ("table", "stated", "normal", "–", "–", "0.10", "0.0 %")
+    assert table.lines[-1].cells == ("table", "stated", "normal", "–", "–", "0.10", "0.0\u00a0%")
 
 
 def test_few_degrees_of_freedom_are_shown_cut_off():
