@@ -33,6 +33,7 @@ from readout.capture.source import Source
 from readout.capture.source_name import source_name
 from readout.errors import ReadoutError, SourceLost, SourceStalled
 from readout.instrument.observer import DirectObserver, Picture
+from readout.instrument.preparing import Preparing
 from readout.model import Observation, Target
 
 log = logging.getLogger(__name__)
@@ -50,7 +51,8 @@ class ChildObserver:
 
     Entering starts the child and returns at once; until it is ready, ``observe`` raises
     SourceStalled. ``open_within_s`` and ``silent_at_most_s`` bound its silence before and after
-    it has seen its first frame. ``open_source`` is pickled into the child.
+    it has seen its first frame. ``open_source`` and ``preparing``
+    are pickled into the child.
     """
 
     live = True
@@ -62,10 +64,11 @@ class ChildObserver:
         *,
         target: Target,
         open_source: OpenSource | None = None,
+        preparing: Preparing | None = None,
         open_within_s: float = OPEN_WITHIN_S,
         silent_at_most_s: float = SILENT_AT_MOST_S,
     ) -> None:
-        self._arguments = source, target, open_source
+        self._arguments = source, target, open_source, preparing
         self._open_within_s = open_within_s
         self._silent_at_most_s = silent_at_most_s
         self._source = source_name(source)
@@ -144,6 +147,12 @@ class ChildObserver:
             self._answered.wait_for(lambda: self._answers > before or self._pipe is None, timeout_s)
             return self._picture if self._answers > before else None
 
+    def prepare_anew(self) -> None:
+        """As an `Observer` does; a word alone crosses, which waits for no child."""
+        with self._asking, contextlib.suppress(OSError):
+            if self._pipe is not None:
+                self._pipe.send("prepare")
+
     def _receive(self, timeout_s: float) -> tuple[Any, ...]:
         pipe, process = self._pipe, self._process
         if pipe is None or process is None:
@@ -195,7 +204,13 @@ def _error(name: str, line: str) -> ReadoutError:
     return SourceLost(line)
 
 
-def _child(pipe: Connection, source: str, target: Target, open_source: OpenSource | None) -> None:
+def _child(
+    pipe: Connection,
+    source: str,
+    target: Target,
+    open_source: OpenSource | None,
+    preparing: Preparing | None,
+) -> None:
     """What runs in the child."""
     signal.signal(signal.SIGINT, signal.SIG_IGN)  # where it could not be blocked before
     threading.Thread(target=_end_with_parent, daemon=True).start()
@@ -206,7 +221,9 @@ def _child(pipe: Connection, source: str, target: Target, open_source: OpenSourc
             from readout.capture import open as capture_open
 
             open_source = capture_open.open_source
-        with DirectObserver(open_source(source), target=target, locate=locate) as observer:
+        with DirectObserver(
+            open_source(source), target=target, locate=locate, preparing=preparing
+        ) as observer:
             while not _asked_to_end(pipe, observer):
                 try:
                     pipe.send(("seen", observer.observe(CHILD_TIMEOUT_S)))
@@ -227,6 +244,8 @@ def _asked_to_end(pipe: Connection, observer: DirectObserver) -> bool:
         match pipe.recv():
             case "picture":
                 pipe.send(("picture", observer.picture(0.0)))
+            case "prepare":
+                observer.prepare_anew()
             case _:
                 return True
     return False

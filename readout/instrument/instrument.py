@@ -72,6 +72,7 @@ class Instrument:
         self._window = TrailingWindow(window_s)
         self._average: tuple[float, Average] | None = None
         self._reference: Reference | None = None
+        self._zero_wanted = ""
         self._first_seq: int | None = None
         self._newest: tuple[Observation, Reading] | None = None
         self._came_ns = 0
@@ -169,6 +170,11 @@ class Instrument:
         return self._target
 
     @property
+    def window_s(self) -> float:
+        """Length of the window the average is taken over."""
+        return self._window.window_s
+
+    @property
     def calibration(self) -> Calibration | None:
         """The one the next reading will have, as far as it is known."""
         with self._lock:
@@ -203,6 +209,7 @@ class Instrument:
                 image_height_px=height_px,
                 calibration=self._calibration,
                 zero=self.zero,
+                zero_wanted=self._zero_wanted,
             )
 
     def average(self) -> Average | None:
@@ -258,7 +265,7 @@ class Instrument:
     def set_zero(self) -> Zero:
         """Zero at the averaged value. Raises NotNow while flagged or moving, or none comes."""
         with self._lock:
-            newest, rows = self._live_newest(), self._window.rows()
+            newest, rows = self.reading_of_now("set the zero"), self._window.rows()
             average = average_of(
                 rows,
                 window_s=self._window.window_s,
@@ -274,28 +281,27 @@ class Instrument:
             if self._calibration is None or self._first_seq is None:
                 raise NotNow("there is no scale yet: give one, then set the zero")
             self._reference = Reference(zero, self._calibration, self._first_seq)
+            self._zero_wanted = ""
         self.tell(
             "zero", f"zero set at X {signed(zero.x_arcsec, 3)}″, Y {signed(zero.y_arcsec, 3)}″"
         )
         return zero
 
-    def _live_newest(self) -> Reading:
+    def reading_of_now(self, then: str) -> Reading:
         """The newest reading. Raises NotNow if it is not of now: what a source showed long ago is
-        no zero of what stands before the instrument.
+        not what stands before the instrument. ``then``: what to do once it is, for the message.
         """
         acquisition, age_s = self._acquisition, self.age_s
         newest, since = self._newest, self._first_seq
         if acquisition is None or newest is None or age_s is None or since is None:
-            raise NotNow("there is no reading yet: wait for the first one, then set the zero")
+            raise NotNow(f"there is no reading yet: wait for the first one, then {then}")
         if self._state is not State.MEASURING:
             raise NotNow(
                 f"no readings come from {self._source} ({self._state.value}): "
-                "wait until it measures again, then set the zero"
+                f"wait until it measures again, then {then}"
             )
         if age_s > acquisition.stalled_after_s:
-            raise NotNow(
-                f"the newest reading is {age_s:.1f} s old: wait for the next, then set the zero"
-            )
+            raise NotNow(f"the newest reading is {age_s:.1f} s old: wait for the next, then {then}")
         return newest[1]
 
     def clear_zero(self) -> None:
@@ -303,6 +309,14 @@ class Instrument:
             before, self._reference = self._reference, None
         if before is not None:
             self.tell("zero", "the zero was taken back")
+
+    def optics_changed(self, what: str) -> None:
+        """Tell that ``what`` of the optics is another now: no zero from before counts any more."""
+        with self._lock:
+            self._zero_wanted = f"{what} changed"
+            zero_lost = self._forget_readings()
+        self.tell("optics", f"optics changed: {what}; set a new zero")
+        self._tell_lost(zero_lost, "the optics were changed")
 
     # -- called by the acquisition ------------------------------------------------------------
 

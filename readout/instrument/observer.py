@@ -13,7 +13,11 @@ from typing import Protocol, Self
 
 from readout.angle import Calibration
 from readout.capture.source import Source
+from readout.files.preparation_file import CameraKnowledge
+from readout.instrument.preparing import Preparing
 from readout.model import Frame, Observation, Pixels, Sighting, Target
+from readout.sighting.prepare import Preparation
+from readout.sighting.targets import AS_THEY_COME
 
 
 @dataclass(frozen=True, slots=True)
@@ -34,6 +38,7 @@ class Locate(Protocol):
         full_scale: int,
         target: Target = ...,
         prior: Sighting | None = ...,
+        preparation: Preparation = ...,
     ) -> Sighting: ...
 
 
@@ -65,17 +70,31 @@ class Observer(Protocol):
         """The newest picture, None while there is none. May be called from any thread."""
         ...
 
+    def prepare_anew(self) -> None:
+        """What is known of the camera has changed: look again. May be called from any thread."""
+        ...
+
 
 OpenObserver = Callable[[], Observer]
 
 
 class DirectObserver:
-    """Reads and locates in the calling thread."""
+    """Reads, prepares and locates in the calling thread."""
 
-    def __init__(self, source: Source, *, target: Target, locate: Locate) -> None:
+    def __init__(
+        self,
+        source: Source,
+        *,
+        target: Target,
+        locate: Locate,
+        preparing: Preparing | None = None,
+    ) -> None:
         self._source = source
         self._target = target
         self._locate = locate
+        self._preparing = preparing
+        self._known: CameraKnowledge | None = None
+        self._known_of: tuple[int, ...] | None = None
         self._prior: Sighting | None = None
         self._newest: Picture | None = None
 
@@ -102,8 +121,13 @@ class DirectObserver:
 
     def observe(self, timeout_s: float) -> Observation:
         frame = self._source.read(timeout_s)
+        known = self._known_for(frame)
         sighting = self._locate(
-            frame.pixels, full_scale=frame.full_scale, target=self._target, prior=self._prior
+            frame.pixels,
+            full_scale=frame.full_scale,
+            target=self._target,
+            prior=self._prior,
+            preparation=AS_THEY_COME if known is None else known.preparation,
         )
         if frame.quality:
             sighting = replace(sighting, quality=sighting.quality | frame.quality)
@@ -118,8 +142,25 @@ class DirectObserver:
             height_px=height_px,
             sighting=sighting,
             name=frame.name,
+            prepared=None if known is None else known.made_utc,
         )
 
     def picture(self, timeout_s: float) -> Picture | None:
         del timeout_s  # it is here already
         return self._newest
+
+    def prepare_anew(self) -> None:
+        """See `Observer`."""
+        self._known_of = None
+
+    def _known_for(self, frame: Frame) -> CameraKnowledge | None:
+        """What is known for frames of this format; asked for once, for it may be a file."""
+        if self._preparing is None:
+            return None
+        height_px, width_px = frame.pixels.shape
+        format_of_it = width_px, height_px, frame.full_scale
+        if self._known_of != format_of_it:
+            self._known_of = format_of_it  # before the asking: a change meanwhile asks again
+            self._known = self._preparing.known_for((width_px, height_px), frame.full_scale)
+            self._prior = None
+        return self._known

@@ -22,7 +22,7 @@ class Event:
 @dataclass(frozen=True, slots=True)
 class Status:
     """The instrument at one instant. ``frames`` counts all measured, ``missed`` those a source
-    knows it did not deliver.
+    knows it did not deliver. ``zero_wanted``: what has changed so that a new zero is due, else "".
     """
 
     source: str | None
@@ -36,3 +36,4 @@ class Status:
     image_height_px: int | None
     calibration: Calibration | None
     zero: Zero | None
+    zero_wanted: str = ""

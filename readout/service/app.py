@@ -15,18 +15,25 @@ from readout import __version__
 from readout.capture.open import SourceDescription, describe_source
 from readout.errors import BadInput
 from readout.instrument import Instrument
+from readout.instrument.focusing import Focusing
+from readout.instrument.known_points import KnownPoints
 from readout.instrument.recorder import Recorder
+from readout.instrument.sign_test import SignTest
+from readout.instrument.steady import Steadiness
 from readout.service.body_limit import BodyLimit
+from readout.service.calibrating_routes import calibrating_routes
 from readout.service.calibration_routes import FOLDER, calibration_routes
 from readout.service.control import Control
 from readout.service.feed import Feed
 from readout.service.guard import Guard
 from readout.service.log_routes import log_routes
 from readout.service.messages import StatusMessage, status_message
+from readout.service.preparing_routes import preparing_routes
 from readout.service.problems import answer_with_problems
 from readout.service.reading_routes import reading_routes
 from readout.service.run_routes import run_routes
 from readout.service.setting_routes import setting_routes
+from readout.service.sign_routes import sign_routes
 from readout.service.stream import stream_routes
 
 STATIC = Path(__file__).parent.parent / "static"
@@ -73,7 +80,13 @@ def make_app(
     app.include_router(reading_routes(instrument, feed, status))
     app.include_router(log_routes(feed))
     app.include_router(setting_routes(instrument, feed, control))
-    app.include_router(calibration_routes(instrument, recorder.path.parent / FOLDER))
+    shelf, steadiness = recorder.path.parent / FOLDER, Steadiness(instrument)
+    app.include_router(calibration_routes(instrument, shelf))
+    points = KnownPoints(instrument, steadiness)
+    app.include_router(calibrating_routes(instrument, points, control, feed, shelf))
+    signs = SignTest(instrument, steadiness)
+    app.include_router(sign_routes(instrument, signs, control, feed, shelf))
+    app.include_router(preparing_routes(instrument, Focusing(instrument), feed))
     app.include_router(run_routes(recorder, feed, control))
     app.include_router(stream_routes(instrument, feed, status))
     if (static / "index.html").is_file():

@@ -86,6 +86,16 @@ class Control:
         self._instrument.tell("settings", "the settings were changed")
         return after
 
+    def use_calibration(self, path: Path) -> str:
+        """Read with the calibration at ``path`` from now on; answers why not, "" if so."""
+        if self._options.calibration is not None:
+            return "the calibration given when readout was started counts, until it is started anew"
+        try:
+            self.change({"calibration": str(path)})
+        except BadInput as error:
+            return str(error)
+        return ""
+
     def _calibration_to_begin_with(self, settings: Settings) -> Calibration | None:
         try:
             return _calibration_named(settings)

@@ -150,7 +150,9 @@ class RunNowMessage(TypedDict):
 
 
 class StatusMessage(TypedDict):
-    """What the instrument is doing."""
+    """What the instrument is doing. ``zero_wanted``: what has changed so that a new zero is due,
+    else "".
+    """
 
     source: str | None
     source_name: str
@@ -166,6 +168,7 @@ class StatusMessage(TypedDict):
     image_height_px: int | None
     calibration: CalibrationMessage | None
     zero: ZeroMessage | None
+    zero_wanted: str
     run: RunNowMessage | None
     session_start_utc: str
     version: str
@@ -408,6 +411,7 @@ def status_message(
         "image_height_px": status.image_height_px,
         "calibration": calibration_message(status.calibration),
         "zero": zero_message(status.zero),
+        "zero_wanted": status.zero_wanted,
         "run": run_now_message(recording),
         "session_start_utc": utc_text(session_start_utc_ns),
         "version": __version__,

@@ -7,7 +7,8 @@ import pytest
 
 from readout.errors import NotNow
 from readout.instrument.averaging import Rows, average_of
-from readout.instrument.zero import Zero, moving, travel, zero_from
+from readout.instrument.stillness import moving, travel
+from readout.instrument.zero import Zero, zero_from
 from readout.model import F64, Quality, Reading
 from readout.simulation import Motion
 from tests.instrument.fakes import reading, unmeasured

@@ -15,7 +15,7 @@ from readout.instrument import Instrument
 from readout.instrument.observer import Observer
 from readout.instrument.recorder import Recorder
 from readout.logbook import FILE_NAME, Logbook
-from readout.model import Target
+from readout.model import Reading, Target
 from readout.service.app import make_app
 from readout.service.control import Control, Options
 from readout.service.feed import Feed
@@ -70,6 +70,19 @@ class Rig:
     def at_reading(self, seq: int, act: Callable[[], object]) -> None:
         """Have ``act`` done with the reading of this number, while the source measures."""
         self.instrument.on_reading.append(lambda reading: act() if reading.seq == seq else None)
+
+    def play(self, script: Iterable[Step], acts: dict[int, Callable[[], object]]) -> None:
+        """Measure ``script``; each act is done with the reading of this place in it."""
+        newest = self.instrument.newest
+        first = 0 if newest is None else newest[1].seq + 1
+
+        def act(reading: Reading) -> None:
+            if reading.seq - first in acts:
+                acts[reading.seq - first]()
+
+        self.instrument.on_reading.append(act)
+        self.measure(script)
+        self.instrument.on_reading.remove(act)
 
     def fix_calibration(self, calibration: Calibration | None) -> None:
         """As given on the command line; None leaves the scale to the settings."""
