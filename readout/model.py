@@ -164,7 +164,11 @@ def no_sighting(quality: Quality) -> Sighting:
 
 @dataclass(frozen=True, slots=True)
 class Observation:
-    """A sighting with the stamp of its frame, without the pixels: what crosses a pipe."""
+    """A sighting with the stamp of its frame, without the pixels: what crosses a pipe.
+
+    ``prepared``: when that was made which the frame was prepared with (UTC), None for a frame as it
+    came.
+    """
 
     seq: int
     t_mono_ns: int
@@ -173,6 +177,7 @@ class Observation:
     height_px: int
     sighting: Sighting
     name: str | None = None
+    prepared: str | None = None
 
 
 @dataclass(frozen=True, slots=True)

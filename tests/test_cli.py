@@ -7,6 +7,7 @@ import json
 import os
 import socket
 from collections.abc import Callable
+from dataclasses import replace
 from importlib import metadata
 from pathlib import Path
 from typing import Any
@@ -17,9 +18,9 @@ import pytest
 from readout.cli import app as command_line
 from readout.cli.app import main
 from readout.files.pictures import write_picture
-from readout.model import Pixels
+from readout.model import F64, Pixels
 
-REQUIRED = ["live", "cameras", "locate", "measure", "simulate"]
+REQUIRED = ["live", "cameras", "locate", "measure", "prepare", "simulate"]
 
 
 class Run:
@@ -150,7 +151,7 @@ def test_a_picture_without_an_image_is_no_error(readout: Command, tmp_path: Path
     assert run.rows[0]["quality"]
     words = readout("locate", tmp_path / "dark.png").out
     assert "no image" in words
-    assert "turn the camera" in words
+    assert "tilt the mirror" in words
 
 
 @pytest.mark.skipif(not hasattr(os, "mkfifo"), reason="the system has no such pipes")
@@ -174,6 +175,116 @@ def test_files_that_are_no_pictures_are_named_and_the_others_done(
     assert len(lines) == 2
     assert str(missing) in lines[0]
     assert str(text) in lines[1]
+
+
+# -- what is known of the camera ------------------------------------------------------------------
+
+
+@pytest.fixture(scope="module")
+def over_fixed(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """A folder with a return over a fixed crosshair (``seen``), and of that crosshair alone, the
+    mirror covered (``covered``, eight frames), from a camera of gamma 0.5.
+    """
+    from readout.simulation import Crosshair, Sensor, crosshair_image, expose
+    from readout.simulation.response import display_encoded
+
+    folder = tmp_path_factory.mktemp("fixed")
+    rng = np.random.default_rng(11)
+    sensor = Sensor(12, gain_levels_per_electron=0.3, read_noise_electrons=6.0)
+    line = Crosshair(line_px=3.0, blur_px=1.4, background=400.0, contrast=3000.0)
+    still = crosshair_image((240, 320), 170.3, 110.6, line)
+    moved = crosshair_image((240, 320), RETURN_PX[0], RETURN_PX[1], replace(line, background=0.0))
+
+    def shown(electrons: F64) -> Pixels:
+        return display_encoded(expose(electrons, sensor, rng), sensor.full_scale, gamma=0.5)
+
+    (folder / "covered").mkdir()
+    (folder / "seen").mkdir()
+    for k in range(8):
+        write_picture(folder / "covered" / f"{k}.png", shown(still))
+    for k in range(2):
+        write_picture(folder / "seen" / f"{k}.png", shown(still + moved))
+    return folder
+
+
+RETURN_PX = 150.2, 125.8
+
+
+def test_locate_takes_fixed_light_away(readout: Command, over_fixed: Path, tmp_path: Path) -> None:
+    seen, alone = over_fixed / "seen" / "0.png", over_fixed / "covered" / "0.png"
+    plain = readout("locate", seen, "--json").rows[0]
+    assert "several_returns" in plain["quality"]
+    assert "nudge the mirror" in readout("locate", seen).out
+    covered = "--fixed", over_fixed / "covered"
+    kept = tmp_path / "camera.npz"
+    assert "mean of 8 frames" in readout("prepare", kept, *covered, "--gamma", 0.5).out
+    for options in ((*covered, "--gamma", 0.5), ("--prepared", kept)):
+        run = readout("locate", seen, alone, *options, "--json")
+        assert (run.status, run.err) == (0, "")
+        found, nothing = run.rows
+        assert found["quality"] == []
+        for axis, true in zip("xy", RETURN_PX, strict=True):
+            # truth of the simulator; 6 claimed standard deviations
+            assert abs(found[f"{axis}_px"] - true) < 6 * found[f"{axis}_sd_px"] < 0.03
+        assert nothing["x_px"] is None
+        assert nothing["quality"] == ["no_image"]
+
+
+def test_measure_takes_fixed_light_away(readout: Command, over_fixed: Path, tmp_path: Path) -> None:
+    settings = tmp_path / "settings.json"
+    optics = {"focal_length_mm": 300, "pitch_um": 3.45}
+    settings.write_text(json.dumps({"schema": "readout.settings/1", "optics": optics}), "utf-8")
+    given = "--settings", settings, "--csv", "-"
+    for options, words in (
+        ((), {"several_returns"}),
+        (("--fixed", over_fixed / "covered", "--gamma", 0.5), set()),
+    ):
+        run = readout("measure", over_fixed / "seen", *options, *given)
+        rows = list(csv.DictReader(run.out.splitlines()))
+        assert len(rows) == 2
+        assert all(words <= set(row["quality"].split()) for row in rows)
+    assert [row["quality"] for row in rows] == ["", ""]
+
+
+def test_the_curve_alone_fits_any_depth(readout: Command, frames: Path, tmp_path: Path) -> None:
+    deep = tmp_path / "deep.png"
+    write_picture(deep, np.zeros((40, 60), np.uint16), full_scale=4095)
+    run = readout("locate", frames / "frame_000000.png", deep, "--gamma", 0.9, "--json")
+    assert [row["quality"] for row in run.rows] == [[], ["no_image"]]
+
+
+def test_a_picture_of_another_size_is_named_and_the_others_done(
+    readout: Command, frames: Path, over_fixed: Path, tmp_path: Path
+) -> None:
+    small = tmp_path / "small.png"
+    write_picture(small, np.zeros((40, 60), np.uint8))
+    seen = over_fixed / "seen" / "0.png"
+    run = readout("locate", small, seen, "--fixed", over_fixed / "covered", "--json")
+    assert run.status == 1
+    assert [row["file"] for row in run.rows] == [str(seen)]
+    assert run.err.count("\n") == 1
+    for words in (str(small), "320 × 240", "60 × 40", "take the frames anew"):
+        assert words in run.err
+    measured = readout(
+        *("measure", frames, "--calibration", frames / "calibration.json"),
+        *("--fixed", small),
+    )
+    fails_in_one_line(measured, "60 × 40", "320 × 240")
+
+
+def test_what_is_given_twice_or_not_there_is_refused(
+    readout: Command, over_fixed: Path, tmp_path: Path
+) -> None:
+    seen, kept = over_fixed / "seen" / "0.png", tmp_path / "camera.npz"
+    fails_in_one_line(readout("locate", seen, "--fixed", tmp_path / "none.png"), "none.png")
+    fails_in_one_line(readout("locate", seen, "--prepared", kept), "camera.npz", "does not exist")
+    fails_in_one_line(readout("locate", seen, "--gamma", 0), "gamma")
+    fails_in_one_line(readout("prepare", kept, "--gamma", 0.45), "give a frame")
+    assert readout("prepare", kept, "--gamma", 0.45, "--levels", 255).status == 0
+    fails_in_one_line(readout("prepare", kept, "--gamma", 0.45, "--levels", 255), "--overwrite")
+    both = readout("locate", seen, "--prepared", kept, "--gamma", 0.45)
+    assert both.status == 2
+    assert readout("prepare", tmp_path / "camera.json", "--gamma", 0.45).status == 2
 
 
 # -- measure --------------------------------------------------------------------------------------

@@ -11,7 +11,7 @@ from typing import Annotated
 import typer
 
 from readout import __version__
-from readout.cli import calibrate, cameras, live, locate, measure, runs, simulate
+from readout.cli import calibrate, cameras, live, locate, measure, prepare, runs, simulate
 from readout.cli.say import fail, speak_utf8
 from readout.errors import BadInput, ReadoutError, cannot_write
 
@@ -31,7 +31,7 @@ app = typer.Typer(
     rich_markup_mode="markdown",
     context_settings={"help_option_names": ["-h", "--help"]},
 )
-for command in (live, cameras, locate, measure, calibrate, simulate):
+for command in (live, cameras, locate, measure, prepare, calibrate, simulate):
     app.command(epilog=command.EXAMPLE)(command.command)
 app.add_typer(runs.app, name="runs", epilog=runs.EXAMPLE, help="What has been recorded.")
 

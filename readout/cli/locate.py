@@ -9,6 +9,13 @@ from typing import Annotated
 import typer
 
 from readout.cli.options import JsonOption
+from readout.cli.preparing import (
+    DarkOption,
+    FixedOption,
+    GammaOption,
+    PreparationOption,
+    preparing_from,
+)
 from readout.cli.say import print_json, print_line, quality_words, warn
 from readout.errors import BadInput
 from readout.model import Sighting, Target
@@ -26,6 +33,10 @@ def locate(
         ),
     ],
     target: Annotated[Target, typer.Option(help="What is imaged.")] = Target.CROSSHAIR,
+    fixed: FixedOption = None,
+    dark: DarkOption = None,
+    gamma: GammaOption = None,
+    prepared: PreparationOption = None,
     json: JsonOption = False,
 ) -> None:
     """Find the return image in each picture.
@@ -36,17 +47,26 @@ def locate(
     """
     from readout.files.pictures import read_picture
     from readout.sighting import locate as find
+    from readout.sighting.targets import AS_THEY_COME
 
+    preparing = preparing_from(prepared, fixed, dark, gamma)
     unread = 0
     widest = max(len(str(path)) for path in frames)
     for path in frames:
         try:
             pixels, full_scale = read_picture(path)
+            size_px = pixels.shape[1], pixels.shape[0]
+            known = preparing and preparing.known_for(size_px, full_scale)
         except BadInput as error:
             unread += 1
-            warn(str(error))
+            warn(str(error) if str(path) in str(error) else f"{path}: {error}")
             continue
-        sighting = find(pixels, full_scale=full_scale, target=target)
+        sighting = find(
+            pixels,
+            full_scale=full_scale,
+            target=target,
+            preparation=known.preparation if known else AS_THEY_COME,
+        )
         if json:
             print_json(_row(path, sighting))
         else:

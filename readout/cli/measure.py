@@ -19,6 +19,13 @@ from readout.cli.options import (
     JsonOption,
     SettingsOption,
 )
+from readout.cli.preparing import (
+    DarkOption,
+    FixedOption,
+    GammaOption,
+    PreparationOption,
+    preparing_from,
+)
 from readout.cli.results import OverwriteOption, ReadingsFile, refuse_loss
 from readout.cli.say import note, print_json, print_line, progress, quality_words, warn
 from readout.errors import BadInput
@@ -40,6 +47,10 @@ def measure(
     source: Annotated[str, typer.Argument(metavar="SOURCE", help=f"{SOURCES}.")],
     calibration: CalibrationOption = None,
     target: Annotated[Target | None, typer.Option(help="Default: the calibration's.")] = None,
+    fixed: FixedOption = None,
+    dark: DarkOption = None,
+    gamma: GammaOption = None,
+    prepared: PreparationOption = None,
     csv: Annotated[
         Path | None, typer.Option(metavar="FILE", help="Write rows to this file; - for here.")
     ] = None,
@@ -69,17 +80,23 @@ def measure(
     from readout.capture.compression import LOSSY, is_lossy
     from readout.instrument import Instrument
     from readout.instrument.measuring import Measuring
+    from readout.instrument.opening import open_observer
 
     if json and csv == STDOUT:
         raise typer.BadParameter("--json and --csv - would both write here: give --csv a file")
     if csv is not None and csv != STDOUT:
         inputs = [Path(source), *([calibration] if calibration else [])]
         refuse_loss(csv, overwrite=overwrite, inputs=inputs)
+    preparing = preparing_from(prepared, fixed, dark, gamma)
     scale = _scale(source, calibration, settings)
     if target is None:
         target = scale.target if isinstance(scale, Calibration) else Target.CROSSHAIR
     lossy = is_lossy(source)
-    instrument = Instrument(scale=scale, from_first_frame=True)
+    instrument = Instrument(
+        scale=scale,
+        observe=lambda s, t: open_observer(s, t, preparing=preparing),
+        from_first_frame=True,
+    )
     with (
         _writing(csv, json=json) as write,
         progress("frames", frames, show=csv is not None) as show,

@@ -67,12 +67,19 @@ def opened(path: Path) -> TextIO:
         raise cannot_write(path, error) from error
 
 
+_REMEDY = {
+    Quality.NO_IMAGE: "nothing like the target, however turned: tilt the mirror until its return "
+    "comes into view, give light, sharpen",
+    Quality.SEVERAL_RETURNS: "which is the mirror's? Cover the mirror and give what is left as "
+    "--fixed, or nudge the mirror: the return is what moves",
+}
+
+
 def quality_words(quality: Quality) -> str:
-    """The flags as a person reads them; no image with what may be done about it."""
+    """The flags as a person reads them; where one cannot guess it, with what may be done."""
     words = ", ".join(quality.words()).replace("_", " ") or "good"
-    if Quality.NO_IMAGE in quality:
-        words += " (no crosshair upright within 10°: if there is one, turn the camera)"
-    return words
+    remedies = [remedy for flag, remedy in _REMEDY.items() if flag in quality]
+    return f"{words} ({'; '.join(remedies)})" if remedies else words
 
 
 @contextmanager

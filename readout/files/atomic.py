@@ -10,7 +10,12 @@ from readout.errors import cannot_write
 
 
 def write_text_whole(path: Path, text: str) -> None:
-    """Write ``text`` as UTF-8 to ``path`` through a new file in the same folder.
+    """Write ``text`` as UTF-8 to ``path``; see ``write_bytes_whole``."""
+    write_bytes_whole(path, text.encode("utf-8"))
+
+
+def write_bytes_whole(path: Path, data: bytes) -> None:
+    """Write ``data`` to ``path`` through a new file in the same folder.
 
     The folder is made if it is missing. Raises BadInput where it cannot be written to, NoRoom
     on a full disk.
@@ -20,8 +25,8 @@ def write_text_whole(path: Path, text: str) -> None:
         handle, name = tempfile.mkstemp(dir=path.parent, prefix=f".{path.name}.")
         fresh = Path(name)
         try:
-            with os.fdopen(handle, "w", encoding="utf-8", newline="\n") as file:
-                file.write(text)
+            with os.fdopen(handle, "wb") as file:
+                file.write(data)
                 file.flush()
                 os.fsync(file.fileno())
             fresh.replace(path)

@@ -31,7 +31,8 @@ it('has plain words for every quality word of the contract', () => {
   for (const word of contract.split(' '))
     expect(qualityWords(word).length).toBeGreaterThan(word.length + 5);
   expect(qualityWords('some_new_word')).toBe('some new word');
-  expect(qualityWords('no_image')).toMatch(/upright within 10°.*turn the camera/);
+  expect(qualityWords('no_image')).toMatch(/tilt the mirror/);
+  expect(qualityWords('several_returns')).toMatch(/cover the mirror.*fixed frame.*nudge/);
 });
 
 describe('notices', () => {

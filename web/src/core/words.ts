@@ -19,8 +19,7 @@ export function lean(axis: Axis, value: number | null): string {
 }
 
 const QUALITY: Record<string, string> = {
-  no_image:
-    'no image: no crosshair that stands upright within 10°; if you see one, turn the camera',
+  no_image: 'no image: tilt the mirror until its return comes into view, give light, sharpen',
   dim: 'dim: the image is faint, give more light or exposure',
   saturated: 'saturated: the arms are cut off at full white, give less light',
   blurred: 'blurred: the image is out of focus',
@@ -28,7 +27,8 @@ const QUALITY: Record<string, string> = {
   vignetted: 'vignetted: the return is cut by the aperture',
   at_edge: 'at the edge: part of the image is outside the picture',
   one_axis: 'one axis: only one arm of the crosshair is seen',
-  several_returns: 'several returns: more than one image, cover what does not belong',
+  several_returns:
+    'several returns: cover the mirror and take a fixed frame, or nudge it: the return moves',
   damaged: 'damaged: the picture arrived incomplete',
   duplicate: 'duplicate: the camera sent the same picture again',
   settling: 'settling: the picture still changes after a setting',
