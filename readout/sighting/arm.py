@@ -12,8 +12,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from readout.model import F64, Arm, Pixels
-from readout.sighting.fold import Line, cut_strip, fold_strip
-from readout.sighting.look import Look
+from readout.sighting.fold import Line, Shadow, cut_strip, fold_strip
+from readout.sighting.look import Look, missing_in
 from readout.sighting.profile import half_maximum, peak_height
 from readout.sighting.sections import Light
 from readout.sighting.shape import Shape
@@ -25,7 +25,7 @@ RESTS_TURN_PX = 0.1
 """a line that moves less than this, in the middle and at its ends, needs no new strip"""
 CROOKED = 25.0
 """an arm whose sections scatter by this factor, in variance, more than noise has marks across it"""
-ROUNDS = 4
+ROUNDS = 8
 """times an uneven or spoilt arm is looked at anew"""
 
 
@@ -73,14 +73,13 @@ def fit_arm(
     known: bool = False,
     full_scale: float = math.inf,
     unusable: NDArray[np.bool_] | None = None,
-    skip_from: float = math.inf,
-    skip_to: float = -math.inf,
+    shadow: Shadow | None = None,
 ) -> ArmFit | None:
     """Fit an upright arm near ``line``; for a level one pass the transposed picture.
 
     ``shape`` is a rough start, or ``known`` to be near in all it says. Pixels at ``full_scale``
-    and ``unusable`` ones say nothing. Rows from ``skip_from`` to ``skip_to`` are left out. Returns
-    None where no arm can be fitted: never raises on a bad picture.
+    and ``unusable`` ones say nothing. What lies in the ``shadow`` of another arm is left out.
+    Returns None where no arm can be fitted: never raises on a bad picture.
     """
     look = None
     for _ in range(CUTS):
@@ -91,12 +90,11 @@ def fit_arm(
             half_columns,
             full_scale=full_scale,
             unusable=unusable,
-            skip_from=skip_from,
-            skip_to=skip_to,
+            shadow=shadow,
         )
         if strip is None:
             return None
-        fold = fold_strip(strip, strip.levels)
+        fold = fold_strip(strip, strip.levels, missing=missing_in(strip))
         solution = solve_fold(fold, strip.line.cosine, shape, strip.depth, known=known)
         if solution is None or abs(solution.shift) > half_columns:
             return None

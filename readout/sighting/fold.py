@@ -22,9 +22,13 @@ PHASES = 8
 profile by far less than its own blur, and known to first order"""
 DEEPEST = 8
 """most rows averaged to one slice: few enough that a speck of dust spoils a few slices only"""
-MOST_BLIND = 0.1
-"""pixels of one phase and column count for nothing if more than this share of them is blind"""
+MOST_BLIND = 0.02
+"""pixels of one phase and column count for nothing if more than this share of them is clipped: the
+rest would be the darker ones"""
 SMEAR_PX = 0.25
+SLANT_PX = 4.0
+"""a shadow that moves along the arm by more than this over half the strip is left out pixel by
+pixel: that takes more time, and whole rows would cost more than 1 per cent of them"""
 LEAST_SLICES = 8
 LEAST_COLUMNS = 5
 
@@ -51,13 +55,29 @@ class Line:
 
 
 @dataclass(frozen=True, slots=True)
+class Shadow:
+    """Where another line lies over an arm: within ``reach_px`` of it, to either side.
+
+    ``line``: as the arm's own picture sees it with rows and columns exchanged.
+    """
+
+    line: Line
+    reach_px: float
+
+    def distance(self, x: F64, y: F64) -> F64:
+        """Distance of places from the line, px."""
+        return np.asarray(np.abs(y - self.line.x_at(x)) * self.line.cosine)
+
+
+@dataclass(frozen=True, slots=True)
 class Strip:
     """Slices across a line, (slices, columns), each with its place on it.
 
     A slice is the mean of ``depth`` neighbouring rows, so few that the line hardly moves.
     ``rows``: middle of each slice. ``phase``: line minus centre column, in [-0.5, 0.5] px.
-    ``offsets``: columns relative to the centre column. ``clipped``, ``unusable``: places at full
-    scale, or marked, in any of the rows, None if there are none. ``peak``: the brightest level.
+    ``offsets``: columns relative to the centre column. ``clipped``, ``missing``: places at full
+    scale, or not to be used, in any of the rows; None if there are none. ``peak``: the brightest
+    level.
     """
 
     line: Line
@@ -67,7 +87,7 @@ class Strip:
     offsets: F64
     levels: F64
     clipped: NDArray[np.bool_] | None
-    unusable: NDArray[np.bool_] | None
+    missing: NDArray[np.bool_] | None
     peak: float
 
     @property
@@ -84,7 +104,7 @@ class Strip:
             phase=self.phase[keep],
             levels=self.levels[keep],
             clipped=None if self.clipped is None else self.clipped[keep],
-            unusable=None if self.unusable is None else self.unusable[keep],
+            missing=None if self.missing is None else self.missing[keep],
         )
 
 
@@ -95,21 +115,20 @@ def cut_strip(
     *,
     full_scale: float = math.inf,
     unusable: NDArray[np.bool_] | None = None,
-    skip_from: float = math.inf,
-    skip_to: float = -math.inf,
+    shadow: Shadow | None = None,
 ) -> Strip | None:
     """Cut the strip of ``half_columns`` either side of ``line`` out of a picture.
 
-    Rows from ``skip_from`` to ``skip_to`` (where the other arm crosses) are left out, and rows in
-    which the border cuts the strip; where most rows are so, the whole strip is narrowed on that
-    side instead. Returns None if fewer than 8 slices or 5 columns remain.
+    What lies in the ``shadow`` of another arm is left out, and rows in which the border cuts the
+    strip; where most rows are so, the whole strip is narrowed on that side instead. Returns None if
+    fewer than 8 slices or 5 columns remain.
     """
     height, width = pixels.shape
     depth = _depth(line, height)
     first_row = np.arange(height // depth) * depth
     rows = first_row + (depth - 1) / 2
     at = line.x_at(rows)
-    kept = (rows + depth / 2 < skip_from) | (rows - depth / 2 > skip_to)
+    kept = _out_of(shadow, at, rows, half_columns, depth)
     to_border = np.minimum(at, width - 1 - at)
     inside, whole = kept & (to_border >= 1), kept & (to_border >= half_columns + 0.5)
     kept = whole if 2 * np.count_nonzero(whole) > np.count_nonzero(inside) else inside
@@ -124,17 +143,40 @@ def cut_strip(
     places = first_row[:, None] + np.arange(depth), (centre + first)[:, None]
     block = _stretches(pixels, columns)[places]
     peak = float(block.max())
+    missing = None if unusable is None else _stretches(unusable, columns)[places].any(axis=1)
+    offsets = np.arange(first, first + columns, dtype=np.float64)
+    if shadow is not None and _slants(shadow, half_columns):
+        across = shadow.distance(centre[:, None] + offsets, rows[:, None])
+        shadowed = across < shadow.reach_px + depth / 2
+        missing = shadowed if missing is None else missing | shadowed
     return Strip(
         line.about(float(rows.mean())),
         depth,
         rows,
         at - centre,
-        np.arange(first, first + columns, dtype=np.float64),
+        offsets,
         block.sum(axis=1, dtype=np.float64 if block.dtype.kind == "f" else np.uint32) / depth,
         np.asarray((block >= full_scale).any(axis=1)) if peak >= full_scale else None,
-        None if unusable is None else _stretches(unusable, columns)[places].any(axis=1),
+        missing,
         peak,
     )
+
+
+def _slants(shadow: Shadow, half_columns: int) -> bool:
+    """True if a shadow crosses the strip so slantingly that whole rows would be a waste."""
+    return half_columns * abs(shadow.line.slope) > SLANT_PX
+
+
+def _out_of(
+    shadow: Shadow | None, at: F64, rows: F64, half_columns: int, depth: int
+) -> NDArray[np.bool_]:
+    """Rows that are not wholly in the shadow; none of it in any row if it does not slant."""
+    if shadow is None:
+        return np.ones(rows.shape, dtype=np.bool_)
+    drift = half_columns * abs(shadow.line.slope)
+    reach = shadow.reach_px + depth / 2
+    wholly = reach - drift if _slants(shadow, half_columns) else reach + drift
+    return shadow.distance(at, rows) >= wholly
 
 
 def _stretches(picture: NDArray[Any], columns: int) -> NDArray[Any]:
@@ -179,9 +221,8 @@ class Fold:
     ``u``: mean distance of the pixels across the arm, px. ``n``: number of slices. ``of``: sums
     of what the slices are like. ``level``, ``level_c``, ``level_ca``, ``level_cp``, ``level2``:
     sums of the levels, times c, times ca, times cp, squared. ``seen``: 0 where pixels say nothing,
-    else 1; ``freedom``: how many of them scatter freely about their mean. ``group``,
-    ``deviation`` (slices,): the phase each slice went into, and p. ``contrasted``: whether c
-    differs from 1 anywhere.
+    else 1. ``group``, ``deviation`` (slices,): the phase each slice went into, and p.
+    ``contrasted``: whether c differs from 1 anywhere.
     """
 
     u: F64
@@ -193,7 +234,6 @@ class Fold:
     level_cp: F64
     level2: F64
     seen: F64
-    freedom: F64
     group: NDArray[np.intp]
     deviation: F64
     contrasted: bool
@@ -203,16 +243,13 @@ def fold_strip(
     strip: Strip,
     levels: F64,
     contrast: F64 | None = None,
-    *,
-    replaced: NDArray[np.bool_] | None = None,
-    blind: NDArray[np.bool_] | None = None,
+    missing: NDArray[np.bool_] | None = None,
 ) -> Fold:
     """Sum the slices of a strip by sub-pixel phase.
 
     ``levels`` (slices, columns): the strip's own, or freed of their grounds. ``contrast``
-    (slices,): relative to the arm's, if it is not the same everywhere. ``replaced``, ``blind``
-    (slices, columns), if there are any: pixels that hold what is expected there, and those that
-    are full.
+    (slices,): relative to the arm's, if it is not the same everywhere. ``missing`` (slices,
+    columns): pixels left out, if there are any.
     """
     group = np.minimum(((strip.phase + 0.5) * PHASES).astype(np.intp), PHASES - 1)
     present = np.bincount(group, minlength=PHASES) > 0
@@ -220,23 +257,31 @@ def fold_strip(
     groups, slices = int(np.count_nonzero(present)), len(group)
     member = np.zeros((groups, slices))
     member[group, np.arange(slices)] = 1.0
-    n = member.sum(axis=1)
-    phase = (member @ strip.phase) / n
+    slices_of = member.sum(axis=1)
+    phase = (member @ strip.phase) / slices_of
     deviation = strip.phase - phase[group]
     c = np.ones(slices) if contrast is None else contrast
     ca, cp = c * strip.along, c * deviation
     products = np.stack([c, ca, c * c, c * ca, ca * ca, cp, c * cp, cp * cp, cp * ca])
-    sums = (products @ member.T)[:, :, None]
+    n: F64 = slices_of[:, None]
+    if missing is None:
+        sums = (products @ member.T)[:, :, None]
+        seen = np.ones((groups, len(strip.offsets)))
+    else:
+        there = 1.0 - missing
+        levels = levels * there
+        each = (products[:, None, :] * member).reshape(-1, slices) @ there
+        sums = each.reshape(len(products), groups, -1)
+        n = member @ there
+        seen = 1.0 * (n >= 1)
+        n = np.maximum(n, 1.0)
+    if strip.clipped is not None:
+        seen = seen * (member @ strip.clipped < MOST_BLIND * slices_of[:, None])
     level, level_ca = member @ levels, (member * ca) @ levels
     level_c = level if contrast is None else (member * c) @ levels
-    seen, freedom = np.ones_like(level), np.broadcast_to(n[:, None] - 1, level.shape)
-    if blind is not None:
-        seen = 1.0 * (member @ blind < MOST_BLIND * n[:, None])
-    if replaced is not None:
-        freedom = np.maximum(freedom - member @ replaced, 0.0)
     return Fold(
         (strip.offsets[None, :] - phase[:, None]) * strip.line.cosine,
-        n[:, None],
+        n,
         FoldedContrast(*sums),
         level,
         level_c,
@@ -244,7 +289,6 @@ def fold_strip(
         (member * cp) @ levels,
         member @ levels**2,
         seen,
-        freedom,
         group,
         deviation,
         contrast is not None,

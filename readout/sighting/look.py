@@ -2,8 +2,7 @@
 
 Where the light is uneven, slices are freed of their grounds and expected at their contrast. Pixels
 that stand out from those of the same phase (dust, a hot pixel, a compression block) or are clipped
-give way to what the fit expects there, as a robust fit by modified residuals does (P. J. Huber,
-Robust Statistics, 1981, 7.8). Sections where the arm is not there, or off its line by more than
+are left out one by one. Sections where the arm is not there, or off its line by more than
 noise, are left out.
 """
 
@@ -34,14 +33,14 @@ class Look:
 
     ``background`` (levels), ``gradient`` (levels per pixel across), both (slices,): how much more
     there is than on the arm at large. ``contrast`` (slices,): relative to the arm's. ``spoilt``
-    (slices, columns): pixels replaced. ``levels``: after all this.
+    (slices, columns): pixels left out. ``levels``: after all this.
     """
 
     strip: Strip
     background: F64
     gradient: F64
     contrast: F64
-    spoilt: NDArray[np.bool_]
+    spoilt: NDArray[np.bool_] | None
     levels: F64
     fold: Fold
     solution: Solution
@@ -55,7 +54,7 @@ class Look:
             np.zeros(slices),
             np.zeros(slices),
             np.ones(slices),
-            np.zeros(strip.levels.shape, dtype=np.bool_),
+            missing_in(strip),
             strip.levels,
             fold,
             solution,
@@ -69,8 +68,9 @@ class Look:
         return np.asarray(solution.ground[fold.group] + self.contrast[:, None] * line)
 
     def residual(self) -> F64:
-        """Levels less what the fit expects, (slices, columns)."""
-        return self.levels - self.expected()
+        """Levels less what the fit expects, (slices, columns); 0 where a pixel is left out."""
+        residual = self.levels - self.expected()
+        return residual if self.spoilt is None else np.where(self.spoilt, 0.0, residual)
 
     def sections(self, residual: F64) -> Sections | None:
         """The arm piece by piece; None of one too short for that."""
@@ -93,8 +93,6 @@ class Look:
         """A better look, or None if nothing was found to improve or the rest cannot be fitted."""
         background, gradient, contrast = self.background, self.gradient, self.contrast
         spoilt = self.spoilt
-        for known in (self.strip.clipped, self.strip.unusable):
-            spoilt = spoilt if known is None else spoilt | known
         keep = sections.on_line(OFF_LINE)
         lit = sections.lit(self.solution.shape.contrast)
         if sections.uneven and not lit.all():
@@ -104,11 +102,11 @@ class Look:
             gradient = gradient + sections.at(self.strip.along, sections.gradient)
             arm = self.solution.shape.contrast
             contrast = contrast + sections.at(self.strip.along, sections.contrast) / arm
-        else:
-            spoilt = spoilt | self._standing_out(residual)
+        elif (outliers := self._standing_out(residual)).any():
+            spoilt = outliers if spoilt is None else spoilt | outliers
         keep_slices = sections.of_slices(keep)
         shape = self.solution.shape
-        if not sections.uneven and keep.all() and not np.any(spoilt & ~self.spoilt):
+        if not sections.uneven and keep.all() and spoilt is self.spoilt:
             beside = self._beside()
             if beside is None:
                 return None
@@ -126,7 +124,8 @@ class Look:
         """Pixels far from those of the same phase and column."""
         fold, solution = self.fold, self.solution
         from_like = residual - (solution.left / fold.n)[fold.group]
-        return np.abs(from_like) * np.sqrt(solution.weight)[fold.group] > OUTLIER
+        outliers = np.abs(from_like) * np.sqrt(solution.weight)[fold.group] > OUTLIER
+        return outliers if self.spoilt is None else outliers & ~self.spoilt
 
     def _beside(self) -> Beside | None:
         """A line beside the arm not known before, where the profile fits badly."""
@@ -149,7 +148,7 @@ class Look:
         background: F64,
         gradient: F64,
         contrast: F64,
-        spoilt: NDArray[np.bool_],
+        spoilt: NDArray[np.bool_] | None,
         keep: NDArray[np.bool_],
         shape: Shape,
     ) -> Look | None:
@@ -160,23 +159,10 @@ class Look:
         arm = self.solution.shape.contrast * mean_contrast
         levels = self.strip.levels - background[:, None]
         levels -= gradient[:, None] * self.fold.u[self.fold.group]
-        if spoilt.any():
-            expected = replace(self, contrast=contrast).expected()
-            # of a clipped pixel it is known that it is no darker than it reads
-            if self.strip.clipped is not None:
-                brighter = np.maximum(expected, levels)
-                expected = np.where(self.strip.clipped, brighter, expected)
-            levels = np.where(spoilt, expected, levels)
         contrast = contrast / mean_contrast
         strip, levels, contrast = self.strip.only(keep), levels[keep], contrast[keep]
-        spoilt = spoilt[keep]
-        fold = fold_strip(
-            strip,
-            levels,
-            contrast if np.any(contrast != 1.0) else None,
-            replaced=spoilt if spoilt.any() else None,
-            blind=strip.clipped,
-        )
+        spoilt = None if spoilt is None else spoilt[keep]
+        fold = fold_strip(strip, levels, contrast if np.any(contrast != 1.0) else None, spoilt)
         moved = strip.line.middle_y - self.strip.line.middle_y
         anew = solve_fold(
             fold,
@@ -199,3 +185,10 @@ class Look:
             fold,
             anew,
         )
+
+
+def missing_in(strip: Strip) -> NDArray[np.bool_] | None:
+    """Pixels of a strip that are known from the start to be of no use; None if there are none."""
+    if strip.clipped is None or strip.missing is None:
+        return strip.missing if strip.clipped is None else strip.clipped
+    return np.asarray(strip.clipped | strip.missing)

@@ -37,7 +37,7 @@ def normal_equations(fold: Fold, state: State, weight: F64) -> tuple[F64, F64]:
         normal[:-1, :-1] = (weighted * fold.n).reshape(count, -1) @ flat.T
     normal[:2, -1] = normal[-1, :2] = flat[:2] @ (flank_weighted * of.ca).ravel()
     normal[2:-1, -1] = normal[-1, 2:-1] = flat[2:] @ (flank_weighted * of.c2a).ravel()
-    normal[-1, -1] = (flank_weighted * flank).sum(axis=1) @ of.c2a2[:, 0]
+    normal[-1, -1] = (flank_weighted * flank * of.c2a2).sum()
     left = state.left(fold)
     left_c = left
     if fold.contrasted:

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from readout.sighting.arm import ArmFit, fit_arm
 from readout.sighting.crossing import Cross, crossing
-from readout.sighting.fold import Line
+from readout.sighting.fold import Line, Shadow
 from readout.sighting.shape import Shape
 
 LEAST_EXPLAINED = 0.7
@@ -49,10 +49,9 @@ class Picture:
         *,
         is_level: bool,
         known: bool = False,
-        skip: tuple[float, float] | None = None,
+        shadow: Shadow | None = None,
     ) -> ArmFit | None:
-        """A credible fit of an arm without the stretch from ``skip[0]`` to ``skip[1]``, or None."""
-        skip_from, skip_to = skip or (math.inf, -math.inf)
+        """A credible fit of an arm without what lies in the shadow of another, or None."""
         unusable = self.unusable
         if unusable is not None and is_level:
             unusable = unusable.T
@@ -63,8 +62,7 @@ class Picture:
             known=known,
             full_scale=self.full_scale,
             unusable=unusable,
-            skip_from=skip_from,
-            skip_to=skip_to,
+            shadow=shadow,
         )
         return fit if fit is not None and _credible(fit) else None
 
@@ -82,26 +80,20 @@ class Picture:
         ``known``: the shapes are near in all they say, else only in width and polarity.
         The first arm is fitted once more if the second, now known, reaches into what was taken.
         """
-        left_out = _shadow(upright, upright_shape, level, level_shape)
-        slack = left_out[0] - SLACK_PX, left_out[1] + SLACK_PX
-        first = self.fit(upright, upright_shape, is_level=False, known=known, skip=slack)
+        over = Shadow(level, level_shape.fades_px + SLACK_PX)
+        first = self.fit(upright, upright_shape, is_level=False, known=known, shadow=over)
         if first is None:
             return None
-        across = _shadow(level, level_shape, first.line, first.shape)
-        second = self.fit(level, level_shape, is_level=True, known=known, skip=across)
+        over_second = Shadow(first.line, first.shape.fades_px)
+        second = self.fit(level, level_shape, is_level=True, known=known, shadow=over_second)
         if second is None or first.shape.contrast * second.shape.contrast < 0:
             return None
-        shadow = _shadow(first.line, first.shape, second.line, second.shape)
-        if shadow[0] < slack[0] or shadow[1] > slack[1]:
-            first = self.fit(first.line, first.shape, is_level=False, known=True, skip=shadow)
+        there = np.array(crossing(first.line, second.line))
+        moved = float(over.distance(there[0], there[1])) + second.shape.fades_px
+        if moved > over.reach_px:
+            over = Shadow(second.line, second.shape.fades_px)
+            first = self.fit(first.line, first.shape, is_level=False, known=True, shadow=over)
         return None if first is None else Cross(first, second)
-
-
-def _shadow(line: Line, shape: Shape, other: Line, other_shape: Shape) -> tuple[float, float]:
-    """From where to where along an arm the other one reaches into its strip, pixels."""
-    along = crossing(line, other)[1]
-    half = other_shape.fades_px / other.cosine + abs(other.slope) * shape.fades_px
-    return along - half, along + half
 
 
 def _credible(fit: ArmFit) -> bool:

@@ -21,7 +21,7 @@ def slice_variance(fold: Fold, state: State, depth: int) -> F64:
     sums, the best estimate where variances go with the light.
     """
     model = state.model
-    freedom = fold.freedom * fold.seen
+    freedom = (fold.n - 1) * fold.seen
     squares = (_about_model(fold, state) - state.left(fold) ** 2 / fold.n) * fold.seen
     total = float(freedom.sum())
     if total < 1:

@@ -20,6 +20,8 @@ UNLIKE_RATIO = 4.0
 """arms whose contrasts differ by more than this are of different things"""
 HIDDEN_PX = 0.1
 """what a second return whose other arm hides in the main one's may pull it by"""
+FOUND_SHARE = 0.5
+"""but a line fitted beside the main arm, of this share of its contrast or more, is that other arm"""
 LOPSIDED_PX = 0.06
 """a profile whose sides differ by what would shift it so far has something beside it"""
 BLURRED_PX = 12.0
@@ -59,8 +61,14 @@ def _rivalled(cross: Cross, others: tuple[Return, ...]) -> bool:
     arms = (cross.upright, cross.level)
     low, high = sorted(abs(arm.peak_contrast) for arm in arms)
     half_width = max(arm.width_px for arm in arms) / 2
+    besides = [arm.shape.beside.height for arm in arms if arm.shape.beside is not None]
     return high > UNLIKE_RATIO * low or any(
-        other.share > RIVAL_SHARE or (other.lone and other.share * half_width > HIDDEN_PX)
+        other.share > RIVAL_SHARE
+        or (
+            other.lone
+            and other.share * half_width > HIDDEN_PX
+            and not any(height > FOUND_SHARE * other.share for height in besides)
+        )
         for other in others
     )
 
