@@ -21,7 +21,7 @@ UNLIKE_RATIO = 4.0
 HIDDEN_PX = 0.1
 """what a second return whose other arm hides in the main one's may pull it by"""
 FOUND_SHARE = 0.5
-"""but a line fitted beside the main arm, of this share of its contrast or more, is that other arm"""
+"""but a line fitted beside the main arm with so much of its contrast is that other arm"""
 LOPSIDED_PX = 0.06
 """a profile whose sides differ by what would shift it so far has something beside it"""
 BLURRED_PX = 12.0
