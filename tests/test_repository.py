@@ -220,12 +220,19 @@ def test_the_extras_named_in_the_readme_exist() -> None:
 
 
 def test_files_named_in_the_texts_exist() -> None:
-    for text in ("README.md", "DEVELOPERS.md", "docs/geometry.md", "docs/uncertainty.md"):
+    pages = [f"docs/{page.name}" for page in sorted((ROOT / "docs").glob("*.md"))]
+    assert pages
+    for text in ("README.md", "DEVELOPERS.md", *pages):
         folder = (ROOT / text).parent
         content = (ROOT / text).read_text(encoding="utf-8")
         links = re.findall(r"\]\(([\w./-]+)\)", content)
         missing = [link for link in links if not (folder / link).exists()]
         assert missing == [], text
+
+
+def test_every_page_of_the_docs_is_linked_from_the_readme() -> None:
+    for page in (ROOT / "docs").glob("*.md"):
+        assert f"](docs/{page.name})" in readme(), page.name
 
 
 @pytest.mark.parametrize(
