@@ -35,7 +35,8 @@ class Calibration:
     ``matrix``: A, rows (x, y) slope, columns (x, y) pixel, in 1/px. ``p0_px``: pixel of the
     optical axis. ``param_cov``: 7x7 covariance, order of ``PARAMETERS``. ``signs``: "proven" once
     a nudge of the mirror has shown them, else "unproven". ``image_width_px, image_height_px`` and
-    ``target``: what it is valid for.
+    ``target``: what it is valid for. ``signs_shown``: the tests that have shown the signs, each
+    with how, when and what was seen.
     """
 
     id: str
@@ -55,6 +56,7 @@ class Calibration:
     n: int = 0
     warnings: tuple[str, ...] = ()
     made_from: dict[str, Any] = field(default_factory=dict)
+    signs_shown: tuple[dict[str, Any], ...] = ()
 
     @property
     def focal_length_px(self) -> float:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -71,6 +72,21 @@ class TiltSet:
         across = np.divide(across, length, out=np.zeros_like(across), where=length > 0)
         across *= self.across_sd_arcsec[:, None]
         return np.asarray(cov + across[:, :, None] * across[:, None, :])
+
+    def seen(self, rows: Sequence[int], position_px: F64, position_cov_px2: F64) -> TiltSet:
+        """These rows alone, with the positions (m, 2) sighted in their frames."""
+        chosen = np.asarray(rows, dtype=np.int64)
+        across = self.across_sd_arcsec
+        return TiltSet(
+            names=tuple(self.names[row] for row in rows),
+            position_px=position_px,
+            position_cov_px2=position_cov_px2,
+            tilt_arcsec=self.tilt_arcsec[chosen],
+            sd_arcsec=self.sd_arcsec[chosen],
+            across_sd_arcsec=None if across is None else across[chosen],
+            shared=tuple(SharedInput(s.name, s.tilt_arcsec[chosen]) for s in self.shared),
+            zero_of=None if self.zero_of is None else self.zero_of[chosen],
+        )
 
 
 @dataclass(frozen=True, slots=True)

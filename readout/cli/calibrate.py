@@ -17,6 +17,9 @@ from readout.units import decimals_for, signed
 
 EXAMPLE = "Example: `readout calibrate calib_images/bench_stage --out bench.json`"
 
+ANY_SIZE_PX = (1280, 960)
+"""the expected uncertainty does not depend on the size of the pictures"""
+
 if TYPE_CHECKING:
     from readout.angle import Calibration
 
@@ -33,12 +36,21 @@ def calibrate(
     report: Annotated[
         Path | None, typer.Option(metavar="FILE.html", help="Write a page with figure and table.")
     ] = None,
+    expect: Annotated[
+        bool,
+        typer.Option(
+            "--expect",
+            help="Say from tilts.csv and set.toml alone what the scale will be worth; "
+            "no frame need be there yet.",
+        ),
+    ] = False,
     overwrite: OverwriteOption = False,
 ) -> None:
     """Calibrate from frames taken at known mirror tilts.
 
-    The tilts may have a common unknown zero, which is fitted. The uncertainty printed is a
-    standard uncertainty of the scale; what is left over is listed frame by frame.
+    The tilts may have a common unknown zero, which is fitted. They may come from a stage, a lever
+    raised by blocks, or a wedge of glass. The uncertainty printed is a standard uncertainty of the
+    scale; what is left over is listed frame by frame.
     """
     from readout.files.calibration_file import save_calibration
     from readout.files.calibration_set import read_calibration_set
@@ -48,6 +60,9 @@ def calibrate(
     for result in (out, report):
         if result is not None:
             refuse_loss(result, overwrite=overwrite, inputs=[folder], makes_folder=True)
+    if expect:
+        _say_expected(folder, json=json)
+        return
     given = read_calibration_set(folder)
     with progress("frames", len(given.tilts)) as show:
         made = calibrate_set(given, created_utc=utc_text(time.time_ns()), on_frame=show)
@@ -67,6 +82,43 @@ def calibrate(
         note("not kept: give --out FILE to keep it")
 
 
+def _say_expected(folder: Path, *, json: bool) -> None:
+    """What the planned tilts will be worth."""
+    from readout.angle.expected import PLACE_SD_PX, expected_scale
+    from readout.files.calibration_set import read_calibration_set
+
+    given = read_calibration_set(folder, with_frames=False)
+    focal_mm, pitch_um = given.nominal_focal_length_mm, given.pitch_um
+    known = (
+        {}
+        if focal_mm is None or pitch_um is None
+        else {"focal_length_px": focal_mm / pitch_um * 1e3}
+    )
+    found = expected_scale(given.planned(), given.camera(*ANY_SIZE_PX), **known)
+    if json:
+        print_json(
+            {
+                "focal_length_rel_sd": found.rel_sd,
+                "rows_rel_sd": found.rows_rel_sd,
+                "shared": [{"name": name, "rel_sd": u} for name, u in found.shared_rel_sd],
+                "largest": found.largest,
+                "n": len(given.tilts),
+                "method": given.way,
+            }
+        )
+        return
+    print_line(f"u(f)/f         {_percent(found.rel_sd)} expected, of {len(given.tilts)} frames")
+    print_line(f"each row       {_percent(found.rows_rel_sd)}, less with more rows")
+    for name, u in found.shared_rel_sd:
+        print_line(f"shared         {_percent(u)} from {name}, the same however many rows")
+    print_line(f"limited by     {found.largest}")
+    print_line(f"places         taken as good to {PLACE_SD_PX:g} px")
+
+
+def _percent(share: float) -> str:
+    return f"{100 * share:.2g} %"
+
+
 def _object(made: Calibration) -> dict[str, Any]:
     scale_x, scale_y = made.scale_arcsec_per_px
     return {
@@ -79,6 +131,7 @@ def _object(made: Calibration) -> dict[str, Any]:
         "rotation_deg": made.rotation_deg,
         "mirrored": made.mirrored,
         "signs": made.signs,
+        "signs_shown": list(made.signs_shown),
         "residual_rms_arcsec": made.residual_rms_arcsec,
         "n": made.n,
         "method": made.method,
@@ -102,6 +155,8 @@ def _lines(made: Calibration, nominal_mm: float | None) -> list[str]:
         f"growing X      {made.rotation_deg:.3f}° clockwise from the picture's right, {way}",
         f"left over      {made.residual_rms_arcsec or 0.0:.4f}″ rms, {made.n} frames",
         f"method         {made.method}",
+        f"signs          {made.signs}",
+        *(f"shown by       {shown['how']}, {shown['direction']}" for shown in made.signs_shown),
         *(f"note           {warning}" for warning in made.warnings),
         "",
         f"{'frame':<24} {'x px':>10} {'y px':>10} {'left X ″':>10} {'left Y ″':>10}",
@@ -112,8 +167,10 @@ def _lines(made: Calibration, nominal_mm: float | None) -> list[str]:
             for key in ("x_residual_arcsec", "y_residual_arcsec")
         )
         x_left, y_left = left
+        mark = "  the others contradict it" if row.get("outlier") else ""
         lines.append(
-            f"{row['file']:<24} {row['x_px']:10.3f} {row['y_px']:10.3f} {x_left:>10} {y_left:>10}"
+            f"{row['file']:<24} {row['x_px']:10.3f} {row['y_px']:10.3f} "
+            f"{x_left:>10} {y_left:>10}{mark}"
         )
     return lines
 

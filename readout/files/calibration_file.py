@@ -62,6 +62,7 @@ class _File(_Model):
     n: Annotated[int, Field(ge=0)]
     warnings: tuple[str, ...]
     made_from: dict[str, Any]
+    signs_shown: tuple[dict[str, Any], ...] = ()
 
 
 def save_calibration(path: Path, calibration: Calibration) -> None:
@@ -132,6 +133,7 @@ def parse_calibration(text: bytes, *, name: str) -> Calibration:
         n=content.n,
         warnings=content.warnings,
         made_from=content.made_from,
+        signs_shown=content.signs_shown,
     )
 
 
@@ -180,6 +182,7 @@ def calibration_document(calibration: Calibration) -> dict[str, Any]:
         "image_width_px": calibration.image_width_px,
         "image_height_px": calibration.image_height_px,
         "signs": calibration.signs,
+        "signs_shown": list(calibration.signs_shown),
         "parameters": {
             "a_xx_per_px": a_xx,
             "a_xy_per_px": a_xy,

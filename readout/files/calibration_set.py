@@ -1,77 +1,68 @@
 """A calibration set: a folder with frames, ``tilts.csv`` and ``set.toml``.
 
 ``tilts.csv`` has the columns ``file,x_arcsec,y_arcsec,sd_arcsec`` (either axis may be empty in a
-row), or ``file,lever_mm,height_mm,height_sd_mm,axis`` for a bar raised at one end: its angle is
-arcsin(height / lever) for a bar on two supports, arctan with ``lever_is = "horizontal"``.
+row), or ``file,lever_mm,height_mm,height_sd_mm,axis`` for a bar raised at one end, or
+``file,turn_deg,turn_sd_deg`` for a wedge turned in its plane (empty: out of the beam).
 """
 
 from __future__ import annotations
 
-import csv
 import math
-import tomllib
-from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
-from typing import Annotated, Literal
 
-from pydantic import BaseModel, ConfigDict, Field, ValidationError
+import numpy as np
 
-from readout.angle import Mounting
+from readout.angle import Camera, Mounting, SharedInput, TiltSet
+from readout.angle.lever import LeverRow, lever_tilts
+from readout.angle.wedge import Wedge, WedgeIs, wedge_of_glass, wedge_tilts
 from readout.errors import BadInput
-from readout.model import Target
-from readout.units import ARCSEC_PER_RAD
+from readout.files.calibration_set_about import (
+    AxesPart,
+    FoilPart,
+    NudgePart,
+    SetAbout,
+    WedgePart,
+    read_about,
+)
+from readout.files.calibration_set_table import (
+    LEVER_COLUMNS,
+    TILT_COLUMNS,
+    TURN_COLUMNS,
+    TableRow,
+    is_inside,
+    read_table,
+)
+from readout.model import F64, Target
 
-TILT_COLUMNS = ("file", "x_arcsec", "y_arcsec", "sd_arcsec")
-LEVER_COLUMNS = ("file", "lever_mm", "height_mm", "height_sd_mm", "axis")
-
-_Positive = Annotated[float, Field(gt=0, allow_inf_nan=False)]
-_NotNegative = Annotated[float, Field(ge=0, allow_inf_nan=False)]
-
-
-class _Part(BaseModel):
-    model_config = ConfigDict(extra="forbid")
-
-
-class _Camera(_Part):
-    pixel_um: _Positive | None = None
-    mounting: Mounting = Mounting.STRAIGHT
-
-
-class _Optics(_Part):
-    focal_length_mm: _Positive | None = None
-
-
-class _Stage(_Part):
-    scale_rel_sd: _NotNegative = 0.0
-    lever_sd_mm: _NotNegative = 0.0
-
-
-class _Set(_Part):
-    target: Target = Target.CROSSHAIR
-    note: str = ""
-    lever_is: Literal["on_two_supports", "horizontal"] = "on_two_supports"
-    camera: _Camera = _Camera()
-    optics: _Optics = _Optics()
-    stage: _Stage = _Stage()
+__all__ = ["CalibrationSet", "KnownTilt", "read_calibration_set"]
 
 
 @dataclass(frozen=True, slots=True)
 class KnownTilt:
-    """One row: a frame's file name and what is known of the mirror then, NaN where nothing is."""
+    """One row: a frame's file name and what is known of the mirror then, NaN where nothing is.
+
+    ``across_sd_arcsec``: as in ``TiltSet``. ``turn_deg``: of a wedge, NaN without one. ``line``:
+    of the table.
+    """
 
     file: str
     x_arcsec: float
     y_arcsec: float
     sd_arcsec: float
+    across_sd_arcsec: float = 0.0
+    turn_deg: float = math.nan
+    line: int = 0
 
 
 @dataclass(frozen=True, slots=True)
 class CalibrationSet:
     """All that the folder says, angles in arc-seconds.
 
-    ``scale_rel_sd``: relative standard uncertainty common to all tilts, from the stage's scale or
-    the lever's length. ``nominal_focal_length_mm`` is for comparison only.
+    ``way``: how the tilts came about. ``scale_rel_sd``: relative standard uncertainty common to
+    all tilts, from the stage's scale; ``shared``: what else rows share. ``two_returns``: each
+    frame holds two returns and a row says how they differ, rear less front.
+    ``nominal_focal_length_mm`` is for comparison only. ``fixed``: frame with the mirror covered.
     """
 
     folder: Path
@@ -82,30 +73,56 @@ class CalibrationSet:
     nominal_focal_length_mm: float | None
     scale_rel_sd: float
     tilts: tuple[KnownTilt, ...]
+    way: str = "known tilts"
+    shared: tuple[SharedInput, ...] = ()
+    two_returns: bool = False
+    fixed: str | None = None
+    nudges: tuple[NudgePart, ...] = ()
+    foils: tuple[FoilPart, ...] = ()
+    axes: AxesPart | None = None
+
+    def planned(self) -> TiltSet:
+        """The tilts without positions; two rows a frame where each holds two returns."""
+        n = len(self.tilts)
+        tilts = TiltSet(
+            names=tuple(tilt.file for tilt in self.tilts),
+            position_px=np.full((n, 2), np.nan),
+            position_cov_px2=np.full((n, 3), np.nan),
+            tilt_arcsec=np.array([(t.x_arcsec, t.y_arcsec) for t in self.tilts]).reshape(n, 2),
+            sd_arcsec=np.array([t.sd_arcsec for t in self.tilts]),
+            across_sd_arcsec=np.array([t.across_sd_arcsec for t in self.tilts]),
+            shared=self.shared,
+        )
+        if self.scale_rel_sd > 0:
+            whole = SharedInput("scale of the stage", self.scale_rel_sd * tilts.known_arcsec)
+            tilts = replace(tilts, shared=(*tilts.shared, whole))
+        return _front_and_rear(tilts) if self.two_returns else tilts
+
+    def camera(self, width_px: int, height_px: int) -> Camera:
+        """What is known of the camera, given the pictures' size."""
+        return Camera(width_px, height_px, self.pitch_um, self.mounting)
 
 
-def read_calibration_set(folder: Path) -> CalibrationSet:
+def read_calibration_set(folder: Path, *, with_frames: bool = True) -> CalibrationSet:
     """Read ``tilts.csv`` and ``set.toml`` (which may be missing) of a folder.
 
-    Raises BadInput, one line naming file, row and remedy, for anything that cannot be used.
+    ``with_frames=False``: the frames need not be there yet. Raises BadInput, one line naming file,
+    row and remedy, for anything that cannot be used.
     """
     folder = Path(folder)
     if not folder.is_dir():
         raise BadInput(f"{folder} is no folder: name a folder with frames and a tilts.csv")
-    about = _read_toml(folder / "set.toml")
-    columns, rows = _read_table(folder / "tilts.csv")
-    scale_rel_sd = about.stage.scale_rel_sd
-    if columns == LEVER_COLUMNS:
-        tilts, shortest_mm = _lever_tilts(rows, horizontal=about.lever_is == "horizontal")
-        scale_rel_sd = math.hypot(scale_rel_sd, about.stage.lever_sd_mm / shortest_mm)
-    else:
-        tilts = [_tilt(row, where) for where, row in rows]
-    missing = [tilt.file for tilt in tilts if not (folder / tilt.file).is_file()]
-    if missing:
+    about = read_about(folder / "set.toml")
+    columns, rows = read_table(folder / "tilts.csv")
+    if (columns == TURN_COLUMNS) != (about.wedge is not None):
         raise BadInput(
-            f"{folder / 'tilts.csv'} names {missing[0]}, which is not in the folder"
-            + (f" ({len(missing)} such files)" if len(missing) > 1 else "")
+            f"{folder / 'tilts.csv'} has the columns {','.join(columns)} and set.toml has "
+            f"{'a' if about.wedge else 'no'} [wedge]: a wedge needs it and "
+            f"{','.join(TURN_COLUMNS)}, other ways neither"
         )
+    way, tilts, shared = _known(columns, rows, about)
+    if with_frames:
+        _refuse_missing(folder, tilts, about)
     return CalibrationSet(
         folder=folder,
         target=about.target,
@@ -113,132 +130,135 @@ def read_calibration_set(folder: Path) -> CalibrationSet:
         pitch_um=about.camera.pixel_um,
         mounting=about.camera.mounting,
         nominal_focal_length_mm=about.optics.focal_length_mm,
-        scale_rel_sd=scale_rel_sd,
+        scale_rel_sd=about.stage.scale_rel_sd,
         tilts=tuple(tilts),
+        way=way,
+        shared=shared,
+        two_returns=about.wedge is not None and about.wedge.used is WedgeIs.TWO_RETURNS,
+        fixed=None if about.fixed is None else about.fixed.file,
+        nudges=about.nudge,
+        foils=about.foil,
+        axes=about.axes,
     )
 
 
-def _read_toml(path: Path) -> _Set:
-    try:
-        document = tomllib.loads(path.read_text(encoding="utf-8"))
-    except FileNotFoundError:
-        return _Set()
-    except (OSError, ValueError) as error:
-        raise BadInput(f"cannot read {path} ({error}): mend it or take it away") from error
-    except RecursionError:
-        raise BadInput(f"cannot read {path} (nested without end): mend it") from None
-    if "graduation" in document:
-        raise BadInput(f"{path} is of a graduated reticle: give known tilts in a tilts.csv instead")
-    document.pop("fixed", None)  # a frame with the mirror covered: nothing here needs it yet
-    try:
-        return _Set.model_validate(document)
-    except ValidationError as error:
-        first = error.errors()[0]
-        where = ".".join(str(part) for part in first["loc"])
-        raise BadInput(f"{path}: {where}: {first['msg'].lower()}") from error
-
-
-def _read_table(path: Path) -> tuple[tuple[str, ...], list[tuple[str, dict[str, str]]]]:
-    """Columns, and the rows with a name for each that a person finds."""
-    try:
-        lines = path.read_text(encoding="utf-8-sig").splitlines()
-    except FileNotFoundError:
+def _refuse_missing(folder: Path, tilts: list[KnownTilt], about: SetAbout) -> None:
+    missing = [tilt.file for tilt in tilts if not (folder / tilt.file).is_file()]
+    if missing:
         raise BadInput(
-            f"{path} does not exist: a set needs one, {','.join(TILT_COLUMNS)}"
-        ) from None
-    except (OSError, ValueError) as error:
-        raise BadInput(f"cannot read {path} ({error})") from error
-    table = csv.DictReader(lines)
-    columns = tuple(name.strip() for name in table.fieldnames or ())
-    if columns not in (TILT_COLUMNS, LEVER_COLUMNS):
-        raise BadInput(
-            f"{path} has the columns {','.join(columns) or 'of none'}: "
-            f"give {','.join(TILT_COLUMNS)} or {','.join(LEVER_COLUMNS)}"
+            f"{folder / 'tilts.csv'} names {missing[0]}, which is not in the folder"
+            + (f" ({len(missing)} such files)" if len(missing) > 1 else "")
         )
-    table.fieldnames = list(columns)
-    rows = [
-        (f"{path}, line {table.line_num}", {k: (v or "").strip() for k, v in row.items() if k})
-        for row in table
-    ]
-    rows = [(where, row) for where, row in rows if any(row.values())]
-    if not rows:
-        raise BadInput(f"{path} holds no tilts: give one row a frame")
-    names = [row["file"] for _, row in rows]
-    for (where, _), name in zip(rows, names, strict=True):
-        if not name or Path(name).is_absolute() or ".." in Path(name).parts:
-            raise BadInput(f"{where}: {name or 'an empty name'} is no file of this folder")
-        if names.count(name) > 1:
-            raise BadInput(f"{where}: {name} is named twice: one row a frame")
-    return columns, rows
+    for name in about.other_files:
+        if not is_inside(name) or not (folder / name).is_file():
+            raise BadInput(f"{folder / 'set.toml'} names {name}, which is not in the folder")
 
 
-def _number(row: dict[str, str], column: str, where: str) -> float:
-    """A number, NaN for an empty cell."""
-    if not row[column]:
-        return math.nan
-    try:
-        value = float(row[column])
-    except ValueError:
-        raise BadInput(f"{where}: {column} is {row[column]!r}, not a number") from None
-    if not math.isfinite(value):
-        raise BadInput(f"{where}: {column} is {row[column]!r}: leave it empty if it is unknown")
-    return value
+def _known(
+    columns: tuple[str, ...], rows: list[TableRow], about: SetAbout
+) -> tuple[str, list[KnownTilt], tuple[SharedInput, ...]]:
+    """The way, what is known of each row, and what rows share."""
+    if columns == TILT_COLUMNS:
+        return "known tilts", [_tilt(row) for row in rows], ()
+    if columns == LEVER_COLUMNS:
+        return "lever", *_lever(rows, about)
+    assert about.wedge is not None  # the caller has seen to it
+    return _turned(rows, about.wedge)
 
 
-def _required(row: dict[str, str], column: str, where: str, *, least: float) -> float:
-    value = _number(row, column, where)
-    if math.isnan(value) or value < least:
-        raise BadInput(
-            f"{where}: {column} must be {least:g} or more, it is {row[column] or 'empty'}"
-        )
-    return value
-
-
-def _tilt(row: dict[str, str], where: str) -> KnownTilt:
+def _tilt(row: TableRow) -> KnownTilt:
     tilt = KnownTilt(
-        row["file"],
-        _number(row, "x_arcsec", where),
-        _number(row, "y_arcsec", where),
-        _required(row, "sd_arcsec", where, least=0.0),
+        row.file,
+        row.number("x_arcsec"),
+        row.number("y_arcsec"),
+        row.required("sd_arcsec", least=0.0),
+        line=row.line,
     )
     if math.isnan(tilt.x_arcsec) and math.isnan(tilt.y_arcsec):
-        raise BadInput(f"{where}: neither x_arcsec nor y_arcsec is given")
+        raise BadInput(f"{row.where}: neither x_arcsec nor y_arcsec is given")
     return tilt
 
 
-def _lever_tilts(
-    rows: list[tuple[str, dict[str, str]]], *, horizontal: bool
-) -> tuple[list[KnownTilt], float]:
-    """Tilts of a lever raised by known heights, and its shortest length, mm.
+def _lever(
+    rows: list[TableRow], about: SetAbout
+) -> tuple[list[KnownTilt], tuple[SharedInput, ...]]:
+    made = lever_tilts(
+        [_lever_row(row) for row in rows],
+        lever_is=about.lever_is,
+        lever_sd_mm=about.stage.lever_sd_mm,
+        seating_sd_mm=about.stage.seating_sd_mm,
+    )
+    return [
+        KnownTilt(row.file, float(x), float(y), float(sd), line=row.line)
+        for row, (x, y), sd in zip(rows, made.tilt_arcsec, made.sd_arcsec, strict=True)
+    ], made.shared
 
-    That one has the largest relative uncertainty, which then stands for all.
-    """
-    lengths = [_required(row, "lever_mm", where, least=1e-3) for where, row in rows]
-    return list(_raised(rows, lengths, horizontal=horizontal)), min(lengths)
+
+def _lever_row(row: TableRow) -> LeverRow:
+    height_mm = row.number("height_mm")
+    if math.isnan(height_mm):
+        raise BadInput(f"{row.where}: height_mm is empty: give 0 for nothing under the lever")
+    if row.cells["axis"] not in ("x", "y"):
+        raise BadInput(f"{row.where}: axis is {row.cells['axis'] or 'empty'}, give x or y")
+    return LeverRow(
+        row.where,
+        row.required("lever_mm", least=1e-3),
+        height_mm,
+        row.required("height_sd_mm", least=0.0),
+        "xy".index(row.cells["axis"]),
+    )
 
 
-def _raised(
-    rows: list[tuple[str, dict[str, str]]], lengths: list[float], *, horizontal: bool
-) -> Iterator[KnownTilt]:
-    for (where, row), lever in zip(rows, lengths, strict=True):
-        height = _number(row, "height_mm", where)
-        height_sd = _required(row, "height_sd_mm", where, least=0.0)
-        if math.isnan(height):
-            raise BadInput(f"{where}: height_mm is empty")
-        if not horizontal and abs(height) >= lever:
-            raise BadInput(
-                f"{where}: a lever of {lever:g} mm cannot be raised by {height:g} mm: "
-                "check which is which"
-            )
-        if row["axis"] not in ("x", "y"):
-            raise BadInput(f"{where}: axis is {row['axis'] or 'empty'}, give x or y")
-        ratio = height / lever
-        angle = math.atan(ratio) if horizontal else math.asin(ratio)
-        by_ratio = 1 / (1 + ratio**2) if horizontal else 1 / math.sqrt(1 - ratio**2)
-        arcsec = angle * ARCSEC_PER_RAD
-        yield KnownTilt(
-            row["file"],
-            arcsec if row["axis"] == "x" else math.nan,
-            arcsec if row["axis"] == "y" else math.nan,
-            height_sd / lever * by_ratio * ARCSEC_PER_RAD,
+def _turned(
+    rows: list[TableRow], part: WedgePart
+) -> tuple[str, list[KnownTilt], tuple[SharedInput, ...]]:
+    turn_deg = np.array([row.number("turn_deg") for row in rows])
+    turn_sd_deg = np.array([row.required("turn_sd_deg", least=0.0) for row in rows])
+    if part.used is WedgeIs.TWO_RETURNS and np.isnan(turn_deg).any():
+        row = rows[int(np.isnan(turn_deg).argmax())]
+        raise BadInput(f"{row.where}: turn_deg is empty: without the window there is one return")
+    made = wedge_tilts(_wedge(part), turn_deg, turn_sd_deg, mark_sd_deg=part.mark_sd_deg)
+    tilts = [
+        KnownTilt(row.file, float(x), float(y), 0.0, float(across), float(turn), row.line)
+        for row, (x, y), across, turn in zip(
+            rows, made.tilt_arcsec, made.across_sd_arcsec, turn_deg, strict=True
         )
+    ]
+    way = {
+        WedgeIs.IN_TRANSMISSION: "wedge in transmission",
+        WedgeIs.TWO_RETURNS: "two returns of a window",
+    }
+    return way[part.used], tilts, made.shared
+
+
+def _wedge(part: WedgePart) -> Wedge:
+    if part.reading_arcsec is not None:
+        return Wedge(part.reading_arcsec, part.reading_sd_arcsec)
+    assert part.angle_arcsec is not None  # one of the two, as the model has checked
+    assert part.index is not None
+    return wedge_of_glass(
+        part.used,
+        angle_arcsec=part.angle_arcsec,
+        angle_sd_arcsec=part.angle_sd_arcsec,
+        index=part.index,
+        index_sd=part.index_sd,
+    )
+
+
+def _front_and_rear(tilts: TiltSet) -> TiltSet:
+    """Two rows a frame with a zero of their own: the front face at 0, the rear one beside it."""
+    assert tilts.across_sd_arcsec is not None  # ``planned`` gives it
+
+    def paired(rear: F64) -> F64:
+        return np.stack([np.zeros_like(rear), rear], axis=1).reshape(-1, *rear.shape[1:])
+
+    return TiltSet(
+        names=tuple(f"{name} ({face})" for name in tilts.names for face in ("front", "rear")),
+        position_px=np.repeat(tilts.position_px, 2, axis=0),
+        position_cov_px2=np.repeat(tilts.position_cov_px2, 2, axis=0),
+        tilt_arcsec=paired(tilts.tilt_arcsec),
+        sd_arcsec=paired(tilts.sd_arcsec),
+        across_sd_arcsec=paired(tilts.across_sd_arcsec),
+        shared=tuple(SharedInput(s.name, paired(s.tilt_arcsec)) for s in tilts.shared),
+        zero_of=np.repeat(np.arange(len(tilts.names)), 2),
+    )

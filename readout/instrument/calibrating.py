@@ -1,81 +1,218 @@
-"""From a calibration set to a calibration: each frame sighted, the tilts fitted."""
+"""From a calibration set to a calibration: each frame sighted, the tilts fitted, signs and axes."""
 
 from __future__ import annotations
 
 import hashlib
+import math
 from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
 
-from readout.angle import Calibration, Camera, TiltSet, calibrate_known_tilts
+from readout.angle import Calibration, calibrate_known_tilts
+from readout.angle.axes import turn_of_move, turned_to
+from readout.angle.signs import Change, Foil, SignVerdict, judge_foil, judge_nudge, with_signs
+from readout.angle.two_returns import front_first
 from readout.errors import BadInput
 from readout.files.calibration_set import CalibrationSet, KnownTilt
 from readout.files.pictures import read_picture
-from readout.model import Sighting
+from readout.model import F64, Quality, Sighting
 from readout.sighting import locate
+from readout.sighting.prepare import Preparation
 
-LEAST_SD_ARCSEC = 1e-4
-"""a tilt given as exact is weighted as if known to this"""
+Place = tuple[float, float, tuple[float, float, float]]
+"""x and y, px, and their covariance (xx, xy, yy)"""
 
 
 def calibrate_set(
     given: CalibrationSet, *, created_utc: str, on_frame: Callable[[int], None] | None = None
 ) -> Calibration:
-    """Sight every frame of the set and fit the calibration.
+    """Sight every frame of the set, fit the calibration, show its signs and turn its axes.
 
     Frames that show no target, or only a doubtful one, are left out and named in the warnings.
     Raises BadInput where no calibration comes of it.
     """
-    sizes: dict[tuple[int, int], str] = {}
-    rows: list[tuple[KnownTilt, Sighting]] = []
+    frames = _Frames(given)
+    seen: list[tuple[int, list[Place]]] = []
     left_out = []
-    digest = hashlib.sha256()
-    for done, tilt in enumerate(given.tilts, start=1):
-        path = given.folder / tilt.file
-        pixels, full_scale = read_picture(path)
-        digest.update(path.read_bytes())
-        sizes.setdefault((pixels.shape[1], pixels.shape[0]), tilt.file)
-        sighting = locate(pixels, full_scale=full_scale, target=given.target)
-        if sighting.found and not sighting.quality:
-            rows.append((tilt, sighting))
+    for row, tilt in enumerate(given.tilts):
+        sighting = frames.sighted(tilt.file)
+        places = _places(sighting, two=given.two_returns)
+        if places:
+            seen.append((row, places))
         else:
-            words = " ".join(sighting.quality.words()).replace("_", " ")
-            left_out.append(f"{tilt.file} was left out: {words}")
+            left_out.append(_left_out(tilt, sighting, two=given.two_returns))
         if on_frame is not None:
-            on_frame(done)
-    (width_px, height_px), *others = sizes
-    if others:
-        names = list(sizes.values())
+            on_frame(row + 1)
+    width_px, height_px = frames.size
+    if not seen:
+        first = given.tilts[0]
         raise BadInput(
-            f"{given.folder / names[0]} and {names[1]} are of different size: "
-            "take all frames of a set with one"
+            f"no frame in {given.folder} shows a {given.target.value}: look at {first.file} "
+            f"(line {first.line} of tilts.csv) and the others"
         )
-    if not rows:
-        raise BadInput(f"no frame in {given.folder} shows a {given.target.value}: look at them")
-    digest.update(repr((given.tilts, given.scale_rel_sd, given.pitch_um)).encode())
-    calibration = calibrate_known_tilts(
-        TiltSet(
-            names=tuple(tilt.file for tilt, _ in rows),
-            position_px=np.array([(s.x_px, s.y_px) for _, s in rows]),
-            position_cov_px2=np.array([s.cov_px2 for _, s in rows]),
-            tilt_arcsec=np.array([(t.x_arcsec, t.y_arcsec) for t, _ in rows]),
-            sd_arcsec=np.array([max(t.sd_arcsec, LEAST_SD_ARCSEC) for t, _ in rows]),
-        ),
-        Camera(width_px, height_px, given.pitch_um, given.mounting),
-        scale_rel_sd=given.scale_rel_sd,
-        created_utc=created_utc,
-        calibration_id=f"tilts-{digest.hexdigest()[:10]}",
+    if given.two_returns:
+        _order_faces(given, seen)
+    per_row = 2 if given.two_returns else 1
+    tilts = given.planned().seen(
+        [row * per_row + k for row, places in seen for k in range(len(places))],
+        np.array([place[:2] for _, places in seen for place in places]),
+        np.array([place[2] for _, places in seen for place in places]),
     )
-    return replace(
-        calibration,
+    frames.digest.update(
+        repr((given.tilts, given.scale_rel_sd, given.pitch_um, given.way)).encode()
+    )
+    try:
+        made = calibrate_known_tilts(
+            tilts,
+            given.camera(width_px, height_px),
+            created_utc=created_utc,
+            calibration_id=f"tilts-{frames.digest.hexdigest()[:10]}",
+            way=given.way,
+        )
+    except BadInput as error:
+        if left_out:
+            raise BadInput(f"{error}; {left_out[0]}") from error
+        raise
+    made = replace(
+        made,
         target=given.target,
-        warnings=(*calibration.warnings, *left_out),
+        warnings=(*made.warnings, *left_out),
         made_from={
             "set": Path(given.folder).name,
             "note": given.note,
             "scale_rel_sd": given.scale_rel_sd,
+            "shared": [item.name for item in tilts.shared],
             "frames": len(given.tilts),
         },
     )
+    return _with_axes(given, frames, _with_signs(given, frames, made, created_utc))
+
+
+class _Frames:
+    """The frames of a set: each read and sighted as it is asked for, all of one size."""
+
+    def __init__(self, given: CalibrationSet) -> None:
+        self._given = given
+        self._sizes: dict[tuple[int, int], str] = {}
+        self._known: dict[str, Sighting] = {}
+        self.digest = hashlib.sha256()
+        self._preparation = Preparation()
+        if given.fixed is not None:
+            fixed, _ = read_picture(given.folder / given.fixed)
+            self._preparation = Preparation().with_fixed([fixed])
+
+    @property
+    def size(self) -> tuple[int, int]:
+        """Width and height, px."""
+        (size, _), *_ = self._sizes.items()
+        return size
+
+    def sighted(self, file: str) -> Sighting:
+        """Raises BadInput for a frame that cannot be read, or is of another size."""
+        if file in self._known:
+            return self._known[file]
+        path = self._given.folder / file
+        pixels, full_scale = read_picture(path)
+        self.digest.update(path.read_bytes())
+        self._sizes.setdefault((pixels.shape[1], pixels.shape[0]), file)
+        if len(self._sizes) > 1:
+            first, other = self._sizes.values()
+            raise BadInput(
+                f"{self._given.folder / first} and {other} are of different size: "
+                "take all frames of a set with one"
+            )
+        self._known[file] = locate(
+            pixels,
+            full_scale=full_scale,
+            target=self._given.target,
+            preparation=self._preparation,
+        )
+        return self._known[file]
+
+    def good(self, file: str) -> Sighting:
+        """As ``sighted``. Raises BadInput unless the target is there without a doubt."""
+        sighting = self.sighted(file)
+        if not sighting.found or sighting.quality:
+            raise BadInput(
+                f"{self._given.folder / file} shows no clear {self._given.target.value} "
+                f"({_words(sighting)}): take this frame again"
+            )
+        return sighting
+
+
+def _places(sighting: Sighting, *, two: bool) -> list[Place]:
+    """The return, or both; empty where they are not there without a doubt."""
+    main = (sighting.x_px, sighting.y_px, sighting.cov_px2)
+    if not two:
+        return [main] if sighting.found and not sighting.quality else []
+    others = [(o.x_px, o.y_px, o.cov_px2) for o in sighting.others if not o.lone]
+    doubts = sighting.quality & ~Quality.SEVERAL_RETURNS
+    return [main, others[0]] if sighting.found and others and not doubts else []
+
+
+def _left_out(tilt: KnownTilt, sighting: Sighting, *, two: bool) -> str:
+    seen = "there is one return only" if two and sighting.found else _words(sighting)
+    return (
+        f"{tilt.file} (line {tilt.line} of tilts.csv) was left out: {seen}; take it again, or "
+        "take its row out"
+    )
+
+
+def _words(sighting: Sighting) -> str:
+    return " ".join(sighting.quality.words()).replace("_", " ") or "no image"
+
+
+def _order_faces(given: CalibrationSet, seen: list[tuple[int, list[Place]]]) -> None:
+    """Put the front face's return first in each frame."""
+    main, other = (np.array([places[k][:2] for _, places in seen]) for k in (0, 1))
+    turns_deg = np.array([given.tilts[row].turn_deg for row, _ in seen])
+    for (_, places), kept in zip(seen, front_first(main, other, turns_deg), strict=True):
+        if not kept:
+            places.reverse()
+
+
+def _with_signs(
+    given: CalibrationSet, frames: _Frames, made: Calibration, created_utc: str
+) -> Calibration:
+    """What the nudges and foils of the set show."""
+    verdicts: list[SignVerdict] = []
+    done_utc = created_utc
+    for nudge in given.nudges:
+        verdicts.append(judge_nudge(nudge.edge, _change(frames, made, nudge.before, nudge.after)))
+        done_utc = nudge.done_utc or done_utc
+    for part in given.foils:
+        foil = Foil(part.thickness_mm, part.base_mm, part.thickness_sd_mm, part.base_sd_mm)
+        verdicts.append(judge_foil(foil, _change(frames, made, part.before, part.after)))
+        done_utc = part.done_utc or done_utc
+    return with_signs(made, verdicts, done_utc=done_utc)
+
+
+def _with_axes(given: CalibrationSet, frames: _Frames, made: Calibration) -> Calibration:
+    """The axes of the machine, if the set holds a move about one of them."""
+    if given.axes is None:
+        return made
+    tilts, covs = zip(*(_tilt(frames, made, file) for file in given.axes.files), strict=True)
+    turn = turn_of_move(np.array(tilts), np.array(covs), axis=given.axes.single_axis)
+    told = (
+        f"axes turned by {-turn.turn_deg:.3f}° ± {turn.turn_sd_deg:.3f}° to the machine's "
+        f"{given.axes.single_axis.upper()} move: {turn.leak_arcsec_per_100:.2f}″ of each 100″ "
+        "had leaked into the other axis"
+    )
+    made = turned_to(made, turn)
+    return replace(made, warnings=(*made.warnings, told))
+
+
+def _change(frames: _Frames, made: Calibration, before: str, after: str) -> Change:
+    (first, first_cov), (second, second_cov) = (_tilt(frames, made, f) for f in (before, after))
+    step, cov = second - first, first_cov + second_cov
+    return Change(
+        float(step[0]), float(step[1]), math.sqrt(float(cov[0, 0])), math.sqrt(float(cov[1, 1]))
+    )
+
+
+def _tilt(frames: _Frames, made: Calibration, file: str) -> tuple[F64, F64]:
+    sighting = frames.good(file)
+    tilt = np.array([float(v) for v in made.tilt(sighting.x_px, sighting.y_px)])
+    return tilt, made.noise_cov(sighting.x_px, sighting.y_px, sighting.cov_px2)

@@ -49,16 +49,20 @@ def test_what_set_toml_says(tmp_path):
 
 def test_a_lever_raised_by_gauge_blocks(tmp_path):
     """Sine of the angle = height / lever (the sine bar of the workshop); 1 mm on 500 mm and its
-    uncertainty of 1 um: 412.5303" +- 0.4125", by hand from arcsin 0.002."""
+    uncertainty of 1 um: 412.5303" +- 0.4125", by hand from arcsin 0.002. The block lies under
+    either end in turn, so its error is one, and opposite."""
     rows = LEVER + "a.png,500,1,0.001,y\nb.png,500,-1,0.001,y\n"
     found = read_calibration_set(write(tmp_path, rows, "[stage]\nlever_sd_mm = 0.5\n"))
     up, down = found.tilts
     assert up.y_arcsec == pytest.approx(math.degrees(math.asin(0.002)) * 3600)
     assert up.y_arcsec == pytest.approx(412.5299, abs=5e-4)
     assert down.y_arcsec == -up.y_arcsec
-    assert up.sd_arcsec == pytest.approx(0.41253, abs=1e-5)
+    assert up.sd_arcsec == down.sd_arcsec == 0.0
     assert math.isnan(up.x_arcsec)
-    assert found.scale_rel_sd == pytest.approx(1e-3)
+    length, block = found.shared
+    assert length.tilt_arcsec[:, 1] == pytest.approx([-0.41253, 0.41253], abs=1e-5)
+    assert block.tilt_arcsec[:, 1] == pytest.approx([0.41253, -0.41253], abs=1e-5)
+    assert not length.tilt_arcsec[:, 0].any()
 
 
 def test_a_horizontal_lever_is_a_tangent(tmp_path):
@@ -135,7 +139,76 @@ def test_the_uncertainty_of_a_steep_lever_by_differences(tmp_path, about):
     assert high.sd_arcsec == pytest.approx(slope * sd_mm / 10 * 206264.806, rel=1e-4)
 
 
-def test_of_levers_of_several_lengths_the_shortest_is_the_least_certain(tmp_path):
-    rows = LEVER + "a.png,500,1,0.001,x\nb.png,250,1,0.001,x\n"
+def test_levers_of_several_lengths_share_one_error_in_millimetres(tmp_path):
+    rows = LEVER + "a.png,500,1,0.001,x\nb.png,250,1,0.002,x\n"
     found = read_calibration_set(write(tmp_path, rows, "[stage]\nlever_sd_mm = 0.5\n"))
-    assert found.scale_rel_sd == pytest.approx(0.5 / 250)
+    (length,) = found.shared  # blocks of unlike uncertainty are two blocks
+    for tilt, change, share in zip(
+        found.tilts, length.tilt_arcsec[:, 0], (0.5 / 500, 0.5 / 250), strict=True
+    ):
+        assert change == pytest.approx(-share * tilt.x_arcsec, rel=1e-4)
+
+
+TURNS = "file,turn_deg,turn_sd_deg\na.png,,0\nb.png,90,0.5\n"
+
+
+def test_a_wedge_in_transmission(tmp_path):
+    """0.2 deg of glass of 1.5168 read 372.1" (ray trace of the design); up is towards the thick
+    edge, so that the reading goes down."""
+    about = """
+    [wedge]
+    used = "in_transmission"
+    angle_arcsec = 720
+    angle_sd_arcsec = 0.5
+    index = 1.5168
+    index_sd = 0.0002
+    mark_sd_deg = 1
+    """
+    found = read_calibration_set(write(tmp_path, TURNS, about))
+    out, up = found.tilts
+    assert (out.x_arcsec, out.y_arcsec, out.across_sd_arcsec) == (0.0, 0.0, 0.0)
+    assert (up.x_arcsec, up.y_arcsec) == pytest.approx((0.0, -372.1), abs=0.05)
+    assert up.across_sd_arcsec == pytest.approx(372.1 * math.radians(0.5), rel=1e-3)
+    worth, mark = found.shared
+    # (n - 1) u(a) and a u(n), small angles
+    assert -worth.tilt_arcsec[1, 1] == pytest.approx(math.hypot(0.5168 * 0.5, 720 * 2e-4), rel=1e-3)
+    assert mark.tilt_arcsec[1] == pytest.approx([372.1 * math.radians(1), 0], rel=1e-3)
+    assert found.way == "wedge in transmission"
+
+
+def test_two_returns_of_a_window_make_two_rows(tmp_path):
+    about = '[wedge]\nused = "two_returns"\nreading_arcsec = 120\nreading_sd_arcsec = 0.1\n'
+    rows = "file,turn_deg,turn_sd_deg\na.png,0,1\nb.png,180,1\n"
+    planned = read_calibration_set(write(tmp_path, rows, about)).planned()
+    assert planned.names == ("a.png (front)", "a.png (rear)", "b.png (front)", "b.png (rear)")
+    assert planned.tilt_arcsec[:, 0] == pytest.approx([0, -120, 0, 120])
+    assert planned.zeros.tolist() == [0, 0, 1, 1]
+    (worth,) = planned.shared
+    assert worth.tilt_arcsec[:, 0] == pytest.approx([0, -0.1, 0, 0.1])
+
+
+@pytest.mark.parametrize(
+    ("tilts", "about", "words"),
+    [
+        (TURNS, "", "no .wedge."),
+        (TILTS, '[wedge]\nused = "two_returns"\nreading_arcsec = 1\n', "other ways neither"),
+        (TURNS, '[wedge]\nused = "two_returns"\nreading_arcsec = 1\n', "line 2: turn_deg is empty"),
+        (TURNS, '[wedge]\nused = "two_returns"\n', "give either reading_arcsec, or"),
+        (TURNS, '[wedge]\nused = "in_transmission"\nangle_arcsec = 9\nindex = 0.5\n', "index of"),
+        (TILTS, '[[nudge]]\nedge = "left"\nbefore = "a.png"\nafter = "b.png"\n', "nudge.0.edge"),
+        (TILTS, '[[nudge]]\nedge = "top"\nbefore = "a.png"\nafter = "c.png"\n', "names c.png"),
+        (TILTS, '[axes]\nsingle_axis = "y"\nfiles = ["a.png"]\n', "axes.files"),
+        (TILTS, '[fixed]\nfile = "dark.png"\n', "names dark.png"),
+    ],
+)
+def test_what_wedges_signs_and_axes_may_not_say(tmp_path, tilts, about, words):
+    with pytest.raises(BadInput, match=words) as refusal:
+        read_calibration_set(write(tmp_path, tilts, about))
+    assert "\n" not in str(refusal.value)
+
+
+def test_a_plan_needs_no_frames(tmp_path):
+    (tmp_path / "tilts.csv").write_text(LEVER + "a.png,100,0,0.001,x\nb.png,100,1,0.001,x\n")
+    assert len(read_calibration_set(tmp_path, with_frames=False).tilts) == 2
+    with pytest.raises(BadInput, match=r"names a\.png, which is not in the folder"):
+        read_calibration_set(tmp_path)
