@@ -1,0 +1,204 @@
+"""Where in a picture a graduated scale lies: direction, rough places and lengths of its marks."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from readout.model import F64, Pixels
+from readout.sighting.graduation_chain import Chain, best_chain
+from readout.sighting.graduation_directions import directions_rad, folded
+from readout.sighting.graduation_view import F32, View, response, row_peaks, turned_view
+from readout.sighting.rough import RoughArm, RoughArms
+
+SIZES_PX = (1.0, 1.7, 2.8, 4.5)
+LEAST_STEP_SIZES = 3.5
+"""marks closer than this many of their sizes run into each other"""
+MOST_ROWS = 8
+TURNS = 4
+RESTS_ROWS = 0.7
+"""a scale whose ends lie this far off the row of its middle is turned anew"""
+ALONG_RAD = math.radians(8.0)
+"""an arm so near to the scale's own direction does not hide its marks from the search"""
+PARALLEL_RAD = math.radians(1.5)
+ARM_WIDTHS, ARM_PX = 1.3, 3.0
+"""an arm is hidden this many of its widths, and so many pixels more, either side"""
+SAME_RAD = math.radians(2.5)
+"""a direction so near to that of a scale found needs no search of its own"""
+SQUARE_RAD = math.radians(4.0)
+LONG_SHARE = 0.5
+"""of its greatest height, above which a mark is said to be there"""
+
+
+@dataclass(frozen=True, slots=True)
+class RoughScale:
+    """A scale about where it lies.
+
+    ``turn_rad``: direction along it. ``column, row`` (n,): the marks in its view; ``first_row,
+    last_row`` (n,): how far each reaches. ``numbers`` (n,). ``polarity``: -1 for dark marks.
+    """
+
+    view: View
+    column: F64
+    row: F64
+    first_row: F64
+    last_row: F64
+    numbers: NDArray[np.intp]
+    polarity: int
+    size_px: float
+    merit: float
+
+    @property
+    def step_px(self) -> float:
+        return float(np.median(np.diff(self.column) / np.diff(self.numbers)))
+
+
+def seen_beside(
+    arms: RoughArms, shape: tuple[int, int], scale_rad: float, *, along_rad: float = ALONG_RAD
+) -> NDArray[np.bool_]:
+    """True where no arm lies; (height, width).
+
+    Arms within ``along_rad`` of a scale's direction are left in view: they go along with it. So
+    are three and more that are parallel: a return has one arm a direction, they are long marks.
+    """
+    seen = np.ones(shape, dtype=np.bool_)
+    rows, columns = np.arange(float(shape[0]))[:, None], np.arange(float(shape[1]))[None, :]
+    for arm in _single(arms.uprights):
+        if _apart_rad(math.pi / 2 - math.atan(arm.line.slope), scale_rad) > along_rad:
+            seen &= np.abs(columns - arm.line.x_at(rows)) > _half(arm)
+    for arm in _single(arms.levels):
+        if _apart_rad(math.atan(arm.line.slope), scale_rad) > along_rad:
+            seen &= np.abs(rows - arm.line.x_at(columns)) > _half(arm)
+    return seen
+
+
+def _single(arms: tuple[RoughArm, ...]) -> list[RoughArm]:
+    turns = [math.atan(arm.line.slope) for arm in arms]
+    return [
+        arm
+        for arm, turn in zip(arms, turns, strict=True)
+        if sum(abs(turn - other) < PARALLEL_RAD for other in turns) < 3
+    ]
+
+
+def _apart_rad(one: float, other: float) -> float:
+    """Angle between two lines, 0 to a quarter turn."""
+    return abs((one - other + math.pi / 2) % math.pi - math.pi / 2)
+
+
+def _half(arm: RoughArm) -> float:
+    return (ARM_WIDTHS * arm.width_px + ARM_PX) / arm.line.cosine
+
+
+def search_scale(pixels: Pixels, arms: RoughArms, turn_rad: float) -> RoughScale | None:
+    """The best scale that lies about along a direction, followed until its direction rests."""
+    best: RoughScale | None = None
+    for _ in range(TURNS):
+        seen = seen_beside(arms, pixels.shape, turn_rad)
+        found = _in_view(turned_view(pixels, seen, turn_rad))
+        if found is None or (best is not None and found.merit < best.merit):
+            break
+        best = found
+        slope, span = _lean(found)
+        if abs(slope) * span / 2 < RESTS_ROWS:
+            break
+        turn_rad += math.atan(slope)
+    return best
+
+
+def _lean(scale: RoughScale) -> tuple[float, float]:
+    """Rows a column by which the marks' middles go, and the length of the scale in columns."""
+    middle = (scale.first_row + scale.last_row) / 2
+    apart = scale.column[:, None] - scale.column[None, :]
+    far = apart > 0.3 * np.ptp(scale.column)
+    rises = (middle[:, None] - middle[None, :])[far] / apart[far]
+    return float(np.median(rises)), float(np.ptp(scale.column))
+
+
+def _in_view(view: View) -> RoughScale | None:
+    """The chain of most marks; of those alike in this, at size and polarity of the highest."""
+    best: tuple[float, F32, float, int, NDArray[np.intp], int, Chain] | None = None
+    for size in SIZES_PX:
+        if min(view.levels.shape) < 10 * size:
+            continue
+        of_dark = response(view, size)
+        for polarity in (-1, 1):
+            heights = of_dark if polarity < 0 else -of_dark
+            for row, peaks in _richest(heights, size):
+                chain = best_chain(peaks.tolist(), least_step=LEAST_STEP_SIZES * size)
+                if chain is None:
+                    continue
+                height = float(np.median(heights[row, peaks[chain.members]]))
+                merit = chain.score * math.sqrt(height)
+                if best is None or merit > best[0]:
+                    best = (merit, heights, size, row, peaks, polarity, chain)
+    return None if best is None else _measured(view, *best)
+
+
+def _richest(heights: F32, size: float) -> list[tuple[int, NDArray[np.intp]]]:
+    """Rows with the most peaks, no more than there is time for."""
+    step = max(2, round(2 * size))
+    rows = [(row, row_peaks(heights[row], size)) for row in range(0, len(heights), step)]
+    rows.sort(key=lambda of: -len(of[1]))
+    return [of for of in rows[:MOST_ROWS] if len(of[1]) >= 5]
+
+
+def _measured(
+    view: View,
+    merit: float,
+    heights: F32,
+    size: float,
+    row: int,
+    peaks: NDArray[np.intp],
+    polarity: int,
+    chain: Chain,
+) -> RoughScale:
+    columns = peaks[chain.members]
+    last = heights.shape[1] - 1
+    near = np.max([heights[:, np.clip(columns + k, 0, last)] for k in (-1, 0, 1)], axis=0)
+    limits = np.array([_reach(near[:, k], row) for k in range(len(columns))], dtype=np.float64)
+    return RoughScale(
+        view,
+        columns.astype(np.float64),
+        np.full(len(columns), float(row)),
+        limits[:, 0],
+        limits[:, 1],
+        np.array(chain.numbers),
+        polarity,
+        size,
+        merit,
+    )
+
+
+def _reach(height: F32, row: int) -> tuple[int, int]:
+    """First and last row about ``row`` in which a mark is there."""
+    there = height > LONG_SHARE * height[row]
+    above = np.flatnonzero(~there[:row])
+    below = np.flatnonzero(~there[row:])
+    first = int(above[-1]) + 1 if above.size else 0
+    return first, row + int(below[0]) - 1 if below.size else len(height) - 1
+
+
+def search_scales(pixels: Pixels, arms: RoughArms) -> list[RoughScale]:
+    """The scale that stands out most, and another square to it if there is one."""
+    both = seen_beside(arms, pixels.shape, 0.0) & seen_beside(arms, pixels.shape, math.pi / 2)
+    found: list[RoughScale] = []
+    for direction in directions_rad(pixels, arms, both):
+        for turn in (direction, direction + math.pi / 2):
+            if any(abs(turn - scale.view.turn_rad) < SAME_RAD for scale in found):
+                continue
+            scale = search_scale(pixels, arms, turn)
+            if scale is not None:
+                found.append(scale)
+    if not found:
+        return []
+    first = max(found, key=lambda scale: scale.merit)
+    square = [scale for scale in found if _square(scale.view.turn_rad - first.view.turn_rad)]
+    return [first, *sorted(square, key=lambda scale: -scale.merit)[:1]]
+
+
+def _square(between_rad: float) -> bool:
+    return abs(folded(between_rad)) < SQUARE_RAD and abs(math.sin(between_rad)) > 0.5
