@@ -16,6 +16,7 @@ from readout.cli.options import (
     TargetOption,
     data_folder,
 )
+from readout.cli.preparing import PreparationOption, preparing_from
 from readout.cli.say import print_line, warn
 
 EXAMPLE = (
@@ -34,6 +35,7 @@ def live(
     ] = None,
     target: TargetOption = None,
     calibration: CalibrationOption = None,
+    prepared: PreparationOption = None,
     port: Annotated[int, typer.Option(min=0, max=65535, help="0: any free port.")] = 8470,
     data: DataOption = None,
     settings: SettingsOption = None,
@@ -58,7 +60,12 @@ def live(
             data=data_folder(data),
             settings=settings or default_settings_path(),
         )
-        options = Options(source, target, load_calibration(calibration) if calibration else None)
+        options = Options(
+            source,
+            target,
+            load_calibration(calibration) if calibration else None,
+            preparing_from(prepared, None, None, None),
+        )
         run_live(options, place, ending, browser=browser, say=print_line, warn=warn)
 
 

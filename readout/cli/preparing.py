@@ -37,7 +37,9 @@ GammaOption = Annotated[
 PreparationOption = Annotated[
     Path | None,
     typer.Option(
-        "--prepared", metavar="FILE", help="All of these in one file, from `readout prepare`."
+        "--prepared",
+        metavar="FILE",
+        help="What is known of the camera, in a file from `readout prepare`.",
     ),
 ]
 

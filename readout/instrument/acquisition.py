@@ -120,6 +120,12 @@ class Acquisition:
             return None
         return replace(picture, frame=replace(picture.frame, seq=picture.frame.seq + offset))
 
+    def prepare_anew(self) -> None:
+        """What is known of the camera has changed; an observer not yet open will see by itself."""
+        observer = self._observer
+        if observer is not None:
+            observer.prepare_anew()
+
     def run(self) -> None:
         """The loop itself; returns when the source has ended or failed, or on ``stop``."""
         while not self._stop.is_set():

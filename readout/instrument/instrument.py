@@ -141,6 +141,12 @@ class Instrument:
         acquisition = self._acquisition
         return acquisition.picture(timeout_s) if acquisition is not None else None
 
+    def prepare_anew(self) -> None:
+        """What is known of the camera has changed: use it from the next frame on."""
+        acquisition = self._acquisition
+        if acquisition is not None:
+            acquisition.prepare_anew()
+
     # -- what it shows ------------------------------------------------------------------------
 
     @property
@@ -210,6 +216,7 @@ class Instrument:
                 calibration=self._calibration,
                 zero=self.zero,
                 zero_wanted=self._zero_wanted,
+                prepared_utc=None if self._newest is None else self._newest[0].prepared,
             )
 
     def average(self) -> Average | None:
@@ -322,7 +329,10 @@ class Instrument:
 
     def _take(self, observation: Observation, observer: Observer) -> None:
         size_px = observation.width_px, observation.height_px
+        zero_lost = False
         with self._lock:
+            if self._newest is not None and observation.prepared != self._newest[0].prepared:
+                zero_lost = self._forget_readings()  # the place of the same return is another now
             if not self._size_known:  # newly opened: perhaps in another mode
                 self._size_px, self._size_known, self._scale_chosen = size_px, True, False
             elif self._size_px != size_px:
@@ -345,6 +355,7 @@ class Instrument:
             self._came_ns = self._clock_ns()
             self._frames += 1
             self._unusable += not observation.sighting.found
+        self._tell_lost(zero_lost, "the fixed frame is another now")
         for listener in self.on_reading:
             listener(reading)
 

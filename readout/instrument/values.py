@@ -23,6 +23,8 @@ class Event:
 class Status:
     """The instrument at one instant. ``frames`` counts all measured, ``missed`` those a source
     knows it did not deliver. ``zero_wanted``: what has changed so that a new zero is due, else "".
+    ``prepared_utc``: when the fixed frame, or what else is known of the camera, was made that the
+    newest frame was prepared with; None for a frame as it came.
     """
 
     source: str | None
@@ -37,3 +39,4 @@ class Status:
     calibration: Calibration | None
     zero: Zero | None
     zero_wanted: str = ""
+    prepared_utc: str | None = None

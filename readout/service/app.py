@@ -15,6 +15,7 @@ from readout import __version__
 from readout.capture.open import SourceDescription, describe_source
 from readout.errors import BadInput
 from readout.instrument import Instrument
+from readout.instrument.fixed_frame import FixedFrame
 from readout.instrument.focusing import Focusing
 from readout.instrument.known_points import KnownPoints
 from readout.instrument.recorder import Recorder
@@ -25,6 +26,7 @@ from readout.service.calibrating_routes import calibrating_routes
 from readout.service.calibration_routes import FOLDER, calibration_routes
 from readout.service.control import Control
 from readout.service.feed import Feed
+from readout.service.fixed_frame_routes import fixed_frame_routes
 from readout.service.guard import Guard
 from readout.service.log_routes import log_routes
 from readout.service.messages import StatusMessage, status_message
@@ -87,6 +89,8 @@ def make_app(
     signs = SignTest(instrument, steadiness)
     app.include_router(sign_routes(instrument, signs, control, feed, shelf))
     app.include_router(preparing_routes(instrument, Focusing(instrument), feed))
+    fixed_frame = FixedFrame(instrument, control.kept_for)
+    app.include_router(fixed_frame_routes(fixed_frame, feed))
     app.include_router(run_routes(recorder, feed, control))
     app.include_router(stream_routes(instrument, feed, status))
     if (static / "index.html").is_file():

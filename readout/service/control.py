@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import threading
+from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -13,11 +14,14 @@ from readout.capture.source_name import source_name
 from readout.errors import BadInput
 from readout.files.calibration_file import load_calibration
 from readout.instrument import Instrument, Optics, State
+from readout.instrument.kept_frame import KeptFor
+from readout.instrument.preparing import Preparing
 from readout.instrument.scale import refuse_unfit
 from readout.model import Target
 from readout.service.settings import Settings, SettingsStore
 
 SIMULATED = "simulated"
+FIXED_FRAMES = "fixed-frames"
 
 
 @dataclass(frozen=True, slots=True)
@@ -27,6 +31,13 @@ class Options:
     source: str | None = None
     target: Target | None = None
     calibration: Calibration | None = None
+    preparing: Preparing | None = None
+
+
+def kept_frames(store: SettingsStore, options: Options) -> Callable[[str], KeptFor]:
+    """Where the fixed frame of a source is: beside the settings, on top of what was given."""
+    folder = store.path.parent / FIXED_FRAMES
+    return lambda source: KeptFor(folder, source_name(source), options.preparing)
 
 
 class Control:
@@ -38,6 +49,10 @@ class Control:
         self._options = options
         self._lock = threading.Lock()
         self._from_settings: Calibration | None = None
+
+    def kept_for(self, source: str) -> KeptFor:
+        """Where the fixed frame of ``source`` is kept."""
+        return kept_frames(self._store, self._options)(source)
 
     @property
     def settings(self) -> Settings:

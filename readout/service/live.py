@@ -22,7 +22,7 @@ from readout.instrument import Instrument, State
 from readout.instrument.opening import open_observer
 from readout.instrument.recorder import Recorder
 from readout.logbook import FILE_NAME, Logbook
-from readout.service.control import Control, Options
+from readout.service.control import Control, Options, kept_frames
 from readout.service.feed import Feed
 from readout.service.settings import SettingsStore
 
@@ -86,7 +86,10 @@ def run_live(
         describe_source(options.source)
     store = SettingsStore(place.settings)
     _make_folder(place.data)
-    instrument = Instrument(observe=lambda s, t: open_observer(s, t, paced=True))
+    kept_for = kept_frames(store, options)
+    instrument = Instrument(
+        observe=lambda s, t: open_observer(s, t, paced=True, preparing=kept_for(s))
+    )
 
     def log_failed(line: str) -> None:
         instrument.tell("log_failed", line)

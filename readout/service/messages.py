@@ -151,7 +151,8 @@ class RunNowMessage(TypedDict):
 
 class StatusMessage(TypedDict):
     """What the instrument is doing. ``zero_wanted``: what has changed so that a new zero is due,
-    else "".
+    else "". ``prepared_utc``: when the fixed frame in use (or a file given with --prepared) was
+    made, null while pictures are measured as they come.
     """
 
     source: str | None
@@ -169,6 +170,7 @@ class StatusMessage(TypedDict):
     calibration: CalibrationMessage | None
     zero: ZeroMessage | None
     zero_wanted: str
+    prepared_utc: str | None
     run: RunNowMessage | None
     session_start_utc: str
     version: str
@@ -412,6 +414,7 @@ def status_message(
         "calibration": calibration_message(status.calibration),
         "zero": zero_message(status.zero),
         "zero_wanted": status.zero_wanted,
+        "prepared_utc": status.prepared_utc,
         "run": run_now_message(recording),
         "session_start_utc": utc_text(session_start_utc_ns),
         "version": __version__,

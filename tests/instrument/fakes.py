@@ -117,6 +117,9 @@ class ScriptedObserver:
         pixels = np.zeros((self.size[1], self.size[0]), np.uint8)
         return Picture(Frame(pixels, self._seq - 1, 0, 0, 255), sighting())
 
+    def prepare_anew(self) -> None:
+        return
+
 
 def reading(
     k: int,

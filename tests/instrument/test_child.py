@@ -12,11 +12,14 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from readout.errors import SourceLost, SourceStalled
+from readout.errors import BadInput, SourceLost, SourceStalled
+from readout.files.preparation_file import CameraKnowledge, save_knowledge
 from readout.instrument.acquisition import Acquisition, State
 from readout.instrument.child import ChildObserver
+from readout.instrument.kept_frame import KeptFor
 from readout.instrument.observer import Observer
 from readout.model import Observation, Quality, Target
+from readout.sighting.prepare import Preparation
 from tests.instrument.fakes import HEIGHT_PX, WIDTH_PX, open_driver
 
 ROOT = Path(__file__).parents[2]
@@ -89,6 +92,28 @@ def test_a_hanging_driver_is_given_up_and_killed(manner: str, bounds: dict[str, 
         begin_s = time.monotonic()
     assert time.monotonic() - begin_s < 2.0
     assert gone(pid)
+
+
+def test_what_is_known_of_the_camera_is_read_in_the_child_and_anew_on_a_word(
+    tmp_path: Path,
+) -> None:
+    kept = KeptFor(tmp_path, "usb:slow")
+    path = kept.path_for((WIDTH_PX, HEIGHT_PX), 255)
+    observer = ChildObserver(
+        "usb:slow", target=Target.CROSSHAIR, open_source=open_driver, preparing=kept
+    )
+    with observer:
+        assert next_of(observer).prepared is None
+        save_knowledge(path, CameraKnowledge(Preparation(), 255, "now"))
+        observer.prepare_anew()
+        prepared = [next_of(observer).prepared for _ in range(20)]
+        assert prepared[-1] == "now"
+        path.write_bytes(b"torn")
+        observer.prepare_anew()
+        with pytest.raises(BadInput, match="delete"):
+            while True:
+                next_of(observer)
+    observer.prepare_anew()  # closed: nobody is left to tell
 
 
 def test_a_crash_is_a_loss() -> None:
