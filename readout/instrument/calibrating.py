@@ -75,16 +75,24 @@ def calibrate_set(
         if left_out:
             raise BadInput(f"{error}; {left_out[0]}") from error
         raise
+    faces = (
+        (
+            "the brighter return was taken for the front face's: if it is not, both axes run backwards",
+        )
+        if given.two_returns
+        else ()
+    )
     made = replace(
         made,
         target=given.target,
-        warnings=(*made.warnings, *left_out),
+        warnings=(*made.warnings, *faces, *left_out),
         made_from={
             "set": Path(given.folder).name,
             "note": given.note,
             "scale_rel_sd": given.scale_rel_sd,
             "shared": [item.name for item in tilts.shared],
             "frames": len(given.tilts),
+            "fixed": given.fixed,
         },
     )
     return _with_axes(given, frames, _with_signs(given, frames, made, created_utc))
@@ -101,6 +109,7 @@ class _Frames:
         self._preparation = Preparation()
         if given.fixed is not None:
             fixed, _ = read_picture(given.folder / given.fixed)
+            self.digest.update(fixed.tobytes())
             self._preparation = Preparation().with_fixed([fixed])
 
     @property
