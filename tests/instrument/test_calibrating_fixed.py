@@ -1,4 +1,4 @@
-"""A set with a fixed crosshair in its frames: calibrated by its covered-mirror frame, not without."""
+"""A set with a fixed crosshair in its frames: calibrated by its covered-mirror frame, or not."""
 
 from __future__ import annotations
 
