@@ -78,12 +78,131 @@ def test_the_sample_set(tmp_path):
     check(SAMPLE, SteppedStage(seed=maker().SEED), tmp_path)
 
 
-def test_the_sample_set_is_what_its_maker_makes(tmp_path):
-    module = maker()
-    module.make(tmp_path / "again", SteppedStage(seed=module.SEED))
-    for path in sorted(SAMPLE.iterdir()):
-        assert (tmp_path / "again" / path.name).read_bytes() == path.read_bytes(), path.name
-    assert sum(path.stat().st_size for path in SAMPLE.iterdir()) < 3_000_000
+@pytest.mark.parametrize("name", list(maker().SETS))
+def test_a_sample_set_is_what_its_maker_makes(name, tmp_path):
+    maker().SETS[name](tmp_path / name)
+    kept = ROOT / "calib_images" / name
+    names = sorted(path.name for path in kept.iterdir())
+    assert names == sorted(path.name for path in (tmp_path / name).iterdir())
+    for file in names:
+        assert (tmp_path / name / file).read_bytes() == (kept / file).read_bytes(), file
+    assert sum(path.stat().st_size for path in kept.iterdir()) < 3_000_000
+
+
+WAYS = {
+    "generator": ("known tilts, one axis after the other", 1.5e-3, 0.02),
+    "lever_blocks": ("lever, one axis after the other", 2.5e-3, 0.1),
+    "certified_wedge": ("known tilts, both axes", 8e-4, 0.05),
+    "wedge_in_transmission": ("wedge in transmission, both axes", 1.5e-3, 1.0),
+    "window_two_returns": ("two returns of a window, both axes", 2.5e-3, 1.0),
+}
+"""method, what the claimed u(f)/f may be at most (from what each standard is said to be worth), and
+how near the camera's turn must come, in degrees: a wedge's mark is known to half a degree"""
+
+
+@pytest.mark.parametrize("name", list(WAYS))
+def test_each_way_finds_the_truth_within_its_claim(name):
+    method, most, near_deg = WAYS[name]
+    folder = ROOT / "calib_images" / name
+    truth = json.loads((folder / "truth.json").read_text(encoding="utf-8"))
+    found = json.loads(run("calibrate", folder, "--json").stdout)
+    error = found["focal_length_px"] - truth["focal_length_px"]
+    print(f"{name}: off by {error:+.1f} px, claimed {found['focal_length_px_sd']:.1f} px")
+    assert found["method"] == method
+    assert abs(error) < 3 * found["focal_length_px_sd"] < 3 * most * truth["focal_length_px"]
+    turned_deg = truth.get("machine_turned_deg", 0.0)  # mirrored: the picture turns the other way
+    assert found["rotation_deg"] == pytest.approx(truth["rotation_deg"] + turned_deg, abs=near_deg)
+    assert found["mirrored"] is truth["mirrored"] is True
+    assert not any("left out" in warning for warning in found["warnings"])
+    assert not any("larger than their uncertainties" in warning for warning in found["warnings"])
+    told = json.loads(run("calibrate", folder, "--expect", "--json").stdout)
+    claimed = found["focal_length_px_sd"] / found["focal_length_px"]
+    assert told["focal_length_rel_sd"] == pytest.approx(claimed, rel=0.15)
+
+
+def test_the_lever_set_proves_its_signs():
+    found = json.loads(run("calibrate", ROOT / "calib_images" / "lever_blocks", "--json").stdout)
+    assert found["signs"] == "proven"
+    nudge, foil = found["signs_shown"]
+    assert nudge["how"] == "right edge pressed towards the instrument"
+    assert foil["direction"] == nudge["direction"] == "right"
+    assert foil["ratio"] == pytest.approx(1.0, abs=3 * foil["ratio_u"])
+    assert foil["y_change_arcsec"] == pytest.approx(103.1 * 0.0507 / 0.05, rel=0.01)
+    assert foil["done_utc"] == "2000-01-01T00:00:00.000Z"
+
+
+def test_a_lever_is_told_its_worth_before_anything_is_taken(tmp_path):
+    """0, +h, -h: u(f)/f = hypot(1/100, 0.5/100), by hand; no frame is there."""
+    (tmp_path / "tilts.csv").write_text(
+        "file,lever_mm,height_mm,height_sd_mm,axis\n"
+        "a.png,100,0,0,y\nb.png,100,0.1,0.001,y\nc.png,100,-0.1,0.001,y\n"
+    )
+    (tmp_path / "set.toml").write_text("[stage]\nlever_sd_mm = 0.5\n")
+    told = json.loads(run("calibrate", tmp_path, "--expect", "--json").stdout)
+    assert told["focal_length_rel_sd"] == pytest.approx(0.01118, rel=0.01)
+    assert told["largest"] == "height 0.1 mm, used 2 times"
+    said = run("calibrate", tmp_path, "--expect").stdout
+    assert said.startswith("u(f)/f         1.1 % expected, of 3 frames")
+    assert "the same however many rows" in said
+
+
+def a_copy(folder, tmp_path, change):
+    """The lever set with its table changed."""
+    import shutil
+
+    copy = tmp_path / "copy"
+    shutil.copytree(folder, copy)
+    table = copy / "tilts.csv"
+    table.write_text(change(table.read_text(encoding="utf-8")), encoding="utf-8")
+    return copy
+
+
+@pytest.mark.parametrize(
+    ("change", "words"),
+    [
+        (lambda t: "".join(t.splitlines(keepends=True)[:3]), "2 frames (step_00.png, step_01.png)"),
+        (
+            lambda t: t.replace("step_03.png,200.0,0.2,", "step_03.png,200.0,0.02,"),
+            "step_03.png is",
+        ),
+        (lambda t: t.replace("200.0,0.06,", "0.05,0.06,", 1), "line 3: a lever of 0.05 mm"),
+        (
+            lambda t: "\n".join(
+                line.replace("-0.", "0.").replace("0.12", "0.06").replace(",0.2,", ",0.06,")
+                for line in t.splitlines()
+                if ",0.0,0.0," not in line and not line.endswith("y")
+            ),
+            "say the same tilt",
+        ),
+    ],
+    ids=["two points", "ten times off", "lever shorter than height", "all alike"],
+)
+def test_bad_tables_name_row_and_remedy(tmp_path, change, words):
+    folder = a_copy(ROOT / "calib_images" / "lever_blocks", tmp_path, change)
+    done = run("calibrate", folder, ok=False)
+    assert words in done.stderr
+    assert len(done.stderr.strip().splitlines()) == 1
+    assert done.stdout == ""
+
+
+def test_points_on_one_line_are_refused(tmp_path):
+    lines = (SAMPLE / "tilts.csv").read_text(encoding="utf-8").splitlines(keepends=True)
+    on_a_line = "".join([lines[0], lines[1], lines[8], lines[15]])  # corner, middle, corner
+    folder = a_copy(SAMPLE, tmp_path, lambda _: on_a_line)
+    done = run("calibrate", folder, ok=False)
+    assert "the 3 points from step_00.png to step_14.png lie on one line" in done.stderr
+    assert "beside that line" in done.stderr
+
+
+def test_a_picture_without_a_target_is_named_with_its_row(tmp_path):
+    folder = a_copy(ROOT / "calib_images" / "certified_wedge", tmp_path, lambda t: t)
+    write_picture(folder / "face_03.png", np.full((240, 320), 9, np.uint8), full_scale=255)
+    found = json.loads(run("calibrate", folder, "--json").stdout)
+    assert found["n"] == 9
+    assert any(
+        warning.startswith("face_03.png (line 5 of tilts.csv) was left out: no image; take it")
+        for warning in found["warnings"]
+    )
 
 
 def test_a_fresh_set(tmp_path):

@@ -14,6 +14,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from readout.angle.calibration import Calibration, matrix_rows
+from readout.angle.outliers import widening
 from readout.errors import BadInput
 from readout.model import F64
 
@@ -49,8 +50,8 @@ def turn_of_move(tilt_arcsec: F64, cov_arcsec2: F64, *, axis: str) -> AxesTurn:
     ``tilt_arcsec`` (n, 2) and its noise (n, 2, 2); ``axis`` "x" or "y": the tilt that the machine
     changed. A straight line with uncertainties on both sides: the points are turned by the
     direction found so far until the line lies along the axis (York's line at a small slope, D.
-    York, Can. J. Phys. 44 (1966) 1079). Where the points scatter more than their noise, the
-    uncertainty is widened by the Birge ratio.
+    York, Can. J. Phys. 44 (1966) 1079). Where the points scatter more than their noise
+    allows, the uncertainty is widened (``widening``).
 
     Raises BadInput if the move is too short, or lies nearer to the other axis or backwards.
     """
@@ -79,8 +80,7 @@ def turn_of_move(tilt_arcsec: F64, cov_arcsec2: F64, *, axis: str) -> AxesTurn:
         turn += math.atan(slope) * (1 if axis == "x" else -1)
     sd = float(np.sum(weight * t**2)) ** -0.5
     chi_square = float(np.sum(weight * (off - slope * t) ** 2))
-    if n > 2:
-        sd *= math.sqrt(max(1.0, chi_square / (n - 2)))
+    sd *= widening(chi_square, n - 2)
     turn_deg = math.degrees(math.remainder(turn, 2 * math.pi))
     _check(turn_deg, math.degrees(sd), axis)
     rms = math.sqrt(float(np.mean((off - slope * t) ** 2)))

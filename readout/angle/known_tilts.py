@@ -13,17 +13,16 @@ from dataclasses import replace
 from typing import NoReturn
 
 import numpy as np
-from scipy.special import chdtri, ndtr, stdtrit
 
 from readout.angle.both_sides import BothSides, fit_both_sides
 from readout.angle.calibration import Calibration, matrix_rows
 from readout.angle.outliers import (
-    DOUBTFUL,
     Agreement,
     OffRow,
     agreement,
     contradicted_rows,
     slip,
+    widening,
 )
 from readout.angle.tilt_model import TiltModel, choose_model
 from readout.angle.tilt_set import Camera, SharedInput, TiltSet
@@ -80,7 +79,7 @@ def calibrate_known_tilts(
     fit = _with_distortion(tilts, camera, model, fit) or fit
     agreed = agreement(fit)
     off_rows = contradicted_rows(fit, agreed)
-    widened = _widening(agreed.chi_square, agreed.freedom)
+    widened = widening(agreed.chi_square, agreed.freedom)
     calibration = _calibration(tilts, camera, model, fit, widened)
     _refuse_uncertain(calibration, agreed)
     return replace(
@@ -147,16 +146,6 @@ def _levels_on_both_sides(tilt_arcsec: F64) -> bool:
     below, above = -known[0], known[-1]
     levels = 1 + int(np.sum(np.diff(known) > SAME_LEVEL * np.ptp(known)))
     return levels >= LEVELS and min(below, above) >= BALANCE * max(below, above) > 0
-
-
-def _widening(chi_square: float, freedom: int) -> float:
-    """Factor on the claimed sd: 1 where the residuals are as large as their uncertainties allow.
-
-    Else the Birge ratio times Student's factor for a scatter known from ``freedom`` values.
-    """
-    if freedom == 0 or chi_square <= chdtri(freedom, DOUBTFUL):
-        return 1.0
-    return math.sqrt(chi_square / freedom) * float(stdtrit(freedom, ndtr(1.0)))
 
 
 def _refuse_slip(tilts: TiltSet, camera: Camera, model: TiltModel, row: int, axis: int) -> NoReturn:

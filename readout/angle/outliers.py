@@ -11,10 +11,11 @@ of the risk (Bonferroni).
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
-from scipy.special import chdtrc, chdtri, fdtrc
+from scipy.special import chdtrc, chdtri, fdtrc, ndtr, stdtrit
 
 from readout.angle.both_sides import BothSides
 from readout.least_squares import linear_least_squares
@@ -56,6 +57,17 @@ def agreement(fit: BothSides) -> Agreement:
     left = fit.whitened + design @ step.parameters
     chi_square = float(np.sum(left**2) + np.sum(step.parameters[p:] ** 2))
     return Agreement(chi_square, fit.freedom, left, design, step.cofactor)
+
+
+def widening(chi_square: float, freedom: int) -> float:
+    """Factor on a claimed sd: 1 where the residuals are as large as their uncertainties allow.
+
+    Else the Birge ratio (R. T. Birge, Phys. Rev. 40 (1932) 207) times Student's factor for a
+    scatter known from ``freedom`` values.
+    """
+    if freedom == 0 or chi_square <= chdtri(freedom, DOUBTFUL):
+        return 1.0
+    return math.sqrt(chi_square / freedom) * float(stdtrit(freedom, ndtr(1.0)))
 
 
 @dataclass(frozen=True, slots=True)

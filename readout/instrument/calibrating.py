@@ -21,6 +21,9 @@ from readout.model import F64, Quality, Sighting
 from readout.sighting import locate
 from readout.sighting.prepare import Preparation
 
+WHICH_FACE = (
+    "the brighter return was taken for the front face's: if it is not, both axes run backwards"
+)
 Place = tuple[float, float, tuple[float, float, float]]
 """x and y, px, and their covariance (xx, xy, yy)"""
 
@@ -75,13 +78,7 @@ def calibrate_set(
         if left_out:
             raise BadInput(f"{error}; {left_out[0]}") from error
         raise
-    faces = (
-        (
-            "the brighter return was taken for the front face's: if it is not, both axes run backwards",
-        )
-        if given.two_returns
-        else ()
-    )
+    faces = (WHICH_FACE,) if given.two_returns else ()
     made = replace(
         made,
         target=given.target,
