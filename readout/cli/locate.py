@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import sys
 from pathlib import Path
 from typing import Annotated
@@ -89,14 +90,13 @@ def _row(path: Path, sighting: Sighting) -> dict[str, Cell]:
 
 def _words(sighting: Sighting) -> str:
     quality = quality_words(sighting.quality)
-    if not sighting.found:
-        return quality
     places = (
         f"{name} {value:9.{decimals_for(sd)}f} ± {sd:.{decimals_for(sd)}f} px"
         for name, value, sd in (
             ("x", sighting.x_px, sighting.x_sd_px),
             ("y", sighting.y_px, sighting.y_sd_px),
         )
+        if math.isfinite(value)
     )
     return "  ".join([*places, quality])
 

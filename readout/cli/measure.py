@@ -173,14 +173,13 @@ def _words(reading: Reading) -> str:
     """A reading as a person reads it, with the digits its noise allows."""
     name = reading.name or f"{reading.t_s:9.3f} s"
     quality = quality_words(reading.quality)
-    if not math.isfinite(reading.x_arcsec):
-        return f"{name}  {quality}"
     angles = (
         f"{axis} {signed(value, decimals_for(sd)):>12}″ ± {sd:.{decimals_for(sd)}f}″"
         for axis, value, sd in (
             ("x", reading.x_arcsec, reading.x_sd_arcsec),
             ("y", reading.y_arcsec, reading.y_sd_arcsec),
         )
+        if math.isfinite(value)
     )
     return "  ".join([name, *angles, quality])
 
