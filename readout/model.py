@@ -188,7 +188,8 @@ class Reading:
     nearer to the instrument, y > 0 when its top edge is nearer. ``*_sd_arcsec`` is the standard
     uncertainty from noise alone, independent from row to row; ``*_u_arcsec`` the combined one,
     largely common to all rows. ``t_s``: seconds since the program, folder or video began.
-    Without a calibration the angles are NaN while the positions stand.
+    Without a calibration the angles are NaN while the positions stand. ``signs``: of the
+    calibration, "proven" or "unproven", None without one.
     """
 
     seq: int
@@ -207,6 +208,7 @@ class Reading:
     quality: Quality
     calibration_id: str | None = None
     name: str | None = None
+    signs: str | None = None
 
     @property
     def good(self) -> bool:

@@ -29,6 +29,10 @@ VALUE_COLUMNS = (
 )
 POSITION_COLUMNS = ("x_px", "y_px")
 """Where the return image lies: all there is while no scale is known."""
+SIGNS_COLUMN = "signs"
+"""Whether a nudge has shown which way the axes run: ``proven`` or ``unproven``, none without a
+scale.
+"""
 SPREAD_COLUMNS = ("n", "x_scatter_arcsec", "y_scatter_arcsec")
 """What a row that is a mean has besides."""
 
@@ -47,13 +51,14 @@ def rounded_column(column: NDArray[Any]) -> list[Number]:
 
 
 def reading_row(reading: Reading) -> dict[str, Cell]:
-    """The row of one reading: ``file`` or ``t_utc`` first, values, quality words, positions."""
+    """The row of one reading: ``file`` or ``t_utc``, values, quality words, positions, signs."""
     row: dict[str, Cell] = (
         {"file": reading.name} if reading.name else {"t_utc": utc_text(reading.t_utc_ns)}
     )
     row.update({column: rounded(getattr(reading, column)) for column in VALUE_COLUMNS})
     row["quality"] = reading.quality.words()
     row.update({column: rounded(getattr(reading, column)) for column in POSITION_COLUMNS})
+    row[SIGNS_COLUMN] = reading.signs
     return row
 
 

@@ -56,4 +56,5 @@ def reading_of(observation: Observation, calibration: Calibration | None, t_s: f
         quality=sighting.quality,
         calibration_id=calibration.id if calibration else None,
         name=observation.name,
+        signs=calibration.signs if calibration else None,
     )

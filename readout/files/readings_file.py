@@ -7,7 +7,7 @@ from types import TracebackType
 from typing import Self, TextIO
 
 from readout.model import Reading
-from readout.rows import POSITION_COLUMNS, VALUE_COLUMNS, csv_cell, reading_row
+from readout.rows import POSITION_COLUMNS, SIGNS_COLUMN, VALUE_COLUMNS, csv_cell, reading_row
 
 
 class ReadingsWriter:
@@ -31,7 +31,8 @@ class ReadingsWriter:
         tb: TracebackType | None,
     ) -> None:
         if self._columns is None:  # no reading came: a header all the same
-            self._writer.writerow(["t_utc", *VALUE_COLUMNS, "quality", *POSITION_COLUMNS])
+            columns = ["t_utc", *VALUE_COLUMNS, "quality", *POSITION_COLUMNS, SIGNS_COLUMN]
+            self._writer.writerow(columns)
         self._file.flush()
 
     def write(self, reading: Reading) -> None:

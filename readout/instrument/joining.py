@@ -172,6 +172,7 @@ class _Interval:
             y_sd_px=y.sd_px,
             quality=Quality.OK if usable else self._quality,
             calibration_id=self.newest.calibration_id,
+            signs=self.newest.signs,
         )
         return Joined(reading, n, x.value.scatter, y.value.scatter)
 

@@ -16,16 +16,24 @@ from typing import Any
 
 import numpy as np
 
-from readout.angle import Calibration, Camera, Mounting, TiltSet, calibrate_known_tilts
+from readout.angle import (
+    Calibration,
+    Camera,
+    Mounting,
+    SharedInput,
+    TiltSet,
+    calibrate_known_tilts,
+)
+from readout.angle.expected import ExpectedScale, expected_scale
+from readout.angle.lever import LeverIs, LeverRow, lever_tilts
 from readout.errors import BadInput, NotNow
 from readout.instrument.instrument import Instrument
 from readout.instrument.steady import Steadiness, Steady
-from readout.model import Target
-from readout.units import ARCSEC_PER_RAD
+from readout.model import F64, Target
 
-LEAST_SD_ARCSEC = 1e-4
-"""a tilt given as exact is weighted as if known to this"""
 MOST_POINTS = 200
+ANY_SIZE_PX = 1280, 720
+"""What a plan is worth does not hang on the picture; where none has come, one is needed."""
 
 
 class Way(StrEnum):
@@ -58,13 +66,6 @@ class Plan:
         if self.way is Way.LEVER and not self.lever_mm > 0:
             raise BadInput("a lever needs its length: give the distance of its supports in mm")
 
-    @property
-    def common_rel_sd(self) -> float:
-        """Relative standard uncertainty that all tilts share."""
-        if self.way is Way.LEVER:
-            return self.lever_sd_mm / self.lever_mm
-        return self.scale_rel_sd
-
 
 @dataclass(frozen=True, slots=True)
 class Known:
@@ -81,18 +82,19 @@ class Known:
 
 @dataclass(frozen=True, slots=True)
 class Point:
-    """A known tilt and where the return lay; ``sd_arcsec`` of the tilt, not of the position."""
+    """A known tilt and where the return lay; ``x_arcsec`` and ``y_arcsec`` of the mirror, NaN where
+    not known.
+    """
 
     number: int
     known: Known
     x_arcsec: float
     y_arcsec: float
-    sd_arcsec: float
     seen: Steady
 
     @property
     def name(self) -> str:
-        return f"point {self.number}"
+        return _name(self.number)
 
 
 @dataclass(frozen=True, slots=True)
@@ -157,13 +159,13 @@ class KnownPoints:
             plan = self._begun()
             if len(self._points) == MOST_POINTS:
                 raise NotNow(f"{MOST_POINTS} points are enough: finish")
-            x_arcsec, y_arcsec, sd_arcsec = _tilt(plan, known)
+            tilt = _tilts(plan, [known], [_name(self._taken + 1)]).tilt_arcsec[0]
             self._refuse_other_camera()
             seen = self._steadiness.now("take the point")
             if any(point.seen.t_s == seen.t_s for point in self._points):
                 raise NotNow("this picture has been taken already: wait for the next one")
             self._taken += 1
-            point = Point(self._taken, known, x_arcsec, y_arcsec, sd_arcsec, seen)
+            point = Point(self._taken, known, float(tilt[0]), float(tilt[1]), seen)
             self._points = (*self._points, point)
         return self.progress
 
@@ -205,7 +207,7 @@ class KnownPoints:
                 "conditions": conditions,
                 "source": source,
                 "way": plan.way.value,
-                "common_rel_sd": plan.common_rel_sd,
+                "plan": _plan_document(plan),
                 "points": [_point_document(point) for point in points],
             },
         )
@@ -235,56 +237,101 @@ class KnownPoints:
             raise BadInput(f"{need} more {'point' if need == 1 else 'points'} for residuals")
         assert self._plan is not None
         assert self._camera is not None
+        tilts = _tilts(self._plan, [p.known for p in points], [p.name for p in points])
         return calibrate_known_tilts(
-            TiltSet(
-                names=tuple(point.name for point in points),
-                position_px=np.array([(p.seen.x_px, p.seen.y_px) for p in points]),
-                position_cov_px2=np.array([p.seen.cov_px2 for p in points]),
-                tilt_arcsec=np.array([(p.x_arcsec, p.y_arcsec) for p in points]),
-                sd_arcsec=np.array([max(p.sd_arcsec, LEAST_SD_ARCSEC) for p in points]),
+            tilts.seen(
+                range(len(points)),
+                np.array([(p.seen.x_px, p.seen.y_px) for p in points]),
+                np.array([p.seen.cov_px2 for p in points]),
             ),
             self._camera[2],
-            scale_rel_sd=self._plan.common_rel_sd,
         )
 
 
-def _tilt(plan: Plan, known: Known) -> tuple[float, float, float]:
-    """Tilt of both axes, NaN where not known, and its standard uncertainty, arcsec."""
+def expected_of_plan(
+    plan: Plan, *, lowest: float, highest: float, n: int
+) -> tuple[ExpectedScale, float]:
+    """What ``n`` points evenly from ``lowest`` to ``highest``, in arcsec or mm, will be worth, and
+    over how many arcsec they reach.
+
+    Raises BadInput for fewer than three points, for ends that are one, and for a lever too short.
+    """
+    if n < 3:
+        raise BadInput(f"{n} points leave nothing to check the scale with: plan three at least")
+    if not highest > lowest:
+        raise BadInput("the points must reach from a smaller to a larger value: give both ends")
+    values = np.linspace(lowest, highest, n).tolist()
+    lever = plan.way is Way.LEVER
+    known = [Known(height_mm=v, axis="y") if lever else Known(y_arcsec=v) for v in values]
+    tilts = _tilts(plan, known, [_name(i + 1) for i in range(n)])
+    y_arcsec = tilts.tilt_arcsec[:, 1]
+    return expected_scale(tilts, Camera(*ANY_SIZE_PX)), float(y_arcsec[-1] - y_arcsec[0])
+
+
+def _name(number: int) -> str:
+    return f"point {number}"
+
+
+def _tilts(plan: Plan, known: list[Known], names: list[str]) -> TiltSet:
+    """The tilts as they are known, without positions; see ``readout.angle.lever``."""
+    for one in known:
+        _refuse_empty(plan, one)
+    shared: tuple[SharedInput, ...] = ()
+    if plan.way is Way.LEVER:
+        made = lever_tilts(
+            [
+                LeverRow(name, plan.lever_mm, k.height_mm, plan.height_sd_mm, "xy".index(k.axis))
+                for name, k in zip(names, known, strict=True)
+            ],
+            lever_is=LeverIs.HORIZONTAL if plan.horizontal else LeverIs.ON_TWO_SUPPORTS,
+            lever_sd_mm=plan.lever_sd_mm,
+        )
+        tilt, sd, shared = made.tilt_arcsec, made.sd_arcsec, made.shared
+    else:
+        tilt = np.array([(k.x_arcsec, k.y_arcsec) for k in known])
+        sd = np.full(len(known), plan.sd_arcsec)
+        if plan.scale_rel_sd > 0:
+            change: F64 = plan.scale_rel_sd * np.where(np.isfinite(tilt), tilt, 0.0)
+            shared = (SharedInput("scale of the stage", change),)
+    n = len(known)
+    return TiltSet(
+        names=tuple(names),
+        position_px=np.full((n, 2), np.nan),
+        position_cov_px2=np.full((n, 3), np.nan),
+        tilt_arcsec=tilt,
+        sd_arcsec=sd,
+        shared=shared,
+    )
+
+
+def _refuse_empty(plan: Plan, known: Known) -> None:
     if plan.way is Way.ANGLES:
         if math.isnan(known.x_arcsec) and math.isnan(known.y_arcsec):
             raise BadInput("no tilt is given: fill in X or Y, as the generator or stage shows it")
-        return known.x_arcsec, known.y_arcsec, plan.sd_arcsec
+        return
     if math.isnan(known.height_mm):
         raise BadInput("no height is given: fill in what lies under the lever, 0 for nothing")
     if known.axis not in ("x", "y"):
         raise BadInput("say which way the lever tilts the mirror: x or y")
-    tilt, sd = lever_tilt_arcsec(plan, known.height_mm)
-    return (tilt, math.nan, sd) if known.axis == "x" else (math.nan, tilt, sd)
-
-
-def lever_tilt_arcsec(plan: Plan, height_mm: float) -> tuple[float, float]:
-    """Tilt of the lever raised by ``height_mm``, and what the height's uncertainty makes of it.
-
-    asin(height / lever) for a bar on two supports, atan for a length along the ground.
-    """
-    ratio = height_mm / plan.lever_mm
-    if plan.horizontal:
-        tilt, by_ratio = math.atan(ratio), 1 / (1 + ratio**2)
-    elif abs(ratio) >= 1:
-        raise BadInput(
-            f"a lever of {plan.lever_mm:g} mm cannot be raised by {height_mm:g} mm: "
-            "check which is which"
-        )
-    else:
-        tilt, by_ratio = math.asin(ratio), 1 / math.sqrt(1 - ratio**2)
-    sd = plan.height_sd_mm / plan.lever_mm * by_ratio
-    return tilt * ARCSEC_PER_RAD, sd * ARCSEC_PER_RAD
 
 
 def plain_id(name: str) -> str:
     """``name`` as the beginning of an id: letters, digits and hyphens that any system can keep."""
     kept = "".join(c if c.isascii() and c.isalnum() else "-" for c in name.lower())
     return "-".join(part for part in kept.split("-") if part)[:40] or "calibration"
+
+
+def _plan_document(plan: Plan) -> dict[str, Any]:
+    given = {
+        "sd_arcsec": plan.sd_arcsec,
+        "scale_rel_sd": plan.scale_rel_sd,
+        "lever_mm": plan.lever_mm,
+        "lever_sd_mm": plan.lever_sd_mm,
+        "height_sd_mm": plan.height_sd_mm,
+    }
+    return {"horizontal": plan.horizontal} | {
+        key: None if math.isnan(value) else value for key, value in given.items()
+    }
 
 
 def _point_document(point: Point) -> dict[str, Any]:
@@ -297,7 +344,6 @@ def _point_document(point: Point) -> dict[str, Any]:
         "name": point.name,
         **{key: None if math.isnan(value) else value for key, value in known.items()},
         "axis": point.known.axis or None,
-        "sd_arcsec": point.sd_arcsec,
         "x_px": point.seen.x_px,
         "y_px": point.seen.y_px,
         "n": point.seen.n,

@@ -10,6 +10,7 @@ import csv
 import io
 import json
 import sqlite3
+from bisect import bisect_right
 from collections.abc import Callable, Iterator
 from contextlib import closing
 from pathlib import Path
@@ -19,7 +20,14 @@ from readout.logbook.connection import open_writing
 from readout.logbook.reader import LoggedReading, LogReader, Run
 from readout.logbook.schema import keys_of
 from readout.model import Quality
-from readout.rows import POSITION_COLUMNS, SPREAD_COLUMNS, VALUE_COLUMNS, Cell, rounded
+from readout.rows import (
+    POSITION_COLUMNS,
+    SIGNS_COLUMN,
+    SPREAD_COLUMNS,
+    VALUE_COLUMNS,
+    Cell,
+    rounded,
+)
 from readout.utc import utc_text
 
 
@@ -37,7 +45,8 @@ def ndjson_of(reader: LogReader, run_id: int) -> Iterator[str]:
 
 def _csv(reader: LogReader, run: Run) -> Iterator[str]:
     yield ",".join(columns_of(run)) + "\n"
-    cells = cells_of(run, lambda quality: " ".join(quality.words()))
+    signs = signs_by_seq(reader, run)
+    cells = cells_of(run, signs, lambda quality: " ".join(quality.words()))
     for chunk in reader.readings(run.id):
         text = io.StringIO()
         csv.writer(text, lineterminator="\n").writerows(map(cells, chunk))  # None: an empty cell
@@ -46,7 +55,7 @@ def _csv(reader: LogReader, run: Run) -> Iterator[str]:
 
 def _ndjson(reader: LogReader, run: Run) -> Iterator[str]:
     columns = columns_of(run)
-    cells = cells_of(run, Quality.words)
+    cells = cells_of(run, signs_by_seq(reader, run), Quality.words)
     encode = json.JSONEncoder(allow_nan=False, separators=(",", ":")).encode
     for chunk in reader.readings(run.id):
         yield "".join(encode(dict(zip(columns, cells(row), strict=True))) + "\n" for row in chunk)
@@ -55,11 +64,26 @@ def _ndjson(reader: LogReader, run: Run) -> Iterator[str]:
 def columns_of(run: Run) -> tuple[str, ...]:
     """The columns of an export of ``run``."""
     spread = SPREAD_COLUMNS if run.every_s > 0 else ()
-    return ("t_utc", *VALUE_COLUMNS, "quality", *POSITION_COLUMNS, *spread)
+    return ("t_utc", *VALUE_COLUMNS, "quality", *POSITION_COLUMNS, SIGNS_COLUMN, *spread)
+
+
+def signs_by_seq(reader: LogReader, run: Run) -> Callable[[LoggedReading], str | None]:
+    """What tells the signs of the calibration a row was read with; None before there was one."""
+    used = reader.calibrations(run.id)
+    begins = [one.from_seq for one in used]
+    signs = [str(one.document.get("signs", "unproven")) for one in used]
+
+    def signs_of(row: LoggedReading) -> str | None:
+        before = bisect_right(begins, row.seq)
+        return signs[before - 1] if before else None
+
+    return signs_of
 
 
 def cells_of(
-    run: Run, words_of: Callable[[Quality], Cell]
+    run: Run,
+    signs_of: Callable[[LoggedReading], str | None],
+    words_of: Callable[[Quality], Cell],
 ) -> Callable[[LoggedReading], list[Cell]]:
     """What turns a row of ``run`` into cells."""
     averaged = run.every_s > 0
@@ -75,6 +99,7 @@ def cells_of(
             words[row.quality],
             _number(row.x_px),
             _number(row.y_px),
+            signs_of(row),
         ]
         if averaged:
             found += [row.n, _number(row.x_scatter_arcsec), _number(row.y_scatter_arcsec)]

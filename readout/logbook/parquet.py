@@ -11,7 +11,7 @@ import importlib.util
 from collections.abc import Iterator
 
 from readout.errors import BadInput
-from readout.logbook.export import cells_of, columns_of
+from readout.logbook.export import cells_of, columns_of, signs_by_seq
 from readout.logbook.reader import LogReader, Run
 from readout.model import Quality
 
@@ -69,10 +69,11 @@ def _parquet(reader: LogReader, run: Run) -> Iterator[bytes]:
         "t_utc": pa.timestamp("us", tz="UTC"),
         "quality": pa.list_(pa.string()),
         "n": pa.int64(),
+        "signs": pa.string(),
     }
     about = {"title": run.title, "source": run.source, "readout": run.version}
     schema = pa.schema([(c, kinds.get(c, pa.float64())) for c in columns], metadata=about)
-    cells = cells_of(run, Quality.words)
+    cells = cells_of(run, signs_by_seq(reader, run), Quality.words)
     file = _Pieces()
     with ParquetWriter(file, schema) as writer:
         for chunk in reader.readings(run.id):

@@ -88,7 +88,7 @@ def make_app(
     app.include_router(calibrating_routes(instrument, points, control, feed, shelf))
     signs = SignTest(instrument, steadiness)
     app.include_router(sign_routes(instrument, signs, control, feed, shelf))
-    app.include_router(preparing_routes(instrument, Focusing(instrument), feed))
+    app.include_router(preparing_routes(instrument, Focusing(instrument), control, feed))
     fixed_frame = FixedFrame(instrument, control.kept_for)
     app.include_router(fixed_frame_routes(fixed_frame, feed))
     app.include_router(run_routes(recorder, feed, control))

@@ -14,13 +14,19 @@ from typing_extensions import TypedDict
 from readout.files.calibration_file import calibration_document
 from readout.files.calibration_shelf import keep_calibration
 from readout.instrument import Instrument
-from readout.instrument.expected import expected_scale
-from readout.instrument.known_points import Known, KnownPoints, Plan, Point, Progress, Way
+from readout.instrument.known_points import (
+    Known,
+    KnownPoints,
+    Plan,
+    Point,
+    Progress,
+    Way,
+    expected_of_plan,
+)
 from readout.rows import Number, rounded
 from readout.service.calibration_routes import KeptCalibrationMessage, kept_message
 from readout.service.control import Control
 from readout.service.feed import Feed
-from readout.units import ARCSEC_PER_RAD
 from readout.utc import utc_text
 
 Positive = Annotated[float, Field(gt=0, le=1e6)]
@@ -82,14 +88,23 @@ class FinishBody(_Body):
     use: bool = True
 
 
+class SharedMessage(TypedDict):
+    """What acts on several points at once, and its part of the relative uncertainty."""
+
+    name: str
+    rel_u: Number
+
+
 class ExpectedMessage(TypedDict):
-    """Relative standard uncertainty of the focal length to expect: its part from the single
-    points, the part common to all, and both. ``range_arcsec``: from the first to the last point.
+    """Relative standard uncertainty of the focal length to expect: of all, of what is new in each
+    point, of each shared input; ``largest`` names what limits it. ``range_arcsec``: from the first
+    to the last point.
     """
 
-    points_rel_u: Number
-    common_rel_u: Number
     rel_u: Number
+    points_rel_u: Number
+    shared: list[SharedMessage]
+    largest: str
     range_arcsec: Number
 
 
@@ -159,20 +174,15 @@ def calibrating_routes(
     @routes.post("/expected")
     def post_expected(body: ExpectedBody) -> ExpectedMessage:
         """What the plan can be worth; nothing begins."""
-        plan, lever = body.plan, body.way is Way.LEVER
-        expected = expected_scale(
-            body.lowest,
-            body.highest,
-            body.points,
-            sd=plan.height_sd_mm if lever else plan.sd_arcsec,
-            common=plan.common_rel_sd,
+        expected, reach_arcsec = expected_of_plan(
+            body.plan, lowest=body.lowest, highest=body.highest, n=body.points
         )
-        reach = body.highest - body.lowest
         return {
-            "points_rel_u": rounded(expected.points_rel_u),
-            "common_rel_u": rounded(expected.common_rel_u),
-            "rel_u": rounded(expected.rel_u),
-            "range_arcsec": rounded(reach / plan.lever_mm * ARCSEC_PER_RAD if lever else reach),
+            "rel_u": rounded(expected.rel_sd),
+            "points_rel_u": rounded(expected.rows_rel_sd),
+            "shared": [{"name": n, "rel_u": rounded(u)} for n, u in expected.shared_rel_sd],
+            "largest": expected.largest,
+            "range_arcsec": rounded(reach_arcsec),
         }
 
     @routes.post("", status_code=201)

@@ -19,6 +19,7 @@ from readout.instrument.joining import Intervals, Joined
 from readout.model import Reading
 from readout.rows import (
     POSITION_COLUMNS,
+    SIGNS_COLUMN,
     SPREAD_COLUMNS,
     VALUE_COLUMNS,
     Cell,
@@ -64,7 +65,8 @@ async def _json_lines(feed: Feed, every_s: float) -> AsyncIterator[str]:
 
 async def _csv_lines(feed: Feed, every_s: float, header: bool = True) -> AsyncIterator[str]:
     averaged = SPREAD_COLUMNS if every_s > 0 else ()
-    columns = ["t_utc", *VALUE_COLUMNS, "quality", *POSITION_COLUMNS, *averaged, "dropped"]
+    of_reading = ["t_utc", *VALUE_COLUMNS, "quality", *POSITION_COLUMNS, SIGNS_COLUMN]
+    columns = [*of_reading, *averaged, "dropped"]
     if header:
         yield ",".join(columns) + "\n"
     async for rows in _rows(feed, every_s):

@@ -57,6 +57,7 @@ class ReadingMessage(TypedDict):
     y_sd_px: Number
     quality: list[str]
     calibration_id: str | None
+    signs: str | None
     state: str
     age_s: Number
     average: AverageMessage | None
@@ -243,6 +244,7 @@ def reading_message(
         "y_sd_px": rounded(reading.y_sd_px),
         "quality": reading.quality.words(),
         "calibration_id": reading.calibration_id,
+        "signs": reading.signs,
         "state": state.value,
         "age_s": rounded(age_s),
         "average": average_message(average),

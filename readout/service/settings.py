@@ -11,9 +11,10 @@ from pathlib import Path
 from typing import Annotated, Any, Literal
 
 from platformdirs import user_config_path
-from pydantic import BaseModel, ConfigDict, Field, ValidationError
+from pydantic import BaseModel, ConfigDict, Field, ValidationError, field_validator
 
 from readout.angle import Mounting
+from readout.angle.budget_conditions import parse_conditions
 from readout.capture.source_name import source_name
 from readout.errors import BadInput
 from readout.files.atomic import write_text_whole
@@ -71,6 +72,17 @@ class Settings(_Model):
     goal: Goal = Goal()
     tolerance_arcsec: Annotated[Angle, Field(gt=0)] | None = None
     optics: OpticsSettings = OpticsSettings()
+    conditions: dict[str, Any] = Field(default_factory=dict)
+
+    @field_validator("conditions")
+    @classmethod
+    def _known_conditions(cls, value: dict[str, Any]) -> dict[str, Any]:
+        """What the budget cannot read is refused when it is given, not when it is needed."""
+        try:
+            parse_conditions(value)
+        except BadInput as error:
+            raise ValueError(str(error)) from error
+        return value
 
     def document(self) -> dict[str, Any]:
         """The settings as JSON holds them."""

@@ -12,12 +12,12 @@ from pydantic import BaseModel, ConfigDict, Field
 from typing_extensions import TypedDict
 
 from readout.angle import Calibration
+from readout.angle.signs import Foil, SignVerdict
 from readout.files.calibration_file import calibration_document
 from readout.files.calibration_shelf import keep_calibration
 from readout.instrument import Instrument
 from readout.instrument.known_points import plain_id
 from readout.instrument.sign_test import SignState, SignTest
-from readout.instrument.signs_seen import Foil, Push
 from readout.rows import Number, rounded
 from readout.service.calibrating_routes import FinishedMessage
 from readout.service.calibration_routes import kept_message
@@ -62,12 +62,13 @@ class PushMessage(TypedDict):
 
 
 class FoilMessage(TypedDict):
-    """What the foil showed."""
+    """What the foil showed; ``scale``: agrees, half, double or differs."""
 
     expected_arcsec: Number
-    expected_sd_arcsec: Number
-    push: PushMessage
-    right: bool
+    change: PushMessage | None
+    ratio: Number
+    ratio_u: Number
+    scale: str | None
     text: str
 
 
@@ -116,8 +117,8 @@ def sign_routes(
     @routes.post("/keep", status_code=201)
     def post_keep(body: NameBody) -> FinishedMessage:
         """Keep the calibration in use with its axes as the pushes showed them, and use it."""
-        made = test.proven(name=body.name.strip(), created_utc=utc_text(instrument.now()[1]))
-        path, kept = _kept_anew(folder, made, body.name.strip())
+        made = test.shown(name=body.name.strip(), created_utc=utc_text(instrument.now()[1]))
+        path, kept = _kept_anew(folder, made)
         why_not = control.use_calibration(path)
         feed.announce()
         return {
@@ -135,41 +136,49 @@ def sign_routes(
     return routes
 
 
-def _kept_anew(folder: Path, made: Calibration, name: str) -> tuple[Path, Calibration]:
+def _kept_anew(folder: Path, made: Calibration) -> tuple[Path, Calibration]:
     """Under an id that tells what it was made from and when."""
     stamp = "".join(c for c in made.created_utc if c.isdigit())[:14]
-    made = replace(made, id=f"{plain_id(name or made.id)}-signs-{stamp}")
+    name = str(made.made_from.get("name") or made.method)
+    made = replace(made, id=f"{plain_id(name)}-signs-{stamp}")
     text = json.dumps(calibration_document(made), indent=2, allow_nan=False) + "\n"
     return keep_calibration(folder, text.encode())
 
 
-def _push(push: Push | None) -> PushMessage | None:
-    if push is None:
+def _pair(values: tuple[float, float] | None) -> PushMessage | None:
+    if values is None:
         return None
-    return {"x_arcsec": rounded(push.x_arcsec), "y_arcsec": rounded(push.y_arcsec)}
+    return {"x_arcsec": rounded(values[0]), "y_arcsec": rounded(values[1])}
+
+
+def _push(verdict: SignVerdict | None) -> PushMessage | None:
+    return None if verdict is None else _pair(verdict.change.values)
+
+
+def _foil(state: SignState) -> FoilMessage | None:
+    verdict = state.tests.get("foil")
+    if verdict is None or state.foil is None:
+        return None
+    scale = verdict.scale
+    return {
+        "expected_arcsec": rounded(state.foil.tilt_arcsec),
+        "change": _push(verdict),
+        "ratio": None if scale is None else rounded(scale.ratio),
+        "ratio_u": None if scale is None else rounded(scale.ratio_u),
+        "scale": None if scale is None else scale.says.value,
+        "text": verdict.text,
+    }
 
 
 def _message(state: SignState) -> SignsMessage:
-    foil = state.foil
     return {
         "calibration_id": None if state.calibration is None else state.calibration.id,
         "signs": None if state.calibration is None else state.calibration.signs,
         "resting": state.resting,
-        "peak": _push(state.peak),
-        "top": _push(state.top),
-        "right": _push(state.right),
-        "foil": None
-        if foil is None
-        else {
-            "expected_arcsec": rounded(foil.foil.tilt_arcsec),
-            "expected_sd_arcsec": rounded(foil.foil.tilt_sd_arcsec),
-            "push": {
-                "x_arcsec": rounded(foil.push.x_arcsec),
-                "y_arcsec": rounded(foil.push.y_arcsec),
-            },
-            "right": foil.right,
-            "text": foil.text,
-        },
-        "outcome": state.verdict.outcome.value,
-        "text": state.verdict.text,
+        "peak": _pair(state.peak),
+        "top": _push(state.tests.get("top")),
+        "right": _push(state.tests.get("right")),
+        "foil": _foil(state),
+        "outcome": state.outcome.value,
+        "text": state.text,
     }

@@ -21,6 +21,7 @@ COLUMNS = [
     *("x_arcsec", "y_arcsec", "x_sd_arcsec", "y_sd_arcsec", "x_u_arcsec", "y_u_arcsec"),
     "quality",
     *("x_px", "y_px"),
+    "signs",
 ]
 
 
@@ -28,7 +29,14 @@ def some_reading(
     value: float = 1.25, quality: Quality = Quality.OK, name: str | None = None
 ) -> Reading:
     return Reading(
-        0, 0.5, 1_000_000_000, *[value] * 10, quality=quality, calibration_id="c", name=name
+        0,
+        0.5,
+        1_000_000_000,
+        *[value] * 10,
+        quality=quality,
+        calibration_id="c",
+        name=name,
+        signs="unproven",
     )
 
 
@@ -66,6 +74,7 @@ def test_csv_of_named_frames() -> None:
     assert list(rows[0]) == ["file", *COLUMNS]
     assert rows[0]["x_arcsec"] == "1.25"
     assert rows[0]["quality"] == ""
+    assert [row["signs"] for row in rows] == ["unproven"] * 2
     assert rows[1]["file"] == "b, c.png"
     assert rows[1]["x_arcsec"] == rows[1]["y_u_arcsec"] == ""
     assert rows[1]["quality"] == "no_image dim"

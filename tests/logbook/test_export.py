@@ -132,3 +132,20 @@ def test_copying_overwrites_nothing(tmp_path: Path) -> None:
     assert not (tmp_path / "new.sqlite").exists()
     with pytest.raises(BadInput, match="cannot be opened"):
         copy_run(path, 1, tmp_path / "no such folder" / "new.sqlite")
+
+
+def test_each_row_says_whether_its_signs_were_proven(tmp_path: Path) -> None:
+    path = tmp_path / FILE_NAME
+    with Logbook(path) as log:
+        log.start(new_run())
+        for seq in range(4):
+            if seq == 1:
+                log.note_calibration(1, "parts", json.dumps({"id": "parts", "signs": "unproven"}))
+            if seq == 3:
+                log.note_calibration(3, "bench", json.dumps({"id": "bench", "signs": "proven"}))
+            log.append(reading(seq), t_s=seq / 50)
+        log.end(STARTED_UTC_NS + 10**9, "stopped")
+    rows = [json.loads(line) for line in text_of(ndjson_of, path).splitlines()]
+    assert [row["signs"] for row in rows] == [None, "unproven", "unproven", "proven"]
+    table = csv.DictReader(io.StringIO(text_of(csv_of, path)))
+    assert [row["signs"] for row in table] == ["", "unproven", "unproven", "proven"]

@@ -186,11 +186,15 @@ def test_what_a_lever_can_be_worth_is_said_before(client: TestClient) -> None:
         },
     )
     expected = answer.json()
-    # Heights 0, 0.25 … 1: sum of squares about their mean 0.625 (by hand).
-    assert expected["points_rel_u"] == pytest.approx(0.001 / 0.625**0.5, rel=1e-3)
-    assert expected["common_rel_u"] == pytest.approx(0.001)
-    assert expected["rel_u"] == pytest.approx((0.001**2 / 0.625 + 0.001**2) ** 0.5, rel=1e-3)
-    assert expected["range_arcsec"] == pytest.approx(1 / 300 * 206264.806, rel=1e-6)
+    # Heights 0, 0.25 … 1, each with 1 µm: sum of squares about their mean 0.625 mm² (by hand); the
+    # pictures' share, 0.01 px of 1 µm behind 100 mm and more, is far below.
+    assert expected["points_rel_u"] == pytest.approx(0.001 / 0.625**0.5, rel=0.02)
+    assert expected["shared"] == [
+        {"name": "length of the lever", "rel_u": pytest.approx(0.001, rel=1e-3)}
+    ]
+    assert expected["largest"] == "the rows themselves"
+    assert expected["rel_u"] == pytest.approx((0.001**2 / 0.625 + 0.001**2) ** 0.5, rel=0.02)
+    assert expected["range_arcsec"] == pytest.approx(1 / 300 * 206264.806, rel=1e-5)
 
 
 @pytest.mark.parametrize(

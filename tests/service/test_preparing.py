@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import replace
+from typing import Any
 
 import pytest
 from starlette.testclient import TestClient
@@ -62,3 +64,26 @@ def test_changed_optics_take_the_zero_and_ask_for_a_new_one(rig: Rig, client: Te
 @pytest.mark.parametrize("body", [{}, {"what": ""}, {"what": "  "}, {"what": "x" * 101}])
 def test_a_change_needs_a_name(client: TestClient, body: dict[str, str]) -> None:
     assert client.post("/api/optics/changed", json=body).status_code == 422
+
+
+def test_the_budget_of_the_average_adds_up(rig: Rig, client: TestClient) -> None:
+    def line(document: dict[str, Any], name: str) -> dict[str, Any]:
+        return next(one for one in document["lines"] if one["name"] == name)
+
+    assert client.get("/api/budget").status_code == 409
+    rig.measure([None] * 12)
+    both = client.get("/api/budget").json()
+    assert both["schema"] == "readout.budget/1"
+    x = both["x"]
+    known = [one["u_arcsec"] for one in x["lines"] if one["u_arcsec"] is not None]
+    assert x["combined_u_arcsec"] == pytest.approx(math.hypot(*known))
+    # Ten readings of 0.01 px each (the scripted covariance is 1e-4 px²) average to 0.01/√10 px.
+    scale = client.get("/api/status").json()["calibration"]["scale_x_arcsec_per_px"]
+    assert line(x, "noise")["u_arcsec"] == pytest.approx(0.01 * scale / 10**0.5, rel=1e-3)
+    client.put("/api/settings", json={"conditions": {"seating_arcsec": 0.6}})
+    seating = line(client.get("/api/budget").json()["x"], "seating")
+    # Limits of ± a, rectangular: a / √3 (JCGM 100:2008, 4.3.7).
+    assert seating["u_arcsec"] == pytest.approx(0.6 / 3**0.5)
+    refused = client.put("/api/settings", json={"conditions": {"seating": 0.6}})
+    assert refused.status_code == 422
+    assert "seating" in refused.json()["detail"]

@@ -30,6 +30,7 @@ def test_defaults_are_what_the_page_expects(client: TestClient) -> None:
         "goal": {"x_arcsec": None, "y_arcsec": None},
         "tolerance_arcsec": None,
         "optics": {"focal_length_mm": None, "pitch_um": None, "mounting": "straight"},
+        "conditions": {},
     }
 
 

@@ -105,7 +105,7 @@ def test_a_mirrored_picture_is_named_and_what_is_kept_reads_right(
     truth = calibration(mounting)
     asked = nudged(rig, client, truth)
     assert asked.last["outcome"] == outcome
-    assert "backwards" in asked.last["text"]
+    assert "mirror image" in asked.last["text"]
     assert client.get("/api/status").json()["calibration"]["signs"] == "unproven"
     assert client.post("/api/signs/keep", json={}).status_code == 201
     rig.measure([seen_at(truth, 7.0, -4.0)])
@@ -153,8 +153,11 @@ def test_the_foil_shows_sign_and_scale(rig: Rig, client: TestClient) -> None:
     shown = asked.last["foil"]
     # By hand: 0.01/100 rad = 20.626 arcsec.
     assert shown["expected_arcsec"] == pytest.approx(20.626, abs=1e-3)
-    assert shown["right"] is True
-    assert asked.last["top"]["y_arcsec"] == pytest.approx(20.63, abs=1e-2)
+    assert shown["scale"] == "agrees"
+    assert shown["ratio"] == pytest.approx(1.0, abs=1e-3)
+    # The foil's own 2 % and the one per cent of a nominal focal length.
+    assert shown["ratio_u"] == pytest.approx((0.02**2 + 0.01**2) ** 0.5, rel=0.02)
+    assert shown["change"]["y_arcsec"] == pytest.approx(20.63, abs=1e-2)
     assert asked.last["outcome"] == "unproven"
     assert "right edge" in asked.last["text"]
 

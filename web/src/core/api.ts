@@ -1,5 +1,18 @@
+import { budgetOf, type AxisBudget } from './budget';
+import {
+  expectedOf,
+  finishedOf,
+  progressOf,
+  type Expected,
+  type Finished,
+  type Known,
+  type Plan,
+  type Progress,
+} from './calibrating';
 import { keptOf, type KeptCalibration } from './calibrations';
 import { Fields, ProtocolError } from './fields';
+import { fixedFrameOf, type FixedFrame } from './fixed';
+import { focusOf, type FocusTrace } from './focus';
 import type { Part } from './part';
 import { fitOf, readingOf, readingsOf, type Fit, type Readings } from './protocol';
 import {
@@ -12,6 +25,7 @@ import {
   type WholeRun,
 } from './runs';
 import { settingsOf, type Settings } from './settings';
+import { signsOf, type Edge, type Signs } from './signs';
 
 /** The service said no; the message is its own line for people. */
 export class Refused extends Error {}
@@ -116,4 +130,84 @@ export async function keepCalibration(file: Blob): Promise<KeptCalibration> {
   const [kept] = keptOf([await (await ask('api/calibrations', init)).json()]);
   if (kept === undefined) throw new ProtocolError('the service kept nothing');
   return kept;
+}
+
+const post = (body: unknown = {}): RequestInit => ({ method: 'POST', ...json(body) });
+const DELETE: RequestInit = { method: 'DELETE' };
+
+async function progress(path: string, init: RequestInit = {}): Promise<Progress> {
+  return progressOf(await (await ask(`api/calibrating${path}`, init)).json());
+}
+
+export const calibrating = {
+  now: (): Promise<Progress> => progress(''),
+  begin: (plan: Plan): Promise<Progress> => progress('', post(given(plan))),
+  take: (known: Known): Promise<Progress> => progress('/points', post(known)),
+  undo: (): Promise<Progress> => progress('/points/last', DELETE),
+  remove: (number: number): Promise<Progress> => progress(`/points/${number}`, DELETE),
+  giveUp: async (): Promise<void> => void (await ask('api/calibrating', DELETE)),
+  finish: async (named: {
+    name: string;
+    conditions: string;
+    note: string;
+    use: boolean;
+  }): Promise<Finished> =>
+    finishedOf(await (await ask('api/calibrating/finish', post(named))).json()),
+  expected: async (
+    plan: Plan,
+    meant: { lowest: number; highest: number; points: number },
+  ): Promise<Expected> =>
+    expectedOf(
+      await (await ask('api/calibrating/expected', post({ ...given(plan), ...meant }))).json(),
+    ),
+};
+
+/** What is not known is left out. */
+function given(plan: Plan): Record<string, unknown> {
+  return Object.fromEntries(Object.entries(plan).filter(([, value]) => value !== null));
+}
+
+async function signsAsked(path: string, init: RequestInit = {}): Promise<Signs> {
+  return signsOf(await (await ask(`api/signs${path}`, init)).json());
+}
+
+export const signs = {
+  now: (): Promise<Signs> => signsAsked(''),
+  rest: (): Promise<Signs> => signsAsked('/rest', post()),
+  pressed: (edge: Edge): Promise<Signs> => signsAsked('/pressed', post({ edge })),
+  foil: (foil: {
+    thickness_mm: number;
+    thickness_sd_mm: number;
+    base_mm: number;
+    base_sd_mm: number;
+  }): Promise<Signs> => signsAsked('/foil', post(foil)),
+  startOver: (): Promise<Signs> => signsAsked('', DELETE),
+  keep: async (name: string): Promise<Finished> =>
+    finishedOf(await (await ask('api/signs/keep', post({ name }))).json()),
+};
+
+export async function focus(): Promise<FocusTrace> {
+  return focusOf(await (await ask('api/focus')).json());
+}
+
+export async function forgetBest(): Promise<FocusTrace> {
+  return focusOf(await (await ask('api/focus/best', DELETE)).json());
+}
+
+/** Averages so many frames: it may take a while. */
+export async function takeFixedFrame(frames: number): Promise<FixedFrame> {
+  const init = { ...post({ frames }), signal: AbortSignal.timeout(60_000) };
+  return fixedFrameOf(await (await ask('api/fixed-frame', init)).json());
+}
+
+export async function forgetFixedFrame(): Promise<void> {
+  await ask('api/fixed-frame', DELETE);
+}
+
+export async function opticsChanged(what: string): Promise<void> {
+  await ask('api/optics/changed', post({ what }));
+}
+
+export async function budget(): Promise<{ x: AxisBudget; y: AxisBudget }> {
+  return budgetOf(await (await ask('api/budget')).json());
 }

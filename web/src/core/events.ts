@@ -10,6 +10,7 @@ const EVENTS: Record<string, string> = {
   run_started: 'run begins',
   run_stopped: 'run ends',
   log_failed: 'log failed',
+  optics: 'optics changed',
 };
 
 /**

@@ -4,6 +4,7 @@ export type Action =
   | 'hold'
   | 'run'
   | 'watch'
+  | 'prepare'
   | 'runs'
   | 'unit'
   | 'theme'
@@ -25,6 +26,7 @@ export const ACTIONS: Record<string, Action> = {
   h: 'hold',
   r: 'run',
   w: 'watch',
+  p: 'prepare',
   l: 'runs',
   u: 'unit',
   n: 'theme',
@@ -47,6 +49,7 @@ export const KEYS: { keys: string[]; does: string }[] = [
   { keys: ['H'], does: 'hold the display, and follow again' },
   { keys: ['R'], does: 'start a run, or stop the one being recorded' },
   { keys: ['W'], does: 'to Watch' },
+  { keys: ['P'], does: 'to Prepare' },
   { keys: ['L'], does: 'to Runs, the list' },
   { keys: ['U'], does: 'next unit' },
   { keys: ['N'], does: 'day, night, or as the system says' },

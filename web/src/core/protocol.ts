@@ -96,6 +96,10 @@ export interface Status {
   image_height_px: number | null;
   calibration: CalibrationInUse | null;
   zero: Zero | null;
+  /** What has changed so that a new zero is due, else nothing. */
+  zero_wanted: string;
+  /** When the fixed frame in use was taken; null while pictures are measured as they come. */
+  prepared_utc: string | null;
   run: RunNow | null;
   session_start_utc: string;
   version: string;
@@ -214,6 +218,8 @@ export function statusOf(value: unknown): Status {
     image_height_px: fields.numberOrNull('image_height_px'),
     calibration: calibrationOf(fields.objectOrNull('calibration')),
     zero: zeroOf(fields.objectOrNull('zero')),
+    zero_wanted: fields.textOrNull('zero_wanted') ?? '',
+    prepared_utc: fields.textOrNull('prepared_utc'),
     run: runNowOf(fields.objectOrNull('run')),
     session_start_utc: fields.text('session_start_utc'),
     version: fields.text('version'),

@@ -30,11 +30,13 @@ describe('what the log answers', () => {
     const whole = wholeRunOf({
       ...RUN,
       calibrations: [
-        { from_seq: 4, calibration: { id: 'a', method: 'nominal', focal_length_mm: 300 } },
+        { from_seq: 4, calibration: { id: 'a', method: 'nominal', signs: 'proven', focal_length_mm: 300 } },
       ],
       events: [{ t_utc: RUN.started_utc, t_s: 0.5, event: 'stalled', text: 'no frames' }],
     });
-    expect(whole.calibrations).toEqual([{ id: 'a', method: 'nominal', focal_length_mm: 300 }]);
+    expect(whole.calibrations).toEqual([
+      { id: 'a', method: 'nominal', signs: 'proven', focal_length_mm: 300 },
+    ]);
     expect(whole.events[0]?.t_s).toBe(0.5);
   });
 });

@@ -17,6 +17,7 @@ export interface Run {
 export interface RunCalibration {
   id: string;
   method: string;
+  signs: string;
   focal_length_mm: number | null;
 }
 
@@ -84,6 +85,7 @@ export function wholeRunOf(value: unknown): WholeRun {
       return {
         id: calibration.text('id'),
         method: calibration.text('method'),
+        signs: calibration.textOrNull('signs') ?? 'unproven',
         focal_length_mm: calibration.numberOrNull('focal_length_mm'),
       };
     }),

@@ -53,6 +53,8 @@ export function status(): Status {
       ],
     },
     zero: null,
+    zero_wanted: '',
+    prepared_utc: null,
     run: null,
     session_start_utc: '2026-12-01T09:00:00.000Z',
     version: '0.1.0',
