@@ -205,6 +205,33 @@ def test_a_picture_without_a_target_is_named_with_its_row(tmp_path):
     )
 
 
+def test_light_that_is_always_there_is_taken_away(tmp_path):
+    """A dim crosshair of the beam splitter in every frame, and a frame with the mirror covered."""
+    from readout.simulation.crosshair import Crosshair, crosshair_image
+    from readout.simulation.sensor import expose
+
+    bench = maker().small_bench(contrast=4000.0)
+    ghost = crosshair_image(bench.shape, 148.3, 111.7, Crosshair(contrast=1500.0, background=300.0))
+    calibration, n = bench.calibration(), 7
+    shown = np.array([(0, 0), (150, 0), (-150, 0), (0, 150), (0, -150), (150, 150), (-150, 150)])
+    rows = ["file,x_arcsec,y_arcsec,sd_arcsec"]
+    for k, tilt in enumerate(shown):
+        place = calibration.position(float(tilt[0]) + 60, float(tilt[1]) + 25)
+        light = bench.electrons(*map(float, place)) + ghost
+        pixels = expose(light, bench.sensor, np.random.default_rng((97, k)))
+        write_picture(tmp_path / f"{k}.png", pixels, full_scale=255)
+        rows.append(f"{k}.png,{tilt[0]},{tilt[1]},0.05")
+    covered = expose(ghost + 800.0, bench.sensor, np.random.default_rng((97, n)))
+    write_picture(tmp_path / "covered.png", covered, full_scale=255)
+    (tmp_path / "tilts.csv").write_text("\n".join(rows) + "\n")
+    (tmp_path / "set.toml").write_text('[fixed]\nfile = "covered.png"\n')
+    found = json.loads(run("calibrate", tmp_path, "--json").stdout)
+    error = found["focal_length_px"] - calibration.focal_length_px
+    print(f"seed 97: off by {error:.1f} px, claimed {found['focal_length_px_sd']:.1f} px")
+    assert found["n"] == n
+    assert abs(error) < 4 * found["focal_length_px_sd"] < 40
+
+
 def test_a_fresh_set(tmp_path):
     stage = SteppedStage(seed=4711)
     maker().make(tmp_path / "fresh", stage)
