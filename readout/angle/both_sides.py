@@ -32,6 +32,8 @@ from readout.least_squares import linear_least_squares
 from readout.model import F64
 
 MOST_STEPS = 50
+MOST_BENT = 0.1
+"""a distortion that shifts a point of the picture by more than this share is none"""
 SMALLEST_STEP = 1e-9
 """in standard uncertainties of the parameters"""
 
@@ -95,6 +97,8 @@ def fit_both_sides(
         left = step.whitened + step.design @ fit.parameters
         pull = np.linalg.solve(np.swapaxes(step.root, 1, 2), left[..., None])
         theta = theta + fit.parameters
+        if k1_at is not None and _bends(model, theta, k1_at, p_px) > MOST_BENT:
+            raise BadInput("no distortion of a lens makes these tilts of these positions")
         q_px = p_px - (place_cov @ np.swapaxes(step.per_px, 1, 2) @ pull)[..., 0]
         if np.max(np.abs(fit.parameters) / np.sqrt(np.diag(fit.cofactor))) < SMALLEST_STEP:
             break
@@ -153,8 +157,8 @@ def _linearised(
     design[..., : model.m] = by_slope @ np.einsum(
         "jkm,nk->njm", by_parameter.reshape(2, 2, -1), q_px
     )
-    for row, axis in zip(*np.nonzero(used), strict=True):
-        design[row, axis, model.offset[row, axis]] = -1.0
+    rows, axes = np.nonzero(used)
+    design[rows, axes, model.offset[rows, axes]] = -1.0
     if k1_at is not None:
         design[..., k1_at] = (by_w @ (slope * r2[:, None])[..., None])[..., 0]
     known = tilts.known_arcsec + np.where(used, theta[model.offset], 0.0)
@@ -168,6 +172,12 @@ def _linearised(
     whitened = _solve(root, held[..., None])[..., 0]
     whitened_design = _solve(root, np.where(used[..., None], design, 0.0))
     return _Linearised(residual, whitened, whitened_design, root, per_px)
+
+
+def _bends(model: TiltModel, theta: F64, k1_at: int, p_px: F64) -> float:
+    """Largest share by which the distortion shifts a point."""
+    slope = p_px @ model.matrix(theta)[0].reshape(2, 2).T
+    return float(abs(theta[k1_at]) * np.max(np.sum(slope**2, axis=1)))
 
 
 def _solve(root: F64, values: F64) -> F64:

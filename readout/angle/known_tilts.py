@@ -81,13 +81,13 @@ def calibrate_known_tilts(
     off_rows = contradicted_rows(fit, agreed)
     widened = widening(agreed.chi_square, agreed.freedom)
     calibration = _calibration(tilts, camera, model, fit, widened)
-    _refuse_uncertain(calibration, agreed)
+    _refuse_uncertain(tilts, calibration, agreed)
     return replace(
         calibration,
         id=calibration_id,
         created_utc=created_utc,
         residuals=tuple(_residual_rows(tilts, fit, off_rows)),
-        warnings=tuple(_warnings(tilts, model, calibration, fit, off_rows, widened)),
+        warnings=tuple(_warnings(tilts, model, calibration, fit, agreed, off_rows, widened)),
     )
 
 
@@ -154,26 +154,32 @@ def _refuse_slip(tilts: TiltSet, camera: Camera, model: TiltModel, row: int, axi
     others = fit_both_sides(replace(tilts, sd_arcsec=unheard), camera, model)
     said = float(tilts.tilt_arcsec[row, axis])
     meant = said + float(others.residual_arcsec[row, axis])
-    times = f" ({said / meant:.3g} times as much)" if abs(meant) > 0.05 * abs(said) else ""
+    times = f" ({said / meant:.3g} times as much)" if meant / (said or 1.0) > 0.05 else ""
     raise BadInput(
         f"{tilts.names[row]} is said to be at {'XY'[axis]} {signed(said, 1)}″{times}, where "
         f"the other rows make it {signed(meant, 1)}″: correct this row or take it out"
     )
 
 
-def _refuse_uncertain(calibration: Calibration, agreed: Agreement) -> None:
+def _refuse_uncertain(tilts: TiltSet, calibration: Calibration, agreed: Agreement) -> None:
     share = calibration.focal_length_px_sd / calibration.focal_length_px
     if share <= WORST_SCALE_SD:
         return
     if agreed.freedom and agreed.chi_square > 100 * agreed.freedom:
         raise BadInput(
-            "the rows contradict each other, and too few are there to tell which is wrong: check "
-            "each row against its frame, or add frames"
+            "the rows contradict each other, and no single one is to blame, most so "
+            f"{_worst_two(tilts, agreed)}: check each row against its frame, or add frames"
         )
     raise BadInput(
         "the tilts are too small for their uncertainty to give a scale: take points further "
         "apart, or know them better"
     )
+
+
+def _worst_two(tilts: TiltSet, agreed: Agreement) -> str:
+    """The two rows with the largest residuals: exchanged frames are no single row's fault."""
+    worst = np.argsort(-np.sum(agreed.whitened**2, axis=1), kind="stable")[:2]
+    return " and ".join(tilts.names[row] for row in sorted(worst))
 
 
 def _residual_rows(
@@ -201,6 +207,7 @@ def _warnings(
     model: TiltModel,
     calibration: Calibration,
     fit: BothSides,
+    agreed: Agreement,
     off_rows: list[OffRow],
     widened: float,
 ) -> list[str]:
@@ -216,6 +223,7 @@ def _warnings(
         found.append(
             "residuals are larger than their uncertainties allow: "
             f"the claimed ones are widened {widened:.1f} times"
+            + ("" if off_rows else f"; the largest are of {_worst_two(tilts, agreed)}")
         )
     found += [
         f"{tilts.names[item.row]} is {item.off_sd:.1f} sd off what the other rows make it: look "

@@ -25,6 +25,8 @@ from readout.units import ARCSEC_PER_RAD
 LEAST_SPREAD = 0.005
 """smallest singular value of the scaled design over the largest, below which the points lie, but
 for noise, on one line"""
+SAME_ARCSEC = 1e-6
+"""tilts nearer than this are one: what rounding leaves of the sine of half a turn"""
 
 
 @dataclass(frozen=True, slots=True)
@@ -59,7 +61,7 @@ def choose_model(tilts: TiltSet, camera: Camera, way: str = "known tilts") -> Ti
             "calibration: give at least three frames with different tilts"
         )
     d = tilts.position_px - camera.centre_px
-    moved = [np.unique(tilts.tilt_arcsec[given[:, axis], axis]).size > 1 for axis in (0, 1)]
+    moved = [_reach(tilts.tilt_arcsec[given[:, axis], axis]) > SAME_ARCSEC for axis in (0, 1)]
     zeros = tilts.zeros
     own = 4 + 2 * zeros[:, None] + np.array([0, 1])
     unknown = np.where(given, own, -1)
@@ -77,6 +79,10 @@ def choose_model(tilts: TiltSet, camera: Camera, way: str = "known tilts") -> Ti
             return _full(f"{way}, one axis after the other", tilts, d, held)
         raise BadInput(_on_one_line(tilts, d))
     return _square(tilts, camera, d, moved.index(True), way)
+
+
+def _reach(known_arcsec: F64) -> float:
+    return float(np.ptp(known_arcsec)) if known_arcsec.size else 0.0
 
 
 def _on_one_line(tilts: TiltSet, d: F64) -> str:
@@ -129,7 +135,7 @@ def _square(tilts: TiltSet, camera: Camera, d: F64, axis: int, way: str) -> Tilt
     rows = np.isfinite(tilts.tilt_arcsec[:, axis])
     zeros = tilts.zeros
     known = np.where(rows, tilts.tilt_arcsec[:, axis], np.nan)
-    levels = np.unique(known[rows])
+    levels = np.unique(np.round(known[rows] / SAME_ARCSEC))
     if len(levels) < 3 and zeros.max() == 0:
         raise BadInput(
             f"{'xy'[axis]} was moved between {len(levels)} tilts only, which nothing checks: "

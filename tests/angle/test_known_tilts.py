@@ -185,6 +185,19 @@ def test_a_row_off_by_little_is_named_in_a_small_set_too(seed):
     assert [row["file"] for row in found.residuals if row["outlier"]] == ["2.png"]
 
 
+@pytest.mark.parametrize("pair", [(7, 8), (0, 14), (5, 9)])
+def test_two_frames_exchanged_are_named(pair):
+    """No single row is to blame; the two are told all the same, in a refusal or in a note."""
+    given = tilt_set(np.random.default_rng(53))
+    tilts = given.tilt_arcsec.copy()
+    tilts[list(pair)] = tilts[list(pair)[::-1]]
+    try:
+        told = " ".join(calibrate_known_tilts(replace(given, tilt_arcsec=tilts), CAMERA).warnings)
+    except BadInput as error:
+        told = str(error)
+    assert all(f"{row}.png" in told for row in pair)
+
+
 def test_good_sets_have_no_row_named():
     """One in 1000 by design: 400 sets give none or one or two (4 with a chance of 0.1 %)."""
     rng = np.random.default_rng(51)

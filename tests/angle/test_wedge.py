@@ -5,6 +5,7 @@ import math
 import numpy as np
 import pytest
 
+from readout.angle import Camera, TiltSet, calibrate_known_tilts, nominal_calibration
 from readout.angle.optics import tilt_of_slopes
 from readout.angle.two_returns import front_first
 from readout.angle.wedge import (
@@ -124,3 +125,27 @@ class TestFrontFirst:
         main, other = self.places(rng, np.zeros(8, dtype=bool))
         with pytest.raises(BadInput, match="directions in between"):
             front_first(main[[0, 2]], other[[0, 2]], self.TURNS[[0, 2]])
+
+
+def test_a_wedge_at_one_place_and_half_a_turn_from_it_is_one_axis():
+    """In the beam, turned by half, and out: three points in X; rounding of sin 180° is no tilt."""
+    truth = nominal_calibration(
+        focal_length_mm=300.0, pitch_um=3.45, image_width_px=640, image_height_px=480
+    )
+    made = wedge_tilts(Wedge(150.0, 0.1), np.array([np.nan, 0.0, 180.0]), np.zeros(3))
+    true = made.tilt_arcsec + np.array([3.0, 4.0])
+    found = calibrate_known_tilts(
+        TiltSet(
+            names=("a", "b", "c"),
+            position_px=np.stack(truth.position(true[:, 0], true[:, 1]), axis=1),
+            position_cov_px2=np.tile([1e-6, 0.0, 1e-6], (3, 1)),
+            tilt_arcsec=made.tilt_arcsec,
+            sd_arcsec=np.zeros(3),
+            shared=made.shared,
+        ),
+        Camera(640, 480),
+        way="wedge in transmission",
+    )
+    assert found.method == "wedge in transmission in x only, square pixels"
+    assert found.focal_length_px == pytest.approx(truth.focal_length_px, rel=1e-6)
+    assert found.focal_length_px_sd / found.focal_length_px == pytest.approx(0.1 / 150, rel=1e-2)

@@ -64,10 +64,17 @@ def test_every_number_comes_back_bit_for_bit(
         residuals=({"file": "a.png", "x_arcsec": 0.01},),
         residual_rms_arcsec=0.01,
         n=15,
+        signs_shown=({"how": "top edge pressed", "done_utc": "2026-05-04T10:00:00Z"},),
     )
     path = tmp_path_factory.mktemp("calibration") / "c.json"
     save_calibration(path, calibration)
     assert load_calibration(path) == calibration
+
+
+def test_a_file_from_before_signs_were_kept_with_how_and_when(tmp_path: Path) -> None:
+    path = tmp_path / "c.json"
+    edited(path, signs_shown=...)
+    assert load_calibration(path).signs_shown == ()
 
 
 def test_what_a_person_reads_in_it(tmp_path: Path) -> None:
