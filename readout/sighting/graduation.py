@@ -17,9 +17,10 @@ from numpy.typing import NDArray
 from readout.least_squares import linear_least_squares
 from readout.model import F64, Pixels
 from readout.sighting.find import find_arms
+from readout.sighting.graduation_arms import long_arms, seen_beside
 from readout.sighting.graduation_axis import axis_slope
 from readout.sighting.graduation_marks import FittedMarks, RoughMarks, fit_marks
-from readout.sighting.graduation_search import RoughScale, search_scales, seen_beside
+from readout.sighting.graduation_search import RoughScale, search_scales
 from readout.sighting.rough import RoughArms
 from readout.sighting.shape import Shape
 
@@ -34,7 +35,7 @@ LONGEST_STEPS, LONGEST_PX = 1.5, 50.0
 """farther from the axis than this a mark is not looked at: it says no more"""
 LONGER = 1.3
 """a mark this many times as long as the usual one is a longer one"""
-ALONG_RAD, ALONG_LOOSE_RAD = math.radians(0.4), math.radians(8.0)
+ALONG_RAD, ALONG_LOOSE_RAD = math.radians(0.4), math.radians(12.0)
 SQUARE_WITHIN_RAD = math.radians(0.3)
 """a line that is less square to the marks is another one"""
 OFF_SCALE = 5.0
@@ -102,7 +103,7 @@ def find_graduation(pixels: Pixels, *, full_scale: int) -> Graduation:
     ``pixels`` (height, width): uint8 or uint16. A scale needs five marks in view, six pixels apart
     or more. Never raises on a bad picture.
     """
-    arms = find_arms(pixels)
+    arms = long_arms(pixels, find_arms(pixels))
     scales = [
         scale
         for rough in search_scales(pixels, arms)

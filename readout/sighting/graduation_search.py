@@ -9,23 +9,21 @@ import numpy as np
 from numpy.typing import NDArray
 
 from readout.model import F64, Pixels
+from readout.sighting.graduation_arms import seen_beside
 from readout.sighting.graduation_chain import Chain, best_chain
 from readout.sighting.graduation_directions import directions_rad, folded
 from readout.sighting.graduation_view import F32, View, response, row_peaks, turned_view
-from readout.sighting.rough import RoughArm, RoughArms
+from readout.sighting.rough import RoughArms
 
 SIZES_PX = (1.0, 1.7, 2.8, 4.5)
 LEAST_STEP_SIZES = 3.5
 """marks closer than this many of their sizes run into each other"""
 MOST_ROWS = 8
 TURNS = 4
+STILL_IT = 0.6
+"""a scale seen along a better direction has as many marks, but for some"""
 RESTS_ROWS = 0.7
 """a scale whose ends lie this far off the row of its middle is turned anew"""
-ALONG_RAD = math.radians(8.0)
-"""an arm so near to the scale's own direction does not hide its marks from the search"""
-PARALLEL_RAD = math.radians(1.5)
-ARM_WIDTHS, ARM_PX = 1.3, 3.0
-"""an arm is hidden this many of its widths, and so many pixels more, either side"""
 SAME_RAD = math.radians(2.5)
 """a direction so near to that of a scale found needs no search of its own"""
 SQUARE_RAD = math.radians(4.0)
@@ -56,50 +54,13 @@ class RoughScale:
         return float(np.median(np.diff(self.column) / np.diff(self.numbers)))
 
 
-def seen_beside(
-    arms: RoughArms, shape: tuple[int, int], scale_rad: float, *, along_rad: float = ALONG_RAD
-) -> NDArray[np.bool_]:
-    """True where no arm lies; (height, width).
-
-    Arms within ``along_rad`` of a scale's direction are left in view: they go along with it. So
-    are three and more that are parallel: a return has one arm a direction, they are long marks.
-    """
-    seen = np.ones(shape, dtype=np.bool_)
-    rows, columns = np.arange(float(shape[0]))[:, None], np.arange(float(shape[1]))[None, :]
-    for arm in _single(arms.uprights):
-        if _apart_rad(math.pi / 2 - math.atan(arm.line.slope), scale_rad) > along_rad:
-            seen &= np.abs(columns - arm.line.x_at(rows)) > _half(arm)
-    for arm in _single(arms.levels):
-        if _apart_rad(math.atan(arm.line.slope), scale_rad) > along_rad:
-            seen &= np.abs(rows - arm.line.x_at(columns)) > _half(arm)
-    return seen
-
-
-def _single(arms: tuple[RoughArm, ...]) -> list[RoughArm]:
-    turns = [math.atan(arm.line.slope) for arm in arms]
-    return [
-        arm
-        for arm, turn in zip(arms, turns, strict=True)
-        if sum(abs(turn - other) < PARALLEL_RAD for other in turns) < 3
-    ]
-
-
-def _apart_rad(one: float, other: float) -> float:
-    """Angle between two lines, 0 to a quarter turn."""
-    return abs((one - other + math.pi / 2) % math.pi - math.pi / 2)
-
-
-def _half(arm: RoughArm) -> float:
-    return (ARM_WIDTHS * arm.width_px + ARM_PX) / arm.line.cosine
-
-
 def search_scale(pixels: Pixels, arms: RoughArms, turn_rad: float) -> RoughScale | None:
     """The best scale that lies about along a direction, followed until its direction rests."""
     best: RoughScale | None = None
     for _ in range(TURNS):
         seen = seen_beside(arms, pixels.shape, turn_rad)
         found = _in_view(turned_view(pixels, seen, turn_rad))
-        if found is None or (best is not None and found.merit < best.merit):
+        if found is None or (best is not None and found.merit < STILL_IT * best.merit):
             break
         best = found
         slope, span = _lean(found)
@@ -128,7 +89,8 @@ def _in_view(view: View) -> RoughScale | None:
         for polarity in (-1, 1):
             heights = of_dark if polarity < 0 else -of_dark
             for row, peaks in _richest(heights, size):
-                chain = best_chain(peaks.tolist(), least_step=LEAST_STEP_SIZES * size)
+                seen = (heights[row] != 0).tolist()
+                chain = best_chain(peaks.tolist(), least_step=LEAST_STEP_SIZES * size, seen=seen)
                 if chain is None:
                     continue
                 height = float(np.median(heights[row, peaks[chain.members]]))
