@@ -111,9 +111,12 @@ class SightingMessage(TypedDict):
 
 
 class CalibrationMessage(TypedDict):
-    """``field_arcsec``: tilts at the picture's corners, from the top left clockwise."""
+    """``name``: given when it was made, else "". ``field_arcsec``: tilts at the picture's corners,
+    from the top left clockwise.
+    """
 
     id: str
+    name: str
     method: str
     signs: str
     focal_length_mm: Number
@@ -337,6 +340,12 @@ def sighting_message(observation: Observation) -> SightingMessage:
     }
 
 
+def name_of(calibration: Calibration) -> str:
+    """What it was called when it was made, else ""."""
+    name = calibration.made_from.get("name")
+    return name if isinstance(name, str) else ""
+
+
 def calibration_message(calibration: Calibration | None) -> CalibrationMessage | None:
     """None stays None."""
     if calibration is None:
@@ -348,6 +357,7 @@ def calibration_message(calibration: Calibration | None) -> CalibrationMessage |
     focal_mm = calibration.focal_length_mm
     return {
         "id": calibration.id,
+        "name": name_of(calibration),
         "method": calibration.method,
         "signs": calibration.signs,
         "focal_length_mm": None if focal_mm is None else rounded(focal_mm),

@@ -8,6 +8,8 @@ describe('the trace of the focus', () => {
     const [low, high] = rangeOf([3, 3]);
     expect(low).toBeLessThanOrEqual(3);
     expect(high).toBeGreaterThan(low);
+    const [from, to] = rangeOf([3, 3.001]);
+    expect(to - from).toBeGreaterThanOrEqual(0.15);
   });
 
   it('leaves gaps open', () => {

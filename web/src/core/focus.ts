@@ -26,10 +26,12 @@ export function focusOf(value: unknown): FocusTrace {
 export function rangeOf(values: readonly (number | null)[]): [number, number] {
   const seen = values.filter((value): value is number => value !== null);
   if (seen.length === 0) return [0, 1];
-  const [low, high] = [Math.min(...seen), Math.max(...seen)];
-  const step = 10 ** Math.floor(Math.log10(Math.max(high - low, high * 0.05, 1e-3)));
-  const [from, to] = [Math.floor(low / step) * step, Math.ceil(high / step) * step];
-  return [from, to > from ? to : from + step];
+  const [least, most] = [Math.min(...seen), Math.max(...seen)];
+  // Noise alone does not fill the height: a twentieth of the width is the least that is shown.
+  const pad = Math.max(0, most * 0.05 - (most - least), 1e-3) / 2;
+  const [low, high] = [least - pad, most + pad];
+  const step = 10 ** Math.floor(Math.log10(high - low));
+  return [Math.floor(low / step) * step, Math.ceil(high / step) * step];
 }
 
 /** Lines of an SVG path, a new one after each gap; x from 0 to `width`, small values low. */

@@ -6,6 +6,7 @@ import {
   plain,
   signed,
   slotsOf,
+  smallUncertainty,
   uncertainty,
   wholesOf,
 } from './numbers';
@@ -19,6 +20,13 @@ describe('decimals', () => {
     expect(uncertainty(0.0274)).toBe('0.027');
     expect(decimalsFor(1.3)).toBe(1);
     expect(decimalsFor(35)).toBe(0);
+  });
+
+  it('beside larger ones does not fill the line with noughts', () => {
+    expect(smallUncertainty(0.0274)).toBe('0.027');
+    expect(smallUncertainty(0.00067)).toBe('0.0007');
+    expect(smallUncertainty(0.0000001)).toBe('< 0.0001');
+    expect(smallUncertainty(0)).toBe('0');
   });
 
   it('has a bound, also without an uncertainty', () => {

@@ -38,6 +38,12 @@ export function plain(value: number | null, decimals: number): string {
   return sign + grouped(whole) + (part === undefined ? '' : `.${part}`);
 }
 
+/** An uncertainty beside others: two digits, and no more than four decimals. */
+export function smallUncertainty(u: number | null): string {
+  if (u !== null && u < 0.00005) return u === 0 ? '0' : '< 0.0001';
+  return plain(u, decimalsFor(u, 4));
+}
+
 /** An uncertainty with its two significant digits. */
 export function uncertainty(u: number | null): string {
   return plain(u, decimalsFor(u, 6));

@@ -52,6 +52,8 @@ export interface Readings {
 
 export interface CalibrationInUse {
   id: string;
+  /** What it was called when it was made, else nothing. */
+  name: string;
   method: string;
   signs: string;
   focal_length_mm: number | null;
@@ -230,6 +232,7 @@ function calibrationOf(fields: Fields | null): CalibrationInUse | null {
   return (
     fields && {
       id: fields.text('id'),
+      name: fields.textOrNull('name') ?? '',
       method: fields.text('method'),
       signs: fields.text('signs'),
       focal_length_mm: fields.numberOrNull('focal_length_mm'),

@@ -38,6 +38,7 @@ export function status(): Status {
     image_height_px: 480,
     calibration: {
       id: 'nominal-1',
+      name: '',
       method: 'nominal',
       signs: 'unproven',
       focal_length_mm: 300,
