@@ -11,7 +11,18 @@ from typing import Annotated
 import typer
 
 from readout import __version__
-from readout.cli import calibrate, cameras, live, locate, measure, prepare, runs, simulate
+from readout.cli import (
+    calibrate,
+    cameras,
+    check,
+    drift,
+    live,
+    locate,
+    measure,
+    prepare,
+    runs,
+    simulate,
+)
 from readout.cli.say import fail, speak_utf8
 from readout.errors import BadInput, ReadoutError, cannot_write
 
@@ -31,8 +42,9 @@ app = typer.Typer(
     rich_markup_mode="markdown",
     context_settings={"help_option_names": ["-h", "--help"]},
 )
-for command in (live, cameras, locate, measure, prepare, calibrate, simulate):
+for command in (live, cameras, locate, measure, prepare, calibrate, drift, simulate):
     app.command(epilog=command.EXAMPLE)(command.command)
+app.add_typer(check.app, name="check", epilog=check.EXAMPLE, help="Is the set-up sound?")
 app.add_typer(runs.app, name="runs", epilog=runs.EXAMPLE, help="What has been recorded.")
 
 

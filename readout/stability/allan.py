@@ -18,10 +18,11 @@ import math
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 from scipy.special import chdtri
 
 from readout.model import F64
-from readout.stability.even import EvenSeries
+from readout.stability.even import GAP_INTERVALS, EvenSeries
 
 LEAST_PRESENT = 0.9
 """Share of a mean's readings that must be there."""
@@ -56,12 +57,20 @@ def averaging_factors(size: int) -> list[int]:
     return sorted({m for m in (*octaves, most) if 1 <= m <= max(1, most)})
 
 
-def allan_deviation(series: EvenSeries, factors: list[int] | None = None) -> Allan:
-    """The overlapping Allan deviation at averages of ``factors`` readings, octaves by default."""
+def allan_deviation(
+    series: EvenSeries, factors: list[int] | None = None, *, across_gaps: bool = True
+) -> Allan:
+    """The overlapping Allan deviation at averages of ``factors`` readings, octaves by default.
+
+    A few readings may be missing within a mean. Without ``across_gaps`` no mean and no difference
+    reaches over a gap: each stretch between gaps counts by itself, and all of them together.
+    """
     size = len(series.values)
+    open_gap = np.zeros(size, dtype=bool) if across_gaps else _gaps(series.values)
     rows = []
     for m in factors or averaging_factors(size):
         means = _means(series.values, m)
+        means[_any_of(open_gap, m)] = np.nan
         difference = means[m:] - means[:-m]
         difference = difference[np.isfinite(difference)]
         if difference.size:
@@ -83,6 +92,23 @@ def _means(values: F64, m: int) -> F64:
     enough = there >= max(1.0, LEAST_PRESENT * m)
     sums = total[m:] - total[:-m]
     return np.where(enough, middle + sums / np.maximum(there, 1), np.nan)
+
+
+def _gaps(values: F64) -> NDArray[np.bool_]:
+    """True for the values that are missing in a row, as many as make a gap, (n,)."""
+    missing = np.concatenate([[False], np.isnan(values), [False]])
+    edges = np.flatnonzero(np.diff(missing))
+    found = np.zeros(len(values), dtype=bool)
+    for begin, end in edges.reshape(-1, 2):
+        # Between the readings on both sides lies one interval more than values are missing.
+        found[begin:end] = end - begin + 1 > GAP_INTERVALS
+    return found
+
+
+def _any_of(marked: NDArray[np.bool_], m: int) -> NDArray[np.bool_]:
+    """Whether any of every m neighbours is marked, (n - m + 1,)."""
+    count = np.concatenate([[0], np.cumsum(marked)])
+    return np.asarray(count[m:] > count[:-m])
 
 
 def _freedom(size: int, m: int) -> float:

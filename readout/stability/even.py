@@ -9,6 +9,8 @@ import numpy as np
 from readout.errors import BadInput
 from readout.model import F64
 
+GAP_INTERVALS = 3.0
+"""Readings further apart than this many intervals have a gap between them."""
 MOST_BINS = 20_000_000
 """Beyond this a gap is no gap but a wrong clock."""
 

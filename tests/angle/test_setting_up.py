@@ -5,10 +5,12 @@ import re
 from pathlib import Path
 
 import pytest
+import typer.main
 
 from readout.angle.distance import clear_range, shift_per_metre
 from readout.angle.distance_fit import check_distance
 from readout.angle.distance_rows import DistanceRow
+from readout.cli.app import app
 
 TEXT = (Path(__file__).parents[2] / "docs/setting-up.md").read_text(encoding="utf-8")
 
@@ -64,12 +66,22 @@ def test_how_well_the_defocus_is_known():
     assert found.defocus_u_mm == pytest.approx(said, abs=0.0005)
 
 
-def test_columns_and_functions_are_there():
+def test_columns_functions_and_commands_are_there():
     for column in ("distance_mm", "step", "x_arcsec", "y_arcsec", "sd_arcsec"):
         assert f"`{column}`" in TEXT
         assert column in DistanceRow.__slots__
     named = re.findall(r"`(readout(?:\.\w+)+)`", TEXT)
-    assert len(named) == 5
+    assert named
     for name in named:
         module, function = name.rsplit(".", 1)
         assert callable(getattr(__import__(module, fromlist=[function]), function))
+
+    called = [line.split()[1:] for line in re.findall(r"`(readout [^`]+)`", TEXT)]
+    assert [words[0] for words in called].count("check") == 4
+    for words in called:
+        names = words[:2] if words[0] == "check" else words[:1]
+        command = typer.main.get_command(app)
+        for name in names:
+            command = command.commands[name]
+        known = {option for p in command.params for option in p.opts}
+        assert {word for word in words if word.startswith("--")} <= known, words
