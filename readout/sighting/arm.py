@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from readout.model import F64, Arm, Pixels
-from readout.sighting.fold import Line, Shadow, cut_strip, fold_strip
+from readout.sighting.fold import DEEPEST, Line, Shadow, cut_strip, fold_strip
 from readout.sighting.look import Look, missing_in
 from readout.sighting.profile import half_maximum, peak_height
 from readout.sighting.sections import Light
@@ -25,6 +25,8 @@ RESTS_TURN_PX = 0.1
 """a line that moves less than this, in the middle and at its ends, needs no new strip"""
 CROOKED = 25.0
 """an arm whose sections scatter by this factor, in variance, more than noise has marks across it"""
+FEW_SLICES = 24
+"""an arm with fewer slices on it is cut anew, row by row"""
 ROUNDS = 8
 """times an uneven or spoilt arm is looked at anew"""
 
@@ -38,9 +40,10 @@ class ArmFit:
     typical noise of a pixel, levels. ``excess``: factor on the covariance for what the pixels'
     noise does not explain. ``rows``: rows in which the arm is there. ``clipped``: share of the
     strip's pixels at full scale; ``peak``: the brightest. ``lean``: px along x by which the line is
-    pulled if its contrast rises by its own size per pixel across it. ``lopsided_px``: the shift
-    that would make its sides differ as they do. ``graduated``: marks cross it.
-    ``light``: along the arm.
+    pulled if its contrast rises by its own size per pixel across it. ``lopsided``: reduced
+    chi-square by which its sides differ, ``lopsided_px``: the shift that would make them.
+    ``hollow``: dip in the middle of its profile, as a share of its height. ``graduated``: marks
+    cross it. ``light``: along the arm.
     """
 
     line: Line
@@ -55,7 +58,9 @@ class ArmFit:
     clipped: float
     peak: float
     lean: float
+    lopsided: float
     lopsided_px: float
+    hollow: float
     graduated: bool
     light: Light | None
 
@@ -81,7 +86,7 @@ def fit_arm(
     and ``unusable`` ones say nothing. What lies in the ``shadow`` of another arm is left out.
     Returns None where no arm can be fitted: never raises on a bad picture.
     """
-    look = None
+    look, deepest = None, DEEPEST
     for _ in range(CUTS):
         half_columns = math.ceil((1.25 * shape.reach_px + 2) / line.cosine)
         strip = cut_strip(
@@ -90,6 +95,7 @@ def fit_arm(
             half_columns,
             full_scale=full_scale,
             unusable=unusable,
+            deepest=deepest,
             shadow=shadow,
         )
         if strip is None:
@@ -102,7 +108,9 @@ def fit_arm(
         line, shape, known = _moved(strip.line, solution), solution.shape, True
         ends = abs(solution.turn) * float(strip.rows[-1] - strip.rows[0]) / 2
         if abs(solution.shift) < RESTS_SHIFT_PX and ends < RESTS_TURN_PX:
-            break
+            if strip.depth == 1 or look.lit_slices >= FEW_SLICES:
+                break
+            deepest = 1
     return None if look is None else _looked_at(look)
 
 
@@ -143,7 +151,9 @@ def _looked_at(look: Look) -> ArmFit:
         clipped=clipped,
         peak=strip.peak,
         lean=solution.lean,
+        lopsided=lopsided,
         lopsided_px=lopsided_px,
+        hollow=look.hollow,
         graduated=graduated or (sections is not None and sections.excess_variance > CROOKED),
         light=None if sections is None else look.light(sections),
     )
@@ -166,3 +176,9 @@ def shape_of(arm: Arm) -> Shape:
     half_width = arm.line_px / 2
     contrast = arm.contrast / peak_height(half_width, arm.blur_px)
     return Shape(arm.background, 0.0, contrast, half_width, arm.blur_px)
+
+
+def known(arm: Arm) -> bool:
+    """True of an arm whose shape is known well enough to start from."""
+    values = (arm.angle_deg, arm.contrast, arm.background, arm.line_px, arm.blur_px)
+    return all(map(math.isfinite, values)) and arm.line_px > 0 and arm.blur_px > 0

@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 
 from readout.model import Quality, Return, Sighting, no_sighting
-from readout.sighting.arm import arm_of, shape_of
+from readout.sighting.arm import arm_of, known, shape_of
 from readout.sighting.crossing import Cross
 from readout.sighting.fold import Line
 from readout.sighting.lone_arm import lone_arm
@@ -41,6 +41,8 @@ def locate_crosshair(picture: Picture, prior: Sighting | None = None) -> Sightin
 def _from_prior(picture: Picture, prior: Sighting) -> Cross | None:
     """Both arms where the last frame had them, or None if they are not there."""
     if not prior.found or prior.upright is None or prior.level is None:
+        return None
+    if not (known(prior.upright) and known(prior.level)):
         return None
     upright = Line(prior.x_px, -math.tan(math.radians(prior.upright.angle_deg)), prior.y_px)
     level = Line(prior.y_px, math.tan(math.radians(prior.level.angle_deg)), prior.x_px)

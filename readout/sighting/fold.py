@@ -115,16 +115,17 @@ def cut_strip(
     *,
     full_scale: float = math.inf,
     unusable: NDArray[np.bool_] | None = None,
+    deepest: int = DEEPEST,
     shadow: Shadow | None = None,
 ) -> Strip | None:
     """Cut the strip of ``half_columns`` either side of ``line`` out of a picture.
 
-    What lies in the ``shadow`` of another arm is left out, and rows in which the border cuts the
-    strip; where most rows are so, the whole strip is narrowed on that side instead. Returns None if
-    fewer than 8 slices or 5 columns remain.
+    ``deepest``: most rows to a slice. What lies in the ``shadow`` of another arm is left out, and
+    rows in which the border cuts the strip; where most rows are so, the whole strip is narrowed on
+    that side instead. Returns None if fewer than 8 slices or 5 columns remain.
     """
     height, width = pixels.shape
-    depth = _depth(line, height)
+    depth = _depth(line, height, deepest)
     first_row = np.arange(height // depth) * depth
     rows = first_row + (depth - 1) / 2
     at = line.x_at(rows)
@@ -187,9 +188,8 @@ def _stretches(picture: NDArray[Any], columns: int) -> NDArray[Any]:
     return as_strided(picture, shape, (down, right, right), writeable=False)
 
 
-def _depth(line: Line, height: int) -> int:
+def _depth(line: Line, height: int, depth: int) -> int:
     """Rows to a slice: over them the line moves no more than blurs a sharp one by 1 per cent."""
-    depth = DEEPEST
     while depth > 1 and (depth * abs(line.slope) > SMEAR_PX or height < 32 * depth):
         depth //= 2
     return depth
@@ -273,10 +273,10 @@ def fold_strip(
         each = (products[:, None, :] * member).reshape(-1, slices) @ there
         sums = each.reshape(len(products), groups, -1)
         n = member @ there
-        seen = 1.0 * (n >= 1)
+        seen = (n >= 1).astype(np.float64)
         n = np.maximum(n, 1.0)
     if strip.clipped is not None:
-        seen = seen * (member @ strip.clipped < MOST_BLIND * slices_of[:, None])
+        seen = np.where(member @ strip.clipped < MOST_BLIND * slices_of[:, None], seen, 0.0)
     level, level_ca = member @ levels, (member * ca) @ levels
     level_c = level if contrast is None else (member * c) @ levels
     return Fold(

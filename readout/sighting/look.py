@@ -8,6 +8,7 @@ noise, are left out.
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -76,6 +77,16 @@ class Look:
         """The arm piece by piece; None of one too short for that."""
         return sections_of(self.strip, residual, self.contrast, self.fold, self.solution)
 
+    @property
+    def lit_slices(self) -> int:
+        """About how many slices the arm is seen in, by their height over the ground."""
+        solution, group = self.solution, self.fold.group
+        middle = np.abs(self.strip.offsets) <= max(1.0, solution.shape.half_width)
+        height = (self.levels - solution.ground[group])[:, middle].mean(axis=1)
+        height *= math.copysign(1.0, solution.shape.contrast)
+        best = np.sort(height)[int(0.9 * (len(height) - 1))]
+        return int(np.count_nonzero(height > best / 2))
+
     def light(self, sections: Sections) -> Light:
         """Contrast along the arm, relative to its mean."""
         arm = self.solution.shape.contrast
@@ -139,9 +150,21 @@ class Look:
 
         Not looked for where the profile as a whole fits.
         """
-        if not fits_badly(self.solution, sure=3.0):
+        if not fits_badly(self.solution, sure=2.0):
             return 1.0, 1
         return lopsidedness(self.fold, self.strip.line.cosine, self.solution)
+
+    @property
+    def hollow(self) -> float:
+        """By how much of its height the profile is lower in its middle than a line is."""
+        if not fits_badly(self.solution):
+            return 0.0
+        fold, solution = self.fold, self.solution
+        at = fold.u - self.strip.line.cosine * solution.shift
+        middle = (np.abs(at) < 0.5 * math.sqrt(solution.shape.spread)) & (fold.seen > 0)
+        if not middle.any():
+            return 0.0
+        return -float((solution.left / fold.n)[middle].mean() / solution.line[middle].mean())
 
     def _fitted_anew(
         self,

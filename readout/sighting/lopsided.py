@@ -15,7 +15,7 @@ from readout.model import F64
 from readout.sighting.fold import Fold
 from readout.sighting.solve import Solution
 
-SURE = 6.0
+SURE = 4.5
 """a reduced chi-square this many of its standard deviations above 1 is no noise"""
 
 

@@ -91,7 +91,8 @@ def _widened(stretches: Stretches, step_px: int) -> Iterator[tuple[F32, int]]:
     columns = stretches.sums.shape[2]
     sums = stretches.sums.reshape(-1, columns)
     for width in WIDTHS:
-        if 5 * width >= columns or (width > 1 and width * step_px > WIDEST_PX):
+        gaps = 3 * _gap(width)
+        if columns - width + 1 < gaps or (width > 1 and width * step_px > WIDEST_PX):
             return
         if width > 1:  # three of the width before
             third = width // 3
@@ -101,6 +102,11 @@ def _widened(stretches: Stretches, step_px: int) -> Iterator[tuple[F32, int]]:
         yield sums, width
 
 
+def _gap(width: int) -> int:
+    """Columns from a stretch to the one beside it that it is compared with."""
+    return width + max(1, width // 2)
+
+
 def _ridges(sums: F32, width: int, least_noise: float, shape: tuple[int, ...]) -> _Ridges:
     """How far each stretch stands out over the nearer of its two sides.
 
@@ -108,7 +114,7 @@ def _ridges(sums: F32, width: int, least_noise: float, shape: tuple[int, ...]) -
     grows. On sloping ground the foot of a strong line would be a ridge of the other polarity; but
     there the bend towards its other side is nothing but noise.
     """
-    gap = width + max(1, width // 2)
+    gap = _gap(width)
     places = sums.shape[1]
     rise = cv2.subtract(sums[:, gap:], sums[:, :-gap])
     fall = cv2.subtract(sums[:, :-gap], sums[:, gap:])

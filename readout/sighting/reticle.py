@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from readout.sighting.arm import ArmFit, fit_arm
 from readout.sighting.crossing import Cross, crossing
 from readout.sighting.fold import Line, Shadow
+from readout.sighting.pairing import LEAST_SQUARE_DEG, angle_deg
 from readout.sighting.shape import Shape
 
 LEAST_EXPLAINED = 0.7
@@ -20,6 +21,8 @@ LARGEST_SD_PX = 0.5
 """a position less certain than this is none"""
 LEAST_LENGTH_WIDTHS = 4.0
 """a thing shorter than this many of its widths is a blob, not an arm"""
+LEAST_SDS = 10.0
+"""an arm's height is so many times its own noise: a search of noise alone was seen to find 7"""
 SPARSE = 8
 SLACK_PX = 0.5
 """left out beside the other arm, so that a small move needs no second fit"""
@@ -88,6 +91,8 @@ class Picture:
         second = self.fit(level, level_shape, is_level=True, known=known, shadow=over_second)
         if second is None or first.shape.contrast * second.shape.contrast < 0:
             return None
+        if angle_deg(first.line, second.line) < LEAST_SQUARE_DEG:
+            return None
         there = np.array(crossing(first.line, second.line))
         moved = float(over.distance(there[0], there[1])) + second.shape.fades_px
         if moved > over.reach_px:
@@ -100,6 +105,7 @@ def _credible(fit: ArmFit) -> bool:
     return bool(
         fit.explained > LEAST_EXPLAINED
         and fit.rows > LEAST_LENGTH_WIDTHS * fit.width_px
+        and abs(fit.peak_contrast) * math.sqrt(fit.rows * fit.width_px) > LEAST_SDS * fit.pixel_sd
         and math.sqrt(fit.cov[0, 0]) < LARGEST_SD_PX
         and np.all(np.isfinite(fit.cov))
     )

@@ -77,16 +77,20 @@ class Shape:
             ),
         )
 
-    def change_px(self, change: F64) -> float:
-        """How far a step moves the profile, px.
+    def distance_px(self, other: Shape) -> float:
+        """How far two profiles are apart, px.
 
-        Its width; its fourth moment and its flux, relative and in widths; a line beside.
+        In width; in fourth moment and flux, relative and in widths; in the place of a line beside.
         """
-        width = math.sqrt(self.spread)
-        _, _, flux, spread, fourth, *beside = change.tolist()
-        flatness = abs(fourth) / (10 * width**3)
-        share = abs(flux) / max(abs(2 * self.half_width * self.contrast), 1e-300)
-        return max(share * width, abs(spread) / (2 * width), flatness, *map(abs, beside[1:]))
+        width = math.sqrt(other.spread)
+        spread = abs(self.spread - other.spread) / (2 * width)
+        flatness = abs(self.half_width**4 - other.half_width**4) / (10 * width**3)
+        flux = 2 * other.half_width * other.contrast
+        share = abs(2 * self.half_width * self.contrast - flux) / max(abs(flux), 1e-300)
+        beside = 0.0
+        if self.beside is not None and other.beside is not None:
+            beside = abs(self.beside.distance - other.beside.distance)
+        return max(share * width, spread, flatness, beside)
 
     def shifted(self, shift: float, change: float) -> float:
         """A shift of the line after a step, px."""

@@ -27,6 +27,8 @@ from readout.sighting.shape import Shape
 from readout.sighting.trial import State, model_of, started
 
 MOST_STEPS = 20
+MOST_REFUSED = 4
+"""so many steps in a row, each smaller, that make the fit no better: it is as good as it gets"""
 NEAR = 0.5
 """pixels by which width, blur and line may still change before weights come in"""
 FAR_PX, FAR_TURNED = 0.3, 0.03
@@ -140,9 +142,8 @@ def _descended(
 
     Levenberg 1944, Marquardt 1963: a step that makes the fit worse is taken back and damped.
     """
-    cost = state.cost(fold, weight)
+    cost, refused = state.cost(fold, weight), 0
     normal, right = normal_equations(fold, state, weight)
-    change = np.zeros_like(right)
     for _ in range(MOST_STEPS):
         inverse = damped_inverse(normal, damping)
         if inverse is None:
@@ -156,17 +157,19 @@ def _descended(
         trial = _moved(fold, cosine, state, change)
         trial_cost = trial.cost(fold, weight)
         if trial_cost <= cost * (1 + ROUNDING):
-            state, cost, damping = trial, trial_cost, damping / 100
+            state, cost, damping, refused = trial, trial_cost, damping / 100, 0
             normal, right = normal_equations(fold, state, weight)
         else:
-            damping = max(damping * 30, DAMPING)
+            damping, refused = max(damping * 30, DAMPING), refused + 1
+            if refused == MOST_REFUSED:
+                break
     inverse = damped_inverse(normal, TINY)
-    return None if inverse is None else (state, change, inverse)
+    return None if inverse is None else (state, np.zeros_like(right), inverse)
 
 
 def _largest(state: State, change: F64) -> float:
     """How far a step moves line and profile, px."""
-    return max(abs(float(change[-2])), state.shape.change_px(change[:-2]))
+    return max(abs(float(change[-2])), state.shape.changed(change[:-2]).distance_px(state.shape))
 
 
 def _moved(fold: Fold, cosine: float, state: State, change: F64) -> State:

@@ -22,8 +22,12 @@ HIDDEN_PX = 0.1
 """what a second return whose other arm hides in the main one's may pull it by"""
 FOUND_SHARE = 0.5
 """but a line fitted beside the main arm with so much of its contrast is that other arm"""
+HOLLOW_SHARE = 0.03
+"""a profile with such a dip in its middle is two lines"""
+VERY_LOPSIDED = 100.0
 LOPSIDED_PX = 0.06
-"""a profile whose sides differ by what would shift it so far has something beside it"""
+"""a profile whose sides differ by what would shift it so far has something beside it; by a third of
+that, if they differ by so much in variance"""
 BLURRED_PX = 12.0
 """blur, standard deviation, beyond which a sharper setting is worth the trouble"""
 ASTIGMATIC_RATIO = 1.25
@@ -78,6 +82,8 @@ def _crowded(arm: ArmFit) -> bool:
     beside = arm.shape.beside
     return (
         arm.graduated
+        or arm.hollow > HOLLOW_SHARE
         or arm.lopsided_px > LOPSIDED_PX
+        or (arm.lopsided > VERY_LOPSIDED and arm.lopsided_px > LOPSIDED_PX / 3)
         or (beside is not None and beside.height > RIVAL_SHARE)
     )
