@@ -18,6 +18,8 @@ from readout.angle.wedge import deviation_arcsec, two_returns_arcsec
 from readout.files.pictures import write_picture
 from readout.simulation.autocollimator import Autocollimator
 from readout.simulation.crosshair import Crosshair
+from readout.simulation.graduation import Ruling, ruled_share
+from readout.simulation.sensor import expose
 from readout.simulation.stage import SteppedStage, frames_at
 from readout.simulation.standards import (
     Lever,
@@ -26,6 +28,7 @@ from readout.simulation.standards import (
     tilts_through_wedge,
 )
 from readout.simulation.wedge import GlassWedge
+from readout.units import ARCSEC_PER_RAD
 
 SEED = 20
 NAME = "bench_stage"
@@ -222,6 +225,57 @@ def make_window(folder: Path, seed: int = 35) -> None:
     _write_frames(folder, bench, names, true, {"seed": seed, "window_reads_arcsec": reads}, seed)
 
 
+def make_graduation(folder: Path, seed: int = 36) -> None:
+    """A graduated reticle in view, the crosshair across its marks; two lever steps to check it."""
+    bench = small_bench(contrast=3500.0)
+    calibration = bench.calibration()
+    lever = Lever()
+    heights = [0.0, 0.12]
+    true = lever.tilts(heights, [0, 0], (31.0, -44.0), np.random.default_rng((seed, 0)))
+    ruling = Ruling(division_slope=2 * 30.0 / ARCSEC_PER_RAD, line_px=2.0)
+    dark = 1 - 0.6 * ruled_share(bench.shape, calibration, ruling)
+    dark *= 1 - 0.6 * ruled_share(bench.shape, calibration, ruling, upright=True)
+    names = ["step_00.png", "step_01.png"]
+    about = _about(
+        bench,
+        "A reticle graduated in 30 arcsec of mirror tilt, the return across its marks; one lever "
+        "step of 0.12 mm. Simulated.",
+        fixed={"file": "covered.png"},
+        graduation={
+            "file": "step_00.png",
+            "spacing_arcsec": 30.0,
+            "marked_as": "mirror_tilt",
+            "rel_sd": 5e-4,
+        },
+        stage={"lever_sd_mm": lever.sd_mm, "seating_sd_mm": lever.seating_sd_mm},
+    )
+    rows = [[lever.length_mm, h, lever.block_sd_mm if h else 0.0, "x"] for h in heights]
+    _write_set(folder, about, ("lever_mm", "height_mm", "height_sd_mm", "axis"), names, rows)
+    places = []
+    for k, (name, tilt) in enumerate(zip(names, true, strict=True), start=1):
+        x_px, y_px = (float(v) for v in calibration.position(*tilt))
+        light = (bench.electrons(x_px, y_px) + 4000.0) * dark
+        pixels = expose(light, bench.sensor, np.random.default_rng((seed, k)))
+        write_picture(folder / name, pixels, full_scale=bench.sensor.full_scale)
+        places.append({"file": name, "places_px": [[x_px, y_px]]})
+    covered = expose(
+        (bench.reticle.background + 4000.0) * dark, bench.sensor, np.random.default_rng((seed, 9))
+    )
+    write_picture(folder / "covered.png", covered, full_scale=bench.sensor.full_scale)
+    truth = {"seed": seed, "true_arcsec": true.tolist()}
+    _write_truth(folder, {**truth, **_true_scale(bench), "frames": places})
+
+
+def _true_scale(bench: Autocollimator) -> dict[str, Any]:
+    calibration = bench.calibration()
+    return {
+        "focal_length_px": calibration.focal_length_px,
+        "focal_length_mm": calibration.focal_length_mm,
+        "rotation_deg": calibration.rotation_deg,
+        "mirrored": calibration.mirrored,
+    }
+
+
 SETS: dict[str, Callable[..., None]] = {
     NAME: lambda folder: make(folder, SteppedStage(seed=SEED)),
     "generator": make_generator,
@@ -229,6 +283,7 @@ SETS: dict[str, Callable[..., None]] = {
     "certified_wedge": make_certified_wedge,
     "wedge_in_transmission": make_wedge_in_transmission,
     "window_two_returns": make_window,
+    "graduation": make_graduation,
 }
 
 
@@ -277,19 +332,8 @@ def _write_frames(
     for name, (pixels, place) in zip(names, frames, strict=True):
         write_picture(folder / name, pixels, full_scale=bench.sensor.full_scale)
         places.append({"file": name, "places_px": np.atleast_2d(place).tolist()})
-    calibration = bench.calibration()
-    _write_truth(
-        folder,
-        {
-            **truth,
-            "focal_length_px": calibration.focal_length_px,
-            "focal_length_mm": calibration.focal_length_mm,
-            "rotation_deg": calibration.rotation_deg,
-            "mirrored": calibration.mirrored,
-            "true_arcsec": true_arcsec.tolist(),
-            "frames": places,
-        },
-    )
+    seen = {"true_arcsec": true_arcsec.tolist(), "frames": places}
+    _write_truth(folder, {**truth, **_true_scale(bench), **seen})
 
 
 def _write_truth(folder: Path, truth: dict[str, Any]) -> None:

@@ -3,6 +3,7 @@
 import csv
 import importlib.util
 import json
+import shutil
 import subprocess
 import sys
 from pathlib import Path
@@ -95,6 +96,7 @@ WAYS = {
     "certified_wedge": ("known tilts, both axes", 8e-4, 0.05),
     "wedge_in_transmission": ("wedge in transmission, both axes", 1.5e-3, 1.0),
     "window_two_returns": ("two returns of a window, both axes", 2.5e-3, 1.0),
+    "graduation": ("graduated scales, both axes", 1e-3, 0.4),
 }
 """method, what the claimed u(f)/f may be at most (from what each standard is said to be worth), and
 how near the camera's turn must come, in degrees: a wedge's mark is known to half a degree"""
@@ -115,6 +117,9 @@ def test_each_way_finds_the_truth_within_its_claim(name):
     assert found["mirrored"] is truth["mirrored"] is True
     assert not any("left out" in warning for warning in found["warnings"])
     assert not any("larger than their uncertainties" in warning for warning in found["warnings"])
+    if name == "graduation":
+        assert "for known tilts" in run("calibrate", folder, "--expect", ok=False).stderr
+        return
     told = json.loads(run("calibrate", folder, "--expect", "--json").stdout)
     claimed = found["focal_length_px_sd"] / found["focal_length_px"]
     assert told["focal_length_rel_sd"] == pytest.approx(claimed, rel=0.15)
@@ -146,10 +151,29 @@ def test_a_lever_is_told_its_worth_before_anything_is_taken(tmp_path):
     assert "the same however many rows" in said
 
 
+def test_a_lever_step_names_what_a_division_means(tmp_path):
+    """The same marks, taken for beam angle: the step comes out half, and is refused for it."""
+    folder = tmp_path / "copy"
+    shutil.copytree(ROOT / "calib_images" / "graduation", folder)
+    about = folder / "set.toml"
+    right = about.read_text(encoding="utf-8").replace("focal_length_mm = 200.0", "")
+    about.write_text(right, encoding="utf-8")
+    found = json.loads(run("calibrate", folder, "--json").stdout)
+    assert any("steps of the lever" in w and "they agree" in w for w in found["warnings"])
+    wrong = right.replace("mirror_tilt", "beam_angle")
+    about.write_text(wrong, encoding="utf-8")
+    done = run("calibrate", folder, ok=False)
+    assert "a factor of 0.5" in done.stderr
+    assert "change marked_as" in done.stderr
+    assert len(done.stderr.strip().splitlines()) == 1
+    (folder / "tilts.csv").unlink()  # without a step the engraved focal length tells
+    engraved = wrong.replace("[optics]", "[optics]\nfocal_length_mm = 200")
+    about.write_text(engraved, encoding="utf-8")
+    assert "nominal are 200 mm" in run("calibrate", folder, ok=False).stderr
+
+
 def a_copy(folder, tmp_path, change):
     """The lever set with its table changed."""
-    import shutil
-
     copy = tmp_path / "copy"
     shutil.copytree(folder, copy)
     table = copy / "tilts.csv"

@@ -11,7 +11,10 @@ import math
 from dataclasses import dataclass
 from enum import StrEnum
 
+import numpy as np
+
 from readout.angle.calibration import Calibration
+from readout.angle.tilt_set import TiltSet
 from readout.errors import BadInput
 
 NEAR = 0.1
@@ -56,6 +59,41 @@ def compare_scales(one: Calibration, other: Calibration) -> ScaleVerdict:
     ratio = other.focal_length_px / one.focal_length_px
     shares = [c.focal_length_px_sd / c.focal_length_px for c in (one, other)]
     return judge_ratio(ratio, ratio * math.hypot(*shares))
+
+
+def ratio_of_steps(calibration: Calibration, tilts: TiltSet) -> ScaleVerdict | None:
+    """Ratio of the steps that ``calibration`` measures to those that are known.
+
+    Two frames are enough. For each axis in which the tilts step, the measured tilt is taken as a
+    straight line over the known one; its slope counts whichever way it points, so that neither
+    signs nor a turn of the axes matter. The longer of both axes is judged. None without a step.
+    """
+    measured = np.stack(calibration.tilt(tilts.position_px[:, 0], tilts.position_px[:, 1]), axis=1)
+    best: tuple[float, ScaleVerdict] | None = None
+    for axis in (0, 1):
+        rows = np.flatnonzero(np.isfinite(tilts.tilt_arcsec[:, axis]))
+        known = tilts.tilt_arcsec[rows, axis]
+        centred = known - known.mean() if len(known) else known
+        length = float(centred @ centred)
+        if length <= 0 or (best is not None and length <= best[0]):
+            continue
+        weight = centred / length
+        step = weight @ measured[rows]
+        ratio = float(np.linalg.norm(step))
+        place = float(weight**2 @ [_noise(calibration, tilts, int(row)) for row in rows])
+        own = float(np.sum((weight * tilts.sd_arcsec[rows]) ** 2))
+        shared = sum(float(weight @ s.tilt_arcsec[rows, axis]) ** 2 for s in tilts.shared)
+        scale = calibration.focal_length_px_sd / calibration.focal_length_px
+        ratio_u = math.sqrt(place + ratio**2 * (own + shared + scale**2))
+        best = length, judge_ratio(ratio, ratio_u)
+    return None if best is None else best[1]
+
+
+def _noise(calibration: Calibration, tilts: TiltSet, row: int) -> float:
+    """Variance of both tilts of a row together, arcsec^2, from the noise of its place."""
+    x_px, y_px = tilts.position_px[row].tolist()
+    xx, xy, yy = tilts.position_cov_px2[row].tolist()
+    return float(np.trace(calibration.noise_cov(x_px, y_px, (xx, xy, yy))))
 
 
 def judge_ratio(ratio: float, ratio_u: float) -> ScaleVerdict:

@@ -13,6 +13,7 @@ import typer
 from readout.cli.options import JsonOption
 from readout.cli.results import OverwriteOption, refuse_loss
 from readout.cli.say import note, print_json, print_line, progress
+from readout.errors import BadInput
 from readout.units import decimals_for, signed
 
 EXAMPLE = "Example: `readout calibrate calib_images/bench_stage --out bench.json`"
@@ -49,8 +50,9 @@ def calibrate(
     """Calibrate from frames taken at known mirror tilts.
 
     The tilts may have a common unknown zero, which is fitted. They may come from a stage, a lever
-    raised by blocks, or a wedge of glass. The uncertainty printed is a standard uncertainty of the
-    scale; what is left over is listed frame by frame.
+    raised by blocks, or a wedge of glass; or the scale comes from a graduated reticle. The
+    uncertainty printed is a standard uncertainty of the scale; what is left over is listed frame
+    by frame.
     """
     from readout.files.calibration_file import save_calibration
     from readout.files.calibration_set import read_calibration_set
@@ -88,6 +90,11 @@ def _say_expected(folder: Path, *, json: bool) -> None:
     from readout.files.calibration_set import read_calibration_set
 
     given = read_calibration_set(folder, with_frames=False)
+    if given.graduation is not None:
+        raise BadInput(
+            "--expect is for known tilts: a graduated scale is worth what its rel_sd says, and the "
+            "places of its marks"
+        )
     focal_mm, pitch_um = given.nominal_focal_length_mm, given.pitch_um
     known = (
         {}

@@ -20,6 +20,7 @@ from readout.errors import BadInput
 from readout.files.calibration_set_about import (
     AxesPart,
     FoilPart,
+    GraduationPart,
     NudgePart,
     SetAbout,
     WedgePart,
@@ -63,6 +64,8 @@ class CalibrationSet:
     all tilts, from the stage's scale; ``shared``: what else rows share. ``two_returns``: each
     frame holds two returns and a row says how they differ, rear less front.
     ``nominal_focal_length_mm`` is for comparison only. ``fixed``: frame with the mirror covered.
+    With ``graduation`` the scale comes from its marks, and the tilts, if any, are steps to check
+    it with.
     """
 
     folder: Path
@@ -80,6 +83,8 @@ class CalibrationSet:
     nudges: tuple[NudgePart, ...] = ()
     foils: tuple[FoilPart, ...] = ()
     axes: AxesPart | None = None
+    graduation: GraduationPart | None = None
+    own_lens: bool = False
 
     def planned(self) -> TiltSet:
         """The tilts without positions; two rows a frame where each holds two returns."""
@@ -113,7 +118,7 @@ def read_calibration_set(folder: Path, *, with_frames: bool = True) -> Calibrati
     if not folder.is_dir():
         raise BadInput(f"{folder} is no folder: name a folder with frames and a tilts.csv")
     about = read_about(folder / "set.toml")
-    columns, rows = read_table(folder / "tilts.csv")
+    columns, rows = _table(folder / "tilts.csv", about)
     if (columns == TURN_COLUMNS) != (about.wedge is not None):
         raise BadInput(
             f"{folder / 'tilts.csv'} has the columns {','.join(columns)} and set.toml has "
@@ -139,7 +144,16 @@ def read_calibration_set(folder: Path, *, with_frames: bool = True) -> Calibrati
         nudges=about.nudge,
         foils=about.foil,
         axes=about.axes,
+        graduation=about.graduation,
+        own_lens=about.camera.own_lens,
     )
+
+
+def _table(path: Path, about: SetAbout) -> tuple[tuple[str, ...], list[TableRow]]:
+    """The table; a graduated scale needs none."""
+    if about.graduation is not None and not path.exists():
+        return (TURN_COLUMNS if about.wedge is not None else TILT_COLUMNS), []
+    return read_table(path)
 
 
 def _refuse_missing(folder: Path, tilts: list[KnownTilt], about: SetAbout) -> None:

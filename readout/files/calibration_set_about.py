@@ -9,6 +9,7 @@ from typing import Annotated, Literal, Self
 from pydantic import BaseModel, ConfigDict, Field, ValidationError, model_validator
 
 from readout.angle import Mounting
+from readout.angle.graduation_division import Division, MarkedAs, division
 from readout.angle.lever import LeverIs
 from readout.angle.wedge import WedgeIs
 from readout.errors import BadInput
@@ -28,6 +29,7 @@ class CameraPart(_Part):
 
     pixel_um: _Positive | None = None
     mounting: Mounting = Mounting.STRAIGHT
+    own_lens: bool = False
 
 
 class OpticsPart(_Part):
@@ -62,6 +64,30 @@ class WedgePart(_Part):
         if (self.reading_arcsec is not None) == by_glass:
             raise ValueError("give either reading_arcsec, or angle_arcsec and index")
         return self
+
+
+class GraduationPart(_Part):
+    """``[graduation]``: what a division means, and in which frame the scale is seen."""
+
+    file: _Name
+    spacing_arcsec: _Positive | None = None
+    marked_as: MarkedAs | None = None
+    spacing_um: _Positive | None = None
+    focal_length_mm: _Positive | None = None
+    rel_sd: _NotNegative | None = None
+    focal_length_rel_sd: _NotNegative | None = None
+
+    @property
+    def division(self) -> Division:
+        """Raises BadInput where something is missing, contradictory or impossible."""
+        return division(
+            spacing_arcsec=self.spacing_arcsec,
+            marked_as=self.marked_as,
+            spacing_um=self.spacing_um,
+            focal_length_mm=self.focal_length_mm,
+            rel_sd=self.rel_sd,
+            focal_length_rel_sd=self.focal_length_rel_sd,
+        )
 
 
 class FixedPart(_Part):
@@ -108,6 +134,7 @@ class SetAbout(_Part):
     optics: OpticsPart = OpticsPart()
     stage: StagePart = StagePart()
     wedge: WedgePart | None = None
+    graduation: GraduationPart | None = None
     fixed: FixedPart | None = None
     nudge: tuple[NudgePart, ...] = ()
     foil: tuple[FoilPart, ...] = ()
@@ -120,8 +147,8 @@ class SetAbout(_Part):
             *(name for nudge in self.nudge for name in (nudge.before, nudge.after)),
             *(name for foil in self.foil for name in (foil.before, foil.after)),
         ]
-        fixed = [] if self.fixed is None else [self.fixed.file]
-        return (*fixed, *tests, *(() if self.axes is None else self.axes.files))
+        named = [part.file for part in (self.fixed, self.graduation) if part is not None]
+        return (*named, *tests, *(() if self.axes is None else self.axes.files))
 
 
 def read_about(path: Path) -> SetAbout:
@@ -136,12 +163,16 @@ def read_about(path: Path) -> SetAbout:
         raise BadInput(f"cannot read {path} ({error}): mend it or take it away") from error
     except RecursionError:
         raise BadInput(f"cannot read {path} (nested without end): mend it") from None
-    if "graduation" in document:
-        raise BadInput(f"{path} is of a graduated reticle: give known tilts in a tilts.csv instead")
     try:
-        return SetAbout.model_validate(document)
+        about = SetAbout.model_validate(document)
     except ValidationError as error:
         first = error.errors()[0]
         where = ".".join(str(part) for part in first["loc"])
         what = first["msg"].removeprefix("Value error, ")
         raise BadInput(f"{path}: {where}: {what[:1].lower()}{what[1:]}") from error
+    if about.graduation is not None:
+        try:
+            _ = about.graduation.division  # what a division means is asked before anything is done
+        except BadInput as error:
+            raise BadInput(f"{path}: graduation: {error}") from None
+    return about

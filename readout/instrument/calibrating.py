@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import hashlib
 import math
 from collections.abc import Callable
 from dataclasses import replace
@@ -10,16 +9,18 @@ from pathlib import Path
 
 import numpy as np
 
-from readout.angle import Calibration, calibrate_known_tilts
+from readout.angle import Calibration, TiltSet, calibrate_known_tilts
 from readout.angle.axes import turn_of_move, turned_to
+from readout.angle.graduation import calibrate_graduation, refuse_other_meaning
+from readout.angle.scales import Ratio, ratio_of_steps
 from readout.angle.signs import Change, Foil, SignVerdict, judge_foil, judge_nudge, with_signs
 from readout.angle.two_returns import front_first
 from readout.errors import BadInput
 from readout.files.calibration_set import CalibrationSet, KnownTilt
-from readout.files.pictures import read_picture
+from readout.files.calibration_set_about import GraduationPart
+from readout.instrument.set_frames import SetFrames, words_of
 from readout.model import F64, Quality, Sighting
-from readout.sighting import locate
-from readout.sighting.prepare import Preparation
+from readout.sighting.graduation import find_graduation
 
 WHICH_FACE = (
     "the brighter return was taken for the front face's: if it is not, both axes run backwards"
@@ -36,8 +37,64 @@ def calibrate_set(
     Frames that show no target, or only a doubtful one, are left out and named in the warnings.
     Raises BadInput where no calibration comes of it.
     """
-    frames = _Frames(given)
-    seen: list[tuple[int, list[Place]]] = []
+    frames = SetFrames(given)
+    if given.graduation is None:
+        made = _by_tilts(given, frames, *_seen(given, frames, on_frame), created_utc)
+    else:
+        made = _by_graduation(given, given.graduation, frames, created_utc, on_frame)
+    return _with_axes(given, frames, _with_signs(given, frames, made, created_utc))
+
+
+def _by_graduation(
+    given: CalibrationSet,
+    part: GraduationPart,
+    frames: SetFrames,
+    created_utc: str,
+    on_frame: Callable[[int], None] | None,
+) -> Calibration:
+    """The scale from the marks; tilts of the set, if any, check it."""
+    pixels, full_scale = frames.pixels(part.file)
+    frames.digest.update(repr((part, given.pitch_um, given.own_lens)).encode())
+    try:
+        made = calibrate_graduation(
+            find_graduation(pixels, full_scale=full_scale),
+            part.division,
+            given.camera(*frames.size),
+            own_lens=given.own_lens,
+            target=given.target,
+            created_utc=created_utc,
+            calibration_id=f"marks-{frames.digest.hexdigest()[:10]}",
+        )
+    except BadInput as error:
+        raise BadInput(f"{given.folder / part.file}: {error}") from error
+    if given.nominal_focal_length_mm is not None:
+        refuse_other_meaning(made, given.nominal_focal_length_mm)
+    origin = {"set": Path(given.folder).name, "note": given.note, "fixed": given.fixed}
+    made = replace(made, made_from={**made.made_from, **origin})
+    seen, left_out = _seen(given, frames, on_frame)
+    if len(seen) < 2:
+        return replace(made, warnings=(*made.warnings, *left_out))
+    verdict = ratio_of_steps(made, _sighted_tilts(given, seen))
+    if verdict is None:
+        return replace(made, warnings=(*made.warnings, *left_out))
+    if verdict.says in (Ratio.HALF, Ratio.DOUBLE):
+        raise BadInput(
+            f"the steps of {given.folder / 'tilts.csv'} as the marks measure them: {verdict.text}; "
+            "change marked_as in set.toml, or correct the tilts"
+        )
+    told = f"steps of the {given.way} as the marks measure them: {verdict.text}"
+    return replace(made, warnings=(*made.warnings, told, *left_out))
+
+
+Seen = list[tuple[int, list[Place]]]
+"""number of a row, and the return or both returns of its frame"""
+
+
+def _seen(
+    given: CalibrationSet, frames: SetFrames, on_frame: Callable[[int], None] | None
+) -> tuple[Seen, list[str]]:
+    """The returns of each row's frame, and what was left out."""
+    seen: Seen = []
     left_out = []
     for row, tilt in enumerate(given.tilts):
         sighting = frames.sighted(tilt.file)
@@ -48,28 +105,39 @@ def calibrate_set(
             left_out.append(_left_out(tilt, sighting, two=given.two_returns))
         if on_frame is not None:
             on_frame(row + 1)
-    width_px, height_px = frames.size
+    if given.two_returns and seen:
+        _order_faces(given, seen)
+    return seen, left_out
+
+
+def _sighted_tilts(given: CalibrationSet, seen: Seen) -> TiltSet:
+    """What is known of the rows seen, with their places."""
+    per_row = 2 if given.two_returns else 1
+    return given.planned().seen(
+        [row * per_row + k for row, places in seen for k in range(len(places))],
+        np.array([place[:2] for _, places in seen for place in places]),
+        np.array([place[2] for _, places in seen for place in places]),
+    )
+
+
+def _by_tilts(
+    given: CalibrationSet, frames: SetFrames, seen: Seen, left_out: list[str], created_utc: str
+) -> Calibration:
+    """The fit to known tilts."""
     if not seen:
         first = given.tilts[0]
         raise BadInput(
             f"no frame in {given.folder} shows a {given.target.value}: look at {first.file} "
             f"(line {first.line} of tilts.csv) and the others"
         )
-    if given.two_returns:
-        _order_faces(given, seen)
-    per_row = 2 if given.two_returns else 1
-    tilts = given.planned().seen(
-        [row * per_row + k for row, places in seen for k in range(len(places))],
-        np.array([place[:2] for _, places in seen for place in places]),
-        np.array([place[2] for _, places in seen for place in places]),
-    )
+    tilts = _sighted_tilts(given, seen)
     frames.digest.update(
         repr((given.tilts, given.scale_rel_sd, given.pitch_um, given.way)).encode()
     )
     try:
         made = calibrate_known_tilts(
             tilts,
-            given.camera(width_px, height_px),
+            given.camera(*frames.size),
             created_utc=created_utc,
             calibration_id=f"tilts-{frames.digest.hexdigest()[:10]}",
             way=given.way,
@@ -79,7 +147,7 @@ def calibrate_set(
             raise BadInput(f"{error}; {left_out[0]}") from error
         raise
     faces = (WHICH_FACE,) if given.two_returns else ()
-    made = replace(
+    return replace(
         made,
         target=given.target,
         warnings=(*made.warnings, *faces, *left_out),
@@ -92,60 +160,6 @@ def calibrate_set(
             "fixed": given.fixed,
         },
     )
-    return _with_axes(given, frames, _with_signs(given, frames, made, created_utc))
-
-
-class _Frames:
-    """The frames of a set: each read and sighted as it is asked for, all of one size."""
-
-    def __init__(self, given: CalibrationSet) -> None:
-        self._given = given
-        self._sizes: dict[tuple[int, int], str] = {}
-        self._known: dict[str, Sighting] = {}
-        self.digest = hashlib.sha256()
-        self._preparation = Preparation()
-        if given.fixed is not None:
-            fixed, _ = read_picture(given.folder / given.fixed)
-            self.digest.update(fixed.tobytes())
-            self._preparation = Preparation().with_fixed([fixed])
-
-    @property
-    def size(self) -> tuple[int, int]:
-        """Width and height, px."""
-        (size, _), *_ = self._sizes.items()
-        return size
-
-    def sighted(self, file: str) -> Sighting:
-        """Raises BadInput for a frame that cannot be read, or is of another size."""
-        if file in self._known:
-            return self._known[file]
-        path = self._given.folder / file
-        pixels, full_scale = read_picture(path)
-        self.digest.update(path.read_bytes())
-        self._sizes.setdefault((pixels.shape[1], pixels.shape[0]), file)
-        if len(self._sizes) > 1:
-            first, other = self._sizes.values()
-            raise BadInput(
-                f"{self._given.folder / first} and {other} are of different size: "
-                "take all frames of a set with one"
-            )
-        self._known[file] = locate(
-            pixels,
-            full_scale=full_scale,
-            target=self._given.target,
-            preparation=self._preparation,
-        )
-        return self._known[file]
-
-    def good(self, file: str) -> Sighting:
-        """As ``sighted``. Raises BadInput unless the target is there without a doubt."""
-        sighting = self.sighted(file)
-        if not sighting.found or sighting.quality:
-            raise BadInput(
-                f"{self._given.folder / file} shows no clear {self._given.target.value} "
-                f"({_words(sighting)}): take this frame again"
-            )
-        return sighting
 
 
 def _places(sighting: Sighting, *, two: bool) -> list[Place]:
@@ -159,15 +173,11 @@ def _places(sighting: Sighting, *, two: bool) -> list[Place]:
 
 
 def _left_out(tilt: KnownTilt, sighting: Sighting, *, two: bool) -> str:
-    seen = "there is one return only" if two and sighting.found else _words(sighting)
+    seen = "there is one return only" if two and sighting.found else words_of(sighting)
     return (
         f"{tilt.file} (line {tilt.line} of tilts.csv) was left out: {seen}; take it again, or "
         "take its row out"
     )
-
-
-def _words(sighting: Sighting) -> str:
-    return " ".join(sighting.quality.words()).replace("_", " ") or "no image"
 
 
 def _order_faces(given: CalibrationSet, seen: list[tuple[int, list[Place]]]) -> None:
@@ -180,7 +190,7 @@ def _order_faces(given: CalibrationSet, seen: list[tuple[int, list[Place]]]) -> 
 
 
 def _with_signs(
-    given: CalibrationSet, frames: _Frames, made: Calibration, created_utc: str
+    given: CalibrationSet, frames: SetFrames, made: Calibration, created_utc: str
 ) -> Calibration:
     """What the nudges and foils of the set show."""
     verdicts: list[SignVerdict] = []
@@ -195,7 +205,7 @@ def _with_signs(
     return with_signs(made, verdicts, done_utc=done_utc)
 
 
-def _with_axes(given: CalibrationSet, frames: _Frames, made: Calibration) -> Calibration:
+def _with_axes(given: CalibrationSet, frames: SetFrames, made: Calibration) -> Calibration:
     """The axes of the machine, if the set holds a move about one of them."""
     if given.axes is None:
         return made
@@ -210,7 +220,7 @@ def _with_axes(given: CalibrationSet, frames: _Frames, made: Calibration) -> Cal
     return replace(made, warnings=(*made.warnings, told))
 
 
-def _change(frames: _Frames, made: Calibration, before: str, after: str) -> Change:
+def _change(frames: SetFrames, made: Calibration, before: str, after: str) -> Change:
     (first, first_cov), (second, second_cov) = (_tilt(frames, made, f) for f in (before, after))
     step, cov = second - first, first_cov + second_cov
     return Change(
@@ -218,7 +228,7 @@ def _change(frames: _Frames, made: Calibration, before: str, after: str) -> Chan
     )
 
 
-def _tilt(frames: _Frames, made: Calibration, file: str) -> tuple[F64, F64]:
+def _tilt(frames: SetFrames, made: Calibration, file: str) -> tuple[F64, F64]:
     sighting = frames.good(file)
     tilt = np.array([float(v) for v in made.tilt(sighting.x_px, sighting.y_px)])
     return tilt, made.noise_cov(sighting.x_px, sighting.y_px, sighting.cov_px2)

@@ -8,6 +8,7 @@ from readout.errors import BadInput
 from readout.files.calibration_set import read_calibration_set
 
 TILTS = "file,x_arcsec,y_arcsec,sd_arcsec\na.png,1.5,,0.02\nb.png,-3,4,0.02\n"
+MARKS = '[graduation]\nfile = "a.png"\n'
 LEVER = "file,lever_mm,height_mm,height_sd_mm,axis\n"
 
 
@@ -102,7 +103,11 @@ def test_each_refusal_names_row_and_remedy(tmp_path, tilts, words):
         ("[camera]\npixle_um = 1\n", "camera.pixle_um"),
         ("target = 'moon'\n", "target"),
         ("this is no toml", "mend it"),
-        ("[graduation]\nspacing_arcsec = 10\n", "graduated"),
+        ("[graduation]\nspacing_arcsec = 10\n", "graduation.file"),
+        (MARKS + "spacing_arcsec = 10\n", 'may mean two things: say marked_as = "mirror_tilt"'),
+        (MARKS + "spacing_um = 100\n", "needs the focal_length_mm"),
+        (MARKS + 'spacing_arcsec = 10\nmarked_as = "both"\n', "graduation.marked_as"),
+        (MARKS, "what a division of the scale means is not said"),
     ],
 )
 def test_what_set_toml_may_not_say(tmp_path, about, words):
@@ -212,3 +217,14 @@ def test_a_plan_needs_no_frames(tmp_path):
     assert len(read_calibration_set(tmp_path, with_frames=False).tilts) == 2
     with pytest.raises(BadInput, match=r"names a\.png, which is not in the folder"):
         read_calibration_set(tmp_path)
+
+
+def test_a_graduated_scale_needs_no_table(tmp_path):
+    (tmp_path / "a.png").touch()
+    about = MARKS + 'spacing_arcsec = 10\nmarked_as = "mirror_tilt"\n[camera]\nown_lens = true\n'
+    (tmp_path / "set.toml").write_text(about)
+    found = read_calibration_set(tmp_path)
+    assert found.tilts == ()
+    assert found.own_lens
+    # a mirror's tilt turns the beam by twice as much
+    assert found.graduation.division.slope == pytest.approx(2 * math.radians(10 / 3600))
