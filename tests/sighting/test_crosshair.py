@@ -378,3 +378,55 @@ class TestWords:
     def test_tiny_pictures(self, shape):
         pixels = np.random.default_rng(25).integers(0, 255, shape).astype(np.uint8)
         assert locate(pixels, full_scale=255).quality is Quality.NO_IMAGE
+
+
+def test_light_that_rises_along_a_turned_arm():
+    """Row by row a turned arm goes sideways, so that the rise along it pulls as well.
+
+    To first order a line is pulled by the relative slope of the light times its second moment,
+    0.009 px here; what is left of it is second order, and a quarter at most.
+    """
+    rng = np.random.default_rng(39)
+    light = np.linspace(0.7, 1.3, SHAPE[1])[None, :] * np.linspace(0.8, 1.2, SHAPE[0])[:, None]
+    pull = 0.6 / SHAPE[1] * (6.0**2 / 12 + 1.3**2 + 1 / 12)
+    errors = []
+    for k in range(30):
+        x, y = 160 + 0.03 * k, 120.3
+        crosshair = replace(BRIGHT, line_px=6.0, rotation_deg=25.0)
+        pixels = expose(light * crosshair_image(SHAPE, x, y, crosshair), SENSOR, rng)
+        found = locate(pixels, full_scale=255)
+        errors.append((found.x_px - x, found.y_px - y))
+    assert np.abs(np.mean(errors, axis=0)).max() < 0.25 * pull
+
+
+def test_two_equal_lines_side_by_side_are_said():
+    """The middle between two returns of one brightness is none of them."""
+    rng = np.random.default_rng(40)
+    found = locate(ghosted(150.3, 110.8, 1.0, (8.0, 7.0), rng), full_scale=255)
+    assert Quality.SEVERAL_RETURNS in found.quality or not found.found
+
+
+def test_arms_of_a_fifth_of_the_picture():
+    rng = np.random.default_rng(41)
+    for turn in (0.3, 20.0):
+        crosshair = replace(BRIGHT, half_length_px=30.0, rotation_deg=turn)
+        found = locate(frame(SHAPE, 160.2, 120.7, crosshair, rng=rng), full_scale=255)
+        assert found.quality is Quality.OK
+        assert abs(found.x_px - 160.2) < 5 * found.x_sd_px < 0.05
+        assert abs(found.y_px - 120.7) < 5 * found.y_sd_px < 0.05
+
+
+@pytest.mark.parametrize("odd", [{"line_px": 0.0}, {"blur_px": math.nan}, {"angle_deg": math.nan}])
+def test_a_prior_that_says_nothing_is_passed_over(odd):
+    rng = np.random.default_rng(42)
+    pixels = frame(SHAPE, 150.0, 110.0, rng=rng)
+    found = locate(pixels, full_scale=255)
+    prior = replace(found, upright=replace(found.upright, **odd))
+    assert locate(pixels, full_scale=255, prior=prior) == found
+
+
+@pytest.mark.parametrize("size", [46, 92, 93])
+def test_pictures_of_any_width(size):
+    for shape in ((size, 64), (64, size), (size, size)):
+        pixels = np.random.default_rng(43).integers(0, 99, shape).astype(np.uint8)
+        assert not locate(pixels, full_scale=255).found
