@@ -17,13 +17,13 @@ from numpy.typing import NDArray
 from readout.least_squares import linear_least_squares
 from readout.model import F64, Pixels
 from readout.sighting.find import find_arms
-from readout.sighting.graduation_arms import long_arms, seen_beside
+from readout.sighting.graduation_arms import LongArms, long_arms, seen_beside
 from readout.sighting.graduation_axis import axis_slope
 from readout.sighting.graduation_marks import FittedMarks, RoughMarks, fit_marks
 from readout.sighting.graduation_search import RoughScale, search_scales
-from readout.sighting.rough import RoughArms
 from readout.sighting.shape import Shape
 
+SMALLEST_PX = 24
 LEAST_MARKS = 4
 CUTS = 4
 RESTS_RAD = 5e-4
@@ -103,6 +103,8 @@ def find_graduation(pixels: Pixels, *, full_scale: int) -> Graduation:
     ``pixels`` (height, width): uint8 or uint16. A scale needs five marks in view, six pixels apart
     or more. Never raises on a bad picture.
     """
+    if min(pixels.shape) < SMALLEST_PX:
+        return Graduation(None, None)
     arms = long_arms(pixels, find_arms(pixels))
     scales = [
         scale
@@ -113,7 +115,7 @@ def find_graduation(pixels: Pixels, *, full_scale: int) -> Graduation:
     return Graduation(level, next((scale for scale in scales if scale.upright), None))
 
 
-def _measured(pixels: Pixels, arms: RoughArms, rough: RoughScale, full_scale: int) -> Scale | None:
+def _measured(pixels: Pixels, arms: LongArms, rough: RoughScale, full_scale: int) -> Scale | None:
     """The marks fitted, along the direction that they and their line show.
 
     An arm almost along the scale hides its marks or, where nothing would be left, does not.
@@ -126,7 +128,8 @@ def _measured(pixels: Pixels, arms: RoughArms, rough: RoughScale, full_scale: in
         views.pop()
     found = [_measured_beside(pixels, rough, seen, full_scale) for seen in views]
     scales = [scale for scale in found if scale is not None]
-    return max(scales, key=lambda scale: len(scale.numbers), default=None)
+    most = max((len(scale.numbers) for scale in scales), default=0)
+    return next((scale for scale in scales if 2 * len(scale.numbers) >= most), None)
 
 
 def _measured_beside(

@@ -3,18 +3,24 @@
 from __future__ import annotations
 
 import math
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from readout.model import F64, Pixels
+from readout.sighting.arm import fit_arm
+from readout.sighting.fold import Line
 from readout.sighting.rough import RoughArm, RoughArms
+from readout.sighting.shape import Shape
 
 ALONG_RAD = math.radians(12.0)
 """an arm so near to a scale's own direction does not hide its marks from the search"""
 PARALLEL_RAD = math.radians(1.5)
 ARM_WIDTHS, ARM_PX = 1.3, 3.0
-"""an arm is hidden this many of its widths, and so many pixels more, either side"""
+"""an arm that cannot be fitted hides this many of its widths, and so many pixels more"""
+EXPLAINED = 0.7
+"""share of its profile that a fitted arm must explain"""
 LONG = 0.25
 """share of the picture through which an arm must go; a mark of a scale is shorter"""
 BLOCK_PX = 6
@@ -22,12 +28,40 @@ THERE = 0.4
 """of its greatest height, above which an arm is there"""
 
 
-def long_arms(pixels: Pixels, arms: RoughArms) -> RoughArms:
-    """The arms that go through a good part of the picture."""
-    return RoughArms(
-        tuple(arm for arm in arms.uprights if _length_share(pixels, arm) > LONG),
-        tuple(arm for arm in arms.levels if _length_share(pixels.T, arm) > LONG),
+@dataclass(frozen=True, slots=True)
+class LongArm:
+    """An arm through a good part of the picture, and how far either side of it light is seen."""
+
+    line: Line
+    half_px: float
+
+
+@dataclass(frozen=True, slots=True)
+class LongArms:
+    """``uprights``, and ``levels`` with lines of the transposed picture."""
+
+    uprights: tuple[LongArm, ...]
+    levels: tuple[LongArm, ...]
+
+
+def long_arms(pixels: Pixels, arms: RoughArms) -> LongArms:
+    """The arms that go through a good part of the picture, fitted where that can be done."""
+    return LongArms(
+        tuple(_fitted(pixels, arm) for arm in arms.uprights if _is_long(pixels, arm)),
+        tuple(_fitted(pixels.T, arm) for arm in arms.levels if _is_long(pixels.T, arm)),
     )
+
+
+def _fitted(pixels: Pixels, arm: RoughArm) -> LongArm:
+    rough = Shape(0.0, 0.0, float(arm.polarity), arm.width_px / 3, arm.width_px / 4)
+    fit = fit_arm(pixels, arm.line, rough)
+    if fit is None or fit.explained < EXPLAINED:
+        return LongArm(arm.line, (ARM_WIDTHS * arm.width_px + ARM_PX) / arm.line.cosine)
+    return LongArm(fit.line, (fit.shape.reach_px + 1) / fit.line.cosine)
+
+
+def _is_long(pixels: Pixels, arm: RoughArm) -> bool:
+    return _length_share(pixels, arm) > LONG
 
 
 def _length_share(pixels: Pixels, arm: RoughArm) -> float:
@@ -55,7 +89,7 @@ def _mean(pixels: Pixels, rows: NDArray[np.intp], at: F64, half: int) -> F64:
 
 
 def seen_beside(
-    arms: RoughArms, shape: tuple[int, int], scale_rad: float, *, along_rad: float = ALONG_RAD
+    arms: LongArms, shape: tuple[int, int], scale_rad: float, *, along_rad: float = ALONG_RAD
 ) -> NDArray[np.bool_]:
     """True where no arm lies; (height, width).
 
@@ -66,14 +100,14 @@ def seen_beside(
     rows, columns = np.arange(float(shape[0]))[:, None], np.arange(float(shape[1]))[None, :]
     for arm in _single(arms.uprights):
         if _apart_rad(math.pi / 2 - math.atan(arm.line.slope), scale_rad) > along_rad:
-            seen &= np.abs(columns - arm.line.x_at(rows)) > _half(arm)
+            seen &= np.abs(columns - arm.line.x_at(rows)) > arm.half_px
     for arm in _single(arms.levels):
         if _apart_rad(math.atan(arm.line.slope), scale_rad) > along_rad:
-            seen &= np.abs(rows - arm.line.x_at(columns)) > _half(arm)
+            seen &= np.abs(rows - arm.line.x_at(columns)) > arm.half_px
     return seen
 
 
-def _single(arms: tuple[RoughArm, ...]) -> list[RoughArm]:
+def _single(arms: tuple[LongArm, ...]) -> list[LongArm]:
     turns = [math.atan(arm.line.slope) for arm in arms]
     return [
         arm
@@ -85,7 +119,3 @@ def _single(arms: tuple[RoughArm, ...]) -> list[RoughArm]:
 def _apart_rad(one: float, other: float) -> float:
     """Angle between two lines, 0 to a quarter turn."""
     return abs((one - other + math.pi / 2) % math.pi - math.pi / 2)
-
-
-def _half(arm: RoughArm) -> float:
-    return (ARM_WIDTHS * arm.width_px + ARM_PX) / arm.line.cosine

@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from readout.model import F64, Pixels
-from readout.sighting.rough import RoughArms
+from readout.sighting.graduation_arms import LongArms
 
 SMOOTH_PX = 1.2
 SURE = 5.0
@@ -26,7 +26,7 @@ MOST = 5
 SAME_DEG = 1.5
 
 
-def directions_rad(pixels: Pixels, arms: RoughArms, seen: NDArray[np.bool_]) -> list[float]:
+def directions_rad(pixels: Pixels, arms: LongArms, seen: NDArray[np.bool_]) -> list[float]:
     """Directions from +x towards +y, in (-45, 45] degrees, the likeliest first.
 
     ``seen`` (height, width): False where an arm lies. The arms' own directions come last: one of

@@ -204,12 +204,13 @@ def _descended(
         step = fit.step(damping)
         if step is None:
             return None
-        trial = state.moved(step[0], step[1])
+        trial, largest = state.moved(step[0], step[1]), float(np.abs(step[0]).max())
         there = _evaluated(patches, weights, trial, width_px)
         if there is None or there.cost > fit.cost * (1 + RIDGE):
+            if largest < RESTS_PX:
+                break
             damping = max(damping * 10, DAMPING)
             continue
-        largest = float(np.abs(step[0]).max())
         state, fit, damping = trial, there, damping / 100
         if largest < RESTS_PX and damping < CALM:
             break
@@ -324,7 +325,7 @@ def _standing_out(patches: list[_Patch], fit: _Fit) -> Bools:
     """Marks that fit much worse than the others, or whose place says nothing."""
     freedom = np.array([patch.freedom for patch in patches])
     reduced = fit.chi_square / freedom
-    usual = float(np.median(reduced))
+    usual = max(1.0, float(np.median(reduced)))
     bad = reduced > usual * np.maximum(1 + STANDS_OUT * np.sqrt(2 / freedom), LEAST_EXCESS)
     return np.asarray(bad | (fit.normal[:, 0, 0] < 1 / LARGEST_SD_PX**2))
 

@@ -9,11 +9,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from readout.model import F64, Pixels
-from readout.sighting.graduation_arms import seen_beside
+from readout.sighting.graduation_arms import LongArms, seen_beside
 from readout.sighting.graduation_chain import Chain, best_chain
 from readout.sighting.graduation_directions import directions_rad, folded
 from readout.sighting.graduation_view import F32, View, response, row_peaks, turned_view
-from readout.sighting.rough import RoughArms
 
 SIZES_PX = (1.0, 1.7, 2.8, 4.5)
 LEAST_STEP_SIZES = 3.5
@@ -54,7 +53,7 @@ class RoughScale:
         return float(np.median(np.diff(self.column) / np.diff(self.numbers)))
 
 
-def search_scale(pixels: Pixels, arms: RoughArms, turn_rad: float) -> RoughScale | None:
+def search_scale(pixels: Pixels, arms: LongArms, turn_rad: float) -> RoughScale | None:
     """The best scale that lies about along a direction, followed until its direction rests."""
     best: RoughScale | None = None
     for _ in range(TURNS):
@@ -144,7 +143,7 @@ def _reach(height: F32, row: int) -> tuple[int, int]:
     return first, row + int(below[0]) - 1 if below.size else len(height) - 1
 
 
-def search_scales(pixels: Pixels, arms: RoughArms) -> list[RoughScale]:
+def search_scales(pixels: Pixels, arms: LongArms) -> list[RoughScale]:
     """The scale that stands out most, and another square to it if there is one."""
     both = seen_beside(arms, pixels.shape, 0.0) & seen_beside(arms, pixels.shape, math.pi / 2)
     found: list[RoughScale] = []
