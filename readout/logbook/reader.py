@@ -19,6 +19,7 @@ from readout.logbook.connection import open_reading
 from readout.logbook.schema import RUNS_AT_MOST, key_of, keys_of
 from readout.logbook.series import Cells, Series, choose_level_s, series_of
 from readout.model import F64
+from readout.stability import TiltSeries
 
 CHUNK = 10_000
 LONGEST_S = 1e9  # thirty years
@@ -138,6 +139,33 @@ class LogReader:
         """All rows of a run in order of seq, a few thousand at a time, as they stand now."""
         with self._told():
             yield from self._chunks(run_id)
+
+    def tilts(self, run_id: int) -> TiltSeries:
+        """All rows of a run as columns, to judge its drift by.
+
+        Raises BadInput for an id that is none, and for a run read with several calibrations:
+        angles of two scales have no common drift.
+        """
+        self.run(run_id)
+        count = len(self.calibrations(run_id))
+        if count > 1:
+            raise BadInput(
+                f"run {run_id} was read with {count} calibrations, and angles of different scales "
+                "have no common drift: export it, and keep the rows of one"
+            )
+        with self._told():
+            cursor = self._connection.execute(
+                "SELECT 1e-6 * t_us, x_arcsec, y_arcsec, quality FROM reading_row "
+                "WHERE key BETWEEN ? AND ? ORDER BY key",
+                keys_of(run_id),
+            )
+            parts = [np.empty((0, 4))]
+            while chunk := cursor.fetchmany(CHUNK):  # numbers take a tenth of what rows do
+                parts.append(np.array(chunk, dtype=np.float64))
+        t_s, x, y, quality = np.concatenate(parts).T
+        flagged = quality != 0
+        x, y = (np.where(flagged, np.nan, values) for values in (x, y))
+        return TiltSeries(t_s, x, y, int(flagged.sum()))
 
     def _chunks(self, run_id: int) -> Iterator[list[LoggedReading]]:
         cursor = self._connection.execute(

@@ -24,7 +24,9 @@ from readout.instrument.steady import Steadiness
 from readout.service.body_limit import BodyLimit
 from readout.service.calibrating_routes import calibrating_routes
 from readout.service.calibration_routes import FOLDER, calibration_routes
+from readout.service.check_routes import check_routes
 from readout.service.control import Control
+from readout.service.drift_routes import FLOOR_FILE, drift_routes
 from readout.service.feed import Feed
 from readout.service.fixed_frame_routes import fixed_frame_routes
 from readout.service.guard import Guard
@@ -91,6 +93,8 @@ def make_app(
     app.include_router(preparing_routes(instrument, Focusing(instrument), control, feed))
     fixed_frame = FixedFrame(instrument, control.kept_for)
     app.include_router(fixed_frame_routes(fixed_frame, feed))
+    app.include_router(check_routes(instrument))
+    app.include_router(drift_routes(instrument, recorder.path, control.folder / FLOOR_FILE))
     app.include_router(run_routes(recorder, feed, control))
     app.include_router(stream_routes(instrument, feed, status))
     if (static / "index.html").is_file():

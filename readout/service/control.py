@@ -59,6 +59,11 @@ class Control:
         return self._store.current
 
     @property
+    def folder(self) -> Path:
+        """Where the settings lie, and what is kept beside them."""
+        return self._store.path.parent
+
+    @property
     def source(self) -> str:
         """What is measured, as it was given."""
         return self._source(self._store.current)
