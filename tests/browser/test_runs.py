@@ -25,7 +25,7 @@ pytestmark = pytest.mark.browser
 SET = Path(__file__).parents[2] / "calib_images" / "bench_stage"
 COLUMNS = [
     *("t_utc", "t_s", "x_arcsec", "y_arcsec", "x_sd_arcsec", "y_sd_arcsec"),
-    *("x_u_arcsec", "y_u_arcsec", "quality", "x_px", "y_px"),
+    *("x_u_arcsec", "y_u_arcsec", "quality", "x_px", "y_px", "signs"),
 ]
 
 
