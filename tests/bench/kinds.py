@@ -16,6 +16,8 @@ from functools import lru_cache
 import numpy as np
 
 from readout.model import F64, Pixels
+from readout.sighting.prepare import Preparation
+from readout.sighting.targets import AS_THEY_COME
 from readout.simulation import Crosshair, Sensor, crosshair_image, crossing_bound_cov
 from readout.simulation.ground import UniformGround, expose_on
 from readout.simulation.spot import Spot, spot_bound_cov, spot_image
@@ -36,12 +38,13 @@ COARSE = replace(BITS8, read_noise_electrons=3.0, black_levels=4.3)
 
 @dataclass(frozen=True)
 class Picture:
-    """A frame and where the crossing truly lies."""
+    """A frame, where the crossing truly lies, and what is known of the camera."""
 
     pixels: Pixels
     full_scale: int
     x_px: float
     y_px: float
+    preparation: Preparation = AS_THEY_COME
 
 
 @dataclass(frozen=True)

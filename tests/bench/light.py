@@ -9,6 +9,9 @@ import numpy as np
 
 from readout.model import F64, Pixels, Quality
 from readout.sighting import locate
+from readout.sighting.prepare import Preparation
+from readout.sighting.response import power_response
+from readout.sighting.targets import AS_THEY_COME
 from readout.simulation import Crosshair, Sensor, crosshair_image, expose
 from readout.simulation.blemishes import second_return
 from readout.simulation.response import display_encoded
@@ -21,6 +24,7 @@ LOBE, LOBE_PX = 0.1, 6.0
 LINEAR8 = Sensor(8, gain_levels_per_electron=0.025, read_noise_electrons=6.0, black_levels=4.0)
 LINEAR12 = Sensor(12, gain_levels_per_electron=0.4, read_noise_electrons=6.0, black_levels=0.0)
 """with room for 30 % more light; a display-encoding camera takes its black level off first"""
+CORRECTED = Preparation(response=power_response(GAMMA, 255))
 CAMERAS = ("linear", "gamma 0.45", "gamma 0.45, corrected")
 LINES: dict[str, tuple[Crosshair, float]] = {
     "even line": (REFERENCE, 0.0),
@@ -41,15 +45,12 @@ class Shifts:
     lost: int
 
 
-def taken(electrons: F64, camera: str, rng: np.random.Generator) -> tuple[Pixels, int]:
-    """A frame of one of ``CAMERAS`` and its full scale."""
+def taken(electrons: F64, camera: str, rng: np.random.Generator) -> tuple[Pixels, Preparation]:
+    """A frame of one of ``CAMERAS``, 8 bit, and what is known of the camera."""
     if camera == "linear":
-        return expose(electrons, LINEAR8, rng), LINEAR8.full_scale
+        return expose(electrons, LINEAR8, rng), AS_THEY_COME
     shown = display_encoded(expose(electrons, LINEAR12, rng), LINEAR12.full_scale, gamma=GAMMA)
-    if camera == "gamma 0.45":
-        return shown, 255
-    straight = np.rint(65535 * (np.arange(256) / 255) ** (1 / GAMMA)).astype(np.uint16)
-    return straight[shown], 65535
+    return shown, AS_THEY_COME if camera == "gamma 0.45" else CORRECTED
 
 
 def shifts(line: str, camera: str, frames: int) -> Shifts:
@@ -65,8 +66,8 @@ def shifts(line: str, camera: str, frames: int) -> Shifts:
                 SHAPE, x, y, crosshair, strength=lobe, offset_px=(LOBE_PX, LOBE_PX)
             )
         for n, light in enumerate(LIGHTS):
-            pixels, full_scale = taken(light * electrons, camera, rng)
-            found = locate(pixels, full_scale=full_scale)
+            pixels, known = taken(light * electrons, camera, rng)
+            found = locate(pixels, full_scale=255, preparation=known)
             errors[n, k] = found.x_px - x, found.y_px - y
             words[n, k] = found.found and found.quality is not Quality.OK
     changed = errors[[0, 2]] - errors[1]

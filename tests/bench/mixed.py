@@ -9,6 +9,8 @@ import cv2
 import numpy as np
 
 from readout.model import F64
+from readout.sighting.prepare import Preparation
+from readout.sighting.targets import AS_THEY_COME
 from readout.simulation import Crosshair, Sensor, crosshair_image, expose
 from readout.simulation.bar import Bar
 from readout.simulation.blemishes import (
@@ -35,7 +37,12 @@ NO_TARGET = (
     "black",
     "steps and a disc",
     "clouds",
+    "fixed reticle alone, prepared",
+    "fixed crosshair alone, prepared",
 )
+PREPARED = "prepared"
+COVERED_FRAMES = 16
+"""of the covered mirror, for the sorts that end so: what is fixed is known"""
 WITH_TARGET = "a return"
 
 
@@ -51,7 +58,12 @@ def mixed_picture(seed: int, k: int) -> tuple[str, Picture]:
     if sort != WITH_TARGET:
         electrons, sensor = without_target(sort, rng), BITS8
         pixels = expose(electrons, sensor, rng)
-        return sort, Picture(pixels, sensor.full_scale, math.nan, math.nan)
+        known = AS_THEY_COME
+        if sort.endswith(PREPARED):
+            known = Preparation().with_fixed(
+                expose(electrons, sensor, rng) for _ in range(COVERED_FRAMES)
+            )
+        return sort, Picture(pixels, sensor.full_scale, math.nan, math.nan, known)
     return WITH_TARGET, with_target(rng)
 
 
@@ -158,11 +170,13 @@ def without_target(sort: str, rng: np.random.Generator) -> F64:
         electrons += light * line.share_at(columns - x, rows - y)
     elif sort == "page of text":
         electrons = text_page(rng, ground, light)
-    elif sort == "fixed reticle alone":
+    elif sort.startswith("fixed reticle alone"):
         cover = 1 - (1 - random_scale(rng)) * (
             1 - graduated_scale(SHAPE, at_px=y) * float(rng.random() < 0.7)
         )
         electrons += light * cover
+    elif sort.startswith("fixed crosshair alone"):
+        electrons = crosshair_image(SHAPE, x, y, random_crosshair(rng))
     elif sort == "black":
         electrons = np.full(SHAPE, 2.0)
     elif sort == "steps and a disc":
