@@ -34,6 +34,7 @@ from readout.files.calibration_set_table import (
     is_inside,
     read_table,
 )
+from readout.files.pictures import PICTURE_SUFFIXES
 from readout.model import F64, Target
 
 __all__ = ["CalibrationSet", "KnownTilt", "read_calibration_set"]
@@ -64,7 +65,7 @@ class CalibrationSet:
     all tilts, from the stage's scale; ``shared``: what else rows share. ``two_returns``: each
     frame holds two returns and a row says how they differ, rear less front.
     ``nominal_focal_length_mm`` is for comparison only. ``fixed``: frame with the mirror covered.
-    With ``graduation`` the scale comes from its marks, and the tilts, if any, are steps to check
+    With ``graduation`` the scale comes from its marks in ``marks_file``, and the tilts, if any, are steps to check
     it with.
     """
 
@@ -84,6 +85,7 @@ class CalibrationSet:
     foils: tuple[FoilPart, ...] = ()
     axes: AxesPart | None = None
     graduation: GraduationPart | None = None
+    marks_file: str | None = None
     own_lens: bool = False
 
     def planned(self) -> TiltSet:
@@ -145,6 +147,7 @@ def read_calibration_set(folder: Path, *, with_frames: bool = True) -> Calibrati
         foils=about.foil,
         axes=about.axes,
         graduation=about.graduation,
+        marks_file=_marks_file(folder, about) if with_frames else None,
         own_lens=about.camera.own_lens,
     )
 
@@ -154,6 +157,21 @@ def _table(path: Path, about: SetAbout) -> tuple[tuple[str, ...], list[TableRow]
     if about.graduation is not None and not path.exists():
         return (TURN_COLUMNS if about.wedge is not None else TILT_COLUMNS), []
     return read_table(path)
+
+
+def _marks_file(folder: Path, about: SetAbout) -> str | None:
+    """The frame with the marks: the one that is named, else the first that is nothing else."""
+    if about.graduation is None or about.graduation.file is not None:
+        return None if about.graduation is None else about.graduation.file
+    others = {Path(name) for name in about.other_files}
+    frames = sorted(
+        path.name
+        for path in folder.iterdir()
+        if path.suffix.lower() in PICTURE_SUFFIXES and Path(path.name) not in others
+    )
+    if not frames:
+        raise BadInput(f"{folder} holds no picture of the scale: take one with the marks in view")
+    return frames[0]
 
 
 def _refuse_missing(folder: Path, tilts: list[KnownTilt], about: SetAbout) -> None:

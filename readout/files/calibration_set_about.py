@@ -69,7 +69,7 @@ class WedgePart(_Part):
 class GraduationPart(_Part):
     """``[graduation]``: what a division means, and in which frame the scale is seen."""
 
-    file: _Name
+    file: _Name | None = None
     spacing_arcsec: _Positive | None = None
     marked_as: MarkedAs | None = None
     spacing_um: _Positive | None = None
@@ -147,7 +147,7 @@ class SetAbout(_Part):
             *(name for nudge in self.nudge for name in (nudge.before, nudge.after)),
             *(name for foil in self.foil for name in (foil.before, foil.after)),
         ]
-        named = [part.file for part in (self.fixed, self.graduation) if part is not None]
+        named = [p.file for p in (self.fixed, self.graduation) if p is not None and p.file]
         return (*named, *tests, *(() if self.axes is None else self.axes.files))
 
 

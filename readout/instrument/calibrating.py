@@ -38,22 +38,24 @@ def calibrate_set(
     Raises BadInput where no calibration comes of it.
     """
     frames = SetFrames(given)
-    if given.graduation is None:
+    if given.graduation is None or given.marks_file is None:
         made = _by_tilts(given, frames, *_seen(given, frames, on_frame), created_utc)
     else:
-        made = _by_graduation(given, given.graduation, frames, created_utc, on_frame)
+        part, file = given.graduation, given.marks_file
+        made = _by_graduation(given, part, file, frames, created_utc, on_frame)
     return _with_axes(given, frames, _with_signs(given, frames, made, created_utc))
 
 
 def _by_graduation(
     given: CalibrationSet,
     part: GraduationPart,
+    file: str,
     frames: SetFrames,
     created_utc: str,
     on_frame: Callable[[int], None] | None,
 ) -> Calibration:
     """The scale from the marks; tilts of the set, if any, check it."""
-    pixels, full_scale = frames.pixels(part.file)
+    pixels, full_scale = frames.pixels(file)
     frames.digest.update(repr((part, given.pitch_um, given.own_lens)).encode())
     try:
         made = calibrate_graduation(
@@ -66,10 +68,15 @@ def _by_graduation(
             calibration_id=f"marks-{frames.digest.hexdigest()[:10]}",
         )
     except BadInput as error:
-        raise BadInput(f"{given.folder / part.file}: {error}") from error
+        raise BadInput(f"{given.folder / file}: {error}") from error
     if given.nominal_focal_length_mm is not None:
         refuse_other_meaning(made, given.nominal_focal_length_mm)
-    origin = {"set": Path(given.folder).name, "note": given.note, "fixed": given.fixed}
+    origin = {
+        "set": Path(given.folder).name,
+        "marks": file,
+        "note": given.note,
+        "fixed": given.fixed,
+    }
     made = replace(made, made_from={**made.made_from, **origin})
     seen, left_out = _seen(given, frames, on_frame)
     if len(seen) < 2:

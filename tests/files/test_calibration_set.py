@@ -103,7 +103,6 @@ def test_each_refusal_names_row_and_remedy(tmp_path, tilts, words):
         ("[camera]\npixle_um = 1\n", "camera.pixle_um"),
         ("target = 'moon'\n", "target"),
         ("this is no toml", "mend it"),
-        ("[graduation]\nspacing_arcsec = 10\n", "graduation.file"),
         (MARKS + "spacing_arcsec = 10\n", 'may mean two things: say marked_as = "mirror_tilt"'),
         (MARKS + "spacing_um = 100\n", "needs the focal_length_mm"),
         (MARKS + 'spacing_arcsec = 10\nmarked_as = "both"\n', "graduation.marked_as"),
@@ -228,3 +227,20 @@ def test_a_graduated_scale_needs_no_table(tmp_path):
     assert found.own_lens
     # a mirror's tilt turns the beam by twice as much
     assert found.graduation.division.slope == pytest.approx(2 * math.radians(10 / 3600))
+
+
+def test_the_frame_with_the_marks_is_named_or_the_first_that_is_nothing_else(tmp_path):
+    for name in ("a_covered.png", "b.png", "c.png"):
+        (tmp_path / name).touch()
+    about = (
+        '[fixed]\nfile = "a_covered.png"\n[graduation]\nspacing_um = 50\nfocal_length_mm = 200\n'
+    )
+    (tmp_path / "set.toml").write_text(about)
+    assert read_calibration_set(tmp_path).marks_file == "b.png"
+    (tmp_path / "set.toml").write_text(about + 'file = "c.png"\n')
+    assert read_calibration_set(tmp_path).marks_file == "c.png"
+    (tmp_path / "set.toml").write_text(about)
+    for name in ("b.png", "c.png"):
+        (tmp_path / name).unlink()
+    with pytest.raises(BadInput, match="holds no picture of the scale"):
+        read_calibration_set(tmp_path)
