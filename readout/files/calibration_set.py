@@ -65,8 +65,8 @@ class CalibrationSet:
     all tilts, from the stage's scale; ``shared``: what else rows share. ``two_returns``: each
     frame holds two returns and a row says how they differ, rear less front.
     ``nominal_focal_length_mm`` is for comparison only. ``fixed``: frame with the mirror covered.
-    With ``graduation`` the scale comes from its marks in ``marks_file``, and the tilts, if any, are steps to check
-    it with.
+    With ``graduation`` the scale comes from its marks in ``marks_file``, and the tilts, if any,
+    are steps to check it with.
     """
 
     folder: Path
