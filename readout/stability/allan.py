@@ -66,11 +66,11 @@ def allan_deviation(
     reaches over a gap: each stretch between gaps counts by itself, and all of them together.
     """
     size = len(series.values)
-    open_gap = np.zeros(size, dtype=bool) if across_gaps else _gaps(series.values)
+    gaps = None if across_gaps else _gaps(series.values)
+    stretches = _Stretches(series.values, gaps)
     rows = []
     for m in factors or averaging_factors(size):
-        means = _means(series.values, m)
-        means[_any_of(open_gap, m)] = np.nan
+        means = stretches.means(m)
         difference = means[m:] - means[:-m]
         difference = difference[np.isfinite(difference)]
         if difference.size:
@@ -82,16 +82,28 @@ def allan_deviation(
     return Allan(columns[0], columns[1], columns[2], columns[3])
 
 
-def _means(values: F64, m: int) -> F64:
-    """Mean of every stretch of m values, NaN where too many of them are missing, (n - m + 1,)."""
-    present = np.isfinite(values)
-    middle = float(np.mean(values[present])) if present.any() else 0.0  # keeps the sums small
-    total = np.concatenate([[0.0], np.cumsum(np.where(present, values - middle, 0.0))])
-    count = np.concatenate([[0], np.cumsum(present)])
-    there = count[m:] - count[:-m]
-    enough = there >= max(1.0, LEAST_PRESENT * m)
-    sums = total[m:] - total[:-m]
-    return np.where(enough, middle + sums / np.maximum(there, 1), np.nan)
+class _Stretches:
+    """Means of every m neighbouring values, from sums that are added up once.
+
+    NaN for a mean of which too many values are missing, or that reaches over a gap.
+    """
+
+    def __init__(self, values: F64, gaps: NDArray[np.bool_] | None) -> None:
+        present = np.isfinite(values)
+        self._middle = float(np.mean(values[present])) if present.any() else 0.0
+        near = np.where(present, values - self._middle, 0.0)  # keeps the sums small
+        self._total = np.concatenate([[0.0], np.cumsum(near)])
+        self._count = np.concatenate([[0], np.cumsum(present)])
+        self._gaps = None if gaps is None else np.concatenate([[0], np.cumsum(gaps)])
+
+    def means(self, m: int) -> F64:
+        """Of every stretch of m values, (n - m + 1,)."""
+        there = self._count[m:] - self._count[:-m]
+        enough = there >= max(1.0, LEAST_PRESENT * m)
+        if self._gaps is not None:
+            enough &= self._gaps[m:] == self._gaps[:-m]
+        sums = self._total[m:] - self._total[:-m]
+        return np.where(enough, self._middle + sums / np.maximum(there, 1), np.nan)
 
 
 def _gaps(values: F64) -> NDArray[np.bool_]:
@@ -103,12 +115,6 @@ def _gaps(values: F64) -> NDArray[np.bool_]:
         # Between the readings on both sides lies one interval more than values are missing.
         found[begin:end] = end - begin + 1 > GAP_INTERVALS
     return found
-
-
-def _any_of(marked: NDArray[np.bool_], m: int) -> NDArray[np.bool_]:
-    """Whether any of every m neighbours is marked, (n - m + 1,)."""
-    count = np.concatenate([[0], np.cumsum(marked)])
-    return np.asarray(count[m:] > count[:-m])
 
 
 def _freedom(size: int, m: int) -> float:
