@@ -127,6 +127,8 @@ def test_a_distance_check_that_cannot_be_is_refused(
     other.write_text("distance_mm,step,x_arcsec\n300,a,wide\n", "utf-8")
     refused(readout("check", "distance", other, *focal), "row 1", "x_arcsec", "'wide'")
     refused(readout("check", "distance", rows, "--focal-length-mm", 0), "0 mm")
+    other.write_text("t_s,x_arcsec\n300,1\n", "utf-8")
+    refused(readout("check", "distance", other, *focal), "no column distance_mm nor step")
     assert readout("check", "distance", rows).status == 2
 
 

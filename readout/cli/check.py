@@ -54,7 +54,7 @@ def distance(
     from readout.files.csv_table import table_of
 
     found = check_distance(
-        distance_rows(table_of(file)),
+        distance_rows(table_of(file, needs=("distance_mm", "step"))),
         focal_length_mm=focal_length_mm,
         focal_length_sd_mm=focal_length_sd_mm,
         step_sd_arcsec=step_sd_arcsec,

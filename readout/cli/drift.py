@@ -91,7 +91,7 @@ def _allan_lines(found: RecordDrift) -> list[str]:
                 continue
             decimals = decimals_for(middle)
             cells.append(f"{middle:.{decimals}f} ({low:.{decimals}f} … {high:.{decimals}f})")
-        lines.append(_row(f"{tau_s:g} s", *cells))
+        lines.append(_row(f"{tau_s:.4g} s", *cells))
     return lines
 
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import csv
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from pathlib import Path
 
@@ -28,14 +28,26 @@ def csv_rows(path: Path) -> Iterator[tuple[list[str], Rows]]:
             yield names, _rows(reader, names)
     except FileNotFoundError:
         raise BadInput(f"{path} does not exist: check the name") from None
-    except (OSError, UnicodeDecodeError, csv.Error) as error:
+    except OSError as error:
+        raise BadInput(f"cannot read {path} ({error.strerror}): check the name") from error
+    except (UnicodeDecodeError, csv.Error) as error:
         raise BadInput(f"{path} cannot be read as CSV ({error}): check the file") from error
 
 
-def table_of(path: Path) -> list[dict[str, str]]:
-    """All rows, each by the names of its columns. Raises BadInput as ``csv_rows`` does."""
+def table_of(path: Path, needs: Sequence[str] = ()) -> list[dict[str, str]]:
+    """All rows, each by the names of its columns.
+
+    Raises BadInput as ``csv_rows`` does, and where a column it ``needs`` is missing.
+    """
     with csv_rows(path) as (names, rows):
+        refuse_missing(path, [name for name in needs if name not in names])
         return [dict(zip(names, cells, strict=False)) for _, cells in rows]
+
+
+def refuse_missing(path: Path, columns: Sequence[str]) -> None:
+    """Raise BadInput where there are any."""
+    if columns:
+        raise BadInput(f"{path} has no column {' nor '.join(columns)}: name it in the header")
 
 
 def _rows(reader: Iterator[list[str]], names: list[str]) -> Rows:

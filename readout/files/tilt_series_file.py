@@ -14,7 +14,7 @@ from pathlib import Path
 import numpy as np
 
 from readout.errors import BadInput
-from readout.files.csv_table import csv_rows
+from readout.files.csv_table import csv_rows, refuse_missing
 from readout.model import F64
 from readout.stability import TiltSeries
 
@@ -36,8 +36,7 @@ def read_tilt_series(path: Path, on_rows: Callable[[int], None] = _nothing) -> T
         clocks = [name for name in ("t_s", "t_utc") if name in names]
         missing = [name for name in ANGLES if name not in names]
         missing += [] if clocks else ["t_s (or t_utc)"]
-        if missing:
-            raise BadInput(f"{path} has no column {' nor '.join(missing)}: name them in the header")
+        refuse_missing(path, missing)
         columns = [*ANGLES, *clocks]
         at = [names.index(name) for name in columns]
         quality = names.index("quality") if "quality" in names else None

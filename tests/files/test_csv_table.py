@@ -37,5 +37,12 @@ def test_what_is_no_table(tmp_path: Path, content: bytes | None, line: str) -> N
     with pytest.raises(BadInput, match=line) as refused:
         table_of(path)
     assert "\n" not in str(refused.value)
-    with pytest.raises(BadInput, match="cannot be read as CSV"):
+
+
+def test_what_is_missing_is_named(tmp_path: Path) -> None:
+    path = tmp_path / "a.csv"
+    path.write_text("t_s,x\n1,2\n", "utf-8")
+    with pytest.raises(BadInput, match=r"a.csv has no column step nor y: name it in the header"):
+        table_of(path, needs=("step", "x", "y"))
+    with pytest.raises(BadInput, match="cannot read .*: check the name"):
         table_of(tmp_path)
