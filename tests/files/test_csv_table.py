@@ -44,5 +44,5 @@ def test_what_is_missing_is_named(tmp_path: Path) -> None:
     path.write_text("t_s,x\n1,2\n", "utf-8")
     with pytest.raises(BadInput, match=r"a.csv has no column step nor y: name it in the header"):
         table_of(path, needs=("step", "x", "y"))
-    with pytest.raises(BadInput, match="cannot read .*: check the name"):
+    with pytest.raises(BadInput, match=r"cannot read .*: check the name"):
         table_of(tmp_path)
