@@ -298,7 +298,7 @@ def test_measure_a_folder_against_its_truth(readout: Command, frames: Path, tmp_
         rows = list(csv.DictReader(file))
     assert list(rows[0]) == [
         *("file", "t_s", "x_arcsec", "y_arcsec", "x_sd_arcsec", "y_sd_arcsec"),
-        *("x_u_arcsec", "y_u_arcsec", "quality", "x_px", "y_px"),
+        *("x_u_arcsec", "y_u_arcsec", "quality", "x_px", "y_px", "signs"),
     ]
     for row, true in zip(rows, truth(frames), strict=True):
         assert row["file"] == true["file"]
