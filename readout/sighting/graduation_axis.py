@@ -1,7 +1,8 @@
 """The direction of a scale: the line its marks stand on, or else square to the marks.
 
-Between two marks there is nothing but that line. Each piece of it is fitted as a short mark that
-lies the other way; a straight line through the pieces gives the direction.
+Between two marks there is little but that line. Each piece of it is fitted as a short mark that
+lies the other way; a straight line through the pieces gives the direction. What the flanks of marks
+close together add is alike in all pieces: it moves the line, not its direction.
 """
 
 from __future__ import annotations
@@ -18,6 +19,9 @@ from readout.sighting.graduation_view import View
 from readout.sighting.shape import Shape
 
 LEAST_PIECE_PX = 4.0
+FLANK_BLURS = 1.5
+CLOSE = 1.5
+"""on the uncertainty where flanks of marks reach into the pieces: those of longer marks differ"""
 LEAST_PIECES = 4
 SURE = 8.0
 """a line is one if it is so many sds of the noise high, in the mean over all gaps"""
@@ -41,8 +45,8 @@ def axis_slope(
     """
     step = np.diff(columns)
     usual = float(np.median(step))
-    half_gap = usual / 2 - shape.fades_px
-    if 2 * half_gap < LEAST_PIECE_PX:
+    half_gap = max(usual / 2 - shape.fades_px, LEAST_PIECE_PX / 2)
+    if half_gap > usual / 2 - shape.half_width - FLANK_BLURS * shape.blur:
         return None
     middle = ((columns[1:] + columns[:-1]) / 2)[step < 1.5 * usual]
     row = _row_of_line(view, middle, half_gap, rows, polarity)
@@ -72,7 +76,9 @@ def axis_slope(
         fit.shift_px[good],
         1 / np.diag(fit.cov_px2)[good],
     )
-    excess = max(1.0, line.residual_sd) if good.sum() > 2 else 1.0
+    excess = max(1.0, line.residual_sd)
+    if half_gap > usual / 2 - shape.fades_px:
+        excess *= CLOSE
     return float(line.parameters[1]), math.sqrt(line.cofactor[1, 1]) * excess
 
 

@@ -70,6 +70,25 @@ def test_longer_marks_are_told() -> None:
     assert len(error_px) == len(scale.longer)
 
 
+@pytest.mark.parametrize("step_px", [10.0, 20.0])
+def test_the_line_of_a_scale_gives_its_direction(step_px: float) -> None:
+    pulls = []
+    seeds = range(8)
+    print("seeds", seeds)
+    for seed in seeds:
+        made = scene(
+            rotation_deg=-2.3 + seed,
+            step_px=step_px,
+            phase_div=0.1 * seed,
+            crosshair_px=(90.0, 205),
+        )
+        scale = one(made, seed)
+        assert scale.turn_sd_rad < math.radians(0.01)
+        pulls.append((scale.turn_rad - math.radians(seed - 2.3)) / scale.turn_sd_rad)
+    assert np.abs(pulls).max() < 4
+    assert np.sqrt(np.mean(np.square(pulls))) < 1 + 3 / math.sqrt(2 * len(pulls))
+
+
 def test_two_scales_at_right_angles() -> None:
     made = scene(shape=(480, 640), rotation_deg=12.0, both=True, crosshair_px=(310.3, 250.7))
     found = find_graduation(made.frame(2), full_scale=255)
