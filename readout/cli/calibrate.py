@@ -146,6 +146,11 @@ def _object(made: Calibration) -> dict[str, Any]:
     }
 
 
+def _counted(made: Calibration) -> str:
+    """What the rows of a calibration are."""
+    return "mark" if made.method.startswith("graduated") else "frame"
+
+
 def _lines(made: Calibration, nominal_mm: float | None) -> list[str]:
     """What a person wants to know, the answer first."""
     focal, sd = made.focal_length_px, made.focal_length_px_sd
@@ -160,13 +165,13 @@ def _lines(made: Calibration, nominal_mm: float | None) -> list[str]:
     lines += [
         f"scale          {scale_x:.6f}″ a pixel along X, {scale_y:.6f}″ along Y",
         f"growing X      {made.rotation_deg:.3f}° clockwise from the picture's right, {way}",
-        f"left over      {made.residual_rms_arcsec or 0.0:.4f}″ rms, {made.n} frames",
+        f"left over      {made.residual_rms_arcsec or 0.0:.4f}″ rms, {made.n} {_counted(made)}s",
         f"method         {made.method}",
         f"signs          {made.signs}",
         *(f"shown by       {shown['how']}, {shown['direction']}" for shown in made.signs_shown),
         *(f"note           {warning}" for warning in made.warnings),
         "",
-        f"{'frame':<24} {'x px':>10} {'y px':>10} {'left X ″':>10} {'left Y ″':>10}",
+        f"{_counted(made):<24} {'x px':>10} {'y px':>10} {'left X ″':>10} {'left Y ″':>10}",
     ]
     for row in made.residuals:
         left = (
