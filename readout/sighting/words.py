@@ -26,7 +26,7 @@ HOLLOW_SHARE = 0.03
 """a profile with such a dip in its middle is two lines"""
 VERY_LOPSIDED = 100.0
 LOPSIDED_PX = 0.06
-"""a profile whose sides differ by what would shift it so far has something beside it; by a third of
+"""a profile whose sides differ by what would shift it so far has something beside it; by half of
 that, if they differ by so much in variance"""
 BLURRED_PX = 12.0
 """blur, standard deviation, beyond which a sharper setting is worth the trouble"""
@@ -84,6 +84,6 @@ def _crowded(arm: ArmFit) -> bool:
         arm.graduated
         or arm.hollow > HOLLOW_SHARE
         or arm.lopsided_px > LOPSIDED_PX
-        or (arm.lopsided > VERY_LOPSIDED and arm.lopsided_px > LOPSIDED_PX / 3)
+        or (arm.lopsided > VERY_LOPSIDED and arm.lopsided_px > LOPSIDED_PX / 2)
         or (beside is not None and beside.height > RIVAL_SHARE)
     )
