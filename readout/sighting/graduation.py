@@ -17,7 +17,12 @@ from numpy.typing import NDArray
 from readout.least_squares import linear_least_squares
 from readout.model import F64, Pixels
 from readout.sighting.find import find_arms
-from readout.sighting.graduation_arms import LongArms, long_arms, seen_beside
+from readout.sighting.graduation_arms import (
+    LongArms,
+    long_arms,
+    seen_beside,
+    without_own_line,
+)
 from readout.sighting.graduation_axis import axis_slope
 from readout.sighting.graduation_marks import FittedMarks, RoughMarks, fit_marks
 from readout.sighting.graduation_search import RoughScale, search_scales
@@ -36,6 +41,7 @@ LONGEST_STEPS, LONGEST_PX = 1.5, 50.0
 LONGER = 1.3
 """a mark this many times as long as the usual one is a longer one"""
 ALONG_RAD, ALONG_LOOSE_RAD = math.radians(0.4), math.radians(12.0)
+MUCH_MORE = 3.0
 SQUARE_WITHIN_RAD = math.radians(0.3)
 """a line that is less square to the marks is another one"""
 OFF_SCALE = 5.0
@@ -118,18 +124,31 @@ def find_graduation(pixels: Pixels, *, full_scale: int) -> Graduation:
 def _measured(pixels: Pixels, arms: LongArms, rough: RoughScale, full_scale: int) -> Scale | None:
     """The marks fitted, along the direction that they and their line show.
 
-    An arm almost along the scale hides its marks or, where nothing would be left, does not.
+    An arm almost along the scale hides its marks, unless it is the line they stand on; where much
+    more is told by letting it lie upon them, it does not.
     """
+    turn = rough.view.turn_rad
+    row = float(np.median((rough.first_row + rough.last_row) / 2))
+    middle = rough.view.places(np.array([float(np.median(rough.column))]), np.array([row]))[0]
+    reach = float(np.median(rough.last_row - rough.first_row)) / 2 + BEYOND_PX
+    x, y = middle.tolist()
+    others = without_own_line(arms, turn, (x, y), reach, rough.polarity)
     views = [
-        seen_beside(arms, pixels.shape, rough.view.turn_rad, along_rad=along_rad)
+        seen_beside(others, pixels.shape, turn, along_rad=along_rad)
         for along_rad in (ALONG_RAD, ALONG_LOOSE_RAD)
     ]
     if np.array_equal(views[0], views[1]):
         views.pop()
     found = [_measured_beside(pixels, rough, seen, full_scale) for seen in views]
     scales = [scale for scale in found if scale is not None]
-    most = max((len(scale.numbers) for scale in scales), default=0)
-    return next((scale for scale in scales if 2 * len(scale.numbers) >= most), None)
+    most = max((_told(scale) for scale in scales), default=0.0)
+    return next((scale for scale in scales if MUCH_MORE * _told(scale) >= most), None)
+
+
+def _told(scale: Scale) -> float:
+    """How much the marks say of the division: the inverse variance of a step, but for a factor."""
+    number = scale.numbers - scale.numbers.mean()
+    return float(number**2 @ (1 / np.diag(scale.cov_px2)))
 
 
 def _measured_beside(

@@ -16,6 +16,7 @@ from readout.sighting.shape import Shape
 
 ALONG_RAD = math.radians(12.0)
 """an arm so near to a scale's own direction does not hide its marks from the search"""
+OWN_RAD = math.radians(1.5)
 PARALLEL_RAD = math.radians(1.5)
 ARM_WIDTHS, ARM_PX = 1.3, 3.0
 """an arm that cannot be fitted hides this many of its widths, and so many pixels more"""
@@ -30,9 +31,12 @@ THERE = 0.4
 
 @dataclass(frozen=True, slots=True)
 class LongArm:
-    """An arm through a good part of the picture, and how far either side of it light is seen."""
+    """An arm through a good part of the picture, dark (-1) or bright (1), and how far either side
+    of it that is seen.
+    """
 
     line: Line
+    polarity: int
     half_px: float
 
 
@@ -52,12 +56,46 @@ def long_arms(pixels: Pixels, arms: RoughArms) -> LongArms:
     )
 
 
+def without_own_line(
+    arms: LongArms,
+    scale_rad: float,
+    middle_px: tuple[float, float],
+    within_px: float,
+    polarity: int,
+) -> LongArms:
+    """The arms but for the line that the marks of a scale stand on.
+
+    It goes along the scale, no farther than ``within_px`` from its middle, and is dark or bright as
+    the marks are.
+    """
+    x, y = middle_px
+
+    def is_own(arm: LongArm, turn_rad: float, along: float, across: float) -> bool:
+        off = abs(float(arm.line.x_at(along)) - across) * arm.line.cosine
+        return (
+            arm.polarity == polarity
+            and off < within_px
+            and _apart_rad(turn_rad, scale_rad) < OWN_RAD
+        )
+
+    return LongArms(
+        tuple(
+            arm
+            for arm in arms.uprights
+            if not is_own(arm, math.pi / 2 - math.atan(arm.line.slope), y, x)
+        ),
+        tuple(arm for arm in arms.levels if not is_own(arm, math.atan(arm.line.slope), x, y)),
+    )
+
+
 def _fitted(pixels: Pixels, arm: RoughArm) -> LongArm:
     rough = Shape(0.0, 0.0, float(arm.polarity), arm.width_px / 3, arm.width_px / 4)
     fit = fit_arm(pixels, arm.line, rough)
     if fit is None or fit.explained < EXPLAINED:
-        return LongArm(arm.line, (ARM_WIDTHS * arm.width_px + ARM_PX) / arm.line.cosine)
-    return LongArm(fit.line, (fit.shape.reach_px + 1) / fit.line.cosine)
+        return LongArm(
+            arm.line, arm.polarity, (ARM_WIDTHS * arm.width_px + ARM_PX) / arm.line.cosine
+        )
+    return LongArm(fit.line, arm.polarity, (fit.shape.reach_px + 1) / fit.line.cosine)
 
 
 def _is_long(pixels: Pixels, arm: RoughArm) -> bool:
