@@ -272,6 +272,18 @@ def test_a_picture_of_another_size_is_named_and_the_others_done(
     fails_in_one_line(measured, "60 × 40", "320 × 240")
 
 
+def test_live_ends_in_one_line_where_it_does_not_fit(
+    readout: Command, over_fixed: Path, tmp_path: Path
+) -> None:
+    kept = tmp_path / "camera.npz"
+    readout("prepare", kept, "--fixed", over_fixed / "covered")
+    run = readout(
+        *("live", "--source", "simulated", "--prepared", kept, "--port", 0, "--no-browser"),
+        *("--data", tmp_path / "data", "--settings", tmp_path / "settings.json"),
+    )
+    fails_in_one_line(run, "320 × 240", "take the frames anew")
+
+
 def test_what_is_given_twice_or_not_there_is_refused(
     readout: Command, over_fixed: Path, tmp_path: Path
 ) -> None:
