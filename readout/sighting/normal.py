@@ -12,6 +12,8 @@ from readout.sighting.trial import State
 
 TINY = 1e-9
 """damping that keeps a singular matrix from being one and changes nothing else"""
+HELD = 1e12
+"""damping of a parameter that must not move"""
 LEAST_COLUMN = 1e-50
 """a column of the Jacobian this small against the largest says nothing"""
 
@@ -51,8 +53,11 @@ def normal_equations(fold: Fold, state: State, weight: F64) -> tuple[F64, F64]:
     return normal, right
 
 
-def damped_inverse(normal: F64, damping: float) -> F64 | None:
-    """Inverse of normal equations with columns of very different size; None if there is none."""
+def damped_inverse(normal: F64, damping: float, *, held: int | None = None) -> F64 | None:
+    """Inverse of normal equations with columns of very different size; None if there is none.
+
+    ``held``: a parameter that stays as it is.
+    """
     scale = np.sqrt(normal.diagonal())
     if not scale.min() > LEAST_COLUMN * scale.max():
         return None
@@ -60,6 +65,8 @@ def damped_inverse(normal: F64, damping: float) -> F64 | None:
     scaled = normal / scales
     scaled.flat[:: len(scale) + 1] += TINY
     scaled.flat[3 * (len(scale) + 1) : -1 : len(scale) + 1] += damping
+    if held is not None:
+        scaled[held, held] += HELD
     try:
         inverse = np.linalg.inv(scaled) / scales
     except np.linalg.LinAlgError:

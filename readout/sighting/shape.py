@@ -9,6 +9,9 @@ from readout.model import F64
 
 WIDEST = 60.0
 LEAST_BLUR = 0.35
+FOURTH = 4
+"""place of the half width's fourth power among the parameters of a step"""
+AT_BOUND = 1e-3
 LEAST_BAR = 0.3
 """least half width of the bar in a profile of spread 1: one thinner looks no different"""
 
@@ -76,6 +79,12 @@ class Shape:
                 stepped(self.beside.distance, beside[1], 1.0, -2 * WIDEST, 2 * WIDEST),
             ),
         )
+
+    def cannot_follow(self, change: F64) -> bool:
+        """True if a step would make the bar thinner or the blur less than can be told apart."""
+        thinnest = self.half_width <= LEAST_BAR * math.sqrt(self.spread) * (1 + AT_BOUND)
+        sharpest = self.blur <= LEAST_BLUR * (1 + AT_BOUND)
+        return (thinnest and change[FOURTH] < 0) or (sharpest and change[FOURTH] > 0)
 
     def distance_px(self, other: Shape) -> float:
         """How far two profiles are apart, px.

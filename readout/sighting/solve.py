@@ -23,7 +23,7 @@ from readout.model import F64
 from readout.sighting.fold import Fold
 from readout.sighting.normal import TINY, damped_inverse, normal_equations
 from readout.sighting.scatter import slice_variance
-from readout.sighting.shape import Shape
+from readout.sighting.shape import FOURTH, Shape
 from readout.sighting.trial import State, model_of, started
 
 MOST_STEPS = 20
@@ -149,6 +149,11 @@ def _descended(
         if inverse is None:
             return None
         change = inverse @ right
+        if state.shape.cannot_follow(change):
+            inverse = damped_inverse(normal, damping, held=FOURTH)
+            if inverse is None:
+                return None
+            change = inverse @ right
         step_px = _largest(state, change)
         if step_px < SETTLED and damping < CALM:
             return state, change, inverse
