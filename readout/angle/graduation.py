@@ -57,9 +57,10 @@ def calibrate_graduation(
     Raises
     ------
     BadInput
-        If no scale or too little of one is seen, the two disagree, or the camera's data do not go
-        with the picture: one line with the remedy.
+        If no scale or too little of one is seen, or the camera's data do not go with the picture:
+        one line with the remedy.
     """
+    graduation, unlike = _ruled_alike(graduation)
     _refuse_unusable(graduation, means, camera, own_lens=own_lens)
     problem = GraduationProblem(graduation.scales, means.slope, camera)
     fit = problem.solved()
@@ -94,8 +95,25 @@ def calibrate_graduation(
             "the marks are too uncertain to give a scale: focus on them, light them evenly, or "
             "have more of them in view"
         )
-    found = tuple(_warnings(graduation, means, problem, fit, widened))
-    return replace(calibration, warnings=found)
+    found = _warnings(graduation, means, problem, fit, widened)
+    return replace(calibration, warnings=(*found, *unlike))
+
+
+def _ruled_alike(graduation: Graduation) -> tuple[Graduation, tuple[str, ...]]:
+    """The scales but the poorer one where their marks are not equally far apart, with a warning."""
+    level, upright = graduation.level, graduation.upright
+    if level is None or upright is None:
+        return graduation, ()
+    steps = level.step_px, upright.step_px
+    if max(steps) <= (1 + UNLIKE) * min(steps):
+        return graduation, ()
+    poorer = min(level, upright, key=lambda scale: float(np.sum(1 / np.diag(scale.cov_px2))))
+    kept = Graduation(None, upright) if poorer is level else Graduation(level, None)
+    told = (
+        f"the marks are {steps[0]:.4g} px apart on the level scale and {steps[1]:.4g} px on the "
+        f"upright one: one division cannot be both, the {_which(poorer)} one was left out"
+    )
+    return kept, (told,)
 
 
 def _refuse_unusable(
@@ -113,12 +131,6 @@ def _refuse_unusable(
             f"only {len(few[0].numbers)} marks of the {_which(few[0])} scale can be used, "
             f"{LEAST_MARKS} are needed: move the return off them, or bring more into view"
         )
-    steps = [scale.step_px for scale in scales]
-    if max(steps) > (1 + UNLIKE) * min(steps):
-        raise BadInput(
-            f"the marks are {steps[0]:.4g} px apart on the level scale and {steps[1]:.4g} px on "
-            "the upright one, too unlike for one division: cover one of the scales"
-        )
     if camera.pitch_um is None:
         return
     if own_lens:
@@ -127,10 +139,10 @@ def _refuse_unusable(
             "pixel_um out, the marks themselves give the scale"
         )
     if means.spacing_um is not None:
-        size = steps[0] * camera.pitch_um / means.spacing_um
+        size = scales[0].step_px * camera.pitch_um / means.spacing_um
         if abs(size - 1) > MAGNIFIED:
             raise BadInput(
-                f"on the sensor the marks are {steps[0] * camera.pitch_um:.4g} µm apart, where "
+                f"on the sensor the marks are {size * means.spacing_um:.4g} µm apart, where "
                 f"spacing_um is {means.spacing_um:g}: correct spacing_um or pixel_um, or, if the "
                 "camera has a lens of its own, say own_lens = true and take pixel_um out"
             )
