@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import math
 
-from readout.model import Quality, Return, Sighting, no_sighting
-from readout.sighting.arm import arm_of, known, shape_of
+from readout.model import Arm, Quality, Return, Sighting, no_sighting
+from readout.sighting.arm import ArmFit, arm_of, known, shape_of
 from readout.sighting.crossing import Cross
 from readout.sighting.fold import Line
 from readout.sighting.lone_arm import lone_arm
@@ -13,6 +13,8 @@ from readout.sighting.reticle import Picture
 from readout.sighting.returns import search
 from readout.sighting.words import words_of
 
+MOST_WIDENED = 1.5
+"""an arm that changes its width by more from one frame to the next is something else"""
 SEARCHED_EVERY = 30
 """frames after which a tracked picture is looked over for other returns"""
 
@@ -47,7 +49,17 @@ def _from_prior(picture: Picture, prior: Sighting) -> Cross | None:
     upright = Line(prior.x_px, -math.tan(math.radians(prior.upright.angle_deg)), prior.y_px)
     level = Line(prior.y_px, math.tan(math.radians(prior.level.angle_deg)), prior.x_px)
     shapes = shape_of(prior.upright), shape_of(prior.level)
-    return picture.fit_both(upright, level, *shapes, known=True)
+    cross = picture.fit_both(upright, level, *shapes, known=True)
+    if cross is None:
+        return None
+    alike = _alike(cross.upright, prior.upright) and _alike(cross.level, prior.level)
+    return cross if alike else None
+
+
+def _alike(fit: ArmFit, before: Arm) -> bool:
+    """True if a fitted arm looks like the one before: of one polarity, and about as wide."""
+    wider, thinner = max(fit.width_px, before.width_px), min(fit.width_px, before.width_px)
+    return fit.peak_contrast * before.contrast > 0 and wider < MOST_WIDENED * thinner
 
 
 def _sighting(

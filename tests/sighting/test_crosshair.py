@@ -430,3 +430,13 @@ def test_pictures_of_any_width(size):
     for shape in ((size, 64), (64, size), (size, size)):
         pixels = np.random.default_rng(43).integers(0, 99, shape).astype(np.uint8)
         assert not locate(pixels, full_scale=255).found
+
+
+def test_a_jump_between_two_frames_is_no_other_line():
+    """Fifteen pixels on, the strip of the frame before holds the ground beside the arms."""
+    rng = np.random.default_rng(44)
+    turned = replace(BRIGHT, line_px=4.0, blur_px=1.6, rotation_deg=1.0)
+    before = locate(frame((720, 1280), 647.9, 356.1, turned, rng=rng), full_scale=255)
+    found = locate(frame((720, 1280), 632.9, 367.8, turned, rng=rng), full_scale=255, prior=before)
+    assert found.quality is Quality.OK
+    assert (found.x_px, found.y_px) == pytest.approx((632.9, 367.8), abs=0.01)
