@@ -25,7 +25,7 @@ from readout.sighting.graduation_arms import (
 )
 from readout.sighting.graduation_axis import axis_slope
 from readout.sighting.graduation_marks import FittedMarks, RoughMarks, fit_marks
-from readout.sighting.graduation_search import RoughScale, search_scales
+from readout.sighting.graduation_search import RoughScale, search_scales, square_to
 from readout.sighting.shape import Shape
 
 SMALLEST_PX = 24
@@ -44,6 +44,10 @@ ALONG_RAD, ALONG_LOOSE_RAD = math.radians(0.4), math.radians(12.0)
 MUCH_MORE = 3.0
 SQUARE_WITHIN_RAD = math.radians(0.3)
 """a line that is less square to the marks is another one"""
+LARGEST_SD_PX = 0.35
+MOST_TRIED = 6
+CROOKED = 0.15
+"""marks off their curve by this share of a step are counted wrong, or are none"""
 OFF_SCALE = 5.0
 SMOOTH_DEGREE = 3
 """of the curve on which marks lie but for their errors, whatever the lens"""
@@ -112,13 +116,37 @@ def find_graduation(pixels: Pixels, *, full_scale: int) -> Graduation:
     if min(pixels.shape) < SMALLEST_PX:
         return Graduation(None, None)
     arms = long_arms(pixels, find_arms(pixels))
-    scales = [
-        scale
-        for rough in search_scales(pixels, arms)
-        if (scale := _measured(pixels, arms, rough, full_scale)) is not None
-    ]
+    first: RoughScale | None = None
+    scales: list[Scale] = []
+    for rough in search_scales(pixels, arms)[:MOST_TRIED]:
+        if first is not None and not square_to(first, rough):
+            continue
+        scale = _measured(pixels, arms, rough, full_scale)
+        if scale is not None:
+            first = first or rough
+            scales.append(_forwards(scale))
+        if len(scales) == 2:
+            break
     level = next((scale for scale in scales if not scale.upright), None)
     return Graduation(level, next((scale for scale in scales if scale.upright), None))
+
+
+def _forwards(scale: Scale) -> Scale:
+    """The scale counted to the right, or downwards if it is upright."""
+    turn = scale.turn_rad
+    if (math.sin(turn) if scale.upright else math.cos(turn)) >= 0:
+        return scale
+    last = int(scale.numbers[-1])
+    return replace(
+        scale,
+        numbers=last - scale.numbers[::-1],
+        place_px=scale.place_px[::-1],
+        cov_px2=scale.cov_px2[::-1, ::-1],
+        turn_rad=math.remainder(turn + math.pi, 2 * math.pi),
+        mark_turn_rad=math.remainder(scale.mark_turn_rad + math.pi, 2 * math.pi),
+        longer=scale.longer[::-1],
+        left_out=tuple(sorted(last - number for number in scale.left_out)),
+    )
 
 
 def _measured(pixels: Pixels, arms: LongArms, rough: RoughScale, full_scale: int) -> Scale | None:
@@ -162,7 +190,10 @@ def _measured_beside(
     place = np.stack([sought.x_px, sought.y_px], axis=1) + fit.shift_px[:, None] * along
     fitted = fit.fitted & (np.sign(fit.contrast) == rough.polarity)
     place[~fitted] = np.nan
-    keep = _on_scale(rough.numbers, place @ along, np.sqrt(np.diag(fit.cov_px2)))
+    sd_px = np.sqrt(np.diag(fit.cov_px2))
+    if np.nanmedian(sd_px) > LARGEST_SD_PX:
+        return None
+    keep = _on_scale(rough.numbers, place @ along, sd_px, CROOKED * rough.step_px)
     if 2 * np.count_nonzero(keep) < max(2 * LEAST_MARKS, len(keep)):
         return None
     mark_turn = sought.across_rad - fit.turn_rad
@@ -233,8 +264,13 @@ def _fitted(
     return sought, fit
 
 
-def _on_scale(numbers: NDArray[np.intp], along_px: F64, sd_px: F64) -> NDArray[np.bool_]:
-    """Marks fitted that lie where the others let expect them: the worst is taken out first."""
+def _on_scale(
+    numbers: NDArray[np.intp], along_px: F64, sd_px: F64, crooked_px: float
+) -> NDArray[np.bool_]:
+    """Marks fitted that lie where the others let expect them: the worst is taken out first.
+
+    None of them, where they are off by ``crooked_px`` or more.
+    """
     keep = np.isfinite(along_px)
     while np.count_nonzero(keep) >= LEAST_MARKS:
         degree = min(SMOOTH_DEGREE, int(np.count_nonzero(keep)) - 3)
@@ -245,6 +281,6 @@ def _on_scale(numbers: NDArray[np.intp], along_px: F64, sd_px: F64) -> NDArray[n
         off = np.abs(fit.residuals) / sd_px[keep]
         usual = max(1.0, 1.4826 * float(np.median(off)))
         if off.max() <= OFF_SCALE * usual:
-            break
+            return keep & (np.abs(fit.residuals).max() < crooked_px)
         keep[np.flatnonzero(keep)[np.argmax(off)]] = False
-    return keep
+    return np.zeros_like(keep)

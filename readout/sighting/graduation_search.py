@@ -34,8 +34,9 @@ LONG_SHARE = 0.5
 class RoughScale:
     """A scale about where it lies.
 
-    ``turn_rad``: direction along it. ``column, row`` (n,): the marks in its view; ``first_row,
+    ``column, row`` (n,): the marks in its view; ``first_row,
     last_row`` (n,): how far each reaches. ``numbers`` (n,). ``polarity``: -1 for dark marks.
+    ``merit``: the more and the higher its marks, the greater.
     """
 
     view: View
@@ -79,7 +80,10 @@ def _lean(scale: RoughScale) -> tuple[float, float]:
 
 
 def _in_view(view: View) -> RoughScale | None:
-    """The chain of most marks; of those alike in this, at size and polarity of the highest."""
+    """The chain of most and highest marks.
+
+    Side lobes are twice as many and less than half as high: they lose.
+    """
     best: tuple[float, F32, float, int, NDArray[np.intp], int, Chain] | None = None
     for size in SIZES_PX:
         if min(view.levels.shape) < 10 * size:
@@ -93,7 +97,7 @@ def _in_view(view: View) -> RoughScale | None:
                 if chain is None:
                     continue
                 height = float(np.median(heights[row, peaks[chain.members]]))
-                merit = chain.score * math.sqrt(height)
+                merit = chain.score * height
                 if best is None or merit > best[0]:
                     best = (merit, heights, size, row, peaks, polarity, chain)
     return None if best is None else _measured(view, *best)
@@ -144,7 +148,7 @@ def _reach(height: F32, row: int) -> tuple[int, int]:
 
 
 def search_scales(pixels: Pixels, arms: LongArms) -> list[RoughScale]:
-    """The scale that stands out most, and another square to it if there is one."""
+    """What may be a scale, the likeliest first."""
     both = seen_beside(arms, pixels.shape, 0.0) & seen_beside(arms, pixels.shape, math.pi / 2)
     found: list[RoughScale] = []
     for direction in directions_rad(pixels, arms, both):
@@ -154,12 +158,10 @@ def search_scales(pixels: Pixels, arms: LongArms) -> list[RoughScale]:
             scale = search_scale(pixels, arms, turn)
             if scale is not None:
                 found.append(scale)
-    if not found:
-        return []
-    first = max(found, key=lambda scale: scale.merit)
-    square = [scale for scale in found if _square(scale.view.turn_rad - first.view.turn_rad)]
-    return [first, *sorted(square, key=lambda scale: -scale.merit)[:1]]
+    return sorted(found, key=lambda scale: -scale.merit)
 
 
-def _square(between_rad: float) -> bool:
+def square_to(one: RoughScale, other: RoughScale) -> bool:
+    """True for two scales at right angles."""
+    between_rad = one.view.turn_rad - other.view.turn_rad
     return abs(folded(between_rad)) < SQUARE_RAD and abs(math.sin(between_rad)) > 0.5

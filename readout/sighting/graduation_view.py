@@ -106,10 +106,12 @@ def response(view: View, size_px: float) -> F32:
 def row_peaks(row: F64 | F32, size_px: float) -> NDArray[np.intp]:
     """Columns of the maxima of one row of a response that stand out.
 
-    The response to a mark has two side lobes of the other sign, 0.45 as high: they are none.
+    The response to a mark has two side lobes of the other sign, 0.45 as high: they are none. Nor is
+    the flank of one that is hidden, which is highest where it is last seen.
     """
-    middle = row[1:-1]
-    top = np.flatnonzero((middle > SURE) & (middle >= row[:-2]) & (middle > row[2:])) + 1
+    before, middle, after = row[:-2], row[1:-1], row[2:]
+    is_top = (middle > SURE) & (middle >= before) & (middle > after)
+    top = np.flatnonzero(is_top & (before != 0) & (after != 0)) + 1
     if top.size == 0:
         return top
     about = maximum_filter1d(np.abs(row), 2 * math.ceil(SIDE_LOBE_SIZES * size_px) + 1)
